@@ -1,0 +1,198 @@
+"""The figures tolsim computes: names, units of measure, ratings they are compared with.
+
+A figure belongs to the whole stage ("frequency"), to a rail, or to every part of a kind
+("capacitor.voltage_peak").  In the rows of results its column is the bare name for the
+stage and "REF.name" for a part: "frequency", "C1.voltage_peak".
+"""
+
+from __future__ import annotations
+
+from collections.abc import Mapping
+from dataclasses import dataclass
+from typing import Final, Literal
+
+STAGE: Final = "stage"
+RAIL: Final = "rail"
+
+
+@dataclass(frozen=True)
+class FigureInfo:
+    """What one figure is.
+
+    Attributes
+    ----------
+    name : str
+        As users write it in limits: "voltage_peak".
+    title : str
+        Heading for people.
+    unit_of_measure : str
+        Of the stored float; "1" for a pure number.
+    owner : str
+        "stage", "rail" or a part kind.
+    rating : str or None
+        Key of `tolsim.parts.Rating` the figure is compared with.
+    worse : {"high", "low"}
+        Which end of its distribution hurts.
+    about : str
+        One sentence.
+    """
+
+    name: str
+    title: str
+    unit_of_measure: str
+    owner: str
+    rating: str | None
+    worse: Literal["high", "low"]
+    about: str
+
+    def column(self, ref: str) -> str:
+        """Name of the column of this figure of part (or rail) `ref`."""
+        return self.name if self.owner == STAGE else f"{ref}.{self.name}"
+
+
+def _stage() -> list[FigureInfo]:
+    rows: list[tuple[str, str, str, Literal["high", "low"], str]] = [
+        ("frequency", "Frequency", "Hz", "high", "Fundamental of the steady orbit."),
+        ("supply_current", "Supply current", "A", "high", "Mean current of all rails."),
+        ("input_power", "Input power", "W", "high", "Mean power taken from all rails."),
+        ("output_power", "Output power", "W", "low", "Mean power in the loads and outputs."),
+        ("efficiency", "Efficiency", "1", "low", "Output power over input power."),
+        (
+            "start_margin",
+            "Start margin",
+            "dB",
+            "low",
+            "Factor by which transconductance may fall before growth stops.",
+        ),
+        ("growth_rate", "Growth rate", "1/s", "low", "Of the fastest mode at the bias point."),
+        ("start_frequency", "Start frequency", "Hz", "high", "Of the mode that grows fastest."),
+        ("start_time", "Start time", "s", "high", "From power-on to 90 % of the orbit."),
+        ("idle_current", "Idle current", "A", "high", "Of all rails at the bias point."),
+        ("idle_dissipation", "Idle dissipation", "W", "high", "Of all parts at the bias point."),
+        (
+            "slowest_multiplier",
+            "Slowest multiplier",
+            "1",
+            "high",
+            "Largest Floquet multiplier beside the phase one; above 1 the orbit is unstable.",
+        ),
+        ("energy_balance", "Energy balance", "1", "high", "Relative gap between input and losses."),
+        ("orbit_residual", "Orbit residual", "1", "high", "Relative gap after one cycle."),
+    ]
+    return [FigureInfo(n, title, unit, STAGE, None, worse, s) for n, title, unit, worse, s in rows]
+
+
+def _of(owner: str, *rows: tuple[str, str, str, str | None, str]) -> list[FigureInfo]:
+    return [FigureInfo(n, t, unit, owner, rating, "high", s) for n, t, unit, rating, s in rows]
+
+
+_VOLTAGE_PEAK = ("voltage_peak", "Peak voltage", "V")
+_CURRENT_PEAK = ("current_peak", "Peak current", "A")
+_CURRENT_RMS = ("current_rms", "RMS current", "A")
+_DISSIPATION = ("dissipation", "Dissipation", "W", "power", "Mean power turned into heat.")
+_BODY = ("body_temperature", "Body temperature", "degC", "temperature")
+_LARGEST = "Largest magnitude within a cycle, DC included."
+
+_PARTS: Final = [
+    *_of(
+        RAIL,
+        ("current_mean", "Mean current", "A", None, "Mean current the rail delivers."),
+        ("current_ripple", "Ripple current", "A", None, "Peak-to-peak alternating current."),
+    ),
+    *_of(
+        "capacitor",
+        (*_VOLTAGE_PEAK, "voltage", _LARGEST),
+        ("voltage_rms", "RMS voltage", "V", None, "Of the alternating part and DC together."),
+        (*_CURRENT_RMS, "current", "Of the hottest piece of a bank."),
+        ("reactive_power", "Reactive power", "var", "reactive_power", "RMS volts times amperes."),
+        ("loss", "Loss", "W", None, "Mean power turned into heat."),
+        ("self_heating", "Self-heating", "K", None, "Rise of the body above its surroundings."),
+        (*_BODY, "Surroundings plus self-heating."),
+    ),
+    *_of(
+        "inductor",
+        (*_CURRENT_PEAK, "saturation_current", _LARGEST),
+        (*_CURRENT_RMS, "current", "DC included."),
+        ("loss", "Loss", "W", "power", "Mean power turned into heat."),
+        (*_VOLTAGE_PEAK, None, _LARGEST),
+        ("saturation_use", "Saturation use", "1", None, "Peak over saturation current."),
+        (*_BODY, "Surroundings plus self-heating."),
+    ),
+    *_of("resistor", _DISSIPATION),
+    *_of("potentiometer", _DISSIPATION),
+    *_of(
+        "load",
+        _DISSIPATION,
+        (*_CURRENT_RMS, None, "In the loop of the load."),
+        (*_VOLTAGE_PEAK, None, "Across the resistance of the loop."),
+    ),
+    *_of(
+        "diode",
+        _DISSIPATION,
+        (*_CURRENT_PEAK, None, "Largest forward current."),
+        (*_CURRENT_RMS, "current", "DC included."),
+        ("reverse_peak", "Peak reverse voltage", "V", "voltage", "Largest cathode-anode voltage."),
+    ),
+    *_of(
+        "clamp",
+        _DISSIPATION,
+        (*_CURRENT_PEAK, None, _LARGEST),
+        (*_CURRENT_RMS, "current", "DC included."),
+    ),
+    *_of(
+        "mosfet",
+        ("drain_peak", "Peak drain voltage", "V", "drain_voltage", "Largest drain-source voltage."),
+        (
+            "drain_negative_peak",
+            "Negative drain excursion",
+            "V",
+            None,
+            "How far the drain goes below the source, as a positive number.",
+        ),
+        ("turn_on_voltage", "Turn-on voltage", "V", None, "Drain voltage when the gate turns on."),
+        ("turn_on_share", "Turn-on share", "1", None, "Turn-on voltage over supply voltage."),
+        ("gate_peak", "Peak gate voltage", "V", "gate_voltage", "Largest magnitude, either sign."),
+        ("gate_positive_peak", "Positive gate peak", "V", None, "Largest gate-source voltage."),
+        (
+            "gate_negative_peak",
+            "Negative gate peak",
+            "V",
+            None,
+            "How far the gate goes below the source, as a positive number.",
+        ),
+        ("drain_current_peak", "Peak drain current", "A", "drain_current", _LARGEST),
+        ("drain_current_rms", "RMS drain current", "A", None, "DC included."),
+        _DISSIPATION,
+        ("conduction_loss", "Conduction loss", "W", None, "Share of the loss while fully on."),
+        ("switching_loss", "Switching loss", "W", None, "Overlap at turn-on and turn-off."),
+        ("body_diode_loss", "Body diode loss", "W", None, "Loss in the body diode."),
+        ("gate_loss", "Gate loss", "W", None, "Loss in the gate resistance."),
+        (
+            "junction_temperature",
+            "Junction temperature",
+            "degC",
+            "junction_temperature",
+            "At the heat balance, resistance and threshold following it.",
+        ),
+        ("idle_dissipation", "Idle dissipation", "W", None, "At the bias point."),
+    ),
+]
+
+FIGURES: Final[Mapping[str, FigureInfo]] = {
+    **{info.name: info for info in _stage()},
+    **{f"{info.owner}.{info.name}": info for info in _PARTS},
+}
+"""Every figure: the stage's by name, others by "owner.name" ("mosfet.drain_peak")."""
+
+NAMES: Final[tuple[str, ...]] = tuple(dict.fromkeys(info.name for info in FIGURES.values()))
+"""Bare names users may write in limits, each once."""
+
+
+def figures_of(owner: str) -> tuple[FigureInfo, ...]:
+    """Figures of "stage", "rail" or a part kind, in reporting order."""
+    return tuple(info for info in FIGURES.values() if info.owner == owner)
+
+
+def figure_of(owner: str, name: str) -> FigureInfo | None:
+    """Figure `name` of `owner`, or None if it has no such figure."""
+    return FIGURES.get(name if owner == STAGE else f"{owner}.{name}")
