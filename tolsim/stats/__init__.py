@@ -1,0 +1,1 @@
+"""Statistics from arrays: proportions, percentiles and rankings, each with its interval."""

@@ -1,0 +1,241 @@
+"""Which factor matters: variance shares and rank correlations from the sample at hand.
+
+No extra runs are needed.  The first-order variance share (Sobol', Math. Comput. Simul. 55
+(2001) 271-280) of one factor is Var(E[y | factor]) / Var(y).  E[y | factor] is fitted here
+as a straight line inside each of a few bins of equal count, and the share is the adjusted
+R^2 of that fit: the adjustment takes away what a fit of as many lines would explain of
+pure noise, so a factor without effect gets a share of 0 on average, not a small positive one.
+
+Intervals are bootstrap percentiles over units.  A bootstrap sample repeats units, which
+pretends to explain more than there is; the replicates are therefore moved to have the
+adjusted estimate as their mean.  Without effect they are about 1.7 times as wide as
+needed, so "distinguishable" is said too rarely rather than too often.
+
+SALib estimates shares from a given sample too (`rbd_fast`), with one pass over all factors
+per replicate: measured here, 200 replicates of 100 factors would take 3 s at 500 units and
+13 s at 10 000.  Batched over replicates the same takes 0.04 s and 1.3 s.
+"""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+from itertools import pairwise
+
+import numpy as np
+from numpy.typing import ArrayLike, NDArray
+from scipy.special import ndtri
+from scipy.stats import rankdata
+
+from tolsim.stats.proportion import check_confidence
+
+Floats = NDArray[np.float64]
+
+FEWEST_UNITS = 20  # below this a share is noise, whatever its interval says
+FEWEST_OF_EACH = 5  # failing (and passing) units needed to rank pass/fail
+REPLICATES = 200
+
+
+@dataclass(frozen=True)
+class Ranking:
+    """Shares and rank correlations of k factors, in the order the factors were given.
+
+    `share`, `share_low`, `share_high`, `correlation`, `correlation_low`,
+    `correlation_high` and `distinguishable` are (k,).  `remainder` is 1 minus the shares of
+    the distinguishable factors: what interactions between factors and all factors not told
+    apart from noise explain.  Where ranking is not possible the numbers are NaN and `reason`
+    says why; otherwise it is empty.
+    """
+
+    share: Floats
+    share_low: Floats
+    share_high: Floats
+    correlation: Floats
+    correlation_low: Floats
+    correlation_high: Floats
+    distinguishable: NDArray[np.bool_]
+    remainder: float
+    remainder_low: float
+    remainder_high: float
+    units: int
+    missing: int
+    reason: str
+
+
+def rank_factors(
+    factors: ArrayLike,
+    target: ArrayLike,
+    rng: np.random.Generator,
+    confidence: float = 0.95,
+    replicates: int = REPLICATES,
+) -> Ranking:
+    """Rank independent factors by how much of a target's spread each explains alone.
+
+    Parameters
+    ----------
+    factors : array_like (n, k)
+        Value of each factor in each unit.
+    target : array_like (n,)
+        A figure, or 1 for fail and 0 for pass.  Units with NaN are left out and counted.
+    rng : numpy.random.Generator
+        For the bootstrap only; the estimates themselves do not depend on it.
+    confidence : float
+        Two-sided confidence of every interval.
+    replicates : int
+        Bootstrap samples.
+
+    Raises
+    ------
+    ValueError
+        If the shapes do not fit or `confidence` is not in (0, 1).
+    """
+    check_confidence(confidence)
+    x, y = np.asarray(factors, float), np.asarray(target, float)
+    if (x.ndim, y.ndim) != (2, 1) or y.size != x.shape[0]:
+        raise ValueError(f"`factors` must be (n, k), `target` (n,) (got {x.shape}, {y.shape})")
+    known = np.isfinite(y) & np.isfinite(x).all(axis=1)
+    x, y = x[known], y[known]
+    units, missing = y.size, int(np.sum(~known))
+    reason = _why_not(y)
+    if reason:
+        return _not_ranked(x.shape[1], units, missing, reason)
+    share, low, high, remainder = _shares_with_intervals(x, y, rng, confidence, replicates)
+    correlation, c_low, c_high = rank_correlation(x, y, confidence)
+    return Ranking(
+        share=share,
+        share_low=low,
+        share_high=high,
+        correlation=correlation,
+        correlation_low=c_low,
+        correlation_high=c_high,
+        distinguishable=low > 0.0,
+        remainder=float(remainder[0]),
+        remainder_low=float(remainder[1]),
+        remainder_high=float(remainder[2]),
+        units=units,
+        missing=missing,
+        reason="",
+    )
+
+
+def rank_correlation(
+    factors: ArrayLike, target: ArrayLike, confidence: float = 0.95
+) -> tuple[Floats, Floats, Floats]:
+    """Spearman's rank correlation of each factor with the target, and its interval.
+
+    Interval: Fisher's z with variance (1 + r^2/2)/(n - 3), Bonett and Wright, Psychometrika
+    65 (2000) 23-28.
+
+    Parameters
+    ----------
+    factors : array_like (n, k)
+    target : array_like (n,)
+
+    Returns
+    -------
+    correlation, low, high : ndarray (k,)
+        NaN for a factor that does not vary.
+    """
+    ranks_x = rankdata(np.asarray(factors, float), axis=0)
+    ranks_y = rankdata(np.asarray(target, float))
+    n = ranks_y.size
+    dx = ranks_x - ranks_x.mean(axis=0)
+    dy = ranks_y - ranks_y.mean()
+    scale = np.sqrt((dx**2).sum(axis=0) * (dy**2).sum())
+    with np.errstate(divide="ignore", invalid="ignore"):
+        r = np.clip(np.where(scale > 0, dy @ dx / scale, np.nan), -1.0, 1.0)
+        z = np.arctanh(r)
+    reach = ndtri(0.5 + 0.5 * confidence) * np.sqrt((1 + 0.5 * r**2) / max(n - 3, 1))
+    return r, np.tanh(z - reach), np.tanh(z + reach)
+
+
+def _why_not(y: Floats) -> str:
+    """Empty when the target can be ranked, else a sentence."""
+    if y.size < FEWEST_UNITS:
+        return f"only {y.size} units have this figure; at least {FEWEST_UNITS} are needed"
+    _, counts = np.unique(y, return_counts=True)
+    if counts.size == 1:
+        return "it is the same in every unit"
+    rarer = y.size - int(counts.max())
+    if rarer < FEWEST_OF_EACH:
+        return (
+            f"only {rarer} of {y.size} units differ from the others; "
+            f"at least {FEWEST_OF_EACH} are needed"
+        )
+    return ""
+
+
+def _not_ranked(k: int, units: int, missing: int, reason: str) -> Ranking:
+    unknown = np.full(k, np.nan)
+    return Ranking(
+        share=unknown,
+        share_low=unknown,
+        share_high=unknown,
+        correlation=unknown,
+        correlation_low=unknown,
+        correlation_high=unknown,
+        distinguishable=np.zeros(k, bool),
+        remainder=np.nan,
+        remainder_low=np.nan,
+        remainder_high=np.nan,
+        units=units,
+        missing=missing,
+        reason=reason,
+    )
+
+
+def _shares_with_intervals(
+    x: Floats, y: Floats, rng: np.random.Generator, confidence: float, replicates: int
+) -> tuple[Floats, Floats, Floats, Floats]:
+    """Shares (k,), their interval ends (k,), and remainder (estimate, low, high)."""
+    n, k = x.shape
+    weights = np.ones((replicates + 1, n))  # row 0 is the sample itself
+    weights[1:] = rng.multinomial(n, np.full(n, 1.0 / n), size=replicates)
+    edges = np.linspace(0, n, _bins(n) + 1).astype(int)
+    standard = (y - y.mean()) / y.std()
+    shares = np.column_stack([_share(x[:, j], standard, weights, edges) for j in range(k)])
+    low, high = _moved_to_estimate(shares, confidence)
+    seen = low > 0.0
+    rest = 1.0 - shares[:, seen if seen.any() else slice(None)].sum(axis=1)
+    rest_low, rest_high = _moved_to_estimate(rest, confidence)
+    if seen.any():
+        return shares[0], low, high, np.array([rest[0], rest_low, rest_high])
+    return shares[0], low, high, np.array([1.0, np.minimum(rest_low, 1.0), 1.0])
+
+
+def _moved_to_estimate(values: Floats, confidence: float) -> tuple[Floats, Floats]:
+    """Percentile interval of replicates `values[1:]`, moved to have mean `values[0]`."""
+    spread = values[1:] - values[1:].mean(axis=0)
+    tails = np.quantile(spread, [0.5 - 0.5 * confidence, 0.5 + 0.5 * confidence], axis=0)
+    return values[0] + tails[0], values[0] + tails[1]
+
+
+def _bins(n: int) -> int:
+    """Few bins for few units: each costs two fitted numbers."""
+    return int(np.clip(round(0.6 * n ** (1 / 3)), 2, 20))
+
+
+def _share(x: Floats, y: Floats, weights: Floats, edges: NDArray[np.intp]) -> Floats:
+    """Adjusted R^2 of straight lines in bins, for each row of weights (b, n) -> (b,)."""
+    if x.min() == x.max():
+        return np.zeros(weights.shape[0])
+    order = np.argsort(x, kind="stable")
+    xs, ys = x[order], y[order]
+    sorted_weights = weights[:, order]
+    left_over = np.zeros(weights.shape[0])
+    fitted = np.zeros(weights.shape[0])
+    for start, stop in pairwise(edges.tolist()):
+        dx, dy = xs[start:stop] - xs[start:stop].mean(), ys[start:stop]
+        reach = np.abs(dx).max()
+        dx = dx / reach if reach > 0 else dx
+        moments = np.column_stack([np.ones_like(dx), dx, dx * dx, dy, dy * dy, dx * dy])
+        w, wx, wxx, wy, wyy, wxy = (sorted_weights[:, start:stop] @ moments).T
+        w = np.maximum(w, 1.0)
+        sxx, syy, sxy = wxx - wx * wx / w, wyy - wy * wy / w, wxy - wx * wy / w
+        sloped = sxx > 1e-12 * w
+        gain = np.where(sloped, sxy * sxy / np.where(sloped, sxx, 1.0), 0.0)
+        left_over += np.maximum(syy - gain, 0.0)
+        fitted += 1.0 + sloped
+    n = weights.shape[1]
+    mean = sorted_weights @ ys / n
+    total = sorted_weights @ (ys * ys) - n * mean * mean
+    return np.asarray(1.0 - (left_over / (n - fitted)) / (total / (n - 1)))
