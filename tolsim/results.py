@@ -1,0 +1,206 @@
+"""What a run found: summary, units and factors, in memory or in a results folder.
+
+Folder
+------
+``summary.json``     the summary below
+``units.parquet``    one row per unit, condition and state: verdict, outcome, every figure
+``factors.parquet``  one row per unit: the value drawn for every factor
+``report.html``      the report, one file
+``study.toml``       the study as it was run
+``chunks/``          finished chunks of units; what a killed run leaves
+
+Summary, format 1
+-----------------
+Numbers are SI floats (temperatures in degC, ages in hours), shares are 0..1, `null` means
+not known (an interval that this many units cannot close).  Every `low`, `high` and
+`interval` has the confidence stated in `yield`.
+
+``format``      1; raised when a key changes its meaning
+``title``, ``kind``   of the study
+``yield``       {estimate, low, high, confidence, units, passed, failed, undecided}.  A unit
+                fails if it fails in any case; else it is undecided if it is in any case.
+                estimate = passed / units; low takes undecided units as failed, high as passed
+``cases``       [{condition, state, and all keys of `yield` but for that case alone}]
+``outcomes``    [{condition, state, outcome, units, share, low, high, first_units, failed}];
+                `failed` counts those of them that fail
+``limits``      [{limit (number in the study, from 0), rule, figure, title, unit_of_measure,
+                parts, states, conditions, bound {at_most, at_least, share_of_rating},
+                units (failing), share, low, high, first_units,
+                by_case [{condition, state, units}], by_part [{part, units}]}]
+``figures``     [{figure, title, part ("" for the stage), condition, state, unit_of_measure,
+                worse ("high" or "low"), nominal, units, missing, p1, p5, p50, p95, p99,
+                interval {p1: [low, high], ...}, bound_95 (95 % of units stay within it, on the
+                worse side), lowest, highest, rating, share_of_rating (of p99, or p1 if low is
+                worse), limit, limit_side, rule, at_most, at_least}]
+``ranking``     [{target ("start_margin", "Q1.drain_peak", "pass/fail"; the worst over all
+                cases of each unit), title, unit_of_measure, units, missing, reason (why not
+                ranked, else ""), remainder {share, low, high}, factors [{factor, share, low,
+                high, distinguishable, rank_correlation, rank_low, rank_high}], largest share
+                first}]
+``quality``     {energy_balance {worst, median}, orbit_residual {worst, median},
+                rechecked {units, share, agreed, worst_difference}, steps {...}}
+``provenance``  {seed, versions {name: version}, study_sha256, tables {name: sha256}, ...}
+"""
+
+from __future__ import annotations
+
+import json
+from collections.abc import Mapping
+from dataclasses import dataclass, field
+from pathlib import Path
+from typing import Any
+
+import pandas as pd
+
+from tolsim.errors import RequestError
+from tolsim.unit_files import Columns, FrameColumns, UnitFiles, write_text
+
+SUMMARY_FILE = "summary.json"
+STUDY_FILE = "study.toml"
+
+
+@dataclass(frozen=True)
+class Results:
+    """Everything a run found.
+
+    Attributes
+    ----------
+    summary : mapping
+        See above; empty for a run that was stopped before its end.
+    study_text : str
+        The study file as it was run.
+    folder : Path or None
+        Where the results are stored, if they are.
+    unit_columns, factor_columns : Columns
+        The two tables, read one column at a time when they are large.
+    """
+
+    summary: Mapping[str, Any]
+    study_text: str
+    folder: Path | None
+    unit_columns: Columns = field(repr=False)
+    factor_columns: Columns = field(repr=False)
+
+    @classmethod
+    def in_memory(
+        cls,
+        summary: Mapping[str, Any],
+        study_text: str,
+        units: pd.DataFrame,
+        factors: pd.DataFrame,
+    ) -> Results:
+        """Results that are stored nowhere."""
+        return cls(summary, study_text, None, FrameColumns(units), FrameColumns(factors))
+
+    @classmethod
+    def open(cls, folder: Path | str) -> Results:
+        """Open a results folder, also one of a run that was killed.
+
+        Raises
+        ------
+        RequestError
+            If the folder holds neither a summary nor a finished chunk.
+        """
+        place = Path(folder)
+        files = UnitFiles(place)
+        summary_file, study_file = place / SUMMARY_FILE, place / STUDY_FILE
+        summary = (
+            json.loads(summary_file.read_text(encoding="utf-8")) if summary_file.exists() else {}
+        )
+        if not summary and not files.units().paths:
+            raise RequestError(
+                f"'{place}' holds no results: neither {SUMMARY_FILE} nor a finished chunk. "
+                "Name the folder that `tolsim run` wrote."
+            )
+        text = study_file.read_text(encoding="utf-8") if study_file.exists() else ""
+        return cls(summary, text, place, files.units(), files.factors())
+
+    @property
+    def complete(self) -> bool:
+        """False if the run was stopped before all its units were done."""
+        return bool(self.summary)
+
+    @property
+    def units(self) -> pd.DataFrame:
+        """One row per unit, condition and state."""
+        return _frame(self.unit_columns)
+
+    @property
+    def factors(self) -> pd.DataFrame:
+        """One row per unit: the value drawn for every factor."""
+        return _frame(self.factor_columns)
+
+    @property
+    def yield_(self) -> pd.Series[Any]:
+        """Yield with its interval and counts."""
+        return pd.Series(self.summary.get("yield", {}), dtype=object)
+
+    @property
+    def cases(self) -> pd.DataFrame:
+        """Yield in every condition and state."""
+        return pd.DataFrame(self.summary.get("cases", []))
+
+    @property
+    def outcomes(self) -> pd.DataFrame:
+        """Units by condition, state and outcome."""
+        return pd.DataFrame(self.summary.get("outcomes", []))
+
+    @property
+    def limits(self) -> pd.DataFrame:
+        """Failing units of every limit."""
+        return pd.DataFrame(self.summary.get("limits", []))
+
+    @property
+    def figures(self) -> pd.DataFrame:
+        """Percentiles of every figure in every case; intervals as columns p50_low, p50_high."""
+        rows = []
+        for entry in self.summary.get("figures", []):
+            row = {key: value for key, value in entry.items() if key != "interval"}
+            for name, (low, high) in entry["interval"].items():
+                row[f"{name}_low"], row[f"{name}_high"] = low, high
+            rows.append(row)
+        return pd.DataFrame(rows)
+
+    @property
+    def ranking(self) -> pd.DataFrame:
+        """One row per target and factor."""
+        return pd.DataFrame(
+            [
+                {"target": entry["target"], **factor}
+                for entry in self.summary.get("ranking", [])
+                for factor in entry["factors"]
+            ]
+        )
+
+    @property
+    def quality(self) -> Mapping[str, Any]:
+        """How good the solutions are."""
+        quality: Mapping[str, Any] = self.summary.get("quality", {})
+        return quality
+
+    @property
+    def provenance(self) -> Mapping[str, Any]:
+        """What is needed to repeat the run: seed, versions, hashes."""
+        provenance: Mapping[str, Any] = self.summary.get("provenance", {})
+        return provenance
+
+    def save(self, folder: Path | str) -> Results:
+        """Write summary, study and, if they were in memory, the two tables; return the stored."""
+        place = Path(folder)
+        files = UnitFiles(place)
+        place.mkdir(parents=True, exist_ok=True)
+        if self.folder is None:
+            files.write_chunk(0, self.units, self.factors)
+            files.merge()
+        write_text(place / STUDY_FILE, self.study_text)
+        write_text(place / SUMMARY_FILE, summary_json(self.summary))
+        return Results.open(place)
+
+
+def summary_json(summary: Mapping[str, Any]) -> str:
+    """Text of `summary.json`: plain JSON, the same bytes for the same summary."""
+    return json.dumps(summary, indent=1, allow_nan=False, ensure_ascii=False) + "\n"
+
+
+def _frame(columns: Columns) -> pd.DataFrame:
+    return pd.DataFrame({name: columns.column(name) for name in columns.names})

@@ -1,0 +1,274 @@
+"""Count and condense the rows of all units into the summary of a run.
+
+The keys are documented in `tolsim.results`.  Columns are read one by one, so that a run
+of 100 000 units needs no more memory than one of its columns.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Mapping, Sequence
+from typing import Any
+
+import numpy as np
+from numpy.typing import NDArray
+
+from tolsim.bounds import Bound, applies, bounds, named_figure, rating_of
+from tolsim.design import Study
+from tolsim.figure_names import FigureInfo
+from tolsim.stats.percentiles import percentiles, tolerance_bound
+from tolsim.stats.proportion import share_interval, yield_estimate
+from tolsim.summary_ranking import rankings
+from tolsim.unit_files import Columns, UnitRows
+
+Floats = NDArray[np.float64]
+Flags = NDArray[np.bool_]  # (N,) or (N, cases)
+Nominal = Mapping[tuple[str, str], Mapping[str, float]]
+
+FORMAT = 1  # raised when a key changes its meaning
+SHARES = {"p1": 0.01, "p5": 0.05, "p50": 0.50, "p95": 0.95, "p99": 0.99}
+FIRST_UNITS = 5  # failing units named per entry
+
+
+def summarise(
+    study: Study,
+    units: Columns,
+    factors: Columns,
+    nominal: Nominal,
+    quality: Mapping[str, Any],
+    provenance: Mapping[str, Any],
+) -> dict[str, Any]:
+    """Build the summary of a run: plain numbers, texts, lists and dicts only.
+
+    Parameters
+    ----------
+    study : Study
+    units : Columns
+        One row per unit, condition and state.
+    factors : Columns
+        One row per unit.
+    nominal : mapping
+        (condition, state) -> column -> figure of the unit with every part at nominal.
+    quality, provenance : mapping
+        Passed through.
+
+    Raises
+    ------
+    ValueError
+        If there is no unit, or rows are missing.
+    """
+    rows = UnitRows.of(units)
+    confidence = study.run.confidence
+    verdict_codes, verdicts = rows.words("verdict")
+    failed = _where(verdict_codes, verdicts, "fail")
+    undecided = _where(verdict_codes, verdicts, "undecided")
+    unit_failed, unit_undecided = _in_any_case(failed), _in_any_case(undecided)
+    summary = {
+        "format": FORMAT,
+        "title": study.title,
+        "kind": study.kind,
+        "yield": _yield(unit_failed, unit_undecided, confidence),
+        "cases": [
+            {
+                "condition": condition,
+                "state": state,
+                **_yield(failed[:, c], undecided[:, c], confidence),
+            }
+            for c, (condition, state) in enumerate(rows.cases)
+        ],
+        "outcomes": _outcomes(rows, failed, confidence),
+        "limits": _limits(study, rows, confidence),
+        "figures": _figures(study, rows, nominal, confidence),
+        "ranking": rankings(study, rows, factors, unit_failed, unit_undecided),
+        "quality": dict(quality),
+        "provenance": dict(provenance),
+    }
+    plain: dict[str, Any] = _plain(summary)
+    return plain
+
+
+def _where(codes: NDArray[np.intp], words: Sequence[str], word: str) -> Flags:
+    return np.equal(codes, words.index(word) if word in words else -2)
+
+
+def _in_any_case(hit: Flags) -> Flags:
+    return np.asarray(hit.any(axis=1), bool)
+
+
+def _yield(failed: Flags, undecided: Flags, confidence: float) -> dict[str, Any]:
+    fails = int(failed.sum())
+    open_ = int((undecided & ~failed).sum())
+    return vars(yield_estimate(failed.size - fails - open_, fails, open_, confidence))
+
+
+def _counted(unit: NDArray[np.int64], hit: Flags, confidence: float) -> dict[str, Any]:
+    """Count units with an interval, and name the first of them."""
+    low, high = share_interval(int(hit.sum()), hit.size, confidence)
+    return {
+        "units": int(hit.sum()),
+        "share": float(hit.mean()),
+        "low": float(low),
+        "high": float(high),
+        "first_units": unit[hit][:FIRST_UNITS].tolist(),
+    }
+
+
+def _outcomes(rows: UnitRows, failed: Flags, confidence: float) -> list[dict[str, Any]]:
+    codes, words = rows.words("outcome")
+    found = []
+    for c, (condition, state) in enumerate(rows.cases):
+        for code, outcome in enumerate(words):
+            here = codes[:, c] == code
+            if here.any():
+                found.append(
+                    {
+                        "condition": condition,
+                        "state": state,
+                        "outcome": outcome,
+                        **_counted(rows.unit, here, confidence),
+                        "failed": int((here & failed[:, c]).sum()),
+                    }
+                )
+    return found
+
+
+def _limits(study: Study, rows: UnitRows, confidence: float) -> list[dict[str, Any]]:
+    codes, words = rows.words("failed_limits")
+    broken = [{int(number) for number in word.split(";") if number} for word in words]
+    by_limit: dict[int, list[Bound]] = {}
+    for bound in bounds(study):
+        by_limit.setdefault(bound.limit, []).append(bound)
+    found = []
+    for index, limit in enumerate(study.limits):
+        here = np.isin(codes, [code for code, numbers in enumerate(broken) if index in numbers])
+        own = by_limit.get(index, [])
+        found.append(
+            {
+                "limit": index,
+                "rule": limit.rule,
+                "figure": limit.figure,
+                "title": own[0].figure.title if own else limit.figure,
+                "unit_of_measure": own[0].figure.unit_of_measure if own else "1",
+                "parts": [bound.part for bound in own if bound.part],
+                "states": list(limit.states),
+                "conditions": list(limit.conditions),
+                "bound": {
+                    "at_most": limit.at_most,
+                    "at_least": limit.at_least,
+                    "share_of_rating": limit.share_of_rating,
+                },
+                **_counted(rows.unit, _in_any_case(here), confidence),
+                "by_case": [
+                    {"condition": condition, "state": state, "units": int(here[:, c].sum())}
+                    for c, (condition, state) in enumerate(rows.cases)
+                    if applies(limit, condition, state)
+                ],
+                "by_part": _by_part(rows, own, here) if here.any() else [],
+            }
+        )
+    return found
+
+
+def _by_part(rows: UnitRows, own: list[Bound], here: Flags) -> list[dict[str, Any]]:
+    """How many of the failing units each part of a limit accounts for, most first."""
+    found = []
+    for bound in own:
+        if bound.part and bound.column in rows.source.names:
+            values = rows.figure(bound.column)
+            beyond = np.zeros(values.shape, bool)
+            if bound.at_most is not None:
+                beyond |= values > bound.at_most
+            if bound.at_least is not None:
+                beyond |= values < bound.at_least
+            count = int((beyond & here).any(axis=1).sum())
+            if count:
+                found.append({"part": bound.part, "units": count})
+    return sorted(found, key=lambda entry: -int(str(entry["units"])))
+
+
+def _figures(
+    study: Study, rows: UnitRows, nominal: Nominal, confidence: float
+) -> list[dict[str, Any]]:
+    limits: dict[str, list[Bound]] = {}
+    for bound in bounds(study):
+        limits.setdefault(bound.column, []).append(bound)
+    found = []
+    for column in rows.figure_columns:
+        named = named_figure(study, column)
+        if named is None:
+            continue
+        part, figure = named
+        values = rows.figure(column)
+        for c, (condition, state) in enumerate(rows.cases):
+            if not np.isfinite(values[:, c]).any():
+                continue
+            rating = rating_of(study, part, figure)
+            found.append(
+                {
+                    "figure": figure.name,
+                    "title": figure.title,
+                    "part": part,
+                    "condition": condition,
+                    "state": state,
+                    "unit_of_measure": figure.unit_of_measure,
+                    "worse": figure.worse,
+                    "nominal": nominal.get((condition, state), {}).get(column),
+                    **_spread(values[:, c], figure, confidence, rating),
+                    **_limit_of(study, limits.get(column, []), figure, condition, state),
+                }
+            )
+    return found
+
+
+def _spread(
+    values: Floats, figure: FigureInfo, confidence: float, rating: float | None
+) -> dict[str, Any]:
+    found = percentiles(values, list(SHARES.values()), confidence)
+    at = dict(zip(SHARES, found.value.tolist(), strict=True))
+    worst = at["p99" if figure.worse == "high" else "p1"]
+    return {
+        "units": found.units,
+        "missing": found.missing,
+        **at,
+        "interval": {
+            name: [low, high] for name, low, high in zip(SHARES, found.low, found.high, strict=True)
+        },
+        "bound_95": tolerance_bound(values, 0.95, confidence, figure.worse),
+        "lowest": float(np.nanmin(values)),
+        "highest": float(np.nanmax(values)),
+        "rating": rating,
+        "share_of_rating": worst / rating if rating else None,
+    }
+
+
+def _limit_of(
+    study: Study, own: list[Bound], figure: FigureInfo, condition: str, state: str
+) -> dict[str, Any]:
+    """Tightest limits on a figure in one case; the one on its worse side is `limit`."""
+    here = [bound for bound in own if applies(study.limits[bound.limit], condition, state)]
+    tops = [bound for bound in here if bound.at_most is not None]
+    floors = [bound for bound in here if bound.at_least is not None]
+    top = min(tops, key=lambda bound: bound.at_most or 0.0, default=None)
+    floor = max(floors, key=lambda bound: bound.at_least or 0.0, default=None)
+    chosen = (top or floor) if figure.worse == "high" else (floor or top)
+    return {
+        "limit": None if chosen is None else chosen.at_most if chosen is top else chosen.at_least,
+        "limit_side": None if chosen is None else "at_most" if chosen is top else "at_least",
+        "rule": None if chosen is None else study.limits[chosen.limit].rule,
+        "at_most": None if top is None else top.at_most,
+        "at_least": None if floor is None else floor.at_least,
+    }
+
+
+def _plain(value: Any) -> Any:  # noqa: ANN401 - any value JSON may hold
+    """Plain Python values; what is not a finite number becomes None."""
+    if isinstance(value, Mapping):
+        return {str(key): _plain(entry) for key, entry in value.items()}
+    if isinstance(value, list | tuple | np.ndarray):
+        return [_plain(entry) for entry in value]
+    if isinstance(value, np.bool_ | bool):
+        return bool(value)
+    if isinstance(value, np.integer):
+        return int(value)
+    if isinstance(value, float | np.floating):
+        return float(value) if np.isfinite(value) else None
+    return value
