@@ -97,6 +97,19 @@ class Problem:
     nearest: str = ""
     cure: str = ""
 
+    @classmethod
+    def of(cls, mistake: Mistake, file: str, table: str, key: str = "", got: str = "") -> Problem:
+        """A mistake with its place; `key` and `got` are used where it names none itself."""
+        return cls(
+            file,
+            table,
+            mistake.key or key,
+            mistake.got or got,
+            mistake.expected,
+            mistake.nearest,
+            mistake.cure,
+        )
+
     def place(self) -> str:
         """Name the place as `file [table] key`."""
         table = f"[{self.table}]" if self.table else ""

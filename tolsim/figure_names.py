@@ -7,7 +7,7 @@ stage and "REF.name" for a part: "frequency", "C1.voltage_peak".
 
 from __future__ import annotations
 
-from collections.abc import Mapping
+from collections.abc import Mapping, Sequence
 from dataclasses import dataclass
 from typing import Final, Literal
 
@@ -122,7 +122,7 @@ _PARTS: Final = [
     *_of("potentiometer", _DISSIPATION),
     *_of(
         "load",
-        _DISSIPATION,
+        ("dissipation", "Dissipation", "W", None, "Mean power taken by the loop of the load."),
         (*_CURRENT_RMS, None, "In the loop of the load."),
         (*_VOLTAGE_PEAK, None, "Across the resistance of the loop."),
     ),
@@ -196,3 +196,30 @@ def figures_of(owner: str) -> tuple[FigureInfo, ...]:
 def figure_of(owner: str, name: str) -> FigureInfo | None:
     """Figure `name` of `owner`, or None if it has no such figure."""
     return FIGURES.get(name if owner == STAGE else f"{owner}.{name}")
+
+
+def targets(
+    name: str, refs: Sequence[str], kinds: Mapping[str, str]
+) -> tuple[tuple[str, FigureInfo], ...]:
+    """Whose figure a limit or ranking means.
+
+    Parameters
+    ----------
+    name : str
+        Figure as users write it.
+    refs : sequence of str
+        Parts or rails named; none named means the stage if it has this figure, else every
+        part that has it.
+    kinds : mapping
+        Owner of every part and rail: {"C1": "capacitor", "vdd": "rail"}.
+
+    Returns
+    -------
+    tuple of (str, FigureInfo)
+        Part or rail ("" for the stage) and figure, in the order of `refs` or `kinds`.
+    """
+    stage = figure_of(STAGE, name)
+    if not refs and stage is not None:
+        return (("", stage),)
+    pairs = ((ref, figure_of(kinds[ref], name)) for ref in refs or kinds if ref in kinds)
+    return tuple((ref, info) for ref, info in pairs if info is not None)

@@ -11,8 +11,8 @@ in study files, factors, part values and reports.
 
 from __future__ import annotations
 
-from collections.abc import Collection, Iterator
-from typing import Annotated, ClassVar, Literal, Self
+from collections.abc import Collection, Iterator, Mapping
+from typing import Annotated, ClassVar, Literal, Self, get_args
 
 from pydantic import Field, model_validator
 
@@ -323,3 +323,9 @@ AnyPart = Annotated[
     | Load,
     Field(discriminator="kind"),
 ]
+
+PART_KINDS: Mapping[str, type[Part]] = {
+    get_args(record.model_fields["kind"].annotation)[0]: record
+    for record in get_args(get_args(AnyPart)[0])
+}
+"""Record of each kind, by the word used in study files."""

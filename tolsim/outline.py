@@ -1,0 +1,76 @@
+"""A study as written, for checks that compare one table with another.
+
+Such checks must work although some values could not be read, because every mistake of a
+file is told at once.  So they look at this outline of raw tables, not at the records.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Collection, Mapping, Sequence
+from dataclasses import dataclass
+from typing import Any
+
+from tolsim.errors import Problem, nearest_name
+from tolsim.figure_names import RAIL
+from tolsim.plain_words import written
+
+Table = Mapping[str, Any]
+
+
+@dataclass(frozen=True)
+class Outline:
+    """Raw tables of a study file, each known to be a table.
+
+    Attributes
+    ----------
+    file : str
+        File name for messages.
+    driven : bool
+        True if the study says kind = "driven".
+    parts, rails, states, conditions : mapping of str to table
+        By name.
+    limits, rank : sequence
+        Tables of limits, texts of rankings.
+    kinds : mapping of str to str
+        Kind of every part whose kind is known, "rail" for rails.
+    tables : mapping of str to collection of str
+        Kinds that each known spread table is for.
+    """
+
+    file: str
+    driven: bool
+    parts: Mapping[str, Table]
+    rails: Mapping[str, Table]
+    states: Mapping[str, Table]
+    conditions: Mapping[str, Table]
+    limits: Sequence[Table]
+    rank: Sequence[str]
+    kinds: Mapping[str, str]
+    tables: Mapping[str, Collection[str]]
+
+    def problem(self, table: str, key: str, got: str, expected: str, cure: str = "") -> Problem:
+        """A mistake of this file."""
+        return Problem(self.file, table, key, got, expected, "", cure)
+
+    def unknown(
+        self, table: str, key: str, name: object, what: str, valid: Sequence[str], cure: str = ""
+    ) -> Problem:
+        """A name that is not among `valid`: tell the nearest, or all if none is near."""
+        near = nearest_name(str(name), valid)
+        if not (near or cure):
+            cure = f"Known here: {', '.join(valid)}." if valid else "None is known here."
+        return Problem(self.file, table, key, written(name), what, near, "" if near else cure)
+
+
+def kinds_of(
+    parts: Mapping[str, Table], rails: Mapping[str, Table], known: Collection[str]
+) -> dict[str, str]:
+    """Kind of every part whose kind is known, and "rail" for rails."""
+    kinds = {ref: part["kind"] for ref, part in parts.items() if part.get("kind") in known}
+    return kinds | dict.fromkeys(rails, RAIL)
+
+
+def texts(table: Table, key: str) -> list[str]:
+    """The texts in list `key` of a table; whatever else stands there is told elsewhere."""
+    value = table.get(key, [])
+    return [item for item in value if isinstance(item, str)] if isinstance(value, list) else []

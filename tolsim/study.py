@@ -1,0 +1,173 @@
+"""From the text of a study file to a checked `Study`: the only module that reads studies.
+
+    title = "..."                    scenario, kind, expected_frequency, leak
+    [run]                            units, seed, confidence, steps_per_cycle, rank
+    [rails.vdd]                      net, voltage, ...
+    [parts.C1]                       kind, nets, values, ratings, spread table
+    [states.full]                    title, starts_here, values, spread
+    [conditions.hot]                 ambient, supply, age, board_rise
+    [[limits]]                       figure, parts, at_most | at_least | share_of_rating, rule
+
+Quantities are texts with a unit of measure.  Every mistake of a file is told at once.
+"""
+
+from __future__ import annotations
+
+import re
+import tomllib
+from collections.abc import Collection, Iterable, Mapping
+from pathlib import Path
+from typing import Annotated, Any, Literal
+
+from tolsim.design import Condition, Design, Rail, Run, State, Study
+from tolsim.errors import Mistake, Problem, StudyError
+from tolsim.limit_checks import limit_problems
+from tolsim.net_checks import net_problems
+from tolsim.outline import Table
+from tolsim.quantity import Frequency, Leak
+from tolsim.records import Frozen
+from tolsim.spread import load_tables
+from tolsim.study_checks import coupling_problems, study_problems
+from tolsim.study_reading import Reading
+
+_CONDITION_UNITS = {"ambient": "degC", "supply": "1", "age": "h"}
+_PLACE = re.compile(r" \(at (line \d+, column \d+|end of document)\)$")
+
+
+def _rising(band: tuple[float, float]) -> tuple[float, float]:
+    if band[0] >= band[1]:
+        raise Mistake("the lower frequency first")
+    return band
+
+
+class _Top(Frozen):
+    """The file as a whole; its sections are read one table at a time."""
+
+    title: str
+    scenario: str = ""
+    kind: Literal["self-oscillating", "driven"] = "self-oscillating"
+    expected_frequency: Annotated[tuple[Frequency, Frequency], AfterValidator(_rising)] | None = (
+        None
+    )
+    leak: Leak = 1e-8
+    run: Run = Run()
+    rails: Mapping[str, Any] = {}
+    parts: Mapping[str, Any] = {}
+    states: Mapping[str, Any] = {}
+    conditions: Mapping[str, Any] = {}
+    limits: tuple[Any, ...] = ()
+
+
+def load_study(path: Path | str, tables_dir: Path | str | None = None) -> Study:
+    """Read and check a study file.
+
+    Parameters
+    ----------
+    path : path
+        TOML file.
+    tables_dir : path, optional
+        Folder of spread tables, searched after the study's own folder and before the
+        shipped ones.
+
+    Returns
+    -------
+    Study
+
+    Raises
+    ------
+    StudyError
+        With every mistake in the file, or in the spread tables within reach.
+    """
+    path = Path(path)
+    try:
+        text = path.read_bytes().decode("utf-8")
+    except OSError as error:
+        cure = "Check the name of the file."
+        raise _only(path.name, error.strerror or str(error), "a study file", cure) from None
+    except UnicodeDecodeError as error:
+        got = f"byte {error.start} in another encoding"
+        raise _only(path.name, got, "text in UTF-8", "Save the file as UTF-8.") from None
+    tables = load_tables(path, None if tables_dir is None else Path(tables_dir))
+    return read_study(text, {name: table.kinds for name, table in tables.items()}, path.name)
+
+
+def read_study(text: str, tables: Mapping[str, Collection[str]], file: str = "study") -> Study:
+    """Read and check the text of a study.
+
+    Parameters
+    ----------
+    text : str
+        TOML.
+    tables : mapping
+        Known spread tables: name to the kinds of part each is for.
+    file : str
+        File name for messages.
+
+    Returns
+    -------
+    Study
+
+    Raises
+    ------
+    StudyError
+        With every mistake.
+    """
+    raw = _parsed(text, file)
+    reading = Reading(file, raw)
+    top = reading.record(_Top, raw, "")
+    outline = reading.outline(tables)
+    rails = reading.records(outline.rails, "rails", Rail)
+    parts = reading.parts(outline)
+    states = reading.states(outline)
+    conditions = reading.conditions(outline)
+    limits = reading.limits(outline)
+    values = {name: state.values for name, state in states.items()}
+    reading.problems += study_problems(outline)
+    reading.problems += net_problems(outline)
+    reading.problems += coupling_problems(outline, parts, values)
+    reading.problems += limit_problems(outline)
+    if reading.problems or top is None:
+        raise StudyError(_in_file_order(reading.problems, raw))
+    return Study(
+        title=top.title,
+        scenario=top.scenario,
+        design=Design(parts=parts, rails=rails, leak=top.leak),
+        states=states or {"normal": State(starts_here=top.kind == "self-oscillating")},
+        conditions=conditions or {"room": Condition()},
+        limits=limits,
+        run=top.run,
+        expected_frequency=top.expected_frequency,
+        kind=top.kind,
+    )
+
+
+def _parsed(text: str, file: str) -> dict[str, Any]:
+    try:
+        return tomllib.loads(text)
+    except tomllib.TOMLDecodeError as error:
+        reason = str(error)
+        place = _PLACE.search(reason)
+        key = place[1] if place else ""
+        got = _PLACE.sub("", reason)
+        cure = "Texts stand in quotes, lists in brackets, one key = value to a line."
+        raise StudyError([Problem(file, "", key, got, "valid TOML", "", cure)]) from None
+
+
+def _only(file: str, got: str, expected: str, cure: str) -> StudyError:
+    return StudyError([Problem(file, "", "", got, expected, "", cure)])
+
+
+def _in_file_order(problems: Iterable[Problem], raw: Table) -> list[Problem]:
+    """Problems in the order in which their tables stand in the file, each once."""
+    places = [""]
+    for section, content in raw.items():
+        places.append(section)
+        if isinstance(content, dict):
+            places += [f"{section}.{name}" for name in content]
+
+    def height(problem: Problem) -> tuple[int, int]:
+        table, _, number = problem.table.partition(" #")
+        above = [n for n, place in enumerate(places) if f"{table}.".startswith(f"{place}.")]
+        return max(above, default=0), int(number or 0)
+
+    return sorted(dict.fromkeys(problems), key=height)
