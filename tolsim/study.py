@@ -19,6 +19,8 @@ from collections.abc import Collection, Iterable, Mapping
 from pathlib import Path
 from typing import Annotated, Any, Literal
 
+from pydantic import AfterValidator
+
 from tolsim.design import Condition, Design, Rail, Run, State, Study
 from tolsim.errors import Mistake, Problem, StudyError
 from tolsim.limit_checks import limit_problems
