@@ -11,7 +11,6 @@ from typing import Annotated, Any, Literal
 
 from pydantic import Field
 
-from tolsim.figure_names import RAIL, FigureInfo, targets
 from tolsim.parts import AnyPart, Net
 from tolsim.quantity import (
     Age,
@@ -50,29 +49,6 @@ class Design(Frozen):
     parts: Mapping[str, AnyPart]
     rails: Mapping[str, Rail]
     leak: Leak = 1e-8  # S, from every net to ground
-
-    def kinds(self) -> dict[str, str]:
-        """Kind of every part, and "rail" for every rail."""
-        return {ref: part.kind for ref, part in self.parts.items()} | dict.fromkeys(
-            self.rails, RAIL
-        )
-
-    def targets(self, limit: Limit) -> tuple[tuple[str, FigureInfo], ...]:
-        """Part or rail ("" for the stage) and figure, for all that `limit` bounds.
-
-        A share of the rating bounds only figures that are compared with a rating.
-        """
-        found = targets(limit.figure, limit.parts, self.kinds())
-        if limit.share_of_rating is None:
-            return found
-        return tuple((ref, info) for ref, info in found if info.rating is not None)
-
-    def rating(self, ref: str, info: FigureInfo) -> float | None:
-        """Rating of part `ref` that the figure is compared with; None if there is none."""
-        if info.rating is None or ref not in self.parts:
-            return None
-        rating: float | None = getattr(self.parts[ref].rating, info.rating)
-        return rating
 
 
 class State(Frozen):

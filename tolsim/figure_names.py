@@ -208,8 +208,7 @@ def targets(
     name : str
         Figure as users write it.
     refs : sequence of str
-        Parts or rails named; none named means the stage if it has this figure, else every
-        part that has it.
+        Parts or rails named; none named means the stage and every part that has the figure.
     kinds : mapping
         Owner of every part and rail: {"C1": "capacitor", "vdd": "rail"}.
 
@@ -218,8 +217,6 @@ def targets(
     tuple of (str, FigureInfo)
         Part or rail ("" for the stage) and figure, in the order of `refs` or `kinds`.
     """
-    stage = figure_of(STAGE, name)
-    if not refs and stage is not None:
-        return (("", stage),)
-    pairs = ((ref, figure_of(kinds[ref], name)) for ref in refs or kinds if ref in kinds)
+    owners = {"": STAGE, **kinds}
+    pairs = ((ref, figure_of(owners[ref], name)) for ref in refs or owners if ref in owners)
     return tuple((ref, info) for ref, info in pairs if info is not None)

@@ -75,7 +75,7 @@ def limit_problems(outline: Outline) -> Iterator[Problem]:
         if ref and ref not in outline.kinds:
             yield _unknown_part(outline, "run", "rank", ref)
         elif not ref and unit_of(figure) is not None and not _stage_has(figure):
-            example = next((ref for ref, _ in targets(figure, (), outline.kinds)), "Q1")
+            example = next((ref for ref, _ in targets(figure, (), outline.kinds)), "REF")
             yield outline.problem(
                 "run", "rank", f'"{item}"', "a part and its figure", f'Write "{example}.{figure}".'
             )
