@@ -1,0 +1,139 @@
+"""The circuit of N units as arrays: linear matrices, ports, devices.
+
+Modified nodal analysis with unknowns x = net voltages and inductor currents, shape (N, n):
+
+    d/dt [ E x + P q(v) ] + F x + P f(v) = b(t),      v = D x + v0,   P = D'
+
+E, F (N, n, n); D (p, n) is the same for every unit; b = `source` + `drive_matrix` u(phase) with
+u the periodic drive waveforms.  Nets held by an ideal supply are not unknowns: their voltages
+stand in `source` and v0.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Mapping
+from dataclasses import dataclass, replace
+
+import numpy as np
+from numpy.typing import NDArray
+
+from tolsim.circuit.devices import Devices, Floats, Ints
+
+
+@dataclass(frozen=True)
+class SupplyCurrent:
+    """Current a rail delivers: row . x + offset + through . f (conduction only, A)."""
+
+    row: Floats  # (N, n)
+    offset: Floats  # (N,)
+    through: Floats  # (p,)
+    volts: Floats  # (N,) voltage of the ideal source
+
+    def at(self, x: Floats, f: Floats) -> Floats:
+        """Current (..., N) for states (..., N, n) and port currents (..., N, p)."""
+        return np.einsum("...un,un->...u", x, self.row) + self.offset + f @ self.through
+
+    def take(self, units: Ints) -> SupplyCurrent:
+        return replace(
+            self, row=self.row[units], offset=self.offset[units], volts=self.volts[units]
+        )
+
+
+@dataclass(frozen=True)
+class Network:
+    """N units of one topology, ready for every solver."""
+
+    E: Floats  # (N, n, n)
+    F: Floats  # (N, n, n)
+    D: Floats  # (p, n)
+    v0: Floats  # (N, p)
+    source: Floats  # (N, n)
+    devices: Devices
+    index: Mapping[str, int]  # "net" or "L1" (inductor current) -> position in x
+    branches: frozenset[str]  # the names in `index` that are currents
+    ports: Mapping[str, int]  # "Q1:gs" -> port
+    known: Mapping[str, Floats]  # nets of fixed voltage -> (N,)
+    supplies: Mapping[str, SupplyCurrent]  # rail name -> its current
+    series_conductance: Mapping[str, Floats]  # inner net "Q1:drain" -> (N,) S to its outer net
+    drive_matrix: Floats | None = None  # (N, n, d)
+    drive_shape: DriveShape | None = None
+    drive_frequency: float | None = None
+
+    @property
+    def units(self) -> int:
+        return int(self.E.shape[0])
+
+    @property
+    def states(self) -> int:
+        return int(self.E.shape[1])
+
+    def take(self, units: Ints) -> Network:
+        """The same circuit for some of the units (indices, repeats allowed)."""
+        return replace(
+            self,
+            E=self.E[units],
+            F=self.F[units],
+            v0=self.v0[units],
+            source=self.source[units],
+            devices=self.devices.take(units),
+            known={net: volts[units] for net, volts in self.known.items()},
+            supplies={rail: supply.take(units) for rail, supply in self.supplies.items()},
+            series_conductance={net: g[units] for net, g in self.series_conductance.items()},
+            drive_matrix=None if self.drive_matrix is None else self.drive_matrix[units],
+            drive_shape=None if self.drive_shape is None else self.drive_shape.take(units),
+        )
+
+    def port_voltages(self, x: Floats) -> Floats:
+        """v = D x + v0 for x of shape (..., N, n)."""
+        return x @ self.D.T + self.v0
+
+    def potential(self, net: str, x: Floats) -> Floats:
+        """Voltage of a net for x of shape (..., N, n)."""
+        if net in self.index:
+            return x[..., self.index[net]]
+        return np.broadcast_to(self.known[net], x.shape[:-1])
+
+    def source_at(self, phase: float) -> Floats:
+        """b at a phase of the drive period, (N, n)."""
+        if self.drive_matrix is None or self.drive_shape is None:
+            return self.source
+        levels = self.drive_shape.at(phase)
+        return self.source + np.einsum("und,ud->un", self.drive_matrix, levels)
+
+    def mean_source(self) -> Floats:
+        """b averaged over a drive period (a constant where there is no drive), (N, n)."""
+        if self.drive_matrix is None:
+            return self.source
+        phases = np.arange(64) / 64
+        return np.mean([self.source_at(phase) for phase in phases], axis=0)
+
+
+@dataclass(frozen=True)
+class DriveShape:
+    """Periodic waveforms of d drive sources: square with cosine edges, or sine.
+
+    `edge` is the rise time as a share of the period; a square wave crosses its middle at
+    phase 0 (rising) and at phase `duty` (falling).
+    """
+
+    low: Floats  # (N, d)
+    high: Floats  # (N, d)
+    duty: NDArray[np.float64]  # (d,)
+    edge: NDArray[np.float64]  # (d,)
+    sine: NDArray[np.bool_]  # (d,)
+
+    def at(self, phase: float) -> Floats:
+        """Source voltages (N, d) at a phase in periods."""
+        turn = phase % 1.0
+        half = np.maximum(self.edge / 2, 1e-12)
+
+        def risen(distance: Floats) -> Floats:
+            return 0.5 + 0.5 * np.sin(0.5 * np.pi * np.clip(distance / half, -1.0, 1.0))
+
+        # the rising edge around phase 0 is seen from both ends of the period
+        square = risen(np.full_like(half, turn)) - risen(turn - self.duty) + risen(turn - 1.0 + 0 * half)
+        wave = np.where(self.sine, 0.5 + 0.5 * np.sin(2 * np.pi * turn), square)
+        return self.low + (self.high - self.low) * wave
+
+    def take(self, units: Ints) -> DriveShape:
+        return replace(self, low=self.low[units], high=self.high[units])

@@ -1,0 +1,212 @@
+"""Does the stage start by itself?  Modes of the circuit linearised at its bias point.
+
+With J = F + P G P' and C = E + P C_v P' the small-signal equation is C dx/dt + J x = 0, and a mode
+e^(lambda t) solves J x = -lambda C x.  C is singular (nets without capacitance), so the pencil is
+inverted about a real shift sigma of the order of the oscillation: mu = eig((J + sigma C)^-1 C),
+lambda = sigma - 1/mu; the algebraic modes fall on mu = 0 and drop out.
+
+The start margin is the factor on every transconductance, in dB, at which the growth of the
+oscillation mode vanishes (bias point held): positive means it starts.
+"""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+
+import numpy as np
+from numpy.typing import NDArray
+
+from tolsim.circuit.bias import Bias
+from tolsim.circuit.devices import Floats
+from tolsim.circuit.network import Network
+
+Complexes = NDArray[np.complex128]
+
+BOLTZMANN = 1.380649e-23  # J/K, exact (SI 2019)
+MARGIN_STEPS_DB = (6.0, 14.0, 30.0, 60.0)  # outward search for the sign change
+MARGIN_ROUNDS = 12
+MARGIN_TOLERANCE_DB = 0.005
+NEAR_MODE = (0.4, 2.5)  # |lambda| window, relative to the reference, that belongs to the mode
+
+
+@dataclass(frozen=True)
+class Modes:
+    """The oscillation mode of each unit, and every other one."""
+
+    growth: Floats  # (N,) 1/s, real part of the leading mode
+    frequency: Floats  # (N,) Hz; 0 for a mode that grows without oscillating
+    vector: Complexes  # (N, n) its shape
+    eigenvalues: Complexes  # (N, n) all, -inf for algebraic ones
+
+    @property
+    def starts(self) -> NDArray[np.bool_]:
+        return self.growth > 0
+
+
+def small_signal(network: Network, bias: Bias) -> tuple[Floats, Floats, Floats]:
+    """C, J and the transconductance part of J, each (N, n, n)."""
+    D = network.D
+    through = bias.G.copy()
+    diagonal = np.arange(through.shape[1])
+    through[:, diagonal, diagonal] = 0.0  # only transistors couple one port to another
+    return (
+        network.E + D.T @ bias.C @ D,
+        network.F + D.T @ bias.G @ D,
+        D.T @ through @ D,
+    )
+
+
+def modes(network: Network, bias: Bias, sigma: float) -> Modes:
+    """All modes of every unit and the leading one.
+
+    Parameters
+    ----------
+    sigma : float, 1/s
+        Shift, of the order of the oscillation's angular frequency.
+    """
+    C, J, _ = small_signal(network, bias)
+    mu, vectors = np.linalg.eig(np.linalg.solve(J + sigma * C, C))
+    eigenvalues = _unshift(mu, sigma)
+    lead = np.argmax(_rank(eigenvalues, sigma), axis=1)
+    units = np.arange(network.units)
+    value = eigenvalues[units, lead]
+    return Modes(
+        growth=value.real,
+        frequency=np.abs(value.imag) / (2 * np.pi),
+        vector=vectors[units, :, lead].astype(complex),
+        eigenvalues=eigenvalues,
+    )
+
+
+def _unshift(mu: Complexes, sigma: float) -> Complexes:
+    """lambda = sigma - 1/mu, algebraic modes to -infinity."""
+    finite = np.abs(mu) > 1e-9 / sigma * 1e-3
+    safe = np.where(finite, mu, 1.0)
+    return np.where(finite, sigma - 1.0 / safe, -np.inf).astype(complex)
+
+
+def _rank(eigenvalues: Complexes, sigma: float) -> Floats:
+    """Order of leadership: growing modes first, then the least damped oscillating one.
+
+    A decaying real mode never leads: the slowest one is only a charge trapped between capacitors.
+    """
+    real = np.where(np.isfinite(eigenvalues.real), eigenvalues.real, -np.inf)
+    oscillates = np.abs(eigenvalues.imag) > 1e-6 * sigma
+    return np.where(oscillates | (real > 1e-6 * sigma), real, -np.inf)
+
+
+def start_margin(network: Network, bias: Bias, reference: float) -> Floats:
+    """Margin of every unit in dB, within +-60 dB.
+
+    Parameters
+    ----------
+    reference : float, rad/s
+        Angular frequency of the nominal oscillation mode.
+    """
+    C, J, through = small_signal(network, bias)
+
+    def growth(decibel: Floats, units: NDArray[np.intp]) -> Floats:
+        factor = 10.0 ** (-decibel / 20.0)
+        scaled = J[units] + (factor - 1.0)[:, None, None] * through[units]
+        mu = np.linalg.eigvals(np.linalg.solve(scaled + reference * C[units], C[units]))
+        return _mode_growth(_unshift(mu.astype(complex), reference), reference) / reference
+
+    every = np.arange(network.units)
+    here = np.zeros(network.units)
+    g_here = growth(here, every)
+    upward = np.where(g_here > 0, 1.0, -1.0)  # a starting unit is weakened, a dead one strengthened
+    low, g_low = here.copy(), g_here.copy()
+    high, g_high = here.copy(), g_here.copy()
+    open_units = every
+    for step in MARGIN_STEPS_DB:
+        trial = upward[open_units] * step
+        g_trial = growth(trial, open_units)
+        crossed = g_trial * g_here[open_units] <= 0
+        low[open_units], g_low[open_units] = high[open_units], g_high[open_units]
+        high[open_units], g_high[open_units] = trial, g_trial
+        open_units = open_units[~crossed]
+        if not open_units.size:
+            break
+    margin = upward * MARGIN_STEPS_DB[-1]
+    bracketed = np.setdiff1d(every, open_units)
+    margin[bracketed] = _refine(growth, bracketed, low, g_low, high, g_high)
+    return margin
+
+
+def _refine(
+    growth: object, units: NDArray[np.intp], low: Floats, g_low: Floats, high: Floats, g_high: Floats
+) -> Floats:
+    """Bracketed secant (Illinois rule) on the growth, all units together."""
+    a, fa, b, fb = low[units], g_low[units], high[units], g_high[units]
+    last = np.zeros(len(units))
+    middle = 0.5 * (a + b)
+    for _ in range(MARGIN_ROUNDS):
+        slope = np.where(fb == fa, 1.0, fb - fa)
+        middle = np.where(fb == fa, 0.5 * (a + b), b - fb * (b - a) / slope)
+        f = growth(middle, units)  # type: ignore[operator]
+        replaces_b = f * fa < 0
+        # the end that stays twice in a row loses half its weight
+        fa = np.where(replaces_b & (last > 0), 0.5 * fa, fa)
+        fb = np.where(~replaces_b & (last < 0), 0.5 * fb, fb)
+        last = np.where(replaces_b, 1.0, -1.0)
+        move = np.where(replaces_b, np.abs(middle - b), np.abs(middle - a))
+        b, fb = np.where(replaces_b, middle, b), np.where(replaces_b, f, fb)
+        a, fa = np.where(replaces_b, a, middle), np.where(replaces_b, fa, f)
+        if move.max(initial=0.0) < MARGIN_TOLERANCE_DB:
+            break
+    return middle
+
+
+def _mode_growth(eigenvalues: Complexes, reference: float) -> Floats:
+    """Largest real part among modes near the reference frequency or growing without oscillation."""
+    size = np.abs(eigenvalues)
+    near = (size > NEAR_MODE[0] * reference) & (size < NEAR_MODE[1] * reference)
+    oscillates = np.abs(eigenvalues.imag) > 1e-3 * reference
+    bursts_out = ~oscillates & (eigenvalues.real > 1e-3 * reference)
+    real = np.where((near & oscillates) | bursts_out, eigenvalues.real, -np.inf)
+    best = real.max(axis=1)
+    return np.where(np.isfinite(best), best, -reference)
+
+
+def noise_amplitude(network: Network, bias: Bias, vector: Complexes, ambient_c: Floats) -> Floats:
+    """Thermal amplitude of a mode relative to its largest port voltage, V.
+
+    Equipartition: the mode stores k T / 2 per quadratic term, so its port amplitude is
+    sqrt(k T / C_eff) with C_eff = x* C x / |x_port|^2 (Nyquist, Phys. Rev. 32 (1928) 110).
+    """
+    C, _, _ = small_signal(network, bias)
+    energy = np.einsum("ui,uij,uj->u", vector.conj(), C, vector).real
+    swing = np.abs(vector @ network.D.T).max(axis=1)
+    capacitance = np.abs(energy) / np.maximum(swing, 1e-300) ** 2
+    return np.sqrt(BOLTZMANN * (ambient_c + 273.15) / np.maximum(capacitance, 1e-15))
+
+
+def resemblance(network: Network, vector: Complexes, reference: Complexes) -> Floats:
+    """How alike two mode shapes are, 0 to 1 (modal assurance criterion on port voltages).
+
+    R. J. Allemang, D. L. Brown, "A correlation coefficient for modal vector analysis",
+    Proc. 1st Int. Modal Analysis Conf. (1982) 110-116.
+
+    Parameters
+    ----------
+    vector : (N, n)
+    reference : (n,)
+    """
+    mine = vector @ network.D.T
+    other = reference @ network.D.T
+    overlap = np.abs(mine @ other.conj()) ** 2
+    return overlap / np.maximum(
+        np.sum(np.abs(mine) ** 2, axis=1) * np.sum(np.abs(other) ** 2), 1e-300
+    )
+
+
+def typical_shift(network: Network, bias: Bias) -> float:
+    """A first shift for the nominal unit: the fastest oscillation it can have, by coarse search."""
+    best, growth = 1e7, -np.inf
+    for sigma in np.geomspace(1e4, 1e10, 13):
+        found = modes(network, bias, float(sigma))
+        omega = 2 * np.pi * found.frequency[0]
+        # trust a mode only where the shift is of its own order
+        if 0.1 * sigma < omega < 10 * sigma and found.growth[0] / omega > growth:
+            best, growth = float(omega), float(found.growth[0] / omega)
+    return best
