@@ -1,0 +1,170 @@
+"""A law as tables write it, `{law = "uniform", half_width = "5 %"}`, to a `Law`.
+
+Every mistake is reported, not only the first, so that one look at the file cures it.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Callable, Mapping
+from dataclasses import MISSING, fields
+from typing import Any, Final
+
+from tolsim import quantity
+from tolsim.errors import Mistake, nearest_name
+from tolsim.laws import LAWS, Fixed, Law, LogNormal, SortedOut
+
+Report = Callable[[Mistake], None]
+
+_WIDTHS: Final = frozenset({"sigma", "half_width", "removed"})
+_PURE: Final = frozenset({"below"})
+_HALF_WIDTH_HELP: Final = 'Give low and high, or half_width: {law = "uniform", half_width = "5 %"}.'
+
+
+def read_law(given: object, unit: str, report: Report, *, relative: bool = False) -> Law | None:
+    """Law that a table or study states.
+
+    Parameters
+    ----------
+    given : mapping, text or number
+        `{law = NAME, ...}`; a lone value means a `Fixed` law.
+    unit : str
+        Unit of measure of the values, as `quantity.read` takes it ("1", "1/K", "V", "degC").
+        Bare numbers are allowed for "1" only.
+    report : callable
+        Called with every `Mistake` found; its key names the parameter.
+    relative : bool
+        True for relative deviations: a lognormal law then describes the factor 1 + x.
+
+    Returns
+    -------
+    Law or None
+        None if a mistake was reported.
+    """
+    if not isinstance(given, Mapping):
+        value = _number(given, unit, "value", report)
+        return None if value is None else Fixed(value)
+    name = given.get("law")
+    kind = LAWS.get(name) if isinstance(name, str) else None
+    if kind is None:
+        report(
+            Mistake(
+                "one of " + ", ".join(LAWS),
+                key="law",
+                got=f'"{name}"' if name is not None else "nothing",
+                nearest=nearest_name(str(name), list(LAWS)),
+            )
+        )
+        return None
+    words = {key: value for key, value in given.items() if key != "law"}
+    if kind is LogNormal and relative:
+        words = {"median": 0.0, "origin": -1.0, **words}
+    return _build(kind, words, unit, report, relative=relative)
+
+
+def _build(
+    kind: type[Law], words: Mapping[str, object], unit: str, report: Report, *, relative: bool
+) -> Law | None:
+    """Make a law of class `kind` from its parameters as written."""
+    valid = [field.name for field in fields(kind)]
+    shorthand = ["half_width"] if {"low", "high"} <= set(valid) and kind is not LogNormal else []
+    shorthand += ["removed"] if kind is SortedOut else []
+    read: dict[str, Any] = {}
+    sound = True
+    for key, value in words.items():
+        if key not in (*valid, *shorthand):
+            report(
+                Mistake(
+                    f"a parameter of the {kind.NAME} law: " + ", ".join((*valid, *shorthand)),
+                    key=key,
+                    got=f'"{key}"',
+                    nearest=nearest_name(key, [*valid, *shorthand]),
+                )
+            )
+            sound = False
+        elif key == "whole":
+            read[key] = read_law(value, unit, under(key, report), relative=relative)
+        else:
+            read[key] = _number(value, _unit_of(kind, key, unit), key, report)
+    if not sound or None in read.values():
+        return None
+    return _make(kind, _without_shorthand(read), report)
+
+
+def _make(kind: type[Law], parameters: Mapping[str, Any], report: Report) -> Law | None:
+    """Call the class, telling what is missing and what does not fit together."""
+    missing = [
+        field.name
+        for field in fields(kind)
+        if field.default is MISSING and field.name not in parameters
+    ]
+    for name in missing:
+        cure = _HALF_WIDTH_HELP if name in ("low", "high") else ""
+        report(Mistake(f"a value (the {kind.NAME} law needs it)", cure, key=name, got="nothing"))
+    if missing:
+        return None
+    try:
+        return kind(**parameters)
+    except Mistake as mistake:
+        report(mistake)
+        return None
+
+
+def _without_shorthand(read: Mapping[str, Any]) -> dict[str, Any]:
+    """Limits in place of half widths: about the centre if one is given, else about zero."""
+    parameters = dict(read)
+    if "half_width" in parameters:
+        half = parameters.pop("half_width")
+        parameters = {"low": -half, "high": half, **parameters}
+    if "removed" in parameters:
+        half = parameters.pop("removed")
+        parameters = {"removed_low": -half, "removed_high": half, **parameters}
+    return parameters
+
+
+def _unit_of(kind: type[Law], key: str, unit: str) -> str:
+    """Unit of measure of one parameter: widths of temperatures are kelvins, shares are pure."""
+    if key in _PURE or (kind is LogNormal and key == "sigma"):
+        return "1"
+    return "K" if key in _WIDTHS and unit == "degC" else unit
+
+
+def _number(value: object, unit: str, key: str, report: Report) -> float | None:
+    """One parameter: text with a unit of measure, or a bare number where none is needed."""
+    if isinstance(value, bool) or not isinstance(value, str | int | float):
+        report(Mistake("a number or a text like '5 %'", key=key, got=f"{value!r}"))
+        return None
+    if not isinstance(value, str):
+        if unit == "1":
+            return float(value)
+        report(
+            Mistake(
+                "a text with a unit of measure",
+                f'Write "{value} {unit}" if it is that.',
+                key=key,
+                got=f"{value}",
+            )
+        )
+        return None
+    try:
+        return quantity.read(value, unit)
+    except Mistake as mistake:
+        report(Mistake(mistake.expected, mistake.cure, key=key, got=f'"{value}"'))
+        return None
+
+
+def under(key: str, report: Report) -> Report:
+    """Report that puts `key` before the key of a mistake inside it."""
+
+    def inner(mistake: Mistake) -> None:
+        inside = "" if mistake.key in ("", "value") else f".{mistake.key}"
+        report(
+            Mistake(
+                mistake.expected,
+                mistake.cure,
+                key=key + inside,
+                got=mistake.got,
+                nearest=mistake.nearest,
+            )
+        )
+
+    return inner
