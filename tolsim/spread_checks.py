@@ -1,0 +1,125 @@
+"""Can every law of a study be drawn for its parts?  Every mistake at once.
+
+That the tables named exist and fit the kind of part is checked before (`tolsim.study_checks`).
+"""
+
+from __future__ import annotations
+
+from collections.abc import Iterator, Mapping
+
+from tolsim.datasheet import device_parameters
+from tolsim.design import Study
+from tolsim.errors import Mistake, Problem
+from tolsim.parts import Mosfet
+from tolsim.sampling import CONDITION_UNITS, condition_law, tables_of
+from tolsim.spread import UNITS
+from tolsim.spread_table import QuantitySpread, SpreadTable
+
+
+def check_spread(study: Study, tables: Mapping[str, SpreadTable], file: str) -> list[Problem]:
+    """Mistakes in how a study uses spread tables, reels, datasheet rows and condition laws.
+
+    Parameters
+    ----------
+    study : Study
+        Checked otherwise; every spread table it names exists.
+    tables : mapping
+        All tables the study can name.
+    file : str
+        Name of the study file, for the messages.
+
+    Returns
+    -------
+    list of Problem
+        Empty if all is well.
+    """
+    return [
+        *_conditions(study, file),
+        *_datasheets(study, file),
+        *_reels(study, file),
+        *_reach(study, tables, file),
+    ]
+
+
+def _conditions(study: Study, file: str) -> Iterator[Problem]:
+    """Every law a condition states can be read."""
+    for name, condition in study.conditions.items():
+        for quantity, unit in CONDITION_UNITS.items():
+            given = getattr(condition, quantity)
+            if isinstance(given, Mapping):
+                try:
+                    condition_law(given, unit)
+                except Mistake as mistake:
+                    key = ".".join(word for word in (quantity, mistake.key) if word)
+                    yield _problem(mistake, file, f"conditions.{name}", key)
+
+
+def _datasheets(study: Study, file: str) -> Iterator[Problem]:
+    """Every MOSFET's rows can be turned into model parameters."""
+    for reference, part in study.design.parts.items():
+        if isinstance(part, Mosfet):
+            try:
+                device_parameters(part)
+            except Mistake as mistake:
+                yield _problem(mistake, file, f"parts.{reference}.sheet", mistake.key)
+
+
+def _problem(mistake: Mistake, file: str, table: str, key: str) -> Problem:
+    return Problem(file, table, key, mistake.got, mistake.expected, mistake.nearest, mistake.cure)
+
+
+def _reels(study: Study, file: str) -> Iterator[Problem]:
+    """Parts of one reel are the same purchase, so they follow the same table."""
+    first: dict[str, tuple[str, str | None]] = {}
+    for reference, part in study.design.parts.items():
+        if part.reel is None:
+            continue
+        other, table = first.setdefault(part.reel, (reference, part.spread))
+        if part.spread != table:
+            yield Problem(
+                file,
+                f"parts.{reference}",
+                "spread",
+                f'"{part.spread}"',
+                f'"{table}", as {other} of the same reel "{part.reel}"',
+                cure="Parts of one reel share a lot shift; give other parts another reel.",
+            )
+
+
+def _reach(study: Study, tables: Mapping[str, SpreadTable], file: str) -> Iterator[Problem]:
+    """No spread may make a value negative, or couple two coils fully."""
+    for reference in study.design.parts:
+        for name in tables_of(study, reference):
+            for quantity, spread in tables[name].quantities.items():
+                for value in _nominals(study, reference, quantity):
+                    low, high = _ends(spread, value)
+                    if quantity in UNITS and quantity != "low" and low < 0.0 < value:
+                        got = f"{name} reaching {low:.3g} {UNITS[quantity]}"
+                        yield Problem(
+                            file, f"parts.{reference}", "spread", got, f"a {quantity} above 0"
+                        )
+                    if quantity == "coupling" and max(abs(low), abs(high)) >= 1.0:
+                        got = f"{name} reaching {max(abs(low), abs(high)):.3g}"
+                        yield Problem(
+                            file, f"parts.{reference}", "spread", got, "a coupling below 1"
+                        )
+
+
+def _nominals(study: Study, reference: str, quantity: str) -> Iterator[float]:
+    """The nominal value of a quantity, and those the load states put in its place."""
+    own = getattr(study.design.parts[reference], quantity, None)
+    if isinstance(own, float):
+        yield own
+    for state in study.states.values():
+        if f"{reference}.{quantity}" in state.values:
+            yield state.values[f"{reference}.{quantity}"]
+
+
+def _ends(spread: QuantitySpread, nominal: float) -> tuple[float, float]:
+    """Lowest and highest value that lot shift and tolerance allow."""
+    laws = [law for law in (spread.lot, spread.tolerance) if law is not None]
+    low = sum(law.support[0] for law in laws)
+    high = sum(law.support[1] for law in laws)
+    if spread.deviation == "absolute":
+        return nominal + low, nominal + high
+    return nominal * (1.0 + low), nominal * (1.0 + high)

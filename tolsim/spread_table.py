@@ -1,0 +1,99 @@
+"""What a spread table says, checked and frozen: the laws of one part family and grade.
+
+    value = nominal (1 + lot shift + tolerance) x temperature(T) x ageing(hours)
+
+The lot shift is one draw for all parts fed from the same reel; the tolerance is the
+scatter inside a lot, one draw per part (per piece in a bank).  Temperature and ageing are
+not scatter: the law is shared, only its slope, position or rate may differ per part.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Mapping
+from dataclasses import dataclass, field
+from typing import Final, Literal
+
+from tolsim.ageing import AgeingLaw
+from tolsim.laws import Law
+from tolsim.temperature import TemperatureLaw
+
+Basis = Literal["standard", "datasheet", "measured", "common practice", "guess"]
+Deviation = Literal["relative", "absolute", "position"]
+Aspect = Literal["tolerance", "lot", "temperature", "ageing", "condition"]
+
+BASES: Final = ("standard", "datasheet", "measured", "common practice", "guess")
+DEVIATIONS: Final = ("relative", "absolute", "position")
+ASPECTS: Final = ("tolerance", "lot", "temperature", "ageing")
+
+
+@dataclass(frozen=True)
+class Origin:
+    """Where a law comes from."""
+
+    basis: Basis
+    source: str
+
+
+@dataclass(frozen=True)
+class QuantitySpread:
+    """Laws of one quantity of a part; a law that is None does not apply.
+
+    Attributes
+    ----------
+    deviation : str
+        How `tolerance` and `lot` are meant: "relative" to nominal, "absolute" in the unit of
+        measure of the quantity, or for thresholds a "position" in the datasheet window,
+        -1 at minimum, 0 at typical, +1 at maximum.
+    implied_half_window : float
+        V; half of the threshold window where neither sheet nor model gives one.
+    shared : frozenset of str
+        Of "temperature" and "ageing", those drawn once per reel instead of once per part.
+    origins : mapping
+        Origin of each law, by aspect.
+    """
+
+    tolerance: Law | None = None
+    lot: Law | None = None
+    temperature: TemperatureLaw | None = None
+    ageing: AgeingLaw | None = None
+    deviation: Deviation = "relative"
+    implied_half_window: float = 1.0
+    shared: frozenset[str] = frozenset()
+    origins: Mapping[str, Origin] = field(default_factory=dict)
+
+    def drawn(self, aspect: str) -> Law | None:
+        """Law of the number that `aspect` leaves to chance; None if it leaves none."""
+        if aspect == "tolerance":
+            return self.tolerance
+        if aspect == "lot":
+            return self.lot
+        if aspect == "temperature":
+            return self.temperature.drawn if self.temperature else None
+        return self.ageing.rate if self.ageing else None
+
+
+@dataclass(frozen=True)
+class SpreadTable:
+    """One entry of `distributions/`: a part family and grade with its laws and their origin.
+
+    `file` and `sha256` tell for the record which file it was read from.
+    """
+
+    name: str
+    title: str
+    kinds: tuple[str, ...]
+    basis: Basis
+    source: str
+    quantities: Mapping[str, QuantitySpread]
+    file: str = ""
+    sha256: str = ""
+
+    @property
+    def guesses(self) -> tuple[str, ...]:
+        """Addresses like "capacitance lot" of the laws that are guesses."""
+        return tuple(
+            f"{quantity} {aspect}"
+            for quantity, spread in self.quantities.items()
+            for aspect, origin in spread.origins.items()
+            if origin.basis == "guess"
+        )

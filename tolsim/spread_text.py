@@ -1,0 +1,134 @@
+"""Spread tables and assumptions in plain sentences, for screens and reports."""
+
+from __future__ import annotations
+
+from collections.abc import Mapping
+from dataclasses import fields
+
+from tolsim.ageing import AgeingLaw
+from tolsim.datasheet import device_parameters, window_assumptions
+from tolsim.design import Study
+from tolsim.laws import Law
+from tolsim.parts import Inductor, Mosfet
+from tolsim.quantity import show
+from tolsim.sampling import tables_of
+from tolsim.spread import UNITS
+from tolsim.spread_table import ASPECTS, QuantitySpread, SpreadTable
+from tolsim.temperature import TemperatureLaw
+
+_LABELS: Mapping[str, str] = {
+    "tolerance": "scatter within the lot",
+    "lot": "lot shift",
+    "temperature": "temperature",
+    "ageing": "ageing",
+}
+
+
+def describe(table: SpreadTable) -> list[str]:
+    """Plain sentences about a table: what it is for, each law, its basis and source.
+
+    Parameters
+    ----------
+    table : SpreadTable
+
+    Returns
+    -------
+    list of str
+        First the title, then one sentence per law; guesses end in "[guess]".
+    """
+    kinds = ", ".join(table.kinds)
+    said = [f"{table.title} (for {kinds}; {table.basis}: {table.source})."]
+    for quantity, spread in table.quantities.items():
+        for aspect in ASPECTS:
+            law = getattr(spread, aspect)
+            if law is None:
+                continue
+            origin = spread.origins[aspect]
+            words = (
+                f"{quantity}, {_LABELS[aspect]}: {law_words(law, _unit(quantity, aspect, spread))}"
+            )
+            if aspect in spread.shared or aspect == "lot":
+                words += ", shared by a reel"
+            if (origin.basis, origin.source) != (table.basis, table.source):
+                words += f" ({origin.source})"
+            said.append(words + ("  [guess]" if origin.basis == "guess" else f"  [{origin.basis}]"))
+    return said
+
+
+def assumptions(study: Study, tables: Mapping[str, SpreadTable]) -> tuple[str, ...]:
+    """What a study leaves open and how it was filled, as sentences.
+
+    Parts without a spread table, rows missing on a datasheet, threshold windows implied,
+    losses not given, load states that keep a unit's rank.
+    """
+    said: list[str] = []
+    unspread = [
+        reference
+        for reference in (*study.design.parts, *study.design.rails)
+        if not list(tables_of(study, reference))
+    ]
+    if unspread:
+        said.append("No spread table, every unit has the nominal value: " + ", ".join(unspread))
+    for reference, part in study.design.parts.items():
+        names = list(tables_of(study, reference))
+        if isinstance(part, Mosfet):
+            said += [f"{reference}: {words}" for words in device_parameters(part).assumptions]
+            for name in names:
+                spread = tables[name].quantities.get("threshold")
+                if spread is not None and spread.deviation == "position":
+                    said += [
+                        f"{reference}: {words}"
+                        for words in window_assumptions(part, spread.implied_half_window)
+                    ]
+        if isinstance(part, Inductor) and part.resistance is None and part.q is None:
+            said.append(f"{reference}: neither resistance nor Q given, taken as lossless")
+        if len(names) > 1:
+            said.append(
+                f"{reference}: a unit keeps its rank in every load state; each state's table "
+                f"({', '.join(names)}) turns the rank into a value"
+            )
+    return tuple(dict.fromkeys(said))
+
+
+def law_words(law: Law | TemperatureLaw | AgeingLaw, unit: str) -> str:
+    """A law in words: its name and every parameter that is set, with units of measure."""
+    words = []
+    for field in fields(law):
+        value = getattr(law, field.name)
+        if value is None:
+            continue
+        words.append(f"{field.name.replace('_', ' ')} {_value_words(law, field.name, value, unit)}")
+    return f"{law.NAME} ({', '.join(words)})" if words else law.NAME
+
+
+def _value_words(law: Law | TemperatureLaw | AgeingLaw, name: str, value: object, unit: str) -> str:
+    """One parameter in words."""
+    if isinstance(value, Law):
+        return law_words(value, {"slope": "1/K", "position": "1", "stretch": "1"}.get(name, unit))
+    if isinstance(value, tuple):
+        rows = (
+            f"{row[0]:g} degC " + " .. ".join(_number(change, "share") for change in row[1:])
+            for row in value
+        )
+        return "; ".join(rows)
+    if name in ("exponent", "below") or (law.NAME == "lognormal" and name == "sigma"):
+        return f"{value:g}"
+    own = "h" if isinstance(law, AgeingLaw) else "degC" if isinstance(law, TemperatureLaw) else unit
+    return _number(float(str(value)), own)
+
+
+def _number(value: float, unit: str) -> str:
+    if unit == "share":
+        return f"{100.0 * value:.4g} %"
+    if unit == "1/K":
+        return f"{1e6 * value:.4g} ppm/K"
+    return show(value, unit)
+
+
+def _unit(quantity: str, aspect: str, spread: QuantitySpread) -> str:
+    """Unit of measure in which the numbers of a law are shown."""
+    if aspect in ("temperature", "ageing") or spread.deviation == "relative":
+        return "share"
+    if spread.deviation == "position":
+        return "1"
+    return UNITS.get(quantity, "share")
