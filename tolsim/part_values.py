@@ -1,0 +1,291 @@
+"""Draws of n units to the values of every part, under one condition and in one load state.
+
+    value = nominal (1 + lot shift + tolerance) x temperature(T) x ageing(hours)
+
+Keys are addresses: "C1.capacitance" (total of a bank), "Q1.threshold", "vdd.voltage",
+"ambient".  Every value is an array (N,), N the number of units.  MOSFET values are those
+at 25 degC junction temperature; all others belong to the ambient of the condition.
+"""
+
+from __future__ import annotations
+
+import math
+from collections.abc import Callable, Mapping
+from dataclasses import dataclass
+
+import numpy as np
+from numpy.typing import NDArray
+
+from tolsim.coil import air_coil_inductance
+from tolsim.datasheet import device_parameters, threshold_window
+from tolsim.design import Condition, Rail, State, Study
+from tolsim.laws import Law
+from tolsim.parts import (
+    AnyPart,
+    Capacitor,
+    Coupling,
+    Inductor,
+    Load,
+    Mosfet,
+    Potentiometer,
+)
+from tolsim.sampling import (
+    CONDITION_UNITS,
+    Draws,
+    aspect_words,
+    condition_law,
+    factor_name,
+    reel_of,
+)
+from tolsim.spread_table import QuantitySpread, SpreadTable
+
+Floats = NDArray[np.float64]
+Values = dict[str, Floats]
+Drawn = Callable[[str, str, Law], Floats]
+"""Value of a factor in every unit: (name, aspect, law) to an array (N,)."""
+
+HIGHEST_COUPLING = 0.9999  # spread must not couple two coils more than fully
+
+
+def part_values(
+    study: Study,
+    tables: Mapping[str, SpreadTable],
+    condition: str,
+    state: str,
+    draws: Draws,
+) -> Values:
+    """Values of every part of the units in `draws`.
+
+    Parameters
+    ----------
+    study : Study
+    tables : mapping
+        Spread tables by name, as `spread.load_tables` returns them.
+    condition, state : str
+        Names in the study.
+    draws : Draws
+        N units.
+
+    Returns
+    -------
+    dict
+        Address to array (N,); see the top of this module.
+    """
+
+    def drawn(name: str, _: str, law: Law) -> Floats:
+        column = draws.column[name]
+        if draws.factors[column].law == law:
+            return draws.values[:, column]
+        return law.ppf(draws.u[:, column])  # same rank, the law of this state or condition
+
+    return _Maker(study, tables, condition, state, draws.count, drawn).values()
+
+
+def nominal_values(
+    study: Study, tables: Mapping[str, SpreadTable], condition: str, state: str
+) -> Values:
+    """Values of the nominal unit, arrays (1,): no deviation, laws of conditions at their median.
+
+    Slopes, positions and ageing rates are at their median too.
+    """
+
+    def drawn(_: str, aspect: str, law: Law) -> Floats:
+        return np.zeros(1) if aspect in ("tolerance", "lot") else law.ppf(np.full(1, 0.5))
+
+    return _Maker(study, tables, condition, state, 1, drawn).values()
+
+
+@dataclass
+class _Maker:
+    """One pass over the parts of a study."""
+
+    study: Study
+    tables: Mapping[str, SpreadTable]
+    condition_name: str
+    state_name: str
+    count: int
+    drawn: Drawn
+
+    def __post_init__(self) -> None:
+        self.condition: Condition = self.study.conditions[self.condition_name]
+        self.state: State = self.study.states[self.state_name]
+        self.ambient = self._of_condition("ambient") + self.condition.board_rise
+        self.supply = self._of_condition("supply")
+        self.age = self._of_condition("age")
+
+    def values(self) -> Values:
+        """All part values."""
+        values: Values = {"ambient": self.ambient}
+        for reference, part in self.study.design.parts.items():
+            values |= self._of_part(reference, part)
+        for reference, rail in self.study.design.rails.items():
+            values |= self._of_rail(reference, rail)
+        return values
+
+    def _of_condition(self, quantity: str) -> Floats:
+        given = getattr(self.condition, quantity)
+        if isinstance(given, Mapping):
+            law = condition_law(given, CONDITION_UNITS[quantity])
+            return self.drawn(quantity, "condition", law)
+        return np.full(self.count, float(given))
+
+    def _of_part(self, reference: str, part: AnyPart) -> Values:
+        """Values of one part, by its kind."""
+        if isinstance(part, Capacitor):
+            return self._of_capacitor(reference, part)
+        if isinstance(part, Mosfet):
+            return self._of_mosfet(reference, part)
+        if isinstance(part, Inductor):
+            nominal = _inductor(part)
+        else:
+            nominal = {quantity: getattr(part, quantity) for quantity in part.QUANTITIES}
+        values = {
+            f"{reference}.{quantity}": self.spread(reference, quantity, value, part.reel)
+            for quantity, value in nominal.items()
+        }
+        if isinstance(part, Coupling | Load):
+            key = f"{reference}.coupling"
+            values[key] = np.clip(values[key], -HIGHEST_COUPLING, HIGHEST_COUPLING)
+        if isinstance(part, Potentiometer):
+            key = f"{reference}.setting"
+            values[key] = np.clip(values[key], part.end_zone, 1.0 - part.end_zone)
+        return values
+
+    def _of_rail(self, reference: str, rail: Rail) -> Values:
+        voltage = self.spread(reference, "voltage", rail.voltage, None)
+        if rail.follows_supply:
+            voltage = voltage * (1.0 + self.supply)
+        return {f"{reference}.voltage": voltage}
+
+    def _of_capacitor(self, reference: str, part: Capacitor) -> Values:
+        """Total of the pieces, share of the largest one, and series resistance of the whole."""
+        pieces = range(1, part.pieces + 1) if part.pieces > 1 else (None,)
+        total = np.zeros(self.count)
+        largest = np.zeros(self.count)
+        for piece in pieces:
+            value = self.spread(reference, "capacitance", part.capacitance, part.reel, piece)
+            total += value
+            np.maximum(largest, value, out=largest)
+        esr = self.spread(reference, "esr", _esr(part), part.reel) / part.pieces
+        return {
+            f"{reference}.capacitance": total,
+            f"{reference}.largest_share": largest / total,
+            f"{reference}.esr": esr,
+        }
+
+    def _of_mosfet(self, reference: str, part: Mosfet) -> Values:
+        """Model parameters at 25 degC; one scale for all three capacitances."""
+        nominal = device_parameters(part)
+        table = self._table(reference)
+        spread = table.quantities.get("threshold") if table else None
+        threshold = self._nominal(reference, "threshold", nominal.threshold)
+        if spread is not None and spread.deviation == "position":
+            window = threshold_window(part, spread.implied_half_window)
+            position = self._deviation(reference, "threshold", part.reel, None)
+            value = (threshold + window.shift(position)) * self._drift(
+                reference, "threshold", part.reel
+            )
+        else:
+            value = self.spread(reference, "threshold", nominal.threshold, part.reel)
+        scale = self.spread(reference, "capacitance_scale", 1.0, part.reel)
+        return {
+            f"{reference}.threshold": value,
+            f"{reference}.gain": self.spread(reference, "gain", nominal.gain, part.reel),
+            f"{reference}.drift_resistance": self.spread(
+                reference, "drift_resistance", nominal.drift_resistance, part.reel
+            ),
+            f"{reference}.cgs": nominal.cgs * scale,
+            f"{reference}.cgd0": nominal.cgd0 * scale,
+            f"{reference}.cds0": nominal.cds0 * scale,
+        }
+
+    def spread(
+        self,
+        reference: str,
+        quantity: str,
+        nominal: float,
+        reel: str | None,
+        piece: int | None = None,
+    ) -> Floats:
+        """Value of one quantity in every unit: deviation, temperature, ageing."""
+        base = self._nominal(reference, quantity, nominal)
+        spread = self._laws(reference, quantity)
+        if spread is None:
+            return np.full(self.count, base)
+        deviation = self._deviation(reference, quantity, reel, piece)
+        value = base + deviation if spread.deviation == "absolute" else base * (1.0 + deviation)
+        return value * self._drift(reference, quantity, reel)
+
+    def _nominal(self, reference: str, quantity: str, value: float) -> float:
+        """Nominal value, or what the load state puts in its place."""
+        return self.state.values.get(f"{reference}.{quantity}", value)
+
+    def _table(self, reference: str) -> SpreadTable | None:
+        owner = self.study.design.parts.get(reference) or self.study.design.rails[reference]
+        name = self.state.spread.get(reference, owner.spread)
+        return self.tables[name] if name else None
+
+    def _laws(self, reference: str, quantity: str) -> QuantitySpread | None:
+        table = self._table(reference)
+        return table.quantities.get(quantity) if table else None
+
+    def _draw(
+        self, reference: str, quantity: str, aspect: str, reel: str | None, piece: int | None
+    ) -> Floats | None:
+        """Draw of one aspect; None if its law leaves nothing to chance."""
+        table = self._table(reference)
+        law = table.quantities[quantity].drawn(aspect) if table else None
+        if table is None or law is None:
+            return None
+        words = aspect_words(table, quantity, aspect)
+        shared_by = reel_of(reel, table, quantity, aspect)
+        return self.drawn(factor_name(reference, quantity, words, shared_by, piece), aspect, law)
+
+    def _deviation(
+        self, reference: str, quantity: str, reel: str | None, piece: int | None
+    ) -> Floats:
+        """Lot shift plus tolerance."""
+        deviation = np.zeros(self.count)
+        for aspect, number in (("lot", None), ("tolerance", piece)):
+            drawn = self._draw(reference, quantity, aspect, reel, number)
+            if drawn is not None:
+                deviation = deviation + drawn
+        return deviation
+
+    def _drift(self, reference: str, quantity: str, reel: str | None) -> Floats:
+        """Factor of temperature and age."""
+        spread = self._laws(reference, quantity)
+        factor = np.ones(self.count)
+        if spread is not None and spread.temperature is not None:
+            drawn = self._draw(reference, quantity, "temperature", reel, None)
+            factor = factor * spread.temperature.factor(
+                0.0 if drawn is None else drawn, self.ambient
+            )
+        if spread is not None and spread.ageing is not None:
+            drawn = self._draw(reference, quantity, "ageing", reel, None)
+            factor = factor * spread.ageing.factor(0.0 if drawn is None else drawn, self.age)
+        return factor
+
+
+def _esr(part: Capacitor) -> float:
+    """Series resistance of one piece, ohm: given, or tan delta / (2 pi f C)."""
+    if part.esr is not None:
+        return part.esr
+    if part.tan_delta is not None and part.loss_frequency is not None:
+        return part.tan_delta / (2.0 * math.pi * part.loss_frequency * part.capacitance)
+    return 0.0
+
+
+def _inductor(part: Inductor) -> dict[str, float]:
+    """Nominal inductance (given or from the geometry) and resistance (given or from Q)."""
+    if part.inductance is not None:
+        inductance = part.inductance
+    elif part.coil is not None:
+        coil = part.coil
+        inductance = float(air_coil_inductance(coil.turns, coil.diameter, coil.length))
+    else:
+        inductance = math.nan
+    resistance = part.resistance or 0.0
+    if part.q is not None and part.q_frequency is not None:
+        resistance = 2.0 * math.pi * part.q_frequency * inductance / part.q
+    return {"inductance": inductance, "resistance": resistance}

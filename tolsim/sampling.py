@@ -1,0 +1,227 @@
+"""The only place of chance: factors of a study, and their draws for any range of units.
+
+Every factor has its own stream of random numbers, keyed by the seed and its name, and unit
+k takes the k-th number of the stream.  So unit 1234 is the same unit whatever the number
+of units, the chunks, the workers, or the other factors of the study.  The streams come
+from the counter-based generator Philox (Salmon et al., SC'11), which can start anywhere.
+"""
+
+from __future__ import annotations
+
+import hashlib
+from collections.abc import Iterator, Mapping, Sequence
+from dataclasses import dataclass
+from functools import cached_property
+
+import numpy as np
+from numpy.random import Philox
+from numpy.typing import NDArray
+
+from tolsim.design import Study
+from tolsim.errors import Mistake
+from tolsim.laws import Law
+from tolsim.laws.reading import read_law
+from tolsim.parts import Capacitor
+from tolsim.spread_table import ASPECTS, Aspect, SpreadTable
+
+CONDITION_UNITS: Mapping[str, str] = {"ambient": "degC", "supply": "1", "age": "h"}
+"""What a condition may leave to chance, with its unit of measure."""
+
+_OUTPUTS_PER_STEP = 4  # numbers Philox makes per step of its counter
+
+
+@dataclass(frozen=True)
+class Factor:
+    """One independent random input of a study.
+
+    Attributes
+    ----------
+    name : str
+        "C1.capacitance tolerance", "reel tank-C: capacitance lot shift", "ambient".
+    law : Law
+        Law of its value.
+    part, quantity : str
+        Part (piece "C1#2" of a bank, or the reel of a shared factor) and quantity it acts
+        on; empty for conditions.
+    aspect : str
+        "tolerance", "lot", "temperature", "ageing" or "condition".
+    table : str
+        Name of the spread table its law comes from; the condition, for conditions.
+    """
+
+    name: str
+    law: Law
+    part: str
+    quantity: str
+    aspect: Aspect
+    table: str
+
+
+@dataclass(frozen=True)
+class Draws:
+    """Draws of `count` units, from unit `first` on.
+
+    Attributes
+    ----------
+    factors : tuple of Factor
+        The k columns.
+    first : int
+        Number of the unit in the first row.
+    u : ndarray (count, k)
+        Shares in the open interval (0, 1), uniform and independent.
+    values : ndarray (count, k)
+        The same draws as values: law.ppf(u).
+    """
+
+    factors: tuple[Factor, ...]
+    first: int
+    u: NDArray[np.float64]
+    values: NDArray[np.float64]
+
+    @property
+    def names(self) -> tuple[str, ...]:
+        """Names of the columns."""
+        return tuple(factor.name for factor in self.factors)
+
+    @property
+    def count(self) -> int:
+        """Number of units."""
+        return len(self.u)
+
+    @cached_property
+    def column(self) -> Mapping[str, int]:
+        """Column of each factor, by name."""
+        return {factor.name: index for index, factor in enumerate(self.factors)}
+
+
+def factor_name(
+    part: str, quantity: str, what: str, reel: str | None, piece: int | None = None
+) -> str:
+    """Name of a factor: by its part, its piece of a bank, or the reel that shares it."""
+    if reel is not None:
+        return f"reel {reel}: {quantity} {what}"
+    address = part if piece is None else f"{part}#{piece}"
+    return f"{address}.{quantity} {what}"
+
+
+def aspect_words(table: SpreadTable, quantity: str, aspect: str) -> str:
+    """Words for an aspect in the name of a factor."""
+    spread = table.quantities[quantity]
+    if aspect == "temperature" and spread.temperature:
+        return spread.temperature.WHAT
+    if aspect == "ageing" and spread.ageing:
+        return spread.ageing.WHAT
+    return {"tolerance": "tolerance", "lot": "lot shift"}[aspect]
+
+
+def reel_of(reel: str | None, table: SpreadTable, quantity: str, aspect: str) -> str | None:
+    """Reel whose parts share the draw of this aspect, if any."""
+    shared = aspect == "lot" or aspect in table.quantities[quantity].shared
+    return reel if shared else None
+
+
+def factors(study: Study, tables: Mapping[str, SpreadTable]) -> tuple[Factor, ...]:
+    """All factors of a study in the order of its parts, rails and conditions.
+
+    A part whose table differs between load states has one factor for all of them: a unit
+    keeps its rank, and each state's own law turns the rank into a value.  Conditions share
+    one factor per quantity in the same way.
+    """
+    found: dict[str, Factor] = {}
+    for factor in (*_of_parts(study, tables), *_of_conditions(study)):
+        found.setdefault(factor.name, factor)
+    return tuple(found.values())
+
+
+def tables_of(study: Study, reference: str) -> Iterator[str]:
+    """Names of the tables a part or rail follows: its own, then those of the load states."""
+    part = study.design.parts.get(reference) or study.design.rails[reference]
+    own = [part.spread] if part.spread else []
+    yield from dict.fromkeys(
+        own
+        + [state.spread[reference] for state in study.states.values() if reference in state.spread]
+    )
+
+
+def _of_parts(study: Study, tables: Mapping[str, SpreadTable]) -> Iterator[Factor]:
+    for reference, part in {**study.design.parts, **study.design.rails}.items():
+        pieces = part.pieces if isinstance(part, Capacitor) else 1
+        reel = getattr(part, "reel", None)
+        for name in tables_of(study, reference):
+            yield from _of_table(tables[name], reference, reel, pieces)
+
+
+def _of_table(table: SpreadTable, part: str, reel: str | None, pieces: int) -> Iterator[Factor]:
+    """Factors one table makes for one part."""
+    for quantity, spread in table.quantities.items():
+        for aspect in ASPECTS:
+            law = spread.drawn(aspect)
+            if law is None:
+                continue
+            words = aspect_words(table, quantity, aspect)
+            shared_by = reel_of(reel, table, quantity, aspect)
+            scattered = aspect == "tolerance" and quantity == "capacitance" and pieces > 1
+            for piece in range(1, pieces + 1) if scattered else (None,):
+                owner = part if piece is None else f"{part}#{piece}"
+                yield Factor(
+                    factor_name(part, quantity, words, shared_by, piece),
+                    law,
+                    shared_by or owner,
+                    quantity,
+                    aspect,
+                    table.name,
+                )
+
+
+def _of_conditions(study: Study) -> Iterator[Factor]:
+    for name, condition in study.conditions.items():
+        for quantity, unit in CONDITION_UNITS.items():
+            given = getattr(condition, quantity)
+            if isinstance(given, Mapping):
+                yield Factor(quantity, condition_law(given, unit), "", quantity, "condition", name)
+
+
+def condition_law(given: Mapping[str, object], unit: str) -> Law:
+    """Law a condition states; raises the first `Mistake` in it."""
+    mistakes: list[Mistake] = []
+    law = read_law(given, unit, mistakes.append)
+    if law is None:
+        raise mistakes[0]
+    return law
+
+
+def draw(factors: Sequence[Factor], seed: int, first: int, count: int) -> Draws:
+    """Draw `count` units from unit `first` on.
+
+    Parameters
+    ----------
+    factors : sequence of Factor
+        As `factors` returns them.
+    seed : int
+        Seed of the study.
+    first, count : int
+        Range of units.
+
+    Returns
+    -------
+    Draws
+    """
+    u = np.empty((len(factors), count)).T  # columns are contiguous
+    values = np.empty((len(factors), count)).T
+    for column, factor in enumerate(factors):
+        u[:, column] = _stream(seed, factor.name, first, count)
+        values[:, column] = factor.law.ppf(u[:, column])
+    return Draws(tuple(factors), first, u, values)
+
+
+def _stream(seed: int, name: str, first: int, count: int) -> NDArray[np.float64]:
+    """Numbers `first` ... `first + count - 1` of the stream of a factor, in (0, 1).
+
+    The top 52 bits, moved to the middle of their cell: neither 0 nor 1 can occur.
+    """
+    digest = hashlib.blake2b(f"{seed}\n{name}".encode(), digest_size=16).digest()
+    generator = Philox(key=int.from_bytes(digest, "little"))
+    steps, skipped = divmod(first, _OUTPUTS_PER_STEP)
+    generator.advance(steps)
+    raw = generator.random_raw(skipped + count)[skipped:]
+    return ((raw >> np.uint64(12)).astype(np.float64) + 0.5) * 2.0**-52
