@@ -30,6 +30,8 @@ class Elements(Protocol):
     """A set of like elements.  `kind` says whether they give currents or charges."""
 
     @property
+    def names(self) -> tuple[str, ...]: ...
+    @property
     def kind(self) -> str: ...
     @property
     def sense(self) -> Floats: ...  # (e, p)
@@ -203,19 +205,11 @@ class Devices:
         return taken
 
     def currents(self, v: Floats) -> dict[str, Floats]:
-        """Current of every ramp element by name, for v of shape (m, N, p): (m, N) each."""
-        shape = v.shape[:-1]
-        answer = {}
+        """Current of every ramp element by name, (m, N) each, for v of shape (m, N, p)."""
+        answer: dict[str, Floats] = {}
         for elements in self.elements:
-            if not isinstance(elements, Ramps):
-                continue
-            points = shape[0]
-            for name in elements.names:
-                answer[name] = np.empty(shape)
-            for k in range(points):
-                amount, _ = elements.respond(np.ascontiguousarray(v[k].T))
-                for name, row in zip(elements.names, amount, strict=True):
-                    answer[name][k] = row
+            if isinstance(elements, Ramps):
+                rows = [elements.respond(np.ascontiguousarray(point.T))[0] for point in v]
+                stacked = np.stack(rows, axis=1)
+                answer |= dict(zip(elements.names, stacked, strict=True))
         return answer
-
-

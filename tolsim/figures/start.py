@@ -1,0 +1,63 @@
+"""Figures of starting: modes at the bias point, margin, time to full swing, idle losses."""
+
+from __future__ import annotations
+
+import numpy as np
+
+from tolsim.circuit.bias import bias_point
+from tolsim.circuit.devices import Floats
+from tolsim.circuit.nominal import Nominal
+from tolsim.circuit.startup import modes, noise_amplitude, resemblance, start_margin
+from tolsim.circuit.thermal import Case, mosfets
+
+FULL_SWING = 0.9  # of the orbit's amplitude
+
+
+def measure_start(case: Case, nominal: Nominal) -> dict[str, Floats]:
+    """Start figures of every unit, junctions at ambient temperature.
+
+    Returns
+    -------
+    dict of str to (N,)
+        Start margin, growth, frequency, time, idle currents and losses; "mode_match" is the
+        likeness of the leading mode to the nominal one (0 to 1), not a figure of its own.
+    """
+    network = case.network(case.cold_junctions())
+    guess = np.broadcast_to(nominal.bias.x[0], (case.units, network.states))
+    bias = bias_point(network, guess)
+    lead = modes(network, bias, nominal.shift)
+    margin = start_margin(network, bias, nominal.shift)
+    noise = noise_amplitude(network, bias, lead.vector, case.values["ambient"])
+    swing = _orbit_swing(nominal)
+    with np.errstate(divide="ignore", invalid="ignore"):
+        time = np.where(lead.growth > 0, np.log(FULL_SWING * swing / noise) / lead.growth, np.inf)
+    unsettled = np.where(bias.settled, 1.0, np.nan)
+    figures = {
+        "start_margin": margin,
+        "growth_rate": lead.growth,
+        "start_frequency": lead.frequency,
+        "start_time": np.where(np.isfinite(time), time, np.nan),
+        "mode_match": resemblance(network, lead.vector, nominal.modes.vector[0]),
+    }
+    port_current, *_ = network.devices.evaluate(bias.v)
+    idle_current = np.zeros(case.units)
+    idle_power = np.zeros(case.units)
+    for supply in network.supplies.values():
+        current = supply.at(bias.x, port_current)
+        idle_current = idle_current + current
+        idle_power = idle_power + supply.volts * current
+    figures |= {"idle_current": idle_current, "idle_dissipation": idle_power}
+    channel = network.devices.currents(bias.v[None])
+    for ref in mosfets(case.design):
+        current = channel[f"{ref}:forward"][0] + channel[f"{ref}:reverse"][0]
+        figures[f"{ref}.idle_dissipation"] = current * bias.v[:, network.ports[f"{ref}:ds"]]
+    return {name: values * unsettled for name, values in figures.items()}
+
+
+def _orbit_swing(nominal: Nominal) -> float:
+    """Largest port amplitude of the nominal orbit, V."""
+    if not nominal.found:
+        return 1.0
+    network = nominal.case.network(nominal.solution.junctions)
+    volts = network.port_voltages(nominal.solution.samples[:, 0])
+    return float(0.5 * np.ptp(volts, axis=0).max())

@@ -1,0 +1,109 @@
+"""Voltages and currents of every part along one period, on an even grid of m points.
+
+Arrays are (m, N).  Means and rms values are plain averages over the grid: for a smooth periodic
+function that is the most accurate rule there is (Trefethen, Weideman, SIAM Review 56 (2014) 385-458).
+"""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+from functools import cached_property
+
+import numpy as np
+
+from tolsim.circuit.devices import Floats
+from tolsim.circuit.network import Network
+from tolsim.circuit.orbit import Solution
+from tolsim.parts import Capacitor
+
+
+@dataclass(frozen=True)
+class Waves:
+    """One period of N units."""
+
+    network: Network
+    x: Floats  # (m, N, n)
+    period: Floats  # (N,)
+
+    @classmethod
+    def of(cls, network: Network, solution: Solution) -> Waves:
+        return cls(network, solution.samples[:-1], solution.period)
+
+    @cached_property
+    def ports(self) -> Floats:
+        """Port voltages (m, N, p)."""
+        return self.network.port_voltages(self.x)
+
+    @cached_property
+    def currents(self) -> dict[str, Floats]:
+        """Current of every nonlinear element, along its own controlling direction."""
+        return self.network.devices.currents(self.ports)
+
+    def net(self, name: str) -> Floats:
+        """Voltage of a net."""
+        return self.network.potential(name, self.x)
+
+    def across(self, plus: str, minus: str) -> Floats:
+        return self.net(plus) - self.net(minus)
+
+    def port(self, name: str) -> Floats:
+        """Voltage of a device's port."""
+        return self.ports[..., self.network.ports[name]]
+
+    def branch(self, ref: str) -> Floats:
+        """Current of an inductor or load loop."""
+        return self.x[..., self.network.index[ref]]
+
+    def rate(self, wave: Floats) -> Floats:
+        """Time derivative, fourth-order central differences around the period."""
+        near = np.roll(wave, -1, axis=0) - np.roll(wave, 1, axis=0)
+        far = np.roll(wave, -2, axis=0) - np.roll(wave, 2, axis=0)
+        step = self.period / len(wave)
+        return (8 * near - far) / (12 * step)
+
+    def series_current(self, outer: str, inner: str) -> Floats:
+        """Current through the resistance between a terminal and the inner net of a part."""
+        return self.across(outer, inner) * self.network.series_conductance[inner]
+
+    def capacitor_current(self, ref: str, part: Capacitor, capacitance: Floats) -> Floats:
+        """Current of a capacitor (whole bank)."""
+        plate = f"{ref}:plate"
+        if plate in self.network.index:
+            return self.series_current(part.nets[0], plate)
+        voltage = self.across(*part.nets)
+        if part.half_voltage is None:
+            return capacitance * self.rate(voltage)
+        x = voltage / part.half_voltage
+        left = part.bias_floor + (1 - part.bias_floor) / (1 + x * x)
+        return capacitance * left * self.rate(voltage)
+
+
+def highest(wave: Floats) -> Floats:
+    """Largest value of a periodic wave, by a parabola through the three points around it."""
+    top = np.argmax(wave, axis=0)
+    units = np.arange(wave.shape[1])
+    middle = wave[top, units]
+    before, after = wave[top - 1, units], wave[(top + 1) % len(wave), units]
+    bend = before - 2 * middle + after
+    slope = 0.5 * (after - before)
+    lift = np.where(bend < 0, -(slope**2) / np.where(bend < 0, 2 * bend, 1.0), 0.0)
+    # a vertex can lie at most half a step from the largest sample
+    return middle + np.minimum(lift, 0.5 * np.abs(slope))
+
+
+def lowest(wave: Floats) -> Floats:
+    """Smallest value of a periodic wave."""
+    return -highest(-wave)
+
+
+def largest(wave: Floats) -> Floats:
+    """Largest magnitude of a periodic wave."""
+    return np.maximum(highest(wave), highest(-wave))
+
+
+def rms(wave: Floats) -> Floats:
+    return np.sqrt(np.mean(wave**2, axis=0))
+
+
+def mean(wave: Floats) -> Floats:
+    return np.mean(wave, axis=0)
