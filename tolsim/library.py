@@ -8,6 +8,8 @@ from __future__ import annotations
 
 from pathlib import Path
 
+from tolsim.errors import RequestError, nearest_name
+
 _PACKAGE = Path(__file__).resolve().parent
 
 
@@ -26,6 +28,25 @@ def distributions_folder() -> Path:
 def studies_folder() -> Path:
     """Folder of the shipped studies (TOML)."""
     return _folder("studies")
+
+
+def find_study(name: str) -> Path:
+    """Study file of that name: a path, or the name of a shipped study.
+
+    Raises
+    ------
+    RequestError
+        If there is neither.
+    """
+    path = Path(name)
+    if path.is_file():
+        return path
+    shipped = shipped_studies()
+    if name in shipped:
+        return shipped[name]
+    near = nearest_name(name, [*shipped, *(str(file) for file in Path().glob("*.toml"))])
+    hint = f"Did you mean {near}?" if near else f"Shipped studies: {', '.join(shipped)}."
+    raise RequestError(f"There is no study file '{name}' and no shipped study of that name. {hint}")
 
 
 def shipped_studies() -> dict[str, Path]:

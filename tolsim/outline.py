@@ -59,7 +59,7 @@ class Outline:
         near = nearest_name(str(name), valid)
         if not (near or cure):
             cure = f"Known here: {', '.join(valid)}." if valid else "None is known here."
-        return Problem(self.file, table, key, written(name), what, near, "" if near else cure)
+        return Problem(self.file, table, key, written(name), what, near, cure)
 
 
 def kinds_of(

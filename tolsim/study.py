@@ -16,12 +16,13 @@ from __future__ import annotations
 import re
 import tomllib
 from collections.abc import Collection, Iterable, Mapping
+from dataclasses import dataclass
 from pathlib import Path
 from typing import Annotated, Any, Literal
 
 from pydantic import AfterValidator
 
-from tolsim.design import Condition, Design, Rail, Run, State, Study
+from tolsim.design import Design, Rail, Run, Study
 from tolsim.errors import Mistake, Problem, StudyError
 from tolsim.limit_checks import limit_problems
 from tolsim.net_checks import net_problems
@@ -29,6 +30,8 @@ from tolsim.outline import Table
 from tolsim.quantity import Frequency, Leak
 from tolsim.records import Frozen
 from tolsim.spread import load_tables
+from tolsim.spread_checks import check_spread
+from tolsim.spread_table import SpreadTable
 from tolsim.study_checks import coupling_problems, study_problems
 from tolsim.study_reading import Reading
 
@@ -60,8 +63,32 @@ class _Top(Frozen):
     limits: tuple[Any, ...] = ()
 
 
+@dataclass(frozen=True)
+class StudyFile:
+    """A study with all that is needed to run it again.
+
+    Attributes
+    ----------
+    study : Study
+        As checked.
+    text : str
+        The file as read.
+    tables : mapping of str to SpreadTable
+        Every spread table the study could name.
+    """
+
+    study: Study
+    text: str
+    tables: Mapping[str, SpreadTable]
+
+
 def load_study(path: Path | str, tables_dir: Path | str | None = None) -> Study:
-    """Read and check a study file.
+    """Read and check a study file; see `open_study`."""
+    return open_study(path, tables_dir).study
+
+
+def open_study(path: Path | str, tables_dir: Path | str | None = None) -> StudyFile:
+    """Read and check a study file and the spread tables within its reach.
 
     Parameters
     ----------
@@ -73,7 +100,7 @@ def load_study(path: Path | str, tables_dir: Path | str | None = None) -> Study:
 
     Returns
     -------
-    Study
+    StudyFile
 
     Raises
     ------
@@ -90,7 +117,12 @@ def load_study(path: Path | str, tables_dir: Path | str | None = None) -> Study:
         got = f"byte {error.start} in another encoding"
         raise _only(path.name, got, "text in UTF-8", "Save the file as UTF-8.") from None
     tables = load_tables(path, None if tables_dir is None else Path(tables_dir))
-    return read_study(text, {name: table.kinds for name, table in tables.items()}, path.name)
+    kinds = {name: table.kinds for name, table in tables.items()}
+    study = read_study(text, kinds, path.name)
+    problems = check_spread(study, tables, path.name)
+    if problems:
+        raise StudyError(problems)
+    return StudyFile(study, text, tables)
 
 
 def read_study(text: str, tables: Mapping[str, Collection[str]], file: str = "study") -> Study:
@@ -134,8 +166,8 @@ def read_study(text: str, tables: Mapping[str, Collection[str]], file: str = "st
         title=top.title,
         scenario=top.scenario,
         design=Design(parts=parts, rails=rails, leak=top.leak),
-        states=states or {"normal": State(starts_here=top.kind == "self-oscillating")},
-        conditions=conditions or {"room": Condition()},
+        states=states,
+        conditions=conditions,
         limits=limits,
         run=top.run,
         expected_frequency=top.expected_frequency,

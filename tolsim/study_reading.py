@@ -56,13 +56,14 @@ class Reading:
         parts, rails = self.tables("parts"), self.tables("rails")
         limits = self.raw.get("limits", [])
         run = self.raw.get("run", {})
+        driven = self.raw.get("kind") == "driven"
         return Outline(
             file=self.file,
-            driven=self.raw.get("kind") == "driven",
+            driven=driven,
             parts=parts,
             rails=rails,
-            states=self.tables("states"),
-            conditions=self.tables("conditions"),
+            states=self.tables("states") or {"normal": {"starts_here": not driven}},
+            conditions=self.tables("conditions") or {"room": {}},
             limits=[
                 limit if isinstance(limit, dict) else {}
                 for limit in (limits if isinstance(limits, list) else [])

@@ -1,0 +1,177 @@
+"""The command line: read what is asked, call one function, print, set the exit code.
+
+Everything heavy is imported inside the verbs, so that `tolsim --help` answers at once.
+"""
+
+from __future__ import annotations
+
+from pathlib import Path
+from typing import Any
+
+import click
+
+from tolsim import __version__
+from tolsim.errors import RequestError, RunError, TolsimError, nearest_name
+from tolsim.library import find_study, shipped_studies
+
+_CAUTIONS = """
+A self-oscillating stage of some tens of watts makes kilovolts at radio frequency: burns
+that go deep, shocks, and near lamps and discharges ultraviolet light and ozone.  Results
+are estimates from models; they never replace measurement, guards and interlocks.  Follow
+your local codes, and leave mains, high voltage and radio licensing to those who hold the
+licence.
+"""
+_EXIT_CODES = """
+Exit codes: 0 all right; 1 the run could not be finished; 2 the request or a file is wrong
+(every mistake is listed, nothing is written).
+"""
+
+
+class _Told(click.ClickException):
+    """An error of ours on its way to the terminal, without traceback."""
+
+    def __init__(self, error: TolsimError) -> None:
+        super().__init__(str(error))
+        self.exit_code = 1 if isinstance(error, RunError) else 2
+
+
+class _Verbs(click.Group):
+    """Group that turns errors of ours into messages and exit codes."""
+
+    def invoke(self, ctx: click.Context) -> Any:  # noqa: ANN401 - as click declares it
+        """Call the verb."""
+        try:
+            return super().invoke(ctx)
+        except TolsimError as error:
+            raise _Told(error) from error
+
+    def format_epilog(self, ctx: click.Context, formatter: click.HelpFormatter) -> None:
+        """Write cautions and exit codes under the list of verbs."""
+        del ctx
+        for text in (_CAUTIONS, _EXIT_CODES):
+            formatter.write_paragraph()
+            formatter.write_text(" ".join(text.split()))
+
+
+_tables_option = click.option(
+    "--tables",
+    "tables_dir",
+    metavar="DIR",
+    type=click.Path(exists=True, file_okay=False, path_type=Path),
+    help="Folder of your own spread tables; they go before shipped ones of the same name.",
+)
+
+
+@click.group(cls=_Verbs, context_settings={"help_option_names": ["-h", "--help"]})
+@click.version_option(__version__, prog_name="tolsim")
+def main() -> None:
+    """How many of the oscillators you build from real parts will work, and what strains them."""
+
+
+@main.command()
+@click.argument("study")
+@_tables_option
+def check(study: str, tables_dir: Path | None) -> None:
+    """Check STUDY: list every mistake, or show what would be run.
+
+    STUDY is a TOML file or the name of a shipped study.
+    """
+    from tolsim.study import open_study
+    from tolsim.terminal import show_study
+
+    show_study(open_study(find_study(study), tables_dir))
+
+
+@main.command()
+@click.argument("study")
+@click.option(
+    "--units", type=click.IntRange(1, 10_000_000), help="Units to build; else as STUDY says."
+)
+@click.option("--seed", type=click.IntRange(0), help="Seed of chance; else as STUDY says.")
+@click.option("--jobs", type=click.IntRange(1), help="Processor cores to use; else all of them.")
+@click.option(
+    "--out",
+    metavar="DIR",
+    type=click.Path(file_okay=False, path_type=Path),
+    help="Results folder; else results/NAME for NAME.toml.",
+)
+@_tables_option
+def run(
+    study: str,
+    units: int | None,
+    seed: int | None,
+    jobs: int | None,
+    out: Path | None,
+    tables_dir: Path | None,
+) -> None:
+    """Build and judge the units of STUDY; write results and report.
+
+    STUDY is a TOML file or the name of a shipped study.
+    """
+    from tolsim.run import run_study
+    from tolsim.study import open_study
+    from tolsim.terminal import progress, show_summary
+
+    path = find_study(study)
+    opened = open_study(path, tables_dir)
+    folder = out or Path("results") / path.stem
+    if folder.is_file():
+        raise RequestError(f"'{folder}' is a file. Name another folder with --out.")
+    with progress() as step:
+        results = run_study(opened, units=units, seed=seed, jobs=jobs, out=folder, progress=step)
+    show_summary(results.summary, folder)
+
+
+@main.command()
+@click.argument("results", type=click.Path(exists=True, file_okay=False, path_type=Path))
+@click.argument("number", metavar="UNIT", type=click.IntRange(0))
+def unit(results: Path, number: int) -> None:
+    """Solve one unit of a run again: its waveforms as pictures, and why it failed.
+
+    RESULTS is the folder that `tolsim run` wrote, UNIT the number of the unit.
+    """
+    from tolsim.replay import replay_unit
+
+    click.echo(replay_unit(results, number))
+
+
+@main.command()
+@click.argument("name", required=False)
+@_tables_option
+def tables(name: str | None, tables_dir: Path | None) -> None:
+    """List the spread tables, or show all that is known about table NAME."""
+    from tolsim.spread import load_tables
+    from tolsim.terminal import show_table, show_tables
+
+    known = load_tables(None, tables_dir)
+    if name is None:
+        show_tables(known)
+    elif name in known:
+        show_table(known[name])
+    else:
+        raise _unknown("spread table", name, list(known))
+
+
+@main.command()
+@click.argument("file", type=click.Path(dir_okay=False, path_type=Path))
+@click.option("--from", "name", metavar="NAME", help="Shipped study to start from.")
+def new(file: Path, name: str | None) -> None:
+    """Write a commented study to FILE, to be changed into your own."""
+    shipped = shipped_studies()
+    if name is not None and name not in shipped:
+        raise _unknown("shipped study", name, list(shipped))
+    source = shipped[name] if name is not None else next(iter(shipped.values()))
+    try:
+        with file.open("xb") as target:
+            target.write(source.read_bytes())
+    except FileExistsError:
+        raise RequestError(f"'{file}' exists already. Choose another name.") from None
+    except OSError as error:
+        raise RequestError(f"'{file}' cannot be written: {error.strerror}.") from None
+    click.echo(f"{file} written, from the shipped study {source.stem}. Next: tolsim check {file}")
+
+
+def _unknown(what: str, name: str, valid: list[str]) -> RequestError:
+    near = nearest_name(name, valid)
+    hint = f"Did you mean {near}?" if near else f"Known: {', '.join(valid)}."
+    return RequestError(f"There is no {what} '{name}'. {hint}")
