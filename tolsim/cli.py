@@ -28,11 +28,15 @@ Exit codes: 0 all right; 1 the run could not be finished; 2 the request or a fil
 
 
 class _Told(click.ClickException):
-    """An error of ours on its way to the terminal, without traceback."""
+    """A mistake of the user on its way to the terminal, without traceback."""
 
-    def __init__(self, error: TolsimError) -> None:
-        super().__init__(str(error))
-        self.exit_code = 1 if isinstance(error, RunError) else 2
+    exit_code = 2
+
+
+class _NotFinished(click.ClickException):
+    """A run that could not be finished."""
+
+    exit_code = 1
 
 
 class _Verbs(click.Group):
@@ -42,8 +46,10 @@ class _Verbs(click.Group):
         """Call the verb."""
         try:
             return super().invoke(ctx)
+        except RunError as error:
+            raise _NotFinished(str(error)) from error
         except TolsimError as error:
-            raise _Told(error) from error
+            raise _Told(str(error)) from error
 
     def format_epilog(self, ctx: click.Context, formatter: click.HelpFormatter) -> None:
         """Write cautions and exit codes under the list of verbs."""
@@ -126,7 +132,7 @@ def run(
 @click.argument("results", type=click.Path(exists=True, file_okay=False, path_type=Path))
 @click.argument("number", metavar="UNIT", type=click.IntRange(0))
 def unit(results: Path, number: int) -> None:
-    """Solve one unit of a run again: its waveforms as pictures, and why it failed.
+    """Solve one unit again: waveforms, and why it failed.
 
     RESULTS is the folder that `tolsim run` wrote, UNIT the number of the unit.
     """
@@ -139,7 +145,10 @@ def unit(results: Path, number: int) -> None:
 @click.argument("name", required=False)
 @_tables_option
 def tables(name: str | None, tables_dir: Path | None) -> None:
-    """List the spread tables, or show all that is known about table NAME."""
+    """List the spread tables, or show all about one.
+
+    NAME is a table of the list.
+    """
     from tolsim.spread import load_tables
     from tolsim.terminal import show_table, show_tables
 

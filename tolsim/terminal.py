@@ -19,7 +19,7 @@ from tolsim.quantity import show
 from tolsim.spread_table import SpreadTable
 from tolsim.spread_text import assumptions, describe
 from tolsim.study import StudyFile
-from tolsim.wording import failures, percent, share_with_interval, shown, verdict_sentence
+from tolsim.wording import failures, percent, percents, shown, verdict_sentence
 
 _WIDTH = 80
 _MOST_ROWS = 8  # of a table in the summary; the report has all
@@ -171,7 +171,10 @@ def _ranking(ranking: Mapping[str, Any]) -> Table:
     if ranking["reason"]:
         grid.add_row(ranking["reason"], "")
     for factor in [f for f in ranking["factors"] if f["distinguishable"]][:5]:
-        grid.add_row(factor["factor"], share_with_interval(factor))
+        grid.add_row(
+            factor["factor"],
+            f"{percent(factor['share'])} ({percents(factor['low'], factor['high'])})",
+        )
     return grid
 
 
