@@ -1,0 +1,136 @@
+"""Fill the page: content in, one HTML text out."""
+
+from __future__ import annotations
+
+from pathlib import Path
+from typing import Any
+
+import numpy as np
+from jinja2 import Environment, PackageLoader, StrictUndefined
+from numpy.typing import NDArray
+
+from tolsim.report.charts import start_margin_chart, waveform_chart
+from tolsim.report.content import FAIL, PASS, UNDECIDED, ReportInput
+from tolsim.report.tables import (
+    case_rows,
+    limit_rows,
+    limited_stage_rows,
+    other_rows,
+    ranking_columns,
+    stage_rows,
+    start_sentences,
+    stress_rows,
+)
+from tolsim.unit_files import write_text
+from tolsim.wording import DASH, confidence_words, percent, percents, verdict_sentence
+
+MOST_TILES = 2000
+TILES_IN_A_ROW = 50
+READABLE = 1e-5  # smaller ratios are written as powers of ten
+MOST_CASES = 12  # with more, those in which nothing happens are folded away
+
+
+def render(content: ReportInput) -> str:
+    """Whole page as one text of HTML."""
+    pages = Environment(
+        loader=PackageLoader("tolsim.report"),
+        autoescape=True,
+        undefined=StrictUndefined,
+        trim_blocks=True,
+        lstrip_blocks=True,
+    )
+    summary = content.summary
+    y = summary["yield"]
+    cases = case_rows(summary)
+    fold = len(cases) > MOST_CASES
+    return pages.get_template("report.html").render(
+        content=content,
+        y=y,
+        verdict=verdict_sentence(summary),
+        interval_name=confidence_words(summary),
+        yield_words=percent(y["estimate"]),
+        yield_interval=percents(y["low"], y["high"]),
+        tray=_tray(content.verdicts),
+        starts=start_sentences(summary, content.start_states),
+        start_chart=start_margin_chart(content.start_margins, content.start_margin_limit),
+        limits=limit_rows(summary),
+        cases=[case for case in cases if not (fold and case["clean"])],
+        clean=[case for case in cases if fold and case["clean"]],
+        stresses=stress_rows(summary),
+        limited=limited_stage_rows(summary),
+        stage=stage_rows(summary),
+        others=other_rows(summary),
+        rankings=ranking_columns(summary),
+        waves=[
+            {"wave": wave, "svg": waveform_chart(wave, number)}
+            for number, wave in enumerate(content.waveforms)
+        ],
+        guesses=sum(row.guess for row in content.inputs),
+        quality=_quality(summary["quality"]),
+        provenance=_lines(summary["provenance"]),
+    )
+
+
+def write_report(content: ReportInput, path: Path | str) -> None:
+    """Write the page to a file, whole or not at all."""
+    write_text(Path(path), render(content))
+
+
+def _tray(verdicts: NDArray[np.int8]) -> dict[str, Any]:
+    """Every unit as a tile, in order: one SVG path per verdict."""
+    shown = verdicts[:MOST_TILES]
+    numbers = np.arange(shown.size)
+    paths = {}
+    for name, verdict in (("passed", PASS), ("failed", FAIL), ("undecided", UNDECIDED)):
+        place = numbers[shown == verdict]
+        steps = zip(place % TILES_IN_A_ROW * 8, place // TILES_IN_A_ROW * 8, strict=True)
+        paths[name] = "".join(f"M{x} {y}h6v6h-6z" for x, y in steps)
+    return {
+        "paths": paths,
+        "width": TILES_IN_A_ROW * 8 - 2,
+        "height": -(-shown.size // TILES_IN_A_ROW) * 8 - 2,
+        "units": shown.size,
+        "all": shown.size == verdicts.size,
+    }
+
+
+def _quality(quality: dict[str, Any]) -> list[tuple[str, str]]:
+    """Quality figures in words; what is not known by name is listed as it is."""
+    words = []
+    known = dict(quality)
+    for key, name in (
+        ("energy_balance", "Energy balance: gap between DC input and the sum of all losses"),
+        ("orbit_residual", "Orbit: relative gap after one cycle"),
+    ):
+        entry = known.pop(key, None)
+        if entry:
+            worst, median = _ratio(entry.get("worst")), _ratio(entry.get("median"))
+            words.append((name, f"worst unit {worst}, median {median}"))
+    again = known.pop("rechecked", None)
+    if again:
+        text = (
+            f"{again['units']} units ({percent(again['share'])}); {again['agreed']} agreed; "
+            f"worst difference {_ratio(again['worst_difference'])}"
+        )
+        words.append(("Solved again in the time domain", text))
+    return words + _lines(known)
+
+
+def _ratio(value: float | None) -> str:
+    if value is None:
+        return DASH
+    return f"{100 * value:.2g} %" if abs(value) >= READABLE else f"{value:.1e}"
+
+
+def _lines(entries: dict[str, Any], before: str = "") -> list[tuple[str, str]]:
+    """Nested entries as (name, text), names joined by commas."""
+    lines: list[tuple[str, str]] = []
+    for key, value in entries.items():
+        name = before + str(key).replace("_", " ")
+        if isinstance(value, dict):
+            lines += _lines(value, f"{name}, ")
+        elif isinstance(value, float):
+            lines.append((name, f"{value:.3g}"))
+        else:
+            lines.append((name, DASH if value is None else str(value)))
+    return lines

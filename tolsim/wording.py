@@ -1,0 +1,141 @@
+"""The sentences of summary and report: shares, intervals and the verdict in plain words."""
+
+from __future__ import annotations
+
+import math
+from collections.abc import Mapping, Sequence
+from dataclasses import dataclass
+from typing import Any
+
+from tolsim.quantity import show
+
+Summary = Mapping[str, Any]
+
+DIGITS = 3
+MOST_DECIMALS = 6
+DASH = "\u2013"  # nothing to show
+OPEN = "open"  # an end this many units cannot bound
+
+GOOD = frozenset(("starts", "runs"))
+NAMED_BY_LIMITS = frozenset(("over stress", "out of band", "starts late"))
+NO_START = (
+    "latched both on",
+    "dies away",
+    "starts only with a kick",
+    "wrong mode",
+    "starts late",
+    "undecided",
+)
+
+
+def shown(value: float | None, unit_of_measure: str) -> str:
+    """Number with its unit of measure, three significant digits; a dash for nothing."""
+    if value is None or not math.isfinite(value):
+        return DASH
+    return show(value, unit_of_measure, DIGITS).replace("degC", "°C")
+
+
+def measured(value: float | None, unit_of_measure: str) -> str:
+    """As `shown`, with the zeros that tell its precision: "14.0 V"."""
+    text = shown(value, unit_of_measure)
+    number, blank, unit = text.partition(" ")
+    digits = sum(letter.isdigit() for letter in number.lstrip("-0."))
+    if not 0 < digits < DIGITS or "e" in number:
+        return text
+    point = "" if "." in number else "."
+    return f"{number}{point}{'0' * (DIGITS - digits)}{blank}{unit}"
+
+
+def between(ends: Sequence[float | None], unit_of_measure: str) -> str:
+    """Interval of a figure: "79.1 to 81.3 V"; an end that is not known is "open"."""
+    low, high = ends
+    first = OPEN if low is None else measured(low, unit_of_measure)
+    last = OPEN if high is None else measured(high, unit_of_measure)
+    number, _, unit = first.partition(" ")
+    if unit and last.endswith(f" {unit}"):
+        first = number
+    return f"{first} to {last}"
+
+
+def decimals(share: float) -> int:
+    """Decimals of a percentage that keep its distance from 0 and from 100 % visible."""
+    above, below = 100.0 * abs(share), 100.0 * abs(1.0 - share)
+    if min(above, below) == 0.0:
+        return 1
+    wanted = 1 - math.floor(math.log10(above)), -math.floor(math.log10(below))
+    return min(max(1, *wanted), MOST_DECIMALS)
+
+
+def percent(share: float | None, places: int | None = None) -> str:
+    """Share as a percentage: "98.6 %", "99.97 %", "0 %"."""
+    if share is None:
+        return DASH
+    text = f"{100.0 * share:.{decimals(share) if places is None else places}f}"
+    return f"{text.removesuffix('.0')} %" if share in {0.0, 1.0} else f"{text} %"
+
+
+def percents(low: float, high: float) -> str:
+    """Interval of a share: "97.1 to 99.4 %"."""
+    return f"{percent(low).removesuffix(' %')} to {percent(high)}"
+
+
+def share_with_interval(entry: Mapping[str, Any]) -> str:
+    """Share of an entry that has `units`, `share`, `low` and `high`; never a bare 0 %."""
+    if not entry["units"]:
+        return f"none seen (up to {percent(entry['high'])})"
+    return f"{percent(entry['share'])} ({percents(entry['low'], entry['high'])})"
+
+
+def list_of_units(numbers: list[int], count: int) -> str:
+    """First unit numbers, and whether there are more: "17, 230, …"."""
+    return ", ".join(str(number) for number in numbers) + (", …" if count > len(numbers) else "")
+
+
+@dataclass(frozen=True)
+class Failure:
+    """One way in which units fail: its name, how many units, the first of them."""
+
+    name: str
+    units: int
+    first_units: list[int]
+
+
+def failures(summary: Summary) -> list[Failure]:
+    """Every way units fail, most frequent first; one unit may appear in several."""
+    found = []
+    for entry in summary["limits"]:
+        if entry["units"]:
+            parts = [part["part"] for part in entry["by_part"]]
+            where = f" ({', '.join(parts)})" if parts else ""
+            found.append(Failure(entry["rule"] + where, entry["units"], entry["first_units"]))
+    for entry in summary["outcomes"]:
+        if entry["failed"] and entry["outcome"] not in GOOD | NAMED_BY_LIMITS:
+            name = f"{entry['outcome']} ({entry['condition']}, {entry['state']})"
+            found.append(Failure(name, entry["failed"], entry["first_units"]))
+    return sorted(found, key=lambda failure: -failure.units)
+
+
+def verdict_sentence(summary: Summary) -> str:
+    """Say the verdict: how many units pass, how sure that is, and what fails most."""
+    y = summary["yield"]
+    verb = "passes" if y["passed"] == 1 else "pass"
+    sentence = (
+        f"Of {y['units']} simulated units, {y['passed']} {verb} every limit in every state and "
+        f"condition: yield {percent(y['estimate'])} ({confidence_words(summary)} "
+        f"{percents(y['low'], y['high'])}). {y['undecided']} undecided."
+    )
+    found = failures(summary)
+    if found:
+        worst = found[0]
+        first = worst.first_units[0]
+        units = f"unit {first}" if worst.units == 1 else f"{worst.units} units, first {first}"
+        return f"{sentence} Most common failure: {worst.name}, in {units}."
+    if not y["failed"]:
+        unseen = percent(1.0 - y["low"])
+        return f"{sentence} No failure was seen; up to {unseen} of units may still fail."
+    return sentence
+
+
+def confidence_words(summary: Summary) -> str:
+    """Name of the intervals: "95 % interval"."""
+    return f"{100 * summary['yield']['confidence']:.3g} % interval"
