@@ -150,7 +150,8 @@ class _Entry:
 
     def report(self, mistake: Mistake, table: str = "", prefix: str = "") -> None:
         """Note a mistake with its place."""
-        key = f"{prefix}.{mistake.key}" if prefix and mistake.key else prefix or mistake.key
+        inner = "" if prefix and mistake.key == "value" else mistake.key
+        key = ".".join(word for word in (prefix, inner) if word)
         self.problems.append(
             Problem(
                 self.file,
@@ -260,13 +261,15 @@ class _Entry:
                 continue
             words = given[aspect]
             if isinstance(words, Mapping):
-                origins[aspect] = self._origin(words, origin, f"{table}.{aspect}")
+                own = self._origin(words, origin, f"{table}.{aspect}")
                 if self._shared(words, aspect, table):
                     shared.add(aspect)
                 words = {k: v for k, v in words.items() if k not in ("basis", "source", "shared")}
             else:
-                origins[aspect] = origin
+                own = origin
             laws[aspect] = self._law(aspect, words, name, deviation, table)
+            if laws[aspect] is not None:
+                origins[aspect] = own
         spread = QuantitySpread(
             **laws,
             deviation=cast("Deviation", deviation),

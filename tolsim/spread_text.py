@@ -9,7 +9,7 @@ from tolsim.ageing import AgeingLaw
 from tolsim.datasheet import device_parameters, window_assumptions
 from tolsim.design import Study
 from tolsim.laws import Law
-from tolsim.parts import Inductor, Mosfet
+from tolsim.parts import Capacitor, Mosfet
 from tolsim.quantity import show
 from tolsim.sampling import tables_of
 from tolsim.spread import UNITS
@@ -44,15 +44,19 @@ def describe(table: SpreadTable) -> list[str]:
             if law is None:
                 continue
             origin = spread.origins[aspect]
-            words = (
-                f"{quantity}, {_LABELS[aspect]}: {law_words(law, _unit(quantity, aspect, spread))}"
-            )
-            if aspect in spread.shared or aspect == "lot":
-                words += ", shared by a reel"
+            words = f"{quantity}, {spread_words(table, quantity, aspect)}"
             if (origin.basis, origin.source) != (table.basis, table.source):
                 words += f" ({origin.source})"
             said.append(words + ("  [guess]" if origin.basis == "guess" else f"  [{origin.basis}]"))
     return said
+
+
+def spread_words(table: SpreadTable, quantity: str, aspect: str) -> str:
+    """One law of a table in words: "tolerance: truncated normal (...)"."""
+    spread = table.quantities[quantity]
+    words = law_words(getattr(spread, aspect), _unit(quantity, aspect, spread))
+    shared = ", shared by a reel" if aspect in spread.shared or aspect == "lot" else ""
+    return f"{_LABELS[aspect]}: {words}{shared}"
 
 
 def assumptions(study: Study, tables: Mapping[str, SpreadTable]) -> tuple[str, ...]:
@@ -69,6 +73,7 @@ def assumptions(study: Study, tables: Mapping[str, SpreadTable]) -> tuple[str, .
     ]
     if unspread:
         said.append("No spread table, every unit has the nominal value: " + ", ".join(unspread))
+    lossless: list[str] = []
     for reference, part in study.design.parts.items():
         names = list(tables_of(study, reference))
         if isinstance(part, Mosfet):
@@ -80,13 +85,15 @@ def assumptions(study: Study, tables: Mapping[str, SpreadTable]) -> tuple[str, .
                         f"{reference}: {words}"
                         for words in window_assumptions(part, spread.implied_half_window)
                     ]
-        if isinstance(part, Inductor) and part.resistance is None and part.q is None:
-            said.append(f"{reference}: neither resistance nor Q given, taken as lossless")
+        if isinstance(part, Capacitor) and part.esr is None and part.tan_delta is None:
+            lossless.append(reference)
         if len(names) > 1:
             said.append(
                 f"{reference}: a unit keeps its rank in every load state; each state's table "
                 f"({', '.join(names)}) turns the rank into a value"
             )
+    if lossless:
+        said.append("Neither esr nor tan_delta given, taken as lossless: " + ", ".join(lossless))
     return tuple(dict.fromkeys(said))
 
 

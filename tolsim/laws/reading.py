@@ -85,22 +85,14 @@ def _build(
             read[key] = read_law(value, unit, under(key, report), relative=relative)
         else:
             read[key] = _number(value, _unit_of(kind, key, unit), key, report)
-    if not sound or None in read.values():
-        return None
-    return _make(kind, _without_shorthand(read), report)
-
-
-def _make(kind: type[Law], parameters: Mapping[str, Any], report: Report) -> Law | None:
-    """Call the class, telling what is missing and what does not fit together."""
-    missing = [
-        field.name
-        for field in fields(kind)
-        if field.default is MISSING and field.name not in parameters
-    ]
-    for name in missing:
-        cure = _HALF_WIDTH_HELP if name in ("low", "high") else ""
-        report(Mistake(f"a value (the {kind.NAME} law needs it)", cure, key=name, got="nothing"))
-    if missing:
+    parameters = _without_shorthand(read)
+    for field in fields(kind) if sound else ():  # a misspelt name is not missing as well
+        if field.default is MISSING and field.name not in parameters:
+            cure = _HALF_WIDTH_HELP if field.name in ("low", "high") else ""
+            expected = f"a value (the {kind.NAME} law needs it)"
+            report(Mistake(expected, cure, key=field.name, got="nothing"))
+            sound = False
+    if not sound or None in parameters.values():
         return None
     try:
         return kind(**parameters)
@@ -110,15 +102,19 @@ def _make(kind: type[Law], parameters: Mapping[str, Any], report: Report) -> Law
 
 
 def _without_shorthand(read: Mapping[str, Any]) -> dict[str, Any]:
-    """Limits in place of half widths: about the centre if one is given, else about zero."""
+    """Limits in place of half widths, which are meant about zero."""
     parameters = dict(read)
     if "half_width" in parameters:
-        half = parameters.pop("half_width")
-        parameters = {"low": -half, "high": half, **parameters}
+        parameters = {**_either_side(parameters.pop("half_width"), "low", "high"), **parameters}
     if "removed" in parameters:
-        half = parameters.pop("removed")
-        parameters = {"removed_low": -half, "removed_high": half, **parameters}
+        ends = _either_side(parameters.pop("removed"), "removed_low", "removed_high")
+        parameters = {**ends, **parameters}
     return parameters
+
+
+def _either_side(half: float | None, low: str, high: str) -> dict[str, float | None]:
+    """Limits a half width means; None, already reported, stays None."""
+    return {low: None, high: None} if half is None else {low: -half, high: half}
 
 
 def _unit_of(kind: type[Law], key: str, unit: str) -> str:

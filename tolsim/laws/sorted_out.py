@@ -47,7 +47,10 @@ class SortedOut(Law):
     def ppf(self, u: ArrayLike) -> Floats:
         """Value below which a share `u` of the population lies."""
         v = as_floats(u) * (1.0 - self._removed)
-        return self.whole.ppf(np.where(v < self._below, v, v + self._removed))
+        left = (v < self._below) | (self._below + self._removed >= 1.0)
+        x = self.whole.ppf(np.where(left, v, v + self._removed))
+        # Rounding of v must not put a part back into the bin.
+        return np.where(left, np.minimum(x, self.removed_low), np.maximum(x, self.removed_high))
 
     def cdf(self, x: ArrayLike) -> Floats:
         """Share of the population at or below `x`."""
