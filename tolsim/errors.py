@@ -46,12 +46,11 @@ class Mistake(ValueError):
         self,
         expected: str,
         cure: str = "",
-        *,
         key: str = "",
         got: str = "",
         nearest: str = "",
     ) -> None:
-        super().__init__(expected, cure, key, got, nearest)
+        super().__init__(expected, cure, key, got, nearest)  # so that it can be pickled
         self.expected = expected
         self.cure = cure
         self.key = key

@@ -26,6 +26,8 @@ UNITS_MANDATORY: Final = "units_mandatory"
 """Key of the pydantic context that makes a bare number for a dimensional value a mistake."""
 
 _NUMBER = re.compile(r"([+-]?(?:\d+\.?\d*|\.\d+)(?:[eE][+-]?\d+)?)\s*(.*)")
+_FACTOR = r"(?:1|[A-Za-z_µμΩ°%²]+(?:(?:\^|\*\*)?-?[1-9])?)"
+_UNIT_TEXT = re.compile(rf"(?:{_FACTOR}(?:\s?[*/]\s?{_FACTOR})*)?")
 _PREFIXES: Final = {
     -15: "f", -12: "p", -9: "n", -6: "u", -3: "m", 0: "", 3: "k", 6: "M", 9: "G", 12: "T",
 }  # fmt: skip
@@ -81,7 +83,12 @@ def _registry() -> pint.UnitRegistry[Any]:
 
 
 def _unit_of(text: str, wanted: str) -> pint.Unit:
-    """Pint unit of a unit text as people write it: "A/V2", "ppm/degC", "Ω", "dB"."""
+    """Pint unit of a unit text as people write it: "A/V2", "ppm/degC", "Ω", "dB".
+
+    Only names, single digits and * / ^ are let through, for pint would evaluate the rest.
+    """
+    if not _UNIT_TEXT.fullmatch(text):
+        raise pint.UndefinedUnitError(text)
     text = re.sub(r"(?<=[A-Za-z])(\d)", r"**\1", text)
     if text == "dB":
         text = "decibels"
@@ -126,7 +133,7 @@ def read(text: str, unit: str) -> float:
     except pint.DimensionalityError:
         raise Mistake(example, f"'{unit_text}' measures something else.") from None
     except Exception as error:
-        # Pint lets errors of the tokenizer and of its parser through for odd unit texts.
+        # Pint answers odd unit texts with errors of many kinds ("A0" with a KeyError).
         raise Mistake(example, f"'{unit_text}' is no unit of measure known here.") from error
 
 

@@ -1,0 +1,118 @@
+"""The house rule: a module imports only from floors below its own, never sideways or up.
+
+So the solver knows no study and no chance, statistics know only arrays, and nobody
+imports the command line.  A new module gets its floor here.
+"""
+
+import ast
+from pathlib import Path
+
+import tolsim
+
+FLOORS = [
+    # words and numbers: they know nothing of circuits
+    {"errors", "figure_names", "unit_files", "stats.proportion"},
+    {"quantity", "library", "records", "results", "codes", "coil", "laws.law"}
+    | {"stats.percentiles", "stats.ranking"},
+    {"laws.lognormal", "laws.sorted_out", "laws.triangular", "laws.truncated_normal"}
+    | {"laws.uniform", "stats", "mosfet_sheet", "plain_words", "wording"},
+    {"laws"},
+    # the design: parts, then what is made of them
+    {"parts", "laws.reading"},
+    {"design", "datasheet", "temperature", "ageing"},
+    {"bounds"},
+    # the circuit: it knows the design, but neither studies nor spread
+    {"circuit.devices"},
+    {"circuit.network", "circuit.orbit", "circuit.floquet"},
+    {"circuit.device_groups", "circuit.stepper"},
+    {"circuit.assembly", "circuit.bias", "circuit.cycle"},
+    {"circuit.thermal", "circuit.startup", "circuit.transient"},
+    {"circuit.shooting"},
+    {"circuit.nominal"},
+    {"circuit.continuation"},
+    # figures of an orbit and what they are worth
+    {"figures.waves"},
+    {"figures.parts", "figures.transistors"},
+    {"figures.stage", "figures.start"},
+    {"figures", "verdicts"},
+    # spread and chance
+    {"spread_laws", "spread_table"},
+    {"spread", "sampling"},
+    {"part_values", "spread_checks", "spread_text"},
+    # the door for study files
+    {"outline"},
+    {"net_checks", "limit_checks", "study_checks"},
+    {"study_reading"},
+    {"study"},
+    # answers
+    {"nominals", "summary_ranking"},
+    {"evaluation", "summary", "report.content", "report.tables"},
+    {"report.charts"},
+    {"report.page"},
+    {"report"},
+    # the corridor, and the faces
+    {"run", "replay"},
+    {"terminal"},
+    {"cli"},
+]
+FLOOR = {module: height for height, modules in enumerate(FLOORS, 1) for module in modules}
+PACKAGE = Path(tolsim.__file__).parent
+
+
+def module_name(path):
+    """Name within the package: "circuit.devices"; a package is called like its folder."""
+    parts = path.relative_to(PACKAGE).with_suffix("").parts
+    return ".".join(parts[:-1] if parts[-1] == "__init__" else parts)
+
+
+def imported(path):
+    """Every tolsim module that a file imports, in any spelling, at any depth."""
+    for node in ast.walk(ast.parse(path.read_text(encoding="utf-8"))):
+        if isinstance(node, ast.Import):
+            names = [alias.name for alias in node.names]
+        elif isinstance(node, ast.ImportFrom) and node.level:
+            names = ["tolsim.(relative import)"]
+        elif isinstance(node, ast.ImportFrom):
+            both = [(node.module, f"{node.module}.{alias.name}") for alias in node.names]
+            names = [full if full.removeprefix("tolsim.") in FLOOR else mod for mod, full in both]
+        else:
+            continue
+        ours = (name for name in names if name == "tolsim" or name.startswith("tolsim."))
+        yield from (name.removeprefix("tolsim").removeprefix(".") for name in ours)
+
+
+def test_every_module_has_a_floor_and_imports_only_from_below():
+    wrong = []
+    for path in sorted(PACKAGE.rglob("*.py")):
+        name = module_name(path)
+        targets = [target for target in imported(path) if target]  # "" is the version
+        if name not in FLOOR:
+            if targets or path.name != "__init__.py":
+                wrong.append(f"{name} has no floor: add it to FLOORS")
+            continue
+        wrong += [
+            f"{name} (floor {FLOOR[name]}) may not import {target} (floor {FLOOR.get(target)})"
+            for target in targets
+            if FLOOR.get(target, len(FLOORS)) >= FLOOR[name]
+        ]
+    assert wrong == []
+
+
+def test_no_file_is_too_long_to_read():
+    lengths = {
+        module_name(p): len(p.read_text("utf-8").splitlines()) for p in PACKAGE.rglob("*.py")
+    }
+    assert {name: lines for name, lines in lengths.items() if lines > 400} == {}
+
+
+def test_no_function_is_too_long_to_read():
+    """Docstrings are not counted: they may be as long as they need to be."""
+    wrong = {}
+    for path in PACKAGE.rglob("*.py"):
+        for node in ast.walk(ast.parse(path.read_text(encoding="utf-8"))):
+            if isinstance(node, ast.FunctionDef):
+                body = node.body[1:] if ast.get_docstring(node) else node.body
+                lines = body[-1].end_lineno - body[0].lineno + 1 if body else 0
+                if lines > 60:
+                    wrong[f"{module_name(path)}.{node.name}"] = lines
+    assert wrong == {}
