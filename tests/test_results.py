@@ -86,6 +86,9 @@ def test_outcomes_count_every_row(run, summary):
     assert (latched["condition"], latched["state"], latched["units"]) == ("cold", "dark", 2)
     assert latched["first_units"] == [17, 230]
     assert latched["failed"] == 2
+    assert latched["no_limit_broken"] == {"units": 2, "first_units": [17, 230]}
+    over = table[table["outcome"] == "over stress"].iloc[0]
+    assert over["no_limit_broken"]["units"] == 0
     assert latched["low"] < latched["share"] < latched["high"]
 
 

@@ -21,8 +21,9 @@ not known (an interval that this many units cannot close).  Every `low`, `high` 
                 fails if it fails in any case; else it is undecided if it is in any case.
                 estimate = passed / units; low takes undecided units as failed, high as passed
 ``cases``       [{condition, state, and all keys of `yield` but for that case alone}]
-``outcomes``    [{condition, state, outcome, units, share, low, high, first_units, failed}];
-                `failed` counts those of them that fail
+``outcomes``    [{condition, state, outcome, units, share, low, high, first_units, failed,
+                no_limit_broken {units, first_units}}]; `failed` counts those of them that
+                fail, `no_limit_broken` those that fail though no limit is broken
 ``limits``      [{limit (number in the study, from 0), rule, figure, title, unit_of_measure,
                 parts, states, conditions, bound {at_most, at_least, share_of_rating},
                 units (failing), share, low, high, first_units,

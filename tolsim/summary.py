@@ -114,6 +114,8 @@ def _counted(unit: NDArray[np.int64], hit: Flags, confidence: float) -> dict[str
 
 def _outcomes(rows: UnitRows, failed: Flags, confidence: float) -> list[dict[str, Any]]:
     codes, words = rows.words("outcome")
+    broken, which = rows.words("failed_limits")
+    no_limit = failed & _where(broken, which, "")
     found = []
     for c, (condition, state) in enumerate(rows.cases):
         for code, outcome in enumerate(words):
@@ -126,6 +128,10 @@ def _outcomes(rows: UnitRows, failed: Flags, confidence: float) -> list[dict[str
                         "outcome": outcome,
                         **_counted(rows.unit, here, confidence),
                         "failed": int((here & failed[:, c]).sum()),
+                        "no_limit_broken": {
+                            "units": int((here & no_limit[:, c]).sum()),
+                            "first_units": rows.unit[here & no_limit[:, c]][:FIRST_UNITS],
+                        },
                     }
                 )
     return found

@@ -17,7 +17,6 @@ DASH = "\u2013"  # nothing to show
 OPEN = "open"  # an end this many units cannot bound
 
 GOOD = frozenset(("starts", "runs"))
-NAMED_BY_LIMITS = frozenset(("over stress", "out of band", "starts late"))
 NO_START = (
     "latched both on",
     "dies away",
@@ -101,7 +100,10 @@ class Failure:
 
 
 def failures(summary: Summary) -> list[Failure]:
-    """Every way units fail, most frequent first; one unit may appear in several."""
+    """Every way units fail, most frequent first: limits, then outcomes that break none.
+
+    One unit may appear in several.
+    """
     found = []
     for entry in summary["limits"]:
         if entry["units"]:
@@ -109,10 +111,28 @@ def failures(summary: Summary) -> list[Failure]:
             where = f" ({', '.join(parts)})" if parts else ""
             found.append(Failure(entry["rule"] + where, entry["units"], entry["first_units"]))
     for entry in summary["outcomes"]:
-        if entry["failed"] and entry["outcome"] not in GOOD | NAMED_BY_LIMITS:
+        rest = entry["no_limit_broken"]
+        if rest["units"]:
             name = f"{entry['outcome']} ({entry['condition']}, {entry['state']})"
-            found.append(Failure(name, entry["failed"], entry["first_units"]))
+            found.append(Failure(name, rest["units"], rest["first_units"]))
     return sorted(found, key=lambda failure: -failure.units)
+
+
+def hardest(summary: Summary) -> list[tuple[float, Mapping[str, Any]]]:
+    """Share of the limit (else the rating) used at p99, and its entry, most used first.
+
+    One entry per part and figure: that of its worst condition and state.
+    """
+    worst: dict[tuple[str, str], tuple[float, Mapping[str, Any]]] = {}
+    for entry in summary["figures"]:
+        reference = entry["at_most"] or entry["rating"]
+        if not entry["part"] or not reference or entry["p99"] is None:
+            continue
+        use = entry["p99"] / reference
+        key = (entry["part"], entry["figure"])
+        if key not in worst or use > worst[key][0]:
+            worst[key] = (use, entry)
+    return sorted(worst.values(), key=lambda pair: -pair[0])
 
 
 def verdict_sentence(summary: Summary) -> str:

@@ -68,7 +68,7 @@ def start_margin_chart(margins: Floats, limit: float | None) -> Markup:
         colours = np.where(failing, RUST, BLUE).tolist()
         axes.bar(edges[:-1], heights, np.diff(edges), align="edge", color=colours, ec="white")
         axes.set_ylim(0, 1.3 * heights.max())
-        _mark(axes, 0.0, f"starts: {np.sum(known <= 0)} below", MUTED, 1.0)
+        _mark(axes, 0.0, f"0 dB: {np.sum(known <= 0)} below", MUTED, 1.0)
         if limit:
             words = f"limit {shown(limit, 'dB')}: {np.sum(known < limit)} below"
             _mark(axes, limit, words, RUST, 0.9)

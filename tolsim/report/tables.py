@@ -11,6 +11,7 @@ from tolsim.wording import (
     GOOD,
     NO_START,
     between,
+    hardest,
     list_of_units,
     measured,
     percent,
@@ -66,19 +67,7 @@ class StressRow:
 
 def stress_rows(summary: Summary) -> list[StressRow]:
     """Every figure with a rating or an upper limit, worst case only, most used first."""
-    worst: dict[tuple[str, str], tuple[float, Mapping[str, Any]]] = {}
-    for entry in summary["figures"]:
-        if not entry["part"] or entry["worse"] != "high":
-            continue
-        reference = entry["limit"] or entry["rating"]
-        if reference is None or entry["p99"] is None:
-            continue
-        use = entry["p99"] / reference
-        key = (entry["part"], entry["figure"])
-        if key not in worst or use > worst[key][0]:
-            worst[key] = (use, entry)
-    ordered = sorted(worst.values(), key=lambda pair: -pair[0])
-    return [_stress_row(use, entry) for use, entry in ordered]
+    return [_stress_row(use, entry) for use, entry in hardest(summary)]
 
 
 def _stress_row(use: float, entry: Mapping[str, Any]) -> StressRow:

@@ -1,0 +1,166 @@
+"""The page: self-contained, verdict first, honest about what is not known."""
+
+import re
+from dataclasses import replace
+from html.parser import HTMLParser
+
+import fake_run
+import numpy as np
+import pytest
+
+from tolsim.report import render, write_report
+from tolsim.wording import verdict_sentence
+
+
+@pytest.fixture(scope="module")
+def content():
+    return fake_run.report()
+
+
+@pytest.fixture(scope="module")
+def page(content):
+    return render(content)
+
+
+class Words(HTMLParser):
+    """Visible text of a page, and the order in which its elements close."""
+
+    def __init__(self) -> None:
+        super().__init__()
+        self.text, self.ids, self.tags, self.open = [], [], set(), []
+
+    def handle_starttag(self, tag, attrs):
+        """Remember ids and what is open."""
+        self.tags.add(tag)
+        self.ids += [value for name, value in attrs if name == "id"]
+        if tag not in {"meta", "br", "link", "hr", "img"}:
+            self.open.append(tag)
+
+    def handle_startendtag(self, tag, attrs):
+        """Open and close at once."""
+        self.handle_starttag(tag, attrs)
+        self.handle_endtag(tag)
+
+    def handle_endtag(self, tag):
+        """Elements close in the order in which they opened."""
+        assert self.open.pop() == tag
+
+    def handle_data(self, data):
+        """Keep text, but not styles."""
+        if not self.open or self.open[-1] != "style":
+            self.text.append(data)
+
+
+def read(page):
+    words = Words()
+    words.feed(page)
+    assert words.open == []
+    return words
+
+
+def text_of(page):
+    return re.sub(r"\s+", " ", " ".join(read(page).text))
+
+
+def test_nothing_is_fetched_and_nothing_runs(page):
+    assert "http:" not in page
+    assert "https:" not in page
+    assert "@import" not in page
+    assert not re.search(r"url\((?!#)", page)
+    assert not re.search(r'\b(src|href)="(?!#)', page)
+    tags = read(page).tags
+    assert not tags & {"script", "link", "iframe", "img", "object"}
+
+
+def test_verdict_comes_first(content, page):
+    text = text_of(page)
+    verdict = verdict_sentence(content.summary)
+    assert text.index(verdict) < text.index("Does it start?") < text.index("What fails")
+    assert text.index("What fails") < text.index("Cautions") < text.index("How to repeat it")
+
+
+def test_undecided_units_are_shown(page):
+    text = text_of(page)
+    assert "1 undecided." in text
+    assert "lower end of the yield takes these units as failed" in text
+
+
+def test_guesses_are_marked(page):
+    assert page.count('class="badge guess"') == 2
+    assert "2 of 6 inputs are guesses" in text_of(page)
+    assert "not stated" in text_of(page)  # a guess without a source
+
+
+def test_no_rate_without_interval(page):
+    text = text_of(page)
+    assert "none seen (up to" in text
+    assert not re.search(r"[^.\d]0 %(?! \()", text.replace("to 0 %", ""))
+
+
+def test_failing_units_are_named(page):
+    text = text_of(page)
+    assert "latched both on" in text
+    assert "17, 230" in text
+    assert "2 latched both on: 0.40 % (0.048 to 1.4 %), units 17, 230." in text
+
+
+def test_same_content_same_bytes(content, page):
+    assert render(content) == page
+
+
+def test_ids_of_pictures_do_not_clash(page):
+    ids = read(page).ids
+    assert len(ids) == len(set(ids))
+    for target in re.findall(r'(?:href="|url\()#([^")]+)', page):
+        assert target in ids
+
+
+def test_texts_of_users_are_escaped(content):
+    wave = replace(content.waveforms[0], title="<b>", label="$x_1$ & <i>")
+    page = render(replace(content, title="<script>", scenario="<img>", waveforms=(wave,)))
+    tags = read(page).tags
+    assert not tags & {"script", "img", "i"}
+    assert "$x_1$" in text_of(page)
+
+
+def test_a_page_with_next_to_nothing_on_it(content):
+    summary = {**content.summary, "figures": [], "limits": [], "ranking": [], "quality": {}}
+    empty = replace(
+        content,
+        summary=summary,
+        start_margins=np.full(500, np.nan),
+        start_margin_limit=None,
+        start_states=(),
+        waveforms=(),
+        inputs=(),
+        not_modelled=(),
+        study_text="",
+    )
+    text = text_of(render(empty))
+    assert "No state of this study is one in which the stage is switched on." in text
+    assert "there is nothing to compare with" in text
+
+
+def test_many_states_fold_the_quiet_ones(content):
+    summary = dict(content.summary)
+    case = next(c for c in summary["cases"] if c["state"] == "full")
+    outcome = next(o for o in summary["outcomes"] if o["state"] == "full")
+    summary["cases"] = summary["cases"] + [{**case, "state": f"s{i}"} for i in range(20)]
+    summary["outcomes"] = summary["outcomes"] + [{**outcome, "state": f"s{i}"} for i in range(20)]
+    assert "more in which no unit fails" in text_of(render(replace(content, summary=summary)))
+
+
+def test_file_is_written_whole(content, page, tmp_path):
+    write_report(content, tmp_path / "report.html")
+    assert (tmp_path / "report.html").read_text(encoding="utf-8") == page
+    assert [path.name for path in tmp_path.iterdir()] == ["report.html"]
+
+
+def test_start_margins_are_those_of_start_states(content):
+    rows = fake_run.results().units
+    dark = rows[rows["state"] == "dark"].groupby("unit")["start_margin"].min()
+    assert content.start_margins == pytest.approx(dark.to_numpy(), nan_ok=True)
+    assert content.start_margin_limit == 3.0
+    assert np.bincount(content.verdicts).tolist() == [
+        content.summary["yield"][key] for key in ("passed", "failed", "undecided")
+    ]

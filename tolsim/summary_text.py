@@ -1,0 +1,93 @@
+"""The summary of a run as plain lines of at most 80 columns, for the terminal."""
+
+from __future__ import annotations
+
+import textwrap
+from collections.abc import Iterator, Mapping
+from typing import Any
+
+from tolsim.wording import (
+    failures,
+    hardest,
+    list_of_units,
+    measured,
+    percent,
+    verdict_sentence,
+)
+
+WIDTH = 80
+MOST_FAILURES = 6
+MOST_STRESSES = 8
+MOST_FACTORS = 3
+BAR = 12  # columns for 0 to 100 % of the limit
+
+Summary = Mapping[str, Any]
+
+
+def summary_lines(summary: Summary) -> list[str]:
+    """Verdict, failures, hardest driven parts, leading factors and quality as lines.
+
+    Parameters
+    ----------
+    summary : mapping
+        As documented in `tolsim.results`.
+    """
+    lines = textwrap.wrap(verdict_sentence(summary), WIDTH)
+    for heading, body in (
+        ("Failing units (one unit may appear in several rows)", _failures(summary)),
+        ("Hardest driven: p99 over the limit, else over the rating", _stresses(summary)),
+        ("What matters: share of variance, 95 % interval", _factors(summary)),
+        ("Quality", _quality(summary["quality"])),
+    ):
+        rows = list(body)
+        if rows:
+            title = heading.replace("95 %", f"{100 * summary['yield']['confidence']:.3g} %")
+            lines += ["", title, *(_cut(f"  {row}") for row in rows)]
+    return lines
+
+
+def _failures(summary: Summary) -> Iterator[str]:
+    found = failures(summary)
+    for failure in found[:MOST_FAILURES]:
+        units = list_of_units(failure.first_units[:4], failure.units)
+        name = textwrap.shorten(failure.name, 48, placeholder=" ...")
+        yield f"{failure.units:>6}  {name:<48}  {units}"
+    if len(found) > MOST_FAILURES:
+        yield f"{len(found) - MOST_FAILURES} more kinds of failure in the report"
+
+
+def _stresses(summary: Summary) -> Iterator[str]:
+    for use, entry in hardest(summary)[:MOST_STRESSES]:
+        filled = "#" * min(round(use * BAR), BAR)
+        over = "!" if use > 1.0 else " "
+        name = textwrap.shorten(f"{entry['part']} {entry['title'].lower()}", 27, placeholder="...")
+        p99 = measured(entry["p99"], entry["unit_of_measure"])
+        where = f"{entry['condition']}, {entry['state']}"
+        yield f"{name:<27} [{filled:<{BAR}}]{over}{use:>5.0%}  {p99:>8}  {where}"
+
+
+def _factors(summary: Summary) -> Iterator[str]:
+    for ranking in summary["ranking"]:
+        if ranking["reason"]:
+            yield f"{ranking['title']}: not ranked, {ranking['reason']}"
+            continue
+        yield f"{ranking['title']}:"
+        seen = [factor for factor in ranking["factors"] if factor["distinguishable"]]
+        for factor in seen[:MOST_FACTORS]:
+            low, high = max(factor["low"], 0.0), min(factor["high"], 1.0)
+            name = textwrap.shorten(factor["factor"], 46, placeholder="...")
+            yield f"  {name:<46} {max(factor['share'], 0.0):>4.0%}  ({low:.0%} to {high:.0%})"
+        if not seen:
+            yield "  no factor can be told from one without effect"
+
+
+def _quality(quality: Mapping[str, Any]) -> Iterator[str]:
+    balance, again = quality.get("energy_balance"), quality.get("rechecked")
+    if balance and balance.get("worst") is not None:
+        yield f"energy balance: worst unit off by {percent(balance['worst'])}"
+    if again:
+        yield f"solved again in the time domain: {again['units']}, {again['agreed']} agree"
+
+
+def _cut(line: str) -> str:
+    return line.rstrip() if len(line) <= WIDTH else line[: WIDTH - 3].rstrip() + "..."
