@@ -45,12 +45,13 @@ FLOORS = [
     {"study_reading"},
     {"study"},
     # answers
-    {"nominals", "summary_ranking"},
-    {"evaluation", "summary", "report.content", "report.tables"},
+    {"nominals", "provenance", "summary_ranking"},
+    {"evaluation", "summary", "summary_text", "report.content", "report.tables"},
     {"report.charts"},
     {"report.page"},
     {"report"},
     # the corridor, and the faces
+    {"presentation", "recheck"},
     {"run", "replay"},
     {"terminal"},
     {"cli"},

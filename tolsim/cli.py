@@ -77,15 +77,25 @@ def main() -> None:
 @main.command()
 @click.argument("study")
 @_tables_option
-def check(study: str, tables_dir: Path | None) -> None:
-    """Check STUDY: list every mistake, or show what would be run.
+@click.option("--files-only", is_flag=True, help="Only check the files, solve nothing.")
+def check(study: str, tables_dir: Path | None, *, files_only: bool) -> None:
+    """Check STUDY: list every mistake, or show its nominal unit.
 
     STUDY is a TOML file or the name of a shipped study.
     """
     from tolsim.study import open_study
-    from tolsim.terminal import show_study
+    from tolsim.terminal import console, show_operating_point, show_study
 
-    show_study(open_study(find_study(study), tables_dir))
+    opened = open_study(find_study(study), tables_dir)
+    show_study(opened)
+    if files_only:
+        return
+    from tolsim.nominals import prepare
+
+    with console(stderr=True).status("Solving the nominal unit ..."):
+        cases = prepare(opened.study, opened.tables)
+    figures = {name: case.figures for name, case in cases.items()}
+    show_operating_point(opened.study, figures)
 
 
 @main.command()

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import math
 import textwrap
 from collections import Counter
 from collections.abc import Callable, Iterator, Mapping, Sequence
@@ -14,18 +15,25 @@ from rich.progress import BarColumn, MofNCompleteColumn, Progress, TextColumn, T
 from rich.table import Table
 from rich.text import Text
 
+from tolsim.bounds import Bound, applies, bounds
 from tolsim.design import Study
+from tolsim.figure_names import FIGURES
 from tolsim.quantity import show
 from tolsim.spread_table import SpreadTable
 from tolsim.spread_text import assumptions, describe
 from tolsim.study import StudyFile
-from tolsim.wording import failures, percent, percents, shown, verdict_sentence
+from tolsim.summary_text import summary_lines
+from tolsim.wording import shown
 
 _WIDTH = 80
-_MOST_ROWS = 8  # of a table in the summary; the report has all
+_MOST_ROWS = 8  # of the list of limits that are near
+_POINT = ("frequency", "start_margin", "input_power", "output_power")
 
 Step = Callable[[int, int], None]
 """Called with the units done and the units wanted."""
+
+Cases = Mapping[tuple[str, str], Mapping[str, float]]
+"""Figures of the nominal unit by column, for every (condition, state)."""
 
 
 def console(*, stderr: bool = False) -> Console:
@@ -115,75 +123,56 @@ def show_table(table: SpreadTable) -> None:
         screen.print(Text(line))
 
 
+def _nominal(figures: Mapping[str, float], name: str) -> str:
+    return shown(figures.get(name), FIGURES[name].unit_of_measure)
+
+
+def _limit(bound: Bound) -> str:
+    """The limit in words: "at most 160 V", "at least 3 dB"."""
+    unit = bound.figure.unit_of_measure
+    sides = (("at least", bound.at_least), ("at most", bound.at_most))
+    return ", ".join(f"{word} {shown(value, unit)}" for word, value in sides if value is not None)
+
+
+def _use(bound: Bound, value: float) -> float:
+    """How near a figure is to its limit: 1 at the limit, more beyond it."""
+    most = value / bound.at_most if bound.at_most else -math.inf
+    least = bound.at_least / value if bound.at_least and value > 0.0 else -math.inf
+    return max(most, least)
+
+
+def show_operating_point(study: Study, cases: Cases) -> None:
+    """Show what the nominal unit does in every case, and which limits it comes near to."""
+    screen = console()
+    screen.print()
+    screen.print(Text("Nominal unit:", style="bold"))
+    grid = _grid("condition", "state", *(f"{FIGURES[name].title}>" for name in _POINT))
+    for (condition, state), figures in cases.items():
+        values = (_nominal(figures, name) for name in _POINT)
+        grid.add_row(condition, state, *values)
+    screen.print(grid)
+    uses = [
+        (_use(bound, figures[bound.column]), bound, figures[bound.column], case)
+        for case, figures in cases.items()
+        for bound in bounds(study)
+        if applies(study.limits[bound.limit], *case) and bound.column in figures
+    ]
+    screen.print()
+    screen.print(Text("Nearest to their limits:", style="bold"))
+    grid = _grid("figure", "part", "nominal>", "limit>", "condition", "state")
+    for _, bound, value, case in sorted(uses, key=lambda row: -row[0])[:_MOST_ROWS]:
+        unit = bound.figure.unit_of_measure
+        grid.add_row(bound.figure.title, bound.part, shown(value, unit), _limit(bound), *case)
+    screen.print(grid)
+
+
 def show_summary(summary: Mapping[str, Any], folder: Path) -> None:
     """Show verdict, failures, stresses, ranking and quality of a run."""
     screen = console()
-    screen.print(Text(verdict_sentence(summary), style="bold"))
-    found = failures(summary)
-    if found:
-        grid = _grid("failure", "units>", "first")
-        for failure in found[:_MOST_ROWS]:
-            first = ", ".join(str(number) for number in failure.first_units[:3])
-            grid.add_row(failure.name, str(failure.units), first)
-        screen.print(grid)
-    screen.print(_stresses(summary["figures"]))
-    for ranking in summary["ranking"]:
-        screen.print(_ranking(ranking))
-    screen.print(Text(_quality(summary["quality"])))
+    for line in summary_lines(summary):
+        screen.print(Text(line))
+    screen.print()
     screen.print(Text(f"Report: {folder / 'report.html'}", overflow="fold"))
-
-
-def _stresses(figures: Sequence[Mapping[str, Any]]) -> Table:
-    """Worst case of every figure that has a limit, nearest to its limit first."""
-    worst: dict[tuple[str, str], tuple[float, Mapping[str, Any]]] = {}
-    for entry in figures:
-        tail = entry["p99"] if entry["worse"] == "high" else entry["p1"]
-        if entry["limit"] is None or tail is None:
-            continue
-        use = _use(tail, entry["limit"], entry["limit_side"])
-        key = (entry["part"], entry["figure"])
-        if key not in worst or use > worst[key][0]:
-            worst[key] = (use, entry)
-    grid = _grid("figure", "part", "median>", "tail>", "limit>", "where")
-    for _, entry in sorted(worst.values(), key=lambda pair: -pair[0])[:_MOST_ROWS]:
-        unit = entry["unit_of_measure"]
-        name = "p99" if entry["worse"] == "high" else "p1"
-        grid.add_row(
-            entry["title"],
-            entry["part"],
-            shown(entry["p50"], unit),
-            f"{name} {shown(entry[name], unit)}",
-            shown(entry["limit"], unit),
-            f"{entry['condition']}, {entry['state']}",
-        )
-    return grid
-
-
-def _use(tail: float, limit: float, side: str) -> float:
-    """How much of a limit the tail of a figure uses; above 1 it is past the limit."""
-    distance = tail - limit if side == "at_most" else limit - tail
-    return 1.0 + distance / (abs(limit) or 1.0)
-
-
-def _ranking(ranking: Mapping[str, Any]) -> Table:
-    """Factors that matter most for one target, or why they are not ranked."""
-    grid = _grid(f"what moves {ranking['target']}", "share of variance>")
-    if ranking["reason"]:
-        grid.add_row(ranking["reason"], "")
-    for factor in [f for f in ranking["factors"] if f["distinguishable"]][:5]:
-        grid.add_row(
-            factor["factor"],
-            f"{percent(factor['share'])} ({percents(factor['low'], factor['high'])})",
-        )
-    return grid
-
-
-def _quality(quality: Mapping[str, Any]) -> str:
-    balance, again = quality["energy_balance"], quality["rechecked"]
-    return (
-        f"Energy balance within {percent(balance['worst'])} in every unit; {again['agreed']} of "
-        f"{again['units']} units solved a second way agreed."
-    )
 
 
 def _grid(*heads: str) -> Table:
