@@ -1,0 +1,104 @@
+"""One chunk of units through every case: draws -> values -> orbits -> figures -> verdicts."""
+
+from __future__ import annotations
+
+from collections.abc import Mapping, Sequence
+from dataclasses import dataclass
+
+import numpy as np
+import pandas as pd
+
+from tolsim.circuit.continuation import solve_units
+from tolsim.circuit.orbit import Solution, Status
+from tolsim.circuit.thermal import Case
+from tolsim.design import Study
+from tolsim.figures import measure_orbits, measure_start
+from tolsim.nominals import CaseName, PreparedCase, case_of
+from tolsim.part_values import part_values
+from tolsim.sampling import Draws, Factor, draw
+from tolsim.spread_table import SpreadTable
+from tolsim.verdicts import judge
+
+BATCH = 256  # units solved side by side: enough to amortise calls, small enough for the cache
+
+
+@dataclass(frozen=True)
+class Plan:
+    """All that a worker needs to evaluate any unit of a study."""
+
+    study: Study
+    tables: Mapping[str, SpreadTable]
+    factors: tuple[Factor, ...]
+    cases: Mapping[CaseName, PreparedCase]
+
+
+@dataclass(frozen=True)
+class Chunk:
+    """Finished units."""
+
+    first: int
+    rows: pd.DataFrame  # one row per unit, condition and state
+    factors: pd.DataFrame  # one row per unit
+
+
+def evaluate(plan: Plan, first: int, count: int) -> Chunk:
+    """Units `first` ... `first + count - 1` in every case."""
+    draws = draw(plan.factors, plan.study.run.seed, first, count)
+    tables = [case_rows(plan, name, draws) for name in plan.cases]
+    rows = pd.concat(tables, ignore_index=True)
+    factors = pd.DataFrame(draws.values, columns=list(draws.names))
+    factors.insert(0, "unit", np.arange(first, first + count))
+    return Chunk(first, rows, factors)
+
+
+def solve_case(plan: Plan, name: CaseName, draws: Draws) -> tuple[Case, Solution]:
+    """Orbits of the drawn units in one case."""
+    values = part_values(plan.study, plan.tables, *name, draws)
+    case = case_of(plan.study, values)
+    return case, solve_units(case, plan.cases[name].compass, plan.study.run.steps_per_cycle)
+
+
+def case_figures(plan: Plan, name: CaseName, case: Case, solution: Solution) -> dict[str, object]:
+    """Figures of solved units, start figures where the state is one to start in."""
+    prepared = plan.cases[name]
+    figures: dict[str, object] = dict(measure_orbits(case, solution))
+    starts = plan.study.states[name[1]].starts_here
+    if starts and plan.study.kind == "self-oscillating":
+        figures |= measure_start(case, prepared.compass.nominal)
+    return figures
+
+
+def case_rows(plan: Plan, name: CaseName, draws: Draws) -> pd.DataFrame:
+    """Rows of the drawn units in one case."""
+    case, solution = solve_case(plan, name, draws)
+    figures = case_figures(plan, name, case, solution)
+    verdicts = judge(
+        plan.study, *name, solution.status, figures, plan.cases[name].figures  # type: ignore[arg-type]
+    )
+    figures.pop("mode_match", None)
+    condition, state = name
+    columns: dict[str, object] = {
+        "unit": np.arange(draws.first, draws.first + draws.count),
+        "condition": condition,
+        "state": state,
+        "verdict": verdicts.verdict.astype(object),
+        "outcome": verdicts.outcome.astype(object),
+        "failed_limits": verdicts.failed_limits,
+        "status": np.array([_status_word(code) for code in solution.status], dtype=object),
+        "way": solution.way.astype(object),
+    }
+    missing = np.full(draws.count, np.nan)
+    ordered = {column: figures.get(column, missing) for column in figure_columns(plan)}
+    return pd.DataFrame(columns | ordered)
+
+
+def _status_word(code: int) -> str:
+    return Status(code).name.lower().replace("_", " ")
+
+
+def figure_columns(plan: Plan) -> Sequence[str]:
+    """Every figure any case can have, in one order for all chunks."""
+    names: dict[str, None] = {}
+    for prepared in plan.cases.values():
+        names |= dict.fromkeys(name for name in prepared.figures if name != "mode_match")
+    return tuple(names)

@@ -1,0 +1,111 @@
+"""The nominal unit of every case of a study, and the compass that leads to all other units."""
+
+from __future__ import annotations
+
+from collections.abc import Mapping
+from dataclasses import dataclass, replace
+
+import numpy as np
+
+from tolsim.circuit.bias import bias_point
+from tolsim.circuit.continuation import Compass, aim, solve_units
+from tolsim.circuit.nominal import Nominal, find_nominal, frame_of
+from tolsim.circuit.orbit import Status
+from tolsim.circuit.startup import modes
+from tolsim.circuit.thermal import Case, mosfets
+from tolsim.design import Study
+from tolsim.errors import RunError
+from tolsim.figures import measure_orbits, measure_start
+from tolsim.part_values import Values, nominal_values
+from tolsim.spread_table import SpreadTable
+
+CaseName = tuple[str, str]  # condition, state
+
+
+@dataclass(frozen=True)
+class PreparedCase:
+    """One condition and state, ready for its units."""
+
+    nominal: Nominal
+    compass: Compass
+    figures: Mapping[str, float]  # of the nominal unit
+
+
+def cases_of(study: Study) -> tuple[CaseName, ...]:
+    """Every condition with every state, start states first."""
+    states = sorted(study.states, key=lambda name: not study.states[name].starts_here)
+    return tuple((condition, state) for condition in study.conditions for state in states)
+
+
+def case_of(study: Study, values: Values) -> Case:
+    """Units of a study as the circuit core takes them."""
+    heated = any(part.thermal_resistance for part in mosfets(study.design).values())
+    return Case(study.design, values, heated)
+
+
+def prepare(study: Study, tables: Mapping[str, SpreadTable]) -> dict[CaseName, PreparedCase]:
+    """Find the nominal orbit of every case.
+
+    The first case is integrated from its kicked bias point; the others are followed from it
+    through the change of part values, and only where that fails integrated themselves.
+
+    Raises
+    ------
+    RunError
+        If the nominal unit has no periodic orbit in any case.
+    """
+    steps = study.run.steps_per_cycle
+    found: dict[CaseName, Nominal] = {}
+    leader: Compass | None = None
+    for name in cases_of(study):
+        case = case_of(study, nominal_values(study, tables, *name))
+        nominal = None if leader is None else _follow(case, leader, steps)
+        if nominal is None:
+            nominal = find_nominal(case, steps)
+        found[name] = nominal
+        if leader is None and nominal.found:
+            leader = aim(nominal, tuple(case.values), steps)
+    if leader is None:
+        raise RunError(_no_orbit(found))
+    return {name: _prepared(study, nominal, leader, steps) for name, nominal in found.items()}
+
+
+def _follow(case: Case, leader: Compass, steps: int) -> Nominal | None:
+    """The nominal unit of another case, reached from the leader's; None if it is not."""
+    reference = leader.nominal
+    solution = solve_units(case, leader, steps)
+    if solution.status[0] != Status.SETTLED or reference.frame is None:
+        return None
+    network = case.network(case.cold_junctions())
+    bias = bias_point(network, reference.bias.x)
+    frame = frame_of(network, solution, reference.frame.lead)
+    leading = modes(network, bias, reference.shift)
+    return Nominal(case, bias, leading, reference.shift, solution, frame)
+
+
+def _prepared(study: Study, nominal: Nominal, leader: Compass, steps: int) -> PreparedCase:
+    """Aim from the case's own nominal orbit, or from the leader's if it has none."""
+    compass = leader
+    figures = {}
+    if nominal.found:
+        keys = tuple(key for key in nominal.case.values if not key.endswith("largest_share"))
+        compass = aim(nominal, keys, steps)
+        figures = measure_orbits(nominal.case, nominal.solution)
+    if study.kind == "self-oscillating":
+        start_from = nominal if nominal.found else replace(leader.nominal, bias=nominal.bias)
+        figures = figures | measure_start(nominal.case, start_from)
+    plain = {name: float(value[0]) for name, value in figures.items()}
+    return PreparedCase(nominal, compass, plain)
+
+
+def _no_orbit(found: Mapping[CaseName, Nominal]) -> str:
+    lines = []
+    for (condition, state), nominal in found.items():
+        growth = float(np.asarray(nominal.modes.growth)[0])
+        tells = "grows" if growth > 0 else "decays"
+        lines.append(f"  {condition} / {state}: the leading mode {tells} ({growth:.3g} 1/s)")
+    return (
+        "The nominal unit settles on no periodic orbit in any case, so there is nothing to"
+        " compare units with.\n" + "\n".join(lines) + "\n"
+        "Look at the bias point (is any gate above its threshold?), the feedback and the load."
+    )

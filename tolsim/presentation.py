@@ -1,0 +1,159 @@
+"""What the report shows beside the statistics: waveforms, inputs with their origin, the small print."""
+
+from __future__ import annotations
+
+from collections.abc import Iterator, Mapping
+
+import numpy as np
+from numpy.typing import NDArray
+
+from tolsim.circuit.orbit import Status
+from tolsim.circuit.thermal import mosfets
+from tolsim.design import Study
+from tolsim.evaluation import Plan, solve_case
+from tolsim.figures.waves import Waves
+from tolsim.parts import Inductor
+from tolsim.quantity import show
+from tolsim.report import InputRow, ReportInput, Waveform, report_input
+from tolsim.results import Results
+from tolsim.sampling import draw, tables_of
+from tolsim.spread_table import ASPECTS, SpreadTable
+from tolsim.spread_text import assumptions, spread_words
+from tolsim.study import StudyFile
+
+Floats = NDArray[np.float64]
+
+WAVE_UNITS = 128  # enough for 5 % and 95 % bands
+BAND = (0.05, 0.95)
+
+NOT_MODELLED = (
+    "Power-on and load changes in time: start is judged by the modes at the bias point, running"
+    " by the steady orbit of each load state.",
+    "Stray inductance and capacitance that the study does not list as parts.",
+    "Core loss beyond a constant series resistance, proximity effect that changes with frequency.",
+    "Package inductance of the transistors, gate charge plateau beyond the capacitance law.",
+    "The discharge itself: each load state is a coupled loop with fixed resistance.",
+    "Wear-out: ageing laws move values, they do not break parts.",
+)
+CAUTIONS = (
+    "Such a stage makes kilovolts at radio frequency. Burns go deep and hardly hurt at first;"
+    " capacitors stay charged after power-off; hot parts stay hot.",
+    "Lamps and discharges give off ultraviolet light, and air beside them ozone: shield eyes and"
+    " skin, ventilate.",
+    "A unit that does not start can hold both transistors in conduction: limit the supply current"
+    " of first tests.",
+    "These numbers are estimates from a model and from the laws listed above. They do not replace"
+    " measurement on built units, guards and interlocks.",
+    "Follow your local codes for electrical safety, radio emission and exposure, and leave what"
+    " they reserve to licensed practice.",
+)
+
+
+def report_content(plan: Plan, opened: StudyFile, results: Results) -> ReportInput:
+    """Gather the report of a finished run."""
+    study = plan.study
+    return report_input(
+        results,
+        study,
+        waveforms=tuple(_waveforms(plan)),
+        inputs=tuple(input_rows(study, opened.tables)),
+        assumptions=assumptions(study, opened.tables),
+        not_modelled=NOT_MODELLED,
+        cautions=CAUTIONS,
+        repeat_command=f"tolsim run study.toml --units {study.run.units} --seed {study.run.seed}",
+    )
+
+
+def reference_condition(study: Study) -> str:
+    """The condition whose waveforms are shown: the one nearest to 25 degC at nominal supply."""
+
+    def strangeness(name: str) -> tuple[float, ...]:
+        condition = study.conditions[name]
+        numbers = (condition.supply, condition.ambient, condition.age)
+        supply, ambient, age = (0.0 if isinstance(n, Mapping) else float(n) for n in numbers)
+        return (abs(supply), abs(ambient - 25.0), age)
+
+    return min(study.conditions, key=strangeness)
+
+
+def _waveforms(plan: Plan) -> Iterator[Waveform]:
+    """Drain and gate of the first transistor and the hardest-worked coil, in every state."""
+    condition = reference_condition(plan.study)
+    draws = draw(plan.factors, plan.study.run.seed, 0, min(WAVE_UNITS, plan.study.run.units))
+    for state in plan.study.states:
+        prepared = plan.cases[(condition, state)]
+        if not prepared.nominal.found:
+            continue
+        case, solution = solve_case(plan, (condition, state), draws)
+        settled = np.flatnonzero(solution.status == Status.SETTLED)
+        nominal = prepared.nominal.solution
+        ideal = Waves.of(prepared.nominal.case.network(nominal.junctions), nominal)
+        units = ideal
+        if settled.size:
+            orbits = solution.take(settled)
+            units = Waves.of(case.take(settled).network(orbits.junctions), orbits)
+        for title, label, unit, one, many in _signals(plan.study, ideal, units):
+            time = np.arange(len(one) + 1) / len(one) * ideal.period[0]
+            low, high = np.quantile(_closed(many), BAND, axis=1)
+            yield Waveform(title, label, unit, state, time, _closed(one)[:, 0], low, high)
+
+
+def _closed(wave: Floats) -> Floats:
+    """A period with its first point again at the end."""
+    return np.concatenate([wave, wave[:1]])
+
+
+def _signals(
+    study: Study, ideal: Waves, units: Waves
+) -> Iterator[tuple[str, str, str, Floats, Floats]]:
+    transistors = mosfets(study.design)
+    if transistors:
+        ref, part = next(iter(transistors.items()))
+        for word, net in (("drain", part.drain), ("gate", part.gate)):
+            one, many = (waves.across(net, part.source_net) for waves in (ideal, units))
+            yield f"{ref} {word} voltage", ref, "V", one, many
+    coils = [ref for ref, part in study.design.parts.items() if isinstance(part, Inductor)]
+    if coils:
+        hardest = max(coils, key=lambda ref: float(np.ptp(ideal.branch(ref))))
+        yield f"{hardest} current", hardest, "A", ideal.branch(hardest), units.branch(hardest)
+
+
+UNIT_OF_MEASURE = {
+    "capacitance": "F",
+    "inductance": "H",
+    "resistance": "ohm",
+    "esr": "ohm",
+    "voltage": "V",
+    "threshold": "V",
+    "high": "V",
+    "low": "V",
+    "drift_resistance": "ohm",
+    "gain": "A/V**2",
+}
+
+
+def input_rows(study: Study, tables: Mapping[str, SpreadTable]) -> Iterator[InputRow]:
+    """One row per spreading number (or per part without spread), with law, basis and source."""
+    for ref, part in {**study.design.parts, **study.design.rails}.items():
+        names = list(tables_of(study, ref))
+        if not names:
+            source = part.source or ""
+            basis = getattr(part, "confidence", None) or ""
+            yield InputRow(ref, "all values", "", "no spread", "", basis, source)
+        for name in names:
+            table = tables[name]
+            for quantity, spread in table.quantities.items():
+                value = getattr(part, quantity, None)
+                nominal = (
+                    show(value, UNIT_OF_MEASURE.get(quantity, "1"))
+                    if isinstance(value, float)
+                    else ""
+                )
+                for aspect in ASPECTS:
+                    if getattr(spread, aspect) is None:
+                        continue
+                    origin = spread.origins[aspect]
+                    words = spread_words(table, quantity, aspect)
+                    yield InputRow(
+                        ref, quantity, nominal, words, name, origin.basis, origin.source
+                    )

@@ -1,0 +1,198 @@
+"""The road from a study to its results.
+
+A checked study -> factors -> nominal orbits of every case -> chunks of units, each drawn, solved
+in every case, measured and judged -> statistics -> summary, tables, report.  Read `run_study` first.
+"""
+
+from __future__ import annotations
+
+import json
+from collections.abc import Callable, Iterator, Mapping
+from dataclasses import replace
+from pathlib import Path
+from typing import Any
+
+import numpy as np
+import pandas as pd
+from joblib import Parallel, delayed, parallel_config
+
+from tolsim.design import Study
+from tolsim.errors import RequestError
+from tolsim.evaluation import Chunk, Plan, evaluate
+from tolsim.nominals import prepare
+from tolsim.provenance import provenance_of
+from tolsim.recheck import recheck
+from tolsim.results import SUMMARY_FILE, Results
+from tolsim.sampling import factors
+from tolsim.study import StudyFile, open_study
+from tolsim.summary import summarise
+from tolsim.unit_files import Columns, FrameColumns, UnitFiles, write_text
+
+CHUNK = 250  # units stored together; a killed run loses at most one per job
+IDENTITY_FILE = "run.json"
+
+Progress = Callable[[int, int], None]
+
+
+def run_study(
+    study: StudyFile | Path | str,
+    *,
+    units: int | None = None,
+    seed: int | None = None,
+    jobs: int | None = None,
+    out: Path | str | None = None,
+    progress: Progress | None = None,
+) -> Results:
+    """Build, solve and judge the units of a study.
+
+    Parameters
+    ----------
+    study : StudyFile or path
+        As `open_study` reads it, or the file itself.
+    units, seed : int, optional
+        In place of what the study says.
+    jobs : int, optional
+        Worker processes; all cores if not given.
+    out : path, optional
+        Results folder; in memory if not given.  A folder of the same run that was stopped is
+        taken up where it ended.
+    progress : callable, optional
+        Called with (finished units, all units).
+
+    Returns
+    -------
+    Results
+
+    Raises
+    ------
+    StudyError
+        If the study has mistakes.
+    RequestError
+        If the folder holds another run.
+    RunError
+        If the nominal unit has no orbit at all.
+    """
+    opened = study if isinstance(study, StudyFile) else open_study(study)
+    opened = replace(opened, study=_with_request(opened.study, units, seed))
+    record = provenance_of(opened)
+    store = None if out is None else _open_folder(Path(out), record)
+    cases = prepare(opened.study, opened.tables)
+    plan = Plan(opened.study, opened.tables, factors(opened.study, opened.tables), cases)
+    unit_table, factor_table = _build(plan, jobs, store, progress)
+    summary = summarise(
+        opened.study,
+        unit_table,
+        factor_table,
+        {name: prepared.figures for name, prepared in cases.items()},
+        _quality(plan, unit_table),
+        record,
+    )
+    if store is None:
+        assert isinstance(unit_table, FrameColumns)
+        assert isinstance(factor_table, FrameColumns)
+        return Results.in_memory(summary, opened.text, unit_table.frame, factor_table.frame)
+    results = Results(summary, opened.text, store.folder, unit_table, factor_table)
+    results = results.save(store.folder)
+    _write_report(plan, opened, results)
+    return results
+
+
+def _with_request(study: Study, units: int | None, seed: int | None) -> Study:
+    """The study with the units and seed asked for."""
+    asked = {"units": units, "seed": seed}
+    changes = {name: value for name, value in asked.items() if value is not None}
+    return study.model_copy(update={"run": study.run.model_copy(update=changes)})
+
+
+def _open_folder(folder: Path, record: Mapping[str, Any]) -> UnitFiles:
+    """Make the results folder, or find the finished chunks of the same run in it."""
+    identity_file = folder / IDENTITY_FILE
+    # more units of the same run are welcome: unit k is the same unit whatever their number
+    identity = {key: record[key] for key in ("seed", "study_sha256", "tables", "versions")}
+    if identity_file.exists():
+        if json.loads(identity_file.read_text(encoding="utf-8")) != identity:
+            raise RequestError(
+                f"'{folder}' holds a run of another study, seed or version."
+                " Name another folder with --out, or remove it first."
+            )
+    elif folder.exists() and any(folder.iterdir()):
+        raise RequestError(
+            f"'{folder}' is not empty and holds no run. Name another folder with --out."
+        )
+    folder.mkdir(parents=True, exist_ok=True)
+    write_text(identity_file, json.dumps(identity, indent=1) + "\n")
+    for stale in (SUMMARY_FILE, "units.parquet", "factors.parquet"):
+        (folder / stale).unlink(missing_ok=True)
+    return UnitFiles(folder)
+
+
+def _build(
+    plan: Plan, jobs: int | None, store: UnitFiles | None, progress: Progress | None
+) -> tuple[Columns, Columns]:
+    """Evaluate all chunks that are not there yet; give the two tables."""
+    units = plan.study.run.units
+    finished = store.finished() if store is not None else {}
+    wanted = [
+        (first, min(CHUNK, units - first))
+        for first in range(0, units, CHUNK)
+        if finished.get(first) != min(CHUNK, units - first)
+    ]
+    done = units - sum(count for _, count in wanted)
+    chunks: list[Chunk] = []
+    if progress is not None:
+        progress(done, units)
+    for chunk in _evaluated(plan, wanted, jobs):
+        if store is None:
+            chunks.append(chunk)
+        else:
+            store.write_chunk(chunk.first, chunk.rows, chunk.factors)
+        done += len(chunk.factors)
+        if progress is not None:
+            progress(done, units)
+    if store is not None:
+        store.merge()
+        return store.units(), store.factors()
+    chunks.sort(key=lambda chunk: chunk.first)
+    rows = pd.concat([chunk.rows for chunk in chunks], ignore_index=True)
+    table = pd.concat([chunk.factors for chunk in chunks], ignore_index=True)
+    return FrameColumns(rows), FrameColumns(table)
+
+
+def _evaluated(
+    plan: Plan, wanted: list[tuple[int, int]], jobs: int | None
+) -> Iterator[Chunk]:
+    """Chunks as they finish, from worker processes if more than one is asked for."""
+    if jobs == 1 or len(wanted) <= 1:
+        yield from (evaluate(plan, first, count) for first, count in wanted)
+        return
+    # the arrays of a unit are small: threads inside a worker would only get in the way
+    with parallel_config(backend="loky", inner_max_num_threads=1):
+        work = Parallel(n_jobs=jobs or -1, return_as="generator_unordered")
+        yield from work(delayed(evaluate)(plan, first, count) for first, count in wanted)
+
+
+def _quality(plan: Plan, units: Columns) -> dict[str, Any]:
+    """How far the solutions can be trusted."""
+    answer: dict[str, Any] = {}
+    for figure in ("energy_balance", "orbit_residual"):
+        values = np.abs(units.column(figure).to_numpy(np.float64, na_value=np.nan))
+        values = values[np.isfinite(values)]
+        empty = not values.size
+        answer[figure] = {
+            "worst": None if empty else float(values.max()),
+            "median": None if empty else float(np.median(values)),
+        }
+    ways = units.column("way").value_counts()
+    answer["solved_by"] = {str(way): int(count) for way, count in ways.items()}
+    return answer | recheck(plan)
+
+
+def _write_report(plan: Plan, opened: StudyFile, results: Results) -> None:
+    """The report beside the results."""
+    from tolsim.presentation import report_content  # plotting only when a page is drawn
+    from tolsim.report import write_report
+
+    assert results.folder is not None
+    write_report(report_content(plan, opened, results), results.folder / "report.html")
+
+
