@@ -106,8 +106,10 @@ def _shorted(outline: Outline, parts: Iterable[Wired]) -> Iterator[Problem]:
 
 
 def _rails_apart(outline: Outline, rails: Mapping[str, object]) -> Iterator[Problem]:
-    seen: dict[object, str] = {GROUND: "ground"}
+    seen = {GROUND: "ground"}
     for ref, net in rails.items():
+        if not isinstance(net, str):
+            continue
         if net in seen:
             yield outline.problem(
                 f"rails.{ref}",
@@ -115,7 +117,7 @@ def _rails_apart(outline: Outline, rails: Mapping[str, object]) -> Iterator[Prob
                 f'"{net}", held by {seen[net]} already',
                 "a net that nothing else holds",
             )
-        elif net is not None:
+        else:
             seen[net] = f"rail {ref}"
 
 

@@ -66,7 +66,8 @@ def kinds_of(
     parts: Mapping[str, Table], rails: Mapping[str, Table], known: Collection[str]
 ) -> dict[str, str]:
     """Kind of every part whose kind is known, and "rail" for rails."""
-    kinds = {ref: part["kind"] for ref, part in parts.items() if part.get("kind") in known}
+    written_kinds = {ref: part.get("kind") for ref, part in parts.items()}
+    kinds = {ref: k for ref, k in written_kinds.items() if isinstance(k, str) and k in known}
     return kinds | dict.fromkeys(rails, RAIL)
 
 

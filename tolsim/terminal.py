@@ -23,7 +23,7 @@ from tolsim.spread_table import SpreadTable
 from tolsim.spread_text import assumptions, describe
 from tolsim.study import StudyFile
 from tolsim.summary_text import summary_lines
-from tolsim.wording import shown
+from tolsim.wording import between, shown
 
 _WIDTH = 80
 _MOST_ROWS = 8  # of the list of limits that are near
@@ -128,10 +128,13 @@ def _nominal(figures: Mapping[str, float], name: str) -> str:
 
 
 def _limit(bound: Bound) -> str:
-    """The limit in words: "at most 160 V", "at least 3 dB"."""
+    """The limit in words: "at most 160 V", "at least 3 dB", "140 to 185 kHz"."""
     unit = bound.figure.unit_of_measure
-    sides = (("at least", bound.at_least), ("at most", bound.at_most))
-    return ", ".join(f"{word} {shown(value, unit)}" for word, value in sides if value is not None)
+    if bound.at_most is None:
+        return f"at least {shown(bound.at_least, unit)}"
+    if bound.at_least is None:
+        return f"at most {shown(bound.at_most, unit)}"
+    return between(bound.at_least, bound.at_most, unit)
 
 
 def _use(bound: Bound, value: float) -> float:
@@ -151,19 +154,34 @@ def show_operating_point(study: Study, cases: Cases) -> None:
         values = (_nominal(figures, name) for name in _POINT)
         grid.add_row(condition, state, *values)
     screen.print(grid)
-    uses = [
-        (_use(bound, figures[bound.column]), bound, figures[bound.column], case)
-        for case, figures in cases.items()
-        for bound in bounds(study)
-        if applies(study.limits[bound.limit], *case) and bound.column in figures
-    ]
+    lost = [f"{condition} / {state}" for (condition, state), f in cases.items() if not _runs(f)]
+    if lost:
+        screen.print(Text(f"It settles on no steady orbit in: {', '.join(lost)}."))
     screen.print()
     screen.print(Text("Nearest to their limits:", style="bold"))
+    screen.print(_nearest(study, cases))
+
+
+def _runs(figures: Mapping[str, float]) -> bool:
+    return math.isfinite(figures.get("frequency", math.nan))
+
+
+def _nearest(study: Study, cases: Cases) -> Table:
+    """Limits the nominal unit comes nearest to, each in its worst case."""
+    worst: dict[tuple[int, str], tuple[float, Bound, tuple[str, str]]] = {}
+    for case, figures in cases.items():
+        for bound in bounds(study):
+            value = figures.get(bound.column, math.nan)
+            if not applies(study.limits[bound.limit], *case) or not math.isfinite(value):
+                continue
+            key, use = (bound.limit, bound.part), _use(bound, value)
+            if key not in worst or use > worst[key][0]:
+                worst[key] = (use, bound, case)
     grid = _grid("figure", "part", "nominal>", "limit>", "condition", "state")
-    for _, bound, value, case in sorted(uses, key=lambda row: -row[0])[:_MOST_ROWS]:
-        unit = bound.figure.unit_of_measure
-        grid.add_row(bound.figure.title, bound.part, shown(value, unit), _limit(bound), *case)
-    screen.print(grid)
+    for _, bound, case in sorted(worst.values(), key=lambda row: -row[0])[:_MOST_ROWS]:
+        value = shown(cases[case][bound.column], bound.figure.unit_of_measure)
+        grid.add_row(bound.figure.title, bound.part, value, _limit(bound), *case)
+    return grid
 
 
 def show_summary(summary: Mapping[str, Any], folder: Path) -> None:
