@@ -6,7 +6,7 @@ from math import inf, pi, sqrt
 
 import numpy as np
 import pytest
-from references import circuit_a, class_e, start_conditions, van_der_pol
+from references import circuit_a, circuit_b, circuit_c, class_e, start_conditions, van_der_pol
 from references.orbit import Orbit, peak, rms, trough
 from references.relay import relay
 
@@ -52,6 +52,34 @@ def test_circuit_a_multipliers(orbit_a: Orbit) -> None:
     assert phase == pytest.approx(1.0, abs=5e-4)
     assert charge == pytest.approx(0.9999974, abs=2e-7)
     assert slowest == pytest.approx(0.973, abs=5e-4)
+
+
+@pytest.mark.slow
+def test_circuit_b_keeps_the_laws() -> None:
+    """No mean voltage over chokes or the coil, both sides alike, and the gate clamps conduct."""
+    values = circuit_b.Values()
+    orbit = circuit_b.settled_orbit(values)
+    mean = orbit.states.mean(axis=0)
+    drop = values.choke_resistance * mean[[circuit_b.IA, circuit_b.IB]]
+    assert mean[[circuit_b.A, circuit_b.B]] == pytest.approx(values.supply - drop, rel=1e-7)
+    assert mean[[circuit_b.IL, circuit_b.IW]] == pytest.approx(0, abs=1e-5)
+    half = len(orbit.states) // 2
+    assert np.roll(orbit.states[:, circuit_b.GA], half) == pytest.approx(
+        orbit.states[:, circuit_b.GB], abs=1e-4
+    )
+    assert peak(orbit.states[:, circuit_b.GA]) > values.clamp_voltage - 3 * values.clamp_knee
+
+
+@pytest.mark.slow
+def test_circuit_c_keeps_the_laws() -> None:
+    """No mean voltage over the choke, no mean current through coil, foot and coupled loop."""
+    values = circuit_c.Values()
+    orbit = circuit_c.settled_orbit(values)
+    mean = orbit.states.mean(axis=0)
+    drop = values.choke_resistance * mean[circuit_c.IC]
+    assert mean[circuit_c.D] == pytest.approx(values.supply - drop, rel=1e-7)
+    assert mean[[circuit_c.IL, circuit_c.IW]] == pytest.approx(0, abs=1e-6)
+    assert np.all(np.abs(orbit.multipliers[2:]) < 0.95)
 
 
 @pytest.mark.parametrize("mu", [1.0, 5.0])

@@ -4,14 +4,10 @@ State x = (a, b, p, q, ga, gb, ia, ib, iL): drains, coil ends, gates (volts), ch
 currents vdd to a and vdd to b, coil current p to q (amperes).  Kirchhoff's current law
 at the six nets with the coupling capacitors written term by term gives a 6 x 6
 capacitance matrix, which depends on the voltages through Cgd(vdg) and Cds(vds).
-
-Channel: i_d = k/2 [S(vgs - Vt)^2 - S(vgs - vds - Vt)^2], S(x) = s ln(1 + exp(x/s)),
-after Enz, Krummenacher, Vittoz, Analog Integr. Circuits Signal Process. 8 (1995) 83-114.
 """
 
 from __future__ import annotations
 
-import math
 from dataclasses import astuple, dataclass
 
 import numpy as np
@@ -19,6 +15,7 @@ from scipy.integrate import solve_ivp
 from scipy.optimize import root
 
 from references.compiled import compiled
+from references.devices import junction, soft
 from references.orbit import Array, Method, Orbit, Slope, settle, transient
 
 Pair = tuple[float, float]
@@ -64,18 +61,6 @@ class Values:
 
 
 @compiled
-def _soft(x: float, s: float) -> float:
-    """Smoothed ramp s ln(1 + exp(x/s)), written so that exp never overflows."""
-    return max(x, 0.0) + s * math.log1p(math.exp(-abs(x) / s))
-
-
-@compiled
-def _junction(c0: float, v: float, phi: float, m: float) -> float:
-    """Junction capacitance C0/(1 + v/phi)^m under reverse voltage, C0 under forward voltage."""
-    return c0 * math.pow(1.0 + max(v, 0.0) / phi, -m)
-
-
-@compiled
 def _slope(x: Array, w: Array) -> Array:
     """dx/dt of the nine states; `w` is `Values.flat()`."""
     vdd, vb, cpq, coil, rcoil = w[0], w[1], w[10], w[11], w[12]
@@ -92,11 +77,11 @@ def _slope(x: Array, w: Array) -> Array:
         c_feed, c_gate = w[13 + side], w[15 + side]
         r_bias, r_down = w[17 + side], w[19 + side]
         vt, k = w[21 + side], w[23 + side]
-        cgd = _junction(w[25 + side], vds - vgs, phi, m)
-        cds = _junction(w[27 + side], vds, phi, m)
-        channel = 0.5 * k * (_soft(vgs - vt, s) ** 2 - _soft(vgs - vds - vt, s) ** 2)
-        body = w[33] * _soft(-vds - w[32], w[34])
-        clamp = w[36] * (_soft(vgs - w[35], w[37]) - _soft(-vgs - w[35], w[37]))
+        cgd = junction(w[25 + side], vds - vgs, phi, m)
+        cds = junction(w[27 + side], vds, phi, m)
+        channel = 0.5 * k * (soft(vgs - vt, s) ** 2 - soft(vgs - vds - vt, s) ** 2)
+        body = w[33] * soft(-vds - w[32], w[34])
+        clamp = w[36] * (soft(vgs - w[35], w[37]) - soft(-vgs - w[35], w[37]))
         inflow[drain] += x[6 + side] - channel + body - leak * vds
         inflow[gate] += (vb - vgs) / r_bias - vgs / r_down - clamp - leak * vgs
         inflow[own_end] -= leak * x[own_end]
