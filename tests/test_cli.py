@@ -63,7 +63,8 @@ def test_mistakes_end_with_2_and_nothing_written(place, verb):
     assert answer.exit_code == 2
     assert answer.output == (
         "Error: 3 mistakes:\n"
-        '- stage.toml [rails.vdd] net: expected a net that parts join, got "vddd".\n'
+        '- stage.toml [rails.vdd] net: expected a net that parts join, got "vddd". '
+        "Did you mean vdd?\n"
         '- stage.toml [parts.L1] nets: expected a net that other parts join too, got net "vdd" '
         "with this one connection. Did you mean vddd?\n"
         "- stage.toml [parts.C2] capacitance: expected a capacitance of 1 fF to 10 mF, got 75. "

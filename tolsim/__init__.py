@@ -2,8 +2,9 @@
 
     import tolsim
 
-    study = tolsim.load_study("stage.toml")
-    results = tolsim.run_study(study, out="results")
+    study = tolsim.open_study("stage.toml")
+    results = tolsim.run_study(study, units=500, out="results")
+    results.figures  # a pandas table of percentiles against ratings and limits
 
 Names below are loaded on first use, so that `import tolsim` costs nothing.
 """
@@ -14,22 +15,30 @@ from typing import Any
 __version__ = "0.1.0"
 
 _HOMES = {
+    "RequestError": "tolsim.errors",
+    "Results": "tolsim.results",
+    "RunError": "tolsim.errors",
     "Study": "tolsim.design",
     "StudyError": "tolsim.errors",
+    "StudyFile": "tolsim.study",
     "TolsimError": "tolsim.errors",
     "load_study": "tolsim.study",
-    "read_study": "tolsim.study",
-    "run_study": "tolsim.run",
+    "open_study": "tolsim.study",
     "replay_unit": "tolsim.replay",
+    "run_study": "tolsim.run",
 }
 
 __all__ = [
+    "RequestError",
+    "Results",
+    "RunError",
     "Study",
     "StudyError",
+    "StudyFile",
     "TolsimError",
     "__version__",
     "load_study",
-    "read_study",
+    "open_study",
     "replay_unit",
     "run_study",
 ]

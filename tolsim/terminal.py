@@ -23,7 +23,7 @@ from tolsim.spread_table import SpreadTable
 from tolsim.spread_text import assumptions, describe
 from tolsim.study import StudyFile
 from tolsim.summary_text import summary_lines
-from tolsim.wording import between, shown
+from tolsim.wording import shown
 
 _WIDTH = 80
 _MOST_ROWS = 8  # of the list of limits that are near
@@ -134,7 +134,7 @@ def _limit(bound: Bound) -> str:
         return f"at least {shown(bound.at_least, unit)}"
     if bound.at_least is None:
         return f"at most {shown(bound.at_most, unit)}"
-    return between(bound.at_least, bound.at_most, unit)
+    return f"{shown(bound.at_least, unit)} to {shown(bound.at_most, unit)}"
 
 
 def _use(bound: Bound, value: float) -> float:
