@@ -46,8 +46,9 @@ def case_of(study: Study, values: Values) -> Case:
 def prepare(study: Study, tables: Mapping[str, SpreadTable]) -> dict[CaseName, PreparedCase]:
     """Find the nominal orbit of every case.
 
-    The first case is integrated from its kicked bias point; the others are followed from it
-    through the change of part values, and only where that fails integrated themselves.
+    In each state the first condition is integrated from its kicked bias point; the others are
+    followed from it through the change of part values, and only where that fails integrated
+    themselves.
 
     Raises
     ------
@@ -55,19 +56,28 @@ def prepare(study: Study, tables: Mapping[str, SpreadTable]) -> dict[CaseName, P
         If the nominal unit has no periodic orbit in any case.
     """
     steps = study.run.steps_per_cycle
+    cases = {
+        name: case_of(study, nominal_values(study, tables, *name)) for name in cases_of(study)
+    }
     found: dict[CaseName, Nominal] = {}
-    leader: Compass | None = None
-    for name in cases_of(study):
-        case = case_of(study, nominal_values(study, tables, *name))
-        nominal = None if leader is None else _follow(case, leader, steps)
-        if nominal is None:
-            nominal = find_nominal(case, steps)
-        found[name] = nominal
-        if leader is None and nominal.found:
-            leader = aim(nominal, tuple(case.values), steps)
-    if leader is None:
+    leaders: dict[str, Compass] = {}
+    for name, case in cases.items():
+        state = name[1]
+        nominal = _follow(case, leaders[state], steps) if state in leaders else None
+        found[name] = nominal or find_nominal(case, steps)
+        if state not in leaders and found[name].found:
+            leaders[state] = aim(found[name], tuple(case.values), steps)
+    if not leaders:
         raise RunError(_no_orbit(found))
-    return {name: _prepared(study, nominal, leader, steps) for name, nominal in found.items()}
+    for name, nominal in found.items():
+        if not nominal.found:  # units may still have an orbit: look from the nearest case
+            found[name] = _follow(cases[name], _leader(leaders, name), steps) or nominal
+    return {name: _prepared(study, nominal, _leader(leaders, name), steps) for name, nominal in found.items()}
+
+
+def _leader(leaders: Mapping[str, Compass], name: CaseName) -> Compass:
+    """Where to look from: an orbit of the same state, else of any."""
+    return leaders.get(name[1], next(iter(leaders.values())))
 
 
 def _follow(case: Case, leader: Compass, steps: int) -> Nominal | None:

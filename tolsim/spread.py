@@ -122,7 +122,8 @@ def _read_folder(folder: Path, problems: list[Problem]) -> dict[str, SpreadTable
 def read_tables(data: bytes, file: str, problems: list[Problem]) -> dict[str, SpreadTable]:
     """Tables in the bytes of one file; mistakes are appended to `problems`."""
     try:
-        content = tomllib.loads(data.decode("utf-8"))
+        text = data.decode("utf-8")
+        content = tomllib.loads(text)
     except (tomllib.TOMLDecodeError, UnicodeDecodeError) as error:
         problems.append(Problem(file, "", "", str(error), "a valid TOML file in UTF-8"))
         return {}
@@ -134,7 +135,7 @@ def read_tables(data: bytes, file: str, problems: list[Problem]) -> dict[str, Sp
     digest = hashlib.sha256(data).hexdigest()
     entries = content.get("table", {})
     read = {
-        name: _Entry(file, f"table.{name}", problems).read(name, entry, digest)
+        name: _Entry(file, f"table.{name}", problems, text).read(name, entry, digest)
         for name, entry in entries.items()
     }
     return {name: table for name, table in read.items() if table is not None}
@@ -147,6 +148,7 @@ class _Entry:
     file: str
     table: str
     problems: list[Problem] = field(default_factory=list)
+    file_text: str = ""
 
     def report(self, mistake: Mistake, table: str = "", prefix: str = "") -> None:
         """Note a mistake with its place."""
@@ -189,7 +191,15 @@ class _Entry:
         if len(self.problems) > before:
             return None
         return SpreadTable(
-            name, title, kinds, origin.basis, origin.source, quantities, self.file, sha256
+            name,
+            title,
+            kinds,
+            origin.basis,
+            origin.source,
+            quantities,
+            self.file,
+            sha256,
+            self.file_text,
         )
 
     def _unknown(self, key: str, valid: tuple[str, ...], table: str) -> None:

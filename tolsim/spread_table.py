@@ -76,7 +76,8 @@ class QuantitySpread:
 class SpreadTable:
     """One entry of `distributions/`: a part family and grade with its laws and their origin.
 
-    `file` and `sha256` tell for the record which file it was read from.
+    `file`, `sha256` and `file_text` are the record of the file it was read from, so that a run
+    can store what it used.
     """
 
     name: str
@@ -87,6 +88,7 @@ class SpreadTable:
     quantities: Mapping[str, QuantitySpread]
     file: str = ""
     sha256: str = ""
+    file_text: str = field(default="", repr=False, compare=False)
 
     @property
     def guesses(self) -> tuple[str, ...]:

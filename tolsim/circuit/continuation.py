@@ -69,9 +69,14 @@ def distance(value: Floats, reference: Floats) -> Floats:
 
 
 def aim(nominal: Nominal, keys: tuple[str, ...], steps: int) -> Compass:
-    """Measure how the nominal orbit moves with each of the given part values."""
+    """Measure how the nominal orbit moves with each of the given part values.
+
+    A value of exactly zero is an absent element (no series resistance, no junction): it has no
+    small change, and units keep it at zero.
+    """
     frame, orbit, case = nominal.frame, nominal.solution, nominal.case
     assert frame is not None
+    keys = tuple(key for key in keys if case.values[key][0] != 0)
     copies = np.zeros(len(keys) + 1, dtype=np.intp)
     values = {key: value[copies].copy() for key, value in case.values.items()}
     reach = np.zeros(len(keys))

@@ -15,7 +15,7 @@ from tolsim.circuit.devices import Floats
 from tolsim.circuit.network import Network
 from tolsim.circuit.orbit import Solution, Status
 from tolsim.circuit.shooting import Frame, Start, shoot
-from tolsim.circuit.startup import Modes, modes, typical_shift
+from tolsim.circuit.startup import Modes, modes, oscillation_scale
 from tolsim.circuit.thermal import Case
 from tolsim.circuit.transient import march
 
@@ -24,6 +24,7 @@ COARSE_STEPS = 64  # per cycle of the leading mode, while finding the orbit
 COARSE_CYCLES = 16
 TRIES = 5
 SHOOTING_ROUNDS = 40
+PATIENCE = 3  # rounds that rival kicks get after the first has settled
 LEVEL_SHARE = 0.25
 SCALE_FLOOR = 1e-3  # of the largest amplitude of the same kind of state
 
@@ -65,7 +66,7 @@ def find_nominal(case: Case, steps: int) -> Nominal:
             continue
         frame, start = guess
         copies = case.take(np.zeros(len(start.period), dtype=np.intp))
-        solution = shoot(copies, start, frame, steps, SHOOTING_ROUNDS, "nominal")
+        solution = shoot(copies, start, frame, steps, SHOOTING_ROUNDS, "nominal", PATIENCE)
         best = _best(solution, frame)
         if best is not None:
             chosen = solution.take(np.array([best]))
@@ -76,7 +77,7 @@ def find_nominal(case: Case, steps: int) -> Nominal:
 def _shift(network: Network, bias: Bias) -> float:
     if network.drive_frequency is not None:
         return 2 * np.pi * network.drive_frequency
-    return typical_shift(network, bias)
+    return oscillation_scale(network, bias)
 
 
 def _none(case: Case, network: Network, steps: int) -> Solution:

@@ -60,7 +60,15 @@ class Start:
         )
 
 
-def shoot(case: Case, start: Start, frame: Frame, steps: int, rounds: int, way: str) -> Solution:
+def shoot(
+    case: Case,
+    start: Start,
+    frame: Frame,
+    steps: int,
+    rounds: int,
+    way: str,
+    patience: int | None = None,
+) -> Solution:
     """Settle the orbit of every unit, or say so.
 
     Parameters
@@ -71,6 +79,8 @@ def shoot(case: Case, start: Start, frame: Frame, steps: int, rounds: int, way: 
         Largest number of periods integrated per unit.
     way : str
         Name of this path for the record.
+    patience : int, optional
+        For rival starts of one unit: rounds to go on after the first stable orbit.
 
     Returns
     -------
@@ -82,6 +92,7 @@ def shoot(case: Case, start: Start, frame: Frame, steps: int, rounds: int, way: 
     active = np.arange(units)
     here = Start(start.x.copy(), start.period.copy(), {k: t.copy() for k, t in start.junctions.items()})
     working = case
+    rounds_left: int | None = None
     for round_ in range(1, rounds + 1):
         network = working.network(here.junctions)
         with np.errstate(all="ignore"):  # a unit that runs away is sorted out below, by its status
@@ -101,6 +112,10 @@ def shoot(case: Case, start: Start, frame: Frame, steps: int, rounds: int, way: 
         runaway = (size < HEAT_FROM) & _at_ceiling(here, balance)
         found.status[active[runaway & ~done]] = Status.NO_THERMAL_BALANCE
         found.iterations[active] = round_
+        if patience is not None and np.any(found.status == Status.SETTLED):
+            rounds_left = patience if rounds_left is None else rounds_left - 1
+            if rounds_left <= 0:
+                break
         going = np.flatnonzero(~(done | lost | runaway))
         if not going.size:
             break

@@ -26,6 +26,8 @@ BOLTZMANN = 1.380649e-23  # J/K, exact (SI 2019)
 MARGIN_STEPS_DB = (6.0, 14.0, 30.0, 60.0)  # outward search for the sign change
 MARGIN_ROUNDS = 12
 MARGIN_TOLERANCE_DB = 0.005
+SCALE_FACTORS = 25  # transconductance factors tried, 1e-4 to 1
+SCALE_SHIFTS = 13  # shifts tried, 1e4 to 1e10 1/s
 NEAR_MODE = (0.4, 2.5)  # |lambda| window, relative to the reference, that belongs to the mode
 
 
@@ -200,13 +202,38 @@ def resemblance(network: Network, vector: Complexes, reference: Complexes) -> Fl
     )
 
 
-def typical_shift(network: Network, bias: Bias) -> float:
-    """A first shift for the nominal unit: the fastest oscillation it can have, by coarse search."""
-    best, growth = 1e7, -np.inf
-    for sigma in np.geomspace(1e4, 1e10, 13):
-        found = modes(network, bias, float(sigma))
-        omega = 2 * np.pi * found.frequency[0]
-        # trust a mode only where the shift is of its own order
-        if 0.1 * sigma < omega < 10 * sigma and found.growth[0] / omega > growth:
-            best, growth = float(omega), float(found.growth[0] / omega)
-    return best
+def oscillation_scale(network: Network, bias: Bias) -> float:
+    """Angular frequency of the mode that oscillates first when transconductance rises from nothing.
+
+    At full transconductance a strongly regenerative stage may leave its bias point without
+    oscillating at all (real, growing modes); the frequency it will run near is that of the pair
+    which crosses into growth first.  A stage that cannot grow gives its least damped pair.
+
+    Parameters
+    ----------
+    network, bias
+        The first unit counts.
+    """
+    C, J, through = (matrix[0] for matrix in small_signal(network, bias))
+    factors = np.concatenate([np.geomspace(1e-4, 1.0, SCALE_FACTORS), [0.0]])
+    best, least_damping = 1e7, -np.inf
+    crossing, crossed = np.inf, 0.0
+    for sigma in np.geomspace(1e4, 1e10, SCALE_SHIFTS):
+        scaled = J + (factors - 1.0)[:, None, None] * through
+        values = _unshift(
+            np.linalg.eigvals(np.linalg.solve(scaled + sigma * C, np.broadcast_to(C, scaled.shape))),
+            float(sigma),
+        )
+        omega = np.abs(values.imag)
+        # trust a pair only where the shift is of its own order
+        near = (omega > 0.2 * sigma) & (omega < 5.0 * sigma) & np.isfinite(values.real)
+        growing = near & (values.real > 0)
+        for row in np.flatnonzero(growing[:-1].any(axis=1)):
+            if factors[row] < crossing:
+                pick = np.argmax(np.where(growing[row], values[row].real, -np.inf))
+                crossing, crossed = float(factors[row]), float(omega[row, pick])
+            break
+        damping = np.where(near, values.real / np.where(near, omega, 1.0), -np.inf)[-2]
+        if damping.max() > least_damping:
+            least_damping, best = float(damping.max()), float(omega[-2, np.argmax(damping)])
+    return crossed if np.isfinite(crossing) else best
