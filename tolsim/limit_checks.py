@@ -6,7 +6,7 @@ from collections.abc import Iterator, Sequence
 from typing import Any
 
 from tolsim.errors import Mistake, Problem
-from tolsim.figure_names import FIGURES, NAMES, FigureInfo, targets
+from tolsim.figure_names import FIGURES, NAMES, FigureInfo, figures_of, targets
 from tolsim.outline import Outline, Table, texts
 from tolsim.plain_words import written
 from tolsim.quantity import read
@@ -144,7 +144,7 @@ def _figure(
     for ref in known:
         if not targets(figure, [ref], outline.kinds):
             kind = outline.kinds[ref]
-            valid = [info.name for info in FIGURES.values() if info.owner == kind]
+            valid = [info.name for info in figures_of(kind)]
             yield outline.unknown(place, key, figure, f"a figure that {kind} {ref} has", valid)
     if not refs and not targets(figure, (), outline.kinds):
         yield outline.problem(place, key, f'"{figure}"', "a figure some part of this study has")

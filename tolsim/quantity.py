@@ -193,7 +193,6 @@ _SHARE: Final = Kind("a share", "1", 0.0, 1.0, "80 %")
 _SIGNED_SHARE: Final = Kind("a deviation", "1", -1.0, 1.0, "-10 %")
 _SIGNED_VOLTAGE: Final = Kind("a voltage", "V", -1e6, 1e6, "-5 V")
 _VOLTAGE_SLOPE: Final = Kind("a voltage slope", "V/K", -1.0, 1.0, "-6 mV/K")
-_SLOPE: Final = Kind("a relative slope", "1/K", -0.1, 0.1, "-30 ppm/K")
 
 
 class Reader:
@@ -243,7 +242,6 @@ Temperature = Annotated[float, _field(KINDS["temperature"])]  # degC
 TemperatureDifference = Annotated[float, _field(KINDS["temperature difference"])]
 ThermalResistance = Annotated[float, _field(KINDS["thermal resistance"])]
 VoltageSlope = Annotated[float, _field(_VOLTAGE_SLOPE)]
-SlopePerKelvin = Annotated[float, _field(_SLOPE)]
 Gain = Annotated[float, _field(KINDS["gain"])]
 Share = Annotated[float, _field(_SHARE)]
 SignedShare = Annotated[float, _field(_SIGNED_SHARE)]
