@@ -146,9 +146,13 @@ def unit(results: Path, number: int) -> None:
 
     RESULTS is the folder that `tolsim run` wrote, UNIT the number of the unit.
     """
-    from tolsim.replay import replay_unit
+    from tolsim.replay import draw_replay, replay_unit, story_text
 
-    click.echo(replay_unit(results, number))
+    replay = replay_unit(results, number)
+    click.echo(story_text(replay))
+    picture = draw_replay(replay, results)
+    if picture is not None:
+        click.echo(f"Waveforms: {picture}")
 
 
 @main.command()

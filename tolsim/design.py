@@ -92,7 +92,7 @@ class Run(Frozen):
     units: Annotated[int, Field(ge=1, le=10_000_000)] = 500
     seed: Annotated[int, Field(ge=0)] = 1
     confidence: Annotated[float, Field(gt=0.5, lt=1)] = 0.95
-    steps_per_cycle: Annotated[int, Field(ge=32, le=4096)] = 128
+    steps_per_cycle: Annotated[int, Field(ge=32, le=4096)] = 192
     rank: tuple[str, ...] = ()  # figures to rank factors for, "Q1.drain_peak"
 
 

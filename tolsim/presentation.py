@@ -3,12 +3,14 @@
 from __future__ import annotations
 
 from collections.abc import Iterator, Mapping
+from dataclasses import dataclass
 
 import numpy as np
 from numpy.typing import NDArray
 
-from tolsim.circuit.orbit import Status
-from tolsim.circuit.thermal import mosfets
+from tolsim.circuit.nominal import Nominal
+from tolsim.circuit.orbit import Solution
+from tolsim.circuit.thermal import Case, mosfets
 from tolsim.design import Study
 from tolsim.evaluation import Plan, solve_case
 from tolsim.figures.waves import Waves
@@ -76,26 +78,55 @@ def reference_condition(study: Study) -> str:
     return min(study.conditions, key=strangeness)
 
 
+@dataclass(frozen=True)
+class Signal:
+    """One voltage or current over a period: the nominal unit (m + 1,) and others (m + 1, N)."""
+
+    title: str
+    label: str
+    unit_of_measure: str
+    time: Floats  # (m + 1,) s, over the nominal period
+    nominal: Floats
+    units: Floats
+
+
 def _waveforms(plan: Plan) -> Iterator[Waveform]:
     """Drain and gate of the first transistor and the hardest-worked coil, in every state."""
     condition = reference_condition(plan.study)
     draws = draw(plan.factors, plan.study.run.seed, 0, min(WAVE_UNITS, plan.study.run.units))
     for state in plan.study.states:
-        prepared = plan.cases[(condition, state)]
-        if not prepared.nominal.found:
+        nominal = plan.cases[(condition, state)].nominal
+        if not nominal.found:
             continue
         case, solution = solve_case(plan, (condition, state), draws)
-        settled = np.flatnonzero(solution.status == Status.SETTLED)
-        nominal = prepared.nominal.solution
-        ideal = Waves.of(prepared.nominal.case.network(nominal.junctions), nominal)
-        units = ideal
-        if settled.size:
-            orbits = solution.take(settled)
-            units = Waves.of(case.take(settled).network(orbits.junctions), orbits)
-        for title, label, unit, one, many in _signals(plan.study, ideal, units):
-            time = np.arange(len(one) + 1) / len(one) * ideal.period[0]
-            low, high = np.quantile(_closed(many), BAND, axis=1)
-            yield Waveform(title, label, unit, state, time, _closed(one)[:, 0], low, high)
+        for signal in signals(plan.study, nominal, case, solution):
+            low, high = np.quantile(signal.units, BAND, axis=1)
+            yield Waveform(
+                signal.title,
+                signal.label,
+                signal.unit_of_measure,
+                state,
+                signal.time,
+                signal.nominal,
+                low,
+                high,
+            )
+
+
+def signals(study: Study, nominal: Nominal, case: Case, solution: Solution) -> Iterator[Signal]:
+    """Drain and gate voltage of the first transistor, current of the hardest-worked coil.
+
+    Units without an orbit are left out; if none has one, the nominal unit stands in.
+    """
+    ideal = Waves.of(nominal.case.network(nominal.solution.junctions), nominal.solution)
+    settled = np.flatnonzero(np.isfinite(solution.period))
+    units = ideal
+    if settled.size:
+        orbits = solution.take(settled)
+        units = Waves.of(case.take(settled).network(orbits.junctions), orbits)
+    for title, label, unit, one, many in _pairs(study, ideal, units):
+        time = np.arange(len(one) + 1) / len(one) * ideal.period[0]
+        yield Signal(title, label, unit, time, _closed(one)[:, 0], _closed(many))
 
 
 def _closed(wave: Floats) -> Floats:
@@ -103,7 +134,7 @@ def _closed(wave: Floats) -> Floats:
     return np.concatenate([wave, wave[:1]])
 
 
-def _signals(
+def _pairs(
     study: Study, ideal: Waves, units: Waves
 ) -> Iterator[tuple[str, str, str, Floats, Floats]]:
     transistors = mosfets(study.design)

@@ -20,7 +20,7 @@ from tolsim.design import Study
 from tolsim.errors import RequestError
 from tolsim.evaluation import Chunk, Plan, evaluate
 from tolsim.nominals import prepare
-from tolsim.provenance import provenance_of
+from tolsim.provenance import provenance_of, used_tables
 from tolsim.recheck import recheck
 from tolsim.results import SUMMARY_FILE, Results
 from tolsim.sampling import factors
@@ -30,6 +30,7 @@ from tolsim.unit_files import Columns, FrameColumns, UnitFiles, write_text
 
 CHUNK = 250  # units stored together; a killed run loses at most one per job
 IDENTITY_FILE = "run.json"
+TABLES_FOLDER = "tables"
 
 Progress = Callable[[int, int], None]
 
@@ -93,6 +94,7 @@ def run_study(
         return Results.in_memory(summary, opened.text, unit_table.frame, factor_table.frame)
     results = Results(summary, opened.text, store.folder, unit_table, factor_table)
     results = results.save(store.folder)
+    _keep_tables(opened, store.folder / TABLES_FOLDER)
     _write_report(plan, opened, results)
     return results
 
@@ -185,6 +187,14 @@ def _quality(plan: Plan, units: Columns) -> dict[str, Any]:
     ways = units.column("way").value_counts()
     answer["solved_by"] = {str(way): int(count) for way, count in ways.items()}
     return answer | recheck(plan)
+
+
+def _keep_tables(opened: StudyFile, folder: Path) -> None:
+    """Copies of the spread table files the study used, so that the folder stands alone."""
+    folder.mkdir(exist_ok=True)
+    for name in used_tables(opened.study):
+        table = opened.tables[name]
+        write_text(folder / table.file, table.file_text)
 
 
 def _write_report(plan: Plan, opened: StudyFile, results: Results) -> None:

@@ -4,6 +4,9 @@ First-order start: with z = (x0 / scale, ln T) and r(z; p) the closing gap of on
 moves with a part value as dz/dp = -J^-1 dr/dp, J the Newton matrix of the nominal unit.  One
 period of as many perturbed nominal units as there are spreading values gives every dr/dp at once.
 
+Junction temperatures follow to first order too: with Theta the heat balance of the orbit,
+dT/dp = (I - dTheta/dT)^-1 dTheta/dp.
+
 Units that shooting does not settle from there are led from the nominal unit in blends of their
 part values; the leftovers are integrated in time from full swing: what decays has no orbit.
 
@@ -21,12 +24,14 @@ from tolsim.circuit.cycle import run_cycle
 from tolsim.circuit.devices import Floats, Ints
 from tolsim.circuit.nominal import Nominal
 from tolsim.circuit.orbit import Solution, Status
-from tolsim.circuit.shooting import Frame, Start, bordered_matrix, shoot
+from tolsim.circuit.shooting import Frame, HeatResponse, Start, bordered_matrix, shoot
 from tolsim.circuit.thermal import Case
 from tolsim.circuit.transient import march
 
-STEP_RELATIVE = 1e-3  # perturbation of a value that scales, for dr/dp
-STEP_ABSOLUTE = 1e-3  # V, degC ... of a value that may be zero or negative
+STEP_RELATIVE = 1e-2  # of a part value, up and down: large, since trapped charge amplifies noise
+STEP_KELVIN = 1.0  # of a junction or the ambient
+AMBIENT = "ambient"
+COLDEST_START_C, HOTTEST_START_C = -60.0, 250.0  # predicted junctions stay within
 SHOOTING_ROUNDS = 14
 BLENDS = (0.25, 0.5, 0.75, 1.0)
 LEAD_STEPS = 64  # per cycle, in the time-domain decision
@@ -42,6 +47,8 @@ class Compass:
     nominal: Nominal
     values: Mapping[str, Floats]  # of the nominal unit, (1,)
     slopes: Mapping[str, Floats]  # key -> (n + 1,) d(x0 / scale, ln T) per unit of `distance`
+    warmings: Mapping[str, Floats]  # key -> (k,) K of each junction per unit of `distance`
+    heat: HeatResponse | None
 
     def start(self, case: Case) -> Start:
         """Predicted start of every unit of a case."""
@@ -50,50 +57,110 @@ class Compass:
         orbit = self.nominal.solution
         n = len(frame.scale)
         z = np.zeros((case.units, n + 1))
+        warmer = np.zeros((case.units, len(orbit.junctions)))
         for key, slope in self.slopes.items():
-            z += distance(case.values[key], self.values[key])[:, None] * slope
+            away = distance(key, case.values[key], self.values[key])[:, None]
+            z += away * slope
+            warmer += away * self.warmings[key]
         # a first-order guess is not trusted beyond the orbit's own size
         z /= np.maximum(1.0, np.abs(z).max(axis=1, keepdims=True))
         x = orbit.samples[0] + z[:, :n] * frame.scale
         period = orbit.period * np.exp(np.clip(z[:, n], -0.4, 0.4))
-        warmer = case.values["ambient"] - self.values["ambient"]
-        junctions = {ref: celsius + warmer for ref, celsius in orbit.junctions.items()}
+        junctions = {
+            ref: np.clip(celsius + warmer[:, k], COLDEST_START_C, HOTTEST_START_C)
+            for k, (ref, celsius) in enumerate(orbit.junctions.items())
+        }
         return Start(x, period, junctions)
 
 
-def distance(value: Floats, reference: Floats) -> Floats:
-    """How far a value is from the nominal one: logarithm of the ratio, or difference near zero."""
-    if reference[0] > 0 and np.all(value > 0):
-        return np.log(value / reference)
-    return value - reference
+def distance(key: str, value: Floats, reference: Floats) -> Floats:
+    """How far a value is from the nominal one: logarithm of the ratio, a difference for degC."""
+    if key == AMBIENT or reference[0] <= 0:
+        return value - reference
+    ratio = value / reference
+    return np.where(ratio > 0, np.log(np.maximum(ratio, 1e-300)), ratio - 1.0)
 
 
 def aim(nominal: Nominal, keys: tuple[str, ...], steps: int) -> Compass:
-    """Measure how the nominal orbit moves with each of the given part values.
+    """Measure how the nominal orbit and its junctions move with each of the given part values.
 
     A value of exactly zero is an absent element (no series resistance, no junction): it has no
     small change, and units keep it at zero.
     """
     frame, orbit, case = nominal.frame, nominal.solution, nominal.case
     assert frame is not None
-    keys = tuple(key for key in keys if case.values[key][0] != 0)
-    copies = np.zeros(len(keys) + 1, dtype=np.intp)
-    values = {key: value[copies].copy() for key, value in case.values.items()}
-    reach = np.zeros(len(keys))
-    for row, key in enumerate(keys):
-        base = values[key][row]
-        values[key][row] = base * (1 + STEP_RELATIVE) if base > 0 else base + STEP_ABSOLUTE
-        reach[row] = distance(values[key][row : row + 1], case.values[key])[0]
-    junctions = {ref: celsius[copies] for ref, celsius in orbit.junctions.items()}
-    network = Case(case.design, values, case.heated).network(junctions)
-    x0 = orbit.samples[0][copies]
-    cycle = run_cycle(network, x0, orbit.period[copies], steps, derivatives=False)
-    gap = (cycle.samples[-1] - x0) / frame.scale
-    change = (gap[:-1] - gap[-1]) / reach[:, None]
-    z = -np.linalg.solve(_nominal_matrix(nominal, steps), _pad(change, frame).T).T
+    keys = tuple(key for key in keys if key == AMBIENT or case.values[key][0] != 0)
+    refs = tuple(orbit.junctions)
+    moved, reach = _perturbed(nominal, keys, refs)
+    n = len(frame.scale)
+    x0 = np.repeat(orbit.samples[0], 2 * len(reach), axis=0)
+    period = np.repeat(orbit.period, 2 * len(reach))
+    network = moved.case.network(moved.junctions)
+    cycle = run_cycle(network, x0, period, steps, derivatives=False)
+    gap = _halves((cycle.samples[-1] - x0) / frame.scale) / reach[:, None]
+    z = -np.linalg.solve(_nominal_matrix(nominal, steps), _pad(gap, frame).T).T
     if frame.driven:
-        z = np.concatenate([z, np.zeros((len(keys), 1))], axis=1)
-    return Compass(nominal, case.values, dict(zip(keys, z, strict=True)))
+        z = np.concatenate([z, np.zeros((len(z), 1))], axis=1)
+    # the heat balance where the orbit has moved along: a second period from the moved starts
+    shift = np.concatenate([z, -z]) * np.concatenate([reach, reach])[:, None] / 2
+    start = x0 + shift[:, :n] * frame.scale
+    ahead = run_cycle(network, start, period * np.exp(shift[:, n]), steps, derivatives=False)
+    balance = moved.case.balance(network, ahead.samples)
+    theta = np.stack([balance[ref] for ref in refs], axis=1) if refs else np.zeros((len(x0), 0))
+    return _coupled(nominal, keys, z, _halves(theta) / reach[:, None])
+
+
+def _halves(values: Floats) -> Floats:
+    """Upper half of the rows minus the lower half: moved up minus moved down."""
+    half = len(values) // 2
+    return values[:half] - values[half:]
+
+
+def _coupled(nominal: Nominal, keys: tuple[str, ...], z: Floats, answer: Floats) -> Compass:
+    """Close the loop between orbit and junctions; the last rows are the junctions' own."""
+    transistors = answer.shape[1]
+    own, values = slice(len(keys), None), slice(0, len(keys))
+    gain = np.linalg.inv(np.eye(transistors) - answer[own].T)
+    warmings = answer[values] @ gain.T
+    slopes = z[values] + warmings @ z[own]
+    heat = HeatResponse(gain, z[own]) if nominal.case.heated and transistors else None
+    return Compass(
+        nominal,
+        nominal.case.values,
+        dict(zip(keys, slopes, strict=True)),
+        dict(zip(keys, warmings, strict=True)),
+        heat,
+    )
+
+
+@dataclass(frozen=True)
+class _Moved:
+    """Copies of the nominal unit: each part value and each junction moved up, then each down."""
+
+    case: Case
+    junctions: dict[str, Floats]
+
+
+def _perturbed(
+    nominal: Nominal, keys: tuple[str, ...], refs: tuple[str, ...]
+) -> tuple[_Moved, Floats]:
+    """The moved copies, and the distance between up and down for each of the m moves."""
+    case, orbit = nominal.case, nominal.solution
+    moves = len(keys) + len(refs)
+    copies = np.zeros(2 * moves, dtype=np.intp)
+    values = {key: value[copies].copy() for key, value in case.values.items()}
+    junctions = {ref: celsius[copies].copy() for ref, celsius in orbit.junctions.items()}
+    reach = np.ones(moves)
+    for row, key in enumerate(keys):
+        base = float(case.values[key][0])
+        small = STEP_KELVIN if key == AMBIENT else STEP_RELATIVE * abs(base)
+        values[key][[row, moves + row]] += np.array([small, -small])
+        up, down = distance(key, values[key][[row, moves + row]], case.values[key])
+        reach[row] = up - down
+    for row, ref in enumerate(refs, start=len(keys)):
+        junctions[ref][[row, moves + row]] += np.array([STEP_KELVIN, -STEP_KELVIN])
+        reach[row] = 2 * STEP_KELVIN
+    return _Moved(Case(case.design, values, case.heated), junctions), reach
 
 
 def _nominal_matrix(nominal: Nominal, steps: int) -> Floats:
@@ -121,7 +188,7 @@ def solve_units(case: Case, compass: Compass, steps: int) -> Solution:
     """
     frame = compass.nominal.frame
     assert frame is not None
-    solution = shoot(case, compass.start(case), frame, steps, SHOOTING_ROUNDS, "predicted")
+    solution = shoot(case, compass.start(case), frame, steps, SHOOTING_ROUNDS, "predicted", heat=compass.heat)
     for attempt in (_lead_in, _decide_in_time):
         open_units = np.flatnonzero(np.isin(solution.status, UNSETTLED))
         if not open_units.size:
@@ -160,7 +227,13 @@ def _lead_in(case: Case, compass: Compass, frame: Frame, steps: int) -> Solution
             for key, value in case.values.items()
         }
         solution = shoot(
-            Case(case.design, values, case.heated), here, frame, steps, SHOOTING_ROUNDS, "blended"
+            Case(case.design, values, case.heated),
+            here,
+            frame,
+            steps,
+            SHOOTING_ROUNDS,
+            "blended",
+            heat=compass.heat,
         )
         done = np.isin(solution.status, (Status.SETTLED, Status.UNSTABLE))
         # a unit that failed here goes on from its last good place
@@ -186,7 +259,7 @@ def _decide_in_time(case: Case, compass: Compass, frame: Frame, steps: int) -> S
     swing = np.ptp(tail, axis=0) / np.ptp(orbit.samples[:, 0, frame.lead])
     dead = swing < DECAYED
     again = Start(samples[-1], start.period, start.junctions)
-    solution = shoot(case, again, frame, steps, 2 * SHOOTING_ROUNDS, "time domain")
+    solution = shoot(case, again, frame, steps, 2 * SHOOTING_ROUNDS, "time domain", heat=compass.heat)
     status = np.where(
         dead & (solution.status == Status.NOT_CONVERGED), Status.NO_ORBIT, solution.status
     )

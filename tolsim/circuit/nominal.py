@@ -66,7 +66,7 @@ def find_nominal(case: Case, steps: int) -> Nominal:
             continue
         frame, start = guess
         copies = case.take(np.zeros(len(start.period), dtype=np.intp))
-        solution = shoot(copies, start, frame, steps, SHOOTING_ROUNDS, "nominal", PATIENCE)
+        solution = shoot(copies, start, frame, steps, SHOOTING_ROUNDS, "nominal", patience=PATIENCE)
         best = _best(solution, frame)
         if best is not None:
             chosen = solution.take(np.array([best]))

@@ -44,6 +44,18 @@ class Frame:
     driven: bool
 
 
+@dataclass(frozen=True)
+class HeatResponse:
+    """How heat balance and orbit answer to junction temperatures, k transistors, at the nominal unit.
+
+    With Theta(T) the balance that the orbit at junction temperatures T leads to, `gain` is
+    (I - dTheta/dT)^-1: one Newton step of T = Theta(T) is `gain` (Theta - T).
+    """
+
+    gain: Floats  # (k, k)
+    orbit: Floats  # (k, n + 1) d(x0 / scale, ln T) per kelvin
+
+
 @dataclass
 class Start:
     """Where each unit begins."""
@@ -67,6 +79,8 @@ def shoot(
     steps: int,
     rounds: int,
     way: str,
+    *,
+    heat: HeatResponse | None = None,
     patience: int | None = None,
 ) -> Solution:
     """Settle the orbit of every unit, or say so.
@@ -79,6 +93,8 @@ def shoot(
         Largest number of periods integrated per unit.
     way : str
         Name of this path for the record.
+    heat : HeatResponse, optional
+        Speeds the heat balance up; without it temperatures go to the balance of each round.
     patience : int, optional
         For rival starts of one unit: rounds to go on after the first stable orbit.
 
@@ -100,8 +116,8 @@ def shoot(
         move = _newton_move(cycle, here, frame)
         size = np.abs(move).max(axis=1)
         balance = working.balance(network, cycle.samples)
-        heat = _heat_moves(here, balance, size)
-        still = np.max([np.abs(step) for step in heat.values()], axis=0, initial=0.0)
+        warming = _heat_moves(here, balance, size, heat)
+        still = np.abs(warming).max(axis=1, initial=0.0)
         swing = np.ptp(cycle.samples[:, :, frame.lead], axis=0) / frame.scale[frame.lead]
         alive = frame.driven | (swing > SMALLEST_SWING)
         done = (size < TOLERANCE) & (still < HEAT_TOLERANCE) & cycle.settled & alive
@@ -119,7 +135,9 @@ def shoot(
         going = np.flatnonzero(~(done | lost | runaway))
         if not going.size:
             break
-        here = _advance(here, move, heat, frame)
+        if heat is not None:
+            move = move + (warming @ heat.orbit)[:, : move.shape[1]]
+        here = _advance(here, move, warming, frame)
         active, working, here = active[going], working.take(going), here.take(going)
     return found
 
@@ -165,15 +183,19 @@ def _newton_move(cycle: Cycle, here: Start, frame: Frame) -> Floats:
     return move
 
 
-def _heat_moves(here: Start, balance: dict[str, Floats], size: Floats) -> dict[str, Floats]:
-    """Temperature moves towards the balance, none while the orbit itself is still far off."""
-    near = size < HEAT_FROM
-    moves = {}
-    for ref, celsius in here.junctions.items():
-        goal = np.minimum(balance[ref], HIGHEST_C)
-        step = np.clip(goal - celsius, -LARGEST_HEAT_MOVE, LARGEST_HEAT_MOVE)
-        moves[ref] = np.where(near & np.isfinite(step), step, 0.0)
-    return moves
+def _heat_moves(
+    here: Start, balance: dict[str, Floats], size: Floats, heat: HeatResponse | None
+) -> Floats:
+    """Temperature moves (N, k) towards the balance, none while the orbit itself is still far off."""
+    if not here.junctions:
+        return np.zeros((len(size), 0))
+    gap = np.stack(
+        [np.minimum(balance[ref], HIGHEST_C) - celsius for ref, celsius in here.junctions.items()],
+        axis=1,
+    )
+    step = gap if heat is None else gap @ heat.gain.T
+    near = (size < HEAT_FROM)[:, None] & np.isfinite(step)
+    return np.where(near, np.clip(step, -LARGEST_HEAT_MOVE, LARGEST_HEAT_MOVE), 0.0)
 
 
 def _at_ceiling(here: Start, balance: dict[str, Floats]) -> NDArray[np.bool_]:
@@ -184,7 +206,7 @@ def _at_ceiling(here: Start, balance: dict[str, Floats]) -> NDArray[np.bool_]:
     return hot
 
 
-def _advance(here: Start, move: Floats, heat: dict[str, Floats], frame: Frame) -> Start:
+def _advance(here: Start, move: Floats, warming: Floats, frame: Frame) -> Start:
     """Apply the correction, shortened where it is too long to be trusted."""
     n = here.x.shape[1]
     longest = np.abs(move[:, :n]).max(axis=1)
@@ -196,7 +218,11 @@ def _advance(here: Start, move: Floats, heat: dict[str, Floats], frame: Frame) -
         )
         period = here.period * np.exp(share * move[:, n])
     x = here.x + share[:, None] * move[:, :n] * frame.scale
-    return Start(x, period, {ref: here.junctions[ref] + heat[ref] for ref in here.junctions})
+    junctions = {
+        ref: np.minimum(celsius + warming[:, k], HIGHEST_C)
+        for k, (ref, celsius) in enumerate(here.junctions.items())
+    }
+    return Start(x, period, junctions)
 
 
 def _record(

@@ -82,9 +82,9 @@ def waveform_chart(wave: Waveform, number: int) -> Markup:
     """One cycle: the nominal unit as a line in the band of all units."""
     with _style():
         figure, axes = _canvas()
-        time_scale, time_prefix = _scale(float(np.ptp(wave.time)))
+        time_scale, time_prefix = scale_of(float(np.ptp(wave.time)))
         peak = float(np.nanmax(np.abs([wave.nominal, wave.low, wave.high])))
-        scale, prefix = _scale(peak)
+        scale, prefix = scale_of(peak)
         time = (wave.time - wave.time[0]) / time_scale
         axes.fill_between(
             time,
@@ -126,7 +126,7 @@ def _mark(axes: Axes, place: float, words: str, colour: str, height: float) -> N
     )
 
 
-def _scale(size: float) -> tuple[float, str]:
+def scale_of(size: float) -> tuple[float, str]:
     """Power of 1000 and its prefix that make `size` 1 to 1000."""
     fitting = [pair for pair in _SCALES if pair[0] <= size]
     return fitting[-1] if fitting else (1.0, "")
