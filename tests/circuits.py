@@ -8,8 +8,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from tolsim.design import Design, Rail
-from tolsim.parts import Capacitor, Clamp, DeviceModel, Inductor, Mosfet, Resistor
-from tolsim.parts import BodyDiode
+from tolsim.parts import BodyDiode, Capacitor, Clamp, DeviceModel, Inductor, Mosfet, Resistor
 
 Floats = NDArray[np.float64]
 

@@ -5,12 +5,12 @@ from __future__ import annotations
 import numpy as np
 import pandas as pd
 
+from tolsim.answers.results import Results
+from tolsim.answers.summary import summarise
+from tolsim.answers.unit_files import FrameColumns
 from tolsim.design import Condition, Design, Limit, Rail, Run, State, Study
 from tolsim.parts import Capacitor, DeviceModel, Inductor, Load, Mosfet, Rating, Resistor
 from tolsim.report import InputRow, ReportInput, Waveform, report_input
-from tolsim.results import Results
-from tolsim.summary import summarise
-from tolsim.unit_files import FrameColumns
 
 STATES = ("dark", "glow", "full")
 CONDITIONS = ("room", "cold")

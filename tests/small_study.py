@@ -14,7 +14,7 @@ from tolsim.parts import (
     Potentiometer,
     Resistor,
 )
-from tolsim.spread import read_tables
+from tolsim.spread.reading import read_tables
 
 TABLES = b"""
 [table.c-5]

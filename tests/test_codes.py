@@ -2,7 +2,8 @@
 
 import pytest
 
-from tolsim.codes import (
+from tolsim.errors import Mistake
+from tolsim.spread.codes import (
     Class1,
     Class2,
     Tolerance,
@@ -13,7 +14,6 @@ from tolsim.codes import (
     nearest_preferred,
     tolerance_letter,
 )
-from tolsim.errors import Mistake
 
 # IEC 60062:2016, table of tolerance codes: per cent from 10 pF on.
 PER_CENT = {

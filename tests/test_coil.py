@@ -6,8 +6,8 @@ import numpy as np
 import pytest
 from scipy.constants import mu_0
 
-from tolsim.coil import air_coil_inductance, nagaoka
 from tolsim.errors import Mistake
+from tolsim.spread.coil import air_coil_inductance, nagaoka
 
 # Nagaoka 1909 table, diameter / length; digits recomputed from the elliptic integrals in mpmath.
 NAGAOKA = {

@@ -7,8 +7,8 @@ from hypothesis import given, settings
 from hypothesis import strategies as st
 from small_study import mosfet
 
-from tolsim.datasheet import device_parameters, threshold_window, window_assumptions
 from tolsim.errors import Mistake
+from tolsim.spread.datasheet import device_parameters, threshold_window, window_assumptions
 
 KNEE = 0.12  # default of the part, V
 

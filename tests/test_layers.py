@@ -11,16 +11,16 @@ import tolsim
 
 FLOORS = [
     # words and numbers: they know nothing of circuits
-    {"errors", "figure_names", "unit_files", "stats.proportion"},
-    {"quantity", "library", "records", "results", "codes", "coil", "laws.law"}
-    | {"stats.percentiles", "stats.ranking"},
+    {"errors", "figure_names", "answers.unit_files", "stats.proportion"},
+    {"quantity", "library", "records", "answers.results", "laws.law"}
+    | {"spread.codes", "spread.coil", "stats.percentiles", "stats.ranking"},
     {"laws.lognormal", "laws.sorted_out", "laws.triangular", "laws.truncated_normal"}
-    | {"laws.uniform", "stats", "mosfet_sheet", "plain_words", "wording"},
+    | {"laws.uniform", "stats", "mosfet_sheet", "study.plain_words", "answers.wording"},
     {"laws"},
     # the design: parts, then what is made of them
     {"parts", "laws.reading"},
-    {"design", "datasheet", "temperature", "ageing"},
-    {"bounds"},
+    {"design", "spread.datasheet", "spread.temperature", "spread.ageing"},
+    {"answers.bounds"},
     # the circuit: it knows the design, but neither studies nor spread
     {"circuit.devices"},
     {"circuit.network", "circuit.orbit", "circuit.floquet"},
@@ -36,17 +36,18 @@ FLOORS = [
     {"figures.stage", "figures.start"},
     {"figures", "verdicts"},
     # spread and chance
-    {"spread_laws", "spread_table"},
-    {"spread", "sampling"},
-    {"part_values", "spread_checks", "spread_text"},
+    {"spread.drift_reading", "spread.table"},
+    {"spread.reading", "spread.sampling"},
+    {"spread.part_values", "spread.checks", "spread.words"},
     # the door for study files
-    {"outline"},
-    {"net_checks", "limit_checks", "study_checks"},
-    {"study_reading"},
+    {"study.outline"},
+    {"study.nets", "study.limits", "study.checks"},
+    {"study.reading"},
+    {"study.file"},
     {"study"},
     # answers
-    {"nominals", "provenance", "summary_ranking"},
-    {"evaluation", "summary", "summary_text", "report.content", "report.tables"},
+    {"nominals", "answers.provenance", "answers.ranking"},
+    {"evaluation", "answers.summary", "answers.lines", "report.content", "report.tables"},
     {"report.charts"},
     {"report.page"},
     {"report"},

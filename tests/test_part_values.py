@@ -4,10 +4,10 @@ import numpy as np
 import pytest
 from small_study import capacitor, everything, inductor, mosfet, study, tables
 
-from tolsim.coil import air_coil_inductance
 from tolsim.design import Condition, State
-from tolsim.part_values import nominal_values, part_values
-from tolsim.sampling import draw, factors
+from tolsim.spread.coil import air_coil_inductance
+from tolsim.spread.part_values import nominal_values, part_values
+from tolsim.spread.sampling import draw, factors
 
 TABLES = tables()
 

@@ -8,8 +8,8 @@ import fake_run
 import numpy as np
 import pytest
 
+from tolsim.answers.wording import verdict_sentence
 from tolsim.report import render, write_report
-from tolsim.wording import verdict_sentence
 
 
 @pytest.fixture(scope="module")

@@ -14,10 +14,10 @@ import pytest
 from hypothesis import given, settings
 from hypothesis import strategies as st
 
+from tolsim.answers.results import Results, summary_json
+from tolsim.answers.summary import summarise
+from tolsim.answers.unit_files import FrameColumns, UnitFiles, UnitRows
 from tolsim.errors import TolsimError
-from tolsim.results import Results, summary_json
-from tolsim.summary import summarise
-from tolsim.unit_files import FrameColumns, UnitFiles, UnitRows
 
 YIELD_KEYS = {"estimate", "low", "high", "confidence", "units", "passed", "failed", "undecided"}
 FIGURE_KEYS = {
@@ -231,7 +231,7 @@ def test_a_killed_run_leaves_its_finished_chunks_readable(tmp_path):
         sys.path.insert(0, sys.argv[1])
         import fake_run
         from pathlib import Path
-        from tolsim.unit_files import UnitFiles
+        from tolsim.answers.unit_files import UnitFiles
         table = fake_run.factors(50)
         rows = fake_run.rows(table.assign(unit=range(250, 300)), fake_run.study())
         UnitFiles(Path(sys.argv[2])).write_chunk(0, rows, table)

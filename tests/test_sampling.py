@@ -12,7 +12,7 @@ from scipy import stats
 from small_study import capacitor, everything, inductor, study, tables
 
 from tolsim.laws import LogNormal, Uniform
-from tolsim.sampling import Factor, draw, factors
+from tolsim.spread.sampling import Factor, draw, factors
 
 ANY = Uniform(0.0, 1.0)
 

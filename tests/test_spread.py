@@ -8,9 +8,9 @@ from small_study import TABLES, capacitor, everything, mosfet, study, tables
 from tolsim.design import Condition, State
 from tolsim.errors import StudyError
 from tolsim.parts import Coupling
-from tolsim.spread import load_tables, read_tables
-from tolsim.spread_checks import check_spread
-from tolsim.spread_text import assumptions, describe
+from tolsim.spread.checks import check_spread
+from tolsim.spread.reading import load_tables, read_tables
+from tolsim.spread.words import assumptions, describe
 
 HEAD = 'title = "T"\nfor = "capacitor"\nbasis = "guess"\nsource = "a test"\n'
 

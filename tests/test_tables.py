@@ -6,9 +6,9 @@ import numpy as np
 import pytest
 
 from tolsim.library import distributions_folder
-from tolsim.spread import load_tables
-from tolsim.spread_table import ASPECTS, BASES
-from tolsim.spread_text import describe
+from tolsim.spread.reading import load_tables
+from tolsim.spread.table import ASPECTS, BASES
+from tolsim.spread.words import describe
 
 TABLES = load_tables(None, None)
 every_table = pytest.mark.parametrize("table", TABLES.values(), ids=list(TABLES))

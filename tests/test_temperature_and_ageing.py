@@ -3,10 +3,10 @@
 import numpy as np
 import pytest
 
-from tolsim.ageing import LinearAgeing, LogTimeAgeing, PowerAgeing, SqrtTimeAgeing
 from tolsim.errors import Mistake
 from tolsim.laws import Fixed, Uniform
-from tolsim.temperature import (
+from tolsim.spread.ageing import LinearAgeing, LogTimeAgeing, PowerAgeing, SqrtTimeAgeing
+from tolsim.spread.temperature import (
     CopperTemperature,
     CurveTemperature,
     EnvelopeTemperature,

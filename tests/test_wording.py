@@ -5,8 +5,8 @@ import pytest
 from hypothesis import given
 from hypothesis import strategies as st
 
-from tolsim.summary_text import summary_lines
-from tolsim.wording import (
+from tolsim.answers.lines import summary_lines
+from tolsim.answers.wording import (
     between,
     failures,
     hardest,

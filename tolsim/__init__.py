@@ -16,7 +16,7 @@ __version__ = "0.1.0"
 
 _HOMES = {
     "RequestError": "tolsim.errors",
-    "Results": "tolsim.results",
+    "Results": "tolsim.answers.results",
     "RunError": "tolsim.errors",
     "Study": "tolsim.design",
     "StudyError": "tolsim.errors",

@@ -163,7 +163,7 @@ def tables(name: str | None, tables_dir: Path | None) -> None:
 
     NAME is a table of the list.
     """
-    from tolsim.spread import load_tables
+    from tolsim.spread.reading import load_tables
     from tolsim.terminal import show_table, show_tables
 
     known = load_tables(None, tables_dir)

@@ -14,9 +14,9 @@ from tolsim.circuit.thermal import Case
 from tolsim.design import Study
 from tolsim.figures import measure_orbits, measure_start
 from tolsim.nominals import CaseName, PreparedCase, case_of
-from tolsim.part_values import part_values
-from tolsim.sampling import Draws, Factor, draw
-from tolsim.spread_table import SpreadTable
+from tolsim.spread.part_values import part_values
+from tolsim.spread.sampling import Draws, Factor, draw
+from tolsim.spread.table import SpreadTable
 from tolsim.verdicts import judge
 
 BATCH = 256  # units solved side by side: enough to amortise calls, small enough for the cache

@@ -16,8 +16,8 @@ from tolsim.circuit.thermal import Case, mosfets
 from tolsim.design import Study
 from tolsim.errors import RunError
 from tolsim.figures import measure_orbits, measure_start
-from tolsim.part_values import Values, nominal_values
-from tolsim.spread_table import SpreadTable
+from tolsim.spread.part_values import Values, nominal_values
+from tolsim.spread.table import SpreadTable
 
 CaseName = tuple[str, str]  # condition, state
 

@@ -8,6 +8,7 @@ from dataclasses import dataclass
 import numpy as np
 from numpy.typing import NDArray
 
+from tolsim.answers.results import Results
 from tolsim.circuit.nominal import Nominal
 from tolsim.circuit.orbit import Solution
 from tolsim.circuit.thermal import Case, mosfets
@@ -17,10 +18,9 @@ from tolsim.figures.waves import Waves
 from tolsim.parts import Inductor
 from tolsim.quantity import show
 from tolsim.report import InputRow, ReportInput, Waveform, report_input
-from tolsim.results import Results
-from tolsim.sampling import draw, tables_of
-from tolsim.spread_table import ASPECTS, SpreadTable
-from tolsim.spread_text import assumptions, spread_words
+from tolsim.spread.sampling import draw, tables_of
+from tolsim.spread.table import ASPECTS, SpreadTable
+from tolsim.spread.words import assumptions, spread_words
 from tolsim.study import StudyFile
 
 Floats = NDArray[np.float64]

@@ -20,7 +20,7 @@ from tolsim.circuit.orbit import Solution, Status
 from tolsim.circuit.thermal import Case
 from tolsim.circuit.transient import march
 from tolsim.evaluation import Plan, solve_case
-from tolsim.sampling import Draws, draw
+from tolsim.spread.sampling import Draws, draw
 
 LEAST_UNITS = 4  # per case
 SHARE = 0.01

@@ -14,17 +14,17 @@ import numpy as np
 import pandas as pd
 from numpy.typing import NDArray
 
-from tolsim.bounds import bounds
+from tolsim.answers.bounds import bounds
+from tolsim.answers.results import STUDY_FILE, Results
+from tolsim.answers.wording import shown
 from tolsim.circuit.orbit import Status
 from tolsim.errors import RequestError
 from tolsim.evaluation import Plan, solve_case
 from tolsim.nominals import CaseName, prepare
 from tolsim.presentation import Signal, signals
-from tolsim.results import STUDY_FILE, Results
 from tolsim.run import TABLES_FOLDER
-from tolsim.sampling import Draws, draw, factors
+from tolsim.spread.sampling import Draws, draw, factors
 from tolsim.study import StudyFile, open_study
-from tolsim.wording import shown
 
 UNUSUAL = 6  # factors named in the story
 DRAW_TOLERANCE = 1e-12

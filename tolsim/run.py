@@ -16,17 +16,17 @@ import numpy as np
 import pandas as pd
 from joblib import Parallel, delayed, parallel_config
 
+from tolsim.answers.provenance import provenance_of, used_tables
+from tolsim.answers.results import SUMMARY_FILE, Results
+from tolsim.answers.summary import summarise
+from tolsim.answers.unit_files import Columns, FrameColumns, UnitFiles, write_text
 from tolsim.design import Study
 from tolsim.errors import RequestError
 from tolsim.evaluation import Chunk, Plan, evaluate
 from tolsim.nominals import prepare
-from tolsim.provenance import provenance_of, used_tables
 from tolsim.recheck import recheck
-from tolsim.results import SUMMARY_FILE, Results
-from tolsim.sampling import factors
+from tolsim.spread.sampling import factors
 from tolsim.study import StudyFile, open_study
-from tolsim.summary import summarise
-from tolsim.unit_files import Columns, FrameColumns, UnitFiles, write_text
 
 CHUNK = 250  # units stored together; a killed run loses at most one per job
 IDENTITY_FILE = "run.json"

@@ -15,15 +15,15 @@ from rich.progress import BarColumn, MofNCompleteColumn, Progress, TextColumn, T
 from rich.table import Table
 from rich.text import Text
 
-from tolsim.bounds import Bound, applies, bounds
+from tolsim.answers.bounds import Bound, applies, bounds
+from tolsim.answers.lines import summary_lines
+from tolsim.answers.wording import shown
 from tolsim.design import Study
 from tolsim.figure_names import FIGURES
 from tolsim.quantity import show
-from tolsim.spread_table import SpreadTable
-from tolsim.spread_text import assumptions, describe
+from tolsim.spread.table import SpreadTable
+from tolsim.spread.words import assumptions, describe
 from tolsim.study import StudyFile
-from tolsim.summary_text import summary_lines
-from tolsim.wording import shown
 
 _WIDTH = 80
 _MOST_ROWS = 8  # of the list of limits that are near

@@ -12,7 +12,7 @@ from dataclasses import dataclass
 import numpy as np
 from numpy.typing import NDArray
 
-from tolsim.bounds import Bound, applies, bounds
+from tolsim.answers.bounds import Bound, applies, bounds
 from tolsim.circuit.orbit import Status
 from tolsim.design import Study
 from tolsim.figure_names import STAGE

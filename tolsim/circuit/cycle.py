@@ -20,7 +20,6 @@ from tolsim.circuit.network import Network
 from tolsim.circuit.stepper import GAMMA, A, B, Point, Sensitivity, Stepper
 
 
-
 def _extrapolation(known: tuple[float, float, float], wanted: float) -> NDArray[np.float64]:
     """Lagrange weights of a quadratic through three times, at a fourth."""
     weights = np.ones(3)

@@ -15,8 +15,8 @@ from matplotlib.figure import Figure
 from matplotlib.ticker import MaxNLocator
 from numpy.typing import NDArray
 
+from tolsim.answers.wording import shown
 from tolsim.report.content import Waveform
-from tolsim.wording import shown
 
 Floats = NDArray[np.float64]
 

@@ -9,11 +9,11 @@ from typing import Any
 import numpy as np
 from numpy.typing import NDArray
 
+from tolsim.answers.ranking import START_MARGIN, worst_case
+from tolsim.answers.results import Results
+from tolsim.answers.unit_files import UnitRows
 from tolsim.design import Study
 from tolsim.figure_names import FIGURES
-from tolsim.results import Results
-from tolsim.summary_ranking import START_MARGIN, worst_case
-from tolsim.unit_files import UnitRows
 
 Floats = NDArray[np.float64]
 
@@ -86,7 +86,7 @@ class ReportInput:
     ----------
     title, scenario : str
     summary : mapping
-        As documented in `tolsim.results`.
+        As documented in `tolsim.answers.results`.
     verdicts : ndarray (N,)
         0 pass, 1 fail, 2 undecided, by unit.
     start_margins : ndarray (N,)

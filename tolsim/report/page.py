@@ -9,6 +9,8 @@ import numpy as np
 from jinja2 import Environment, PackageLoader, StrictUndefined
 from numpy.typing import NDArray
 
+from tolsim.answers.unit_files import write_text
+from tolsim.answers.wording import DASH, confidence_words, percent, percents, verdict_sentence
 from tolsim.report.charts import start_margin_chart, waveform_chart
 from tolsim.report.content import FAIL, PASS, UNDECIDED, ReportInput
 from tolsim.report.tables import (
@@ -21,8 +23,6 @@ from tolsim.report.tables import (
     start_sentences,
     stress_rows,
 )
-from tolsim.unit_files import write_text
-from tolsim.wording import DASH, confidence_words, percent, percents, verdict_sentence
 
 MOST_TILES = 2000
 TILES_IN_A_ROW = 50

@@ -6,7 +6,7 @@ from collections.abc import Mapping
 from dataclasses import dataclass
 from typing import Any, Literal
 
-from tolsim.wording import (
+from tolsim.answers.wording import (
     DASH,
     GOOD,
     NO_START,

@@ -16,8 +16,6 @@ from dataclasses import dataclass
 import numpy as np
 from numpy.typing import NDArray
 
-from tolsim.coil import air_coil_inductance
-from tolsim.datasheet import device_parameters, threshold_window
 from tolsim.design import Condition, Rail, State, Study
 from tolsim.laws import Law
 from tolsim.parts import (
@@ -29,7 +27,9 @@ from tolsim.parts import (
     Mosfet,
     Potentiometer,
 )
-from tolsim.sampling import (
+from tolsim.spread.coil import air_coil_inductance
+from tolsim.spread.datasheet import device_parameters, threshold_window
+from tolsim.spread.sampling import (
     CONDITION_UNITS,
     Draws,
     aspect_words,
@@ -37,7 +37,7 @@ from tolsim.sampling import (
     factor_name,
     reel_of,
 )
-from tolsim.spread_table import QuantitySpread, SpreadTable
+from tolsim.spread.table import QuantitySpread, SpreadTable
 
 Floats = NDArray[np.float64]
 Values = dict[str, Floats]

@@ -1,6 +1,6 @@
 """Count and condense the rows of all units into the summary of a run.
 
-The keys are documented in `tolsim.results`.  Columns are read one by one, so that a run
+The keys are documented in `tolsim.answers.results`.  Columns are read one by one, so that a run
 of 100 000 units needs no more memory than one of its columns.
 """
 
@@ -12,13 +12,13 @@ from typing import Any
 import numpy as np
 from numpy.typing import NDArray
 
-from tolsim.bounds import Bound, applies, bounds, named_figure, rating_of
+from tolsim.answers.bounds import Bound, applies, bounds, named_figure, rating_of
+from tolsim.answers.ranking import rankings
+from tolsim.answers.unit_files import Columns, UnitRows
 from tolsim.design import Study
 from tolsim.figure_names import FigureInfo
 from tolsim.stats.percentiles import percentiles, tolerance_bound
 from tolsim.stats.proportion import share_interval, yield_estimate
-from tolsim.summary_ranking import rankings
-from tolsim.unit_files import Columns, UnitRows
 
 Floats = NDArray[np.float64]
 Flags = NDArray[np.bool_]  # (N,) or (N, cases)

@@ -9,7 +9,7 @@ from typing import Any
 
 from tolsim import __version__
 from tolsim.design import Study
-from tolsim.sampling import tables_of
+from tolsim.spread.sampling import tables_of
 from tolsim.study import StudyFile
 
 WATCHED = ("numpy", "scipy", "pandas", "pyarrow")

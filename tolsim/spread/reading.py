@@ -20,8 +20,8 @@ from tolsim.laws import Law
 from tolsim.laws.reading import read_law
 from tolsim.library import distributions_folder
 from tolsim.parts import AnyPart
-from tolsim.spread_laws import read_ageing, read_temperature
-from tolsim.spread_table import (
+from tolsim.spread.drift_reading import read_ageing, read_temperature
+from tolsim.spread.table import (
     ASPECTS,
     BASES,
     DEVIATIONS,

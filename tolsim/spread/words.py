@@ -5,16 +5,16 @@ from __future__ import annotations
 from collections.abc import Mapping
 from dataclasses import fields
 
-from tolsim.ageing import AgeingLaw
-from tolsim.datasheet import device_parameters, window_assumptions
 from tolsim.design import Study
 from tolsim.laws import Law
 from tolsim.parts import Capacitor, Mosfet
 from tolsim.quantity import show
-from tolsim.sampling import tables_of
-from tolsim.spread import UNITS
-from tolsim.spread_table import ASPECTS, QuantitySpread, SpreadTable
-from tolsim.temperature import TemperatureLaw
+from tolsim.spread.ageing import AgeingLaw
+from tolsim.spread.datasheet import device_parameters, window_assumptions
+from tolsim.spread.reading import UNITS
+from tolsim.spread.sampling import tables_of
+from tolsim.spread.table import ASPECTS, QuantitySpread, SpreadTable
+from tolsim.spread.temperature import TemperatureLaw
 
 _LABELS: Mapping[str, str] = {
     "tolerance": "scatter within the lot",

@@ -13,9 +13,9 @@ from collections.abc import Mapping
 from dataclasses import dataclass, field
 from typing import Final, Literal
 
-from tolsim.ageing import AgeingLaw
 from tolsim.laws import Law
-from tolsim.temperature import TemperatureLaw
+from tolsim.spread.ageing import AgeingLaw
+from tolsim.spread.temperature import TemperatureLaw
 
 Basis = Literal["standard", "datasheet", "measured", "common practice", "guess"]
 Deviation = Literal["relative", "absolute", "position"]

@@ -6,7 +6,7 @@ import textwrap
 from collections.abc import Iterator, Mapping
 from typing import Any
 
-from tolsim.wording import (
+from tolsim.answers.wording import (
     failures,
     hardest,
     list_of_units,
@@ -30,7 +30,7 @@ def summary_lines(summary: Summary) -> list[str]:
     Parameters
     ----------
     summary : mapping
-        As documented in `tolsim.results`.
+        As documented in `tolsim.answers.results`.
     """
     lines = textwrap.wrap(verdict_sentence(summary), WIDTH)
     for heading, body in (

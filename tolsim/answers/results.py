@@ -53,8 +53,8 @@ from typing import Any
 
 import pandas as pd
 
+from tolsim.answers.unit_files import Columns, FrameColumns, UnitFiles, write_text
 from tolsim.errors import RequestError
-from tolsim.unit_files import Columns, FrameColumns, UnitFiles, write_text
 
 SUMMARY_FILE = "summary.json"
 STUDY_FILE = "study.toml"

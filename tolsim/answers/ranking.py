@@ -7,11 +7,11 @@ from typing import Any
 import numpy as np
 from numpy.typing import NDArray
 
-from tolsim.bounds import named_figure
+from tolsim.answers.bounds import named_figure
+from tolsim.answers.unit_files import Columns, UnitRows
 from tolsim.design import Study
 from tolsim.figure_names import FigureInfo
 from tolsim.stats.ranking import Ranking, rank_factors
-from tolsim.unit_files import Columns, UnitRows
 
 Floats = NDArray[np.float64]
 Flags = NDArray[np.bool_]

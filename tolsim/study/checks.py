@@ -1,7 +1,7 @@
 """Tables of a study must fit together: names must exist, the stage must be of one kind.
 
-Limits and rankings have their own checks (`tolsim.limit_checks`), so have the nets
-(`tolsim.net_checks`).
+Limits and rankings have their own checks (`tolsim.study.limits`), so have the nets
+(`tolsim.study.nets`).
 """
 
 from __future__ import annotations
@@ -13,8 +13,8 @@ from typing import Any
 import numpy as np
 
 from tolsim.errors import Problem
-from tolsim.outline import Outline
 from tolsim.parts import PART_KINDS, Coupling, Load, Rating
+from tolsim.study.outline import Outline
 
 _NAME = re.compile(r"[A-Za-z][A-Za-z0-9_]*")
 _TITLE = re.compile(r"[A-Za-z0-9][A-Za-z0-9_ -]*")

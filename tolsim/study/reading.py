@@ -11,12 +11,12 @@ from pydantic import BaseModel, ValidationError, create_model
 from tolsim.design import Condition, Limit, Rail, State
 from tolsim.errors import Mistake, Problem, nearest_name
 from tolsim.laws.reading import read_law
-from tolsim.limit_checks import limit_place, with_numbers
 from tolsim.mosfet_sheet import DeviceModel
-from tolsim.outline import Outline, Table, kinds_of, texts
 from tolsim.parts import PART_KINDS, Mosfet, Part
-from tolsim.plain_words import tell, written
 from tolsim.quantity import UNITS_MANDATORY
+from tolsim.study.limits import limit_place, with_numbers
+from tolsim.study.outline import Outline, Table, kinds_of, texts
+from tolsim.study.plain_words import tell, written
 
 Record = TypeVar("Record", bound=BaseModel)
 

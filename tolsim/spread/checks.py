@@ -1,19 +1,19 @@
 """Can every law of a study be drawn for its parts?  Every mistake at once.
 
-That the tables named exist and fit the kind of part is checked before (`tolsim.study_checks`).
+That the tables named exist and fit the kind of part is checked before (`tolsim.study.checks`).
 """
 
 from __future__ import annotations
 
 from collections.abc import Iterator, Mapping
 
-from tolsim.datasheet import device_parameters
 from tolsim.design import Study
 from tolsim.errors import Mistake, Problem
 from tolsim.parts import Mosfet
-from tolsim.sampling import CONDITION_UNITS, condition_law, tables_of
-from tolsim.spread import UNITS
-from tolsim.spread_table import QuantitySpread, SpreadTable
+from tolsim.spread.datasheet import device_parameters
+from tolsim.spread.reading import UNITS
+from tolsim.spread.sampling import CONDITION_UNITS, condition_law, tables_of
+from tolsim.spread.table import QuantitySpread, SpreadTable
 
 
 def check_spread(study: Study, tables: Mapping[str, SpreadTable], file: str) -> list[Problem]:

@@ -12,7 +12,7 @@ from typing import Any
 
 from tolsim.errors import Problem, nearest_name
 from tolsim.figure_names import RAIL
-from tolsim.plain_words import written
+from tolsim.study.plain_words import written
 
 Table = Mapping[str, Any]
 

@@ -13,8 +13,8 @@ from itertools import combinations
 
 from tolsim.design import GROUND
 from tolsim.errors import Mistake, Problem, nearest_name
-from tolsim.outline import Outline, Table
 from tolsim.quantity import read
+from tolsim.study.outline import Outline, Table
 
 Edge = tuple[str, str]
 

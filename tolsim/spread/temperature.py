@@ -16,9 +16,9 @@ import numpy as np
 from numpy.typing import ArrayLike
 from scipy.interpolate import PchipInterpolator
 
-from tolsim.codes import class1_code, class2_code
 from tolsim.errors import Mistake
 from tolsim.laws import Fixed, Floats, Law, Uniform
+from tolsim.spread.codes import class1_code, class2_code
 
 ANYWHERE = Uniform(-1.0, 1.0)
 TYPICAL = Fixed(1.0)

@@ -7,9 +7,9 @@ from typing import Any
 
 from tolsim.errors import Mistake, Problem
 from tolsim.figure_names import FIGURES, NAMES, FigureInfo, figures_of, targets
-from tolsim.outline import Outline, Table, texts
-from tolsim.plain_words import written
 from tolsim.quantity import read
+from tolsim.study.outline import Outline, Table, texts
+from tolsim.study.plain_words import written
 
 _BOUNDS = ("at_most", "at_least")
 

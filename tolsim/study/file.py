@@ -24,16 +24,16 @@ from pydantic import AfterValidator
 
 from tolsim.design import Design, Rail, Run, Study
 from tolsim.errors import Mistake, Problem, StudyError
-from tolsim.limit_checks import limit_problems
-from tolsim.net_checks import net_problems
-from tolsim.outline import Table
 from tolsim.quantity import Frequency, Leak
 from tolsim.records import Frozen
-from tolsim.spread import load_tables
-from tolsim.spread_checks import check_spread
-from tolsim.spread_table import SpreadTable
-from tolsim.study_checks import coupling_problems, study_problems
-from tolsim.study_reading import Reading
+from tolsim.spread.checks import check_spread
+from tolsim.spread.reading import load_tables
+from tolsim.spread.table import SpreadTable
+from tolsim.study.checks import coupling_problems, study_problems
+from tolsim.study.limits import limit_problems
+from tolsim.study.nets import net_problems
+from tolsim.study.outline import Table
+from tolsim.study.reading import Reading
 
 _CONDITION_UNITS = {"ambient": "degC", "supply": "1", "age": "h"}
 _PLACE = re.compile(r" \(at (line \d+, column \d+|end of document)\)$")

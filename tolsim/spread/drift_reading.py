@@ -6,10 +6,10 @@ from collections.abc import Callable, Mapping
 from typing import Any, Final
 
 from tolsim import quantity
-from tolsim.ageing import AgeingLaw, LinearAgeing, LogTimeAgeing, PowerAgeing, SqrtTimeAgeing
 from tolsim.errors import Mistake, nearest_name
 from tolsim.laws.reading import Report, read_law, under
-from tolsim.temperature import (
+from tolsim.spread.ageing import AgeingLaw, LinearAgeing, LogTimeAgeing, PowerAgeing, SqrtTimeAgeing
+from tolsim.spread.temperature import (
     CopperTemperature,
     CurveTemperature,
     EnvelopeTemperature,

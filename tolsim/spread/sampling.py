@@ -22,7 +22,7 @@ from tolsim.errors import Mistake
 from tolsim.laws import Law
 from tolsim.laws.reading import read_law
 from tolsim.parts import Capacitor
-from tolsim.spread_table import ASPECTS, Aspect, SpreadTable
+from tolsim.spread.table import ASPECTS, Aspect, SpreadTable
 
 CONDITION_UNITS: Mapping[str, str] = {"ambient": "degC", "supply": "1", "age": "h"}
 """What a condition may leave to chance, with its unit of measure."""

@@ -1,0 +1,147 @@
+"""The whole road on a small study: folder, resume, replay, reproducibility."""
+
+from __future__ import annotations
+
+import json
+from pathlib import Path
+
+import numpy as np
+import pandas as pd
+import pytest
+import quick_study
+
+from tolsim import run as corridor
+from tolsim.errors import RequestError, RunError
+from tolsim.replay import draw_replay, replay_unit, story_text
+from tolsim.results import Results
+from tolsim.run import run_study
+
+UNITS = 12
+
+
+def write(folder: Path, **changes: object) -> Path:
+    """A study file on disk."""
+    path = folder / "quick.toml"
+    path.write_text(quick_study.text(**changes), encoding="utf-8")  # type: ignore[arg-type]
+    return path
+
+
+@pytest.fixture(scope="module")
+def finished(tmp_path_factory: pytest.TempPathFactory) -> Path:
+    """Results folder of a finished run in chunks of 5."""
+    place = tmp_path_factory.mktemp("run")
+    patch = pytest.MonkeyPatch()
+    patch.setattr(corridor, "CHUNK", 5)
+    run_study(write(place), jobs=1, out=place / "out")
+    patch.undo()
+    return place / "out"
+
+
+def test_folder_holds_what_is_documented(finished: Path) -> None:
+    """Summary, tables, report and the study with its spread tables."""
+    names = {path.name for path in finished.iterdir()}
+    assert {"summary.json", "units.parquet", "factors.parquet", "report.html"} <= names
+    assert {"study.toml", "tables", "run.json"} <= names
+    summary = json.loads((finished / "summary.json").read_text(encoding="utf-8"))
+    counts = summary["yield"]
+    assert counts["units"] == UNITS == counts["passed"] + counts["failed"] + counts["undecided"]
+    assert 0 <= counts["low"] <= counts["estimate"] <= counts["high"] <= 1
+    assert summary["quality"]["energy_balance"]["worst"] < 0.005
+    rechecked = summary["quality"]["rechecked"]
+    assert rechecked["agreed"] == rechecked["units"] > 0
+
+
+def test_every_unit_has_a_row_with_verdict_and_figures(finished: Path) -> None:
+    """Nothing is left out, and solved units have their figures."""
+    units = pd.read_parquet(finished / "units.parquet")
+    assert units["unit"].tolist() == list(range(UNITS))
+    assert set(units["verdict"]) <= {"pass", "fail", "undecided"}
+    solved = units[units["status"] == "settled"]
+    figures = [name for name in units.columns if name.endswith(("peak", "frequency", "loss"))]
+    assert len(figures) > 20
+    assert solved[figures].notna().all(axis=None)
+
+
+def test_same_seed_same_answer_whatever_the_chunks_and_units(
+    finished: Path, tmp_path: Path
+) -> None:
+    """Unit k is the same unit in a shorter run with other chunks."""
+    stored = pd.read_parquet(finished / "units.parquet").head(4)
+    again = run_study(write(tmp_path), units=4, jobs=1).units
+    numbers = [name for name in stored.columns if stored[name].dtype == np.float64]
+    scale = stored[numbers].abs().max().clip(lower=1e-12)
+    assert ((again[numbers] - stored[numbers]).abs() / scale).max().max() < 1e-4
+    assert again["verdict"].tolist() == stored["verdict"].tolist()
+
+
+def test_killed_run_leaves_finished_chunks_and_is_taken_up(
+    tmp_path: Path, monkeypatch: pytest.MonkeyPatch
+) -> None:
+    """The chunks done before the kill are readable, and not solved again."""
+    monkeypatch.setattr(corridor, "CHUNK", 3)
+    path = write(tmp_path, units=9)
+    evaluate, seen = corridor.evaluate, []
+
+    def dies_in_the_second(plan: object, first: int, count: int) -> object:
+        if first == 3 and not seen:
+            seen.append(first)
+            raise KeyboardInterrupt
+        seen.append(first)
+        return evaluate(plan, first, count)  # type: ignore[arg-type]
+
+    monkeypatch.setattr(corridor, "evaluate", dies_in_the_second)
+    with pytest.raises(KeyboardInterrupt):
+        run_study(path, jobs=1, out=tmp_path / "out")
+    left = Results.open(tmp_path / "out")
+    assert not left.complete
+    assert left.units["unit"].tolist() == [0, 1, 2]
+    results = run_study(path, jobs=1, out=tmp_path / "out")
+    assert results.complete
+    assert sorted(results.units["unit"]) == list(range(9))
+    assert seen == [0, 3, 3, 6]
+
+
+def test_another_run_in_the_folder_is_refused(finished: Path, tmp_path: Path) -> None:
+    """A folder belongs to one study and seed."""
+    with pytest.raises(RequestError, match="holds a run of another study, seed or version"):
+        run_study(write(tmp_path), seed=99, out=finished)
+    (tmp_path / "mine").mkdir()
+    (tmp_path / "mine" / "thesis.txt").write_text("do not touch", encoding="utf-8")
+    with pytest.raises(RequestError, match="is not empty and holds no run"):
+        run_study(write(tmp_path), out=tmp_path / "mine")
+
+
+def test_replay_tells_the_stored_unit(finished: Path) -> None:
+    """Same outcome as stored, a story per case, a picture."""
+    replay = replay_unit(finished, 7)
+    text = story_text(replay)
+    assert text.startswith("Unit 7\nroom / lit: ")
+    assert "What is unusual about it" in text
+    picture = draw_replay(replay, finished)
+    assert picture is not None
+    assert picture.read_bytes().startswith(b"\x89PNG")
+
+
+def test_replay_of_a_failing_unit_names_limit_and_neighbour(finished: Path) -> None:
+    """A unit over its limit says by how much, and which unit nearby passes."""
+    units = pd.read_parquet(finished / "units.parquet")
+    failing = units[units["verdict"] == "fail"]["unit"]
+    assert 0 < len(failing) < UNITS, "the study must have both kinds for this test"
+    text = story_text(replay_unit(finished, int(failing.iloc[0])))
+    assert "is above" in text
+    assert "Nearest passing unit: " in text
+
+
+def test_replay_of_an_unknown_unit(finished: Path) -> None:
+    """The range of units is named."""
+    with pytest.raises(RequestError, match="no unit 400 in this run. Its units are 0 to 11"):
+        replay_unit(finished, 400)
+
+
+def test_study_without_any_orbit(tmp_path: Path) -> None:
+    """A stage biased far below threshold, without feedback, says that it cannot run."""
+    text = quick_study.text(bias=0.1).replace('"75 pF"', '"0.01 pF"')
+    path = tmp_path / "dead.toml"
+    path.write_text(text, encoding="utf-8")
+    with pytest.raises(RunError, match="settles on no periodic orbit in any case"):
+        run_study(path, units=2, jobs=1)

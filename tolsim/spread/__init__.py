@@ -1,0 +1,1 @@
+"""How parts differ: spread tables, draws of units, and the part values they make."""
