@@ -1,0 +1,159 @@
+"""Chord iteration with Anderson mixing over a pool of slots: one inverse Jacobian serves all units.
+
+With g = -M R(z), M the nominal unit's inverse Jacobian, a plain chord step is z + g.  Anderson
+mixing of depth 3 subtracts what the last steps tell about the next one (D. G. Anderson, "Iterative
+procedures for nonlinear integral equations", J. ACM 12 (1965) 547-560; Walker, Ni, SIAM J. Numer.
+Anal. 49 (2011) 1715-1735):
+
+    gamma = argmin |g - dG gamma|,     z <- z + g - (dZ + dG) gamma
+
+A slot whose unit has settled, or used up its iterations, takes the next unit at once.  All arrays
+keep their shape and a unit's numbers never depend on its slot or its neighbours (history is ordered
+by the unit's own age), so its answer has the same bits in any company.
+"""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+
+import numpy as np
+from numpy.typing import NDArray
+
+from tolsim.circuit.bulk.residual import Residual
+from tolsim.circuit.devices import Floats, Ints
+
+DEPTH = 3
+TOLERANCE = 2e-5  # scaled update; it understates the error several times, see `choice`
+ITERATIONS = 30
+LONGEST_MOVE = 0.3  # scaled
+RIDGE = 1e-10  # of the mean square of the history, keeps young units solvable
+
+Singles = NDArray[np.float32]
+
+
+@dataclass(frozen=True)
+class Iterated:
+    """Ends of the iteration for N units."""
+
+    z: Floats  # (unknowns, N)
+    update: Floats  # (N,) last scaled update; the answer is better than it by one step
+    iterations: Ints  # (N,)
+    settled: NDArray[np.bool_]  # (N,)
+
+
+class _History:
+    """The last steps of every slot, newest first."""
+
+    def __init__(self, unknowns: int, slots: int) -> None:
+        self.turn = 0
+        self.change = np.zeros((DEPTH, unknowns, slots), np.float32)  # dG
+        self.step = np.zeros((DEPTH, unknowns, slots), np.float32)  # dZ + dG
+        self.gram = np.zeros((DEPTH, DEPTH, slots))  # dG . dG, by place in the ring
+        self.last_g = np.zeros((unknowns, slots), np.float32)
+        self.last_move = np.zeros((unknowns, slots), np.float32)
+        self._product = np.empty((unknowns, slots), np.float32)
+        self._move = np.empty((unknowns, slots), np.float32)
+
+    def _dot(self, a: Singles, b: Singles) -> Floats:
+        np.multiply(a, b, out=self._product)
+        return self._product.sum(axis=0).astype(float)
+
+    def remember(self, g: Singles) -> None:
+        """Append the step that led to g."""
+        self.turn = (self.turn + 1) % DEPTH
+        here = self.turn
+        np.subtract(g, self.last_g, out=self.change[here])
+        np.add(self.last_move, self.change[here], out=self.step[here])
+        for other in range(DEPTH):
+            product = self._dot(self.change[here], self.change[other])
+            self.gram[here, other] = self.gram[other, here] = product
+
+    def mix(self, g: Singles, age: Ints) -> Singles:
+        """Move of every slot: g - (dZ + dG) gamma, newest step first.
+
+        A unit of age a has made a steps; what is older belongs to the slot's last occupant.
+        """
+        order = [(self.turn - back) % DEPTH for back in range(DEPTH)]
+        own = age[:, None] > np.arange(DEPTH)
+        gram = self.gram[np.ix_(order, order)].transpose(2, 0, 1)
+        gram = np.where(own[:, :, None] & own[:, None, :], gram, 0.0)
+        size = np.einsum("uii->u", gram)
+        diagonal = np.arange(DEPTH)
+        gram[:, diagonal, diagonal] += np.where(own, RIDGE * size[:, None] + 1e-60, 1.0)
+        aim = np.stack([self._dot(self.change[place], g) for place in order], axis=1)
+        aim = np.where(own, aim, 0.0)
+        gamma = np.linalg.solve(gram, aim[:, :, None])[:, :, 0].astype(np.float32)
+        move = self._move
+        move[:] = g
+        for back, place in enumerate(order):
+            np.multiply(self.step[place], gamma[:, back], out=self._product)
+            move -= self._product
+        return move
+
+    def clear(self, slots: Ints) -> None:
+        """Wipe numbers that are none."""
+        for past in (self.change, self.step, self.gram):
+            past[:, :, slots] = 0
+        self.last_g[:, slots] = 0
+        self.last_move[:, slots] = 0
+
+
+def iterate(
+    residual: Residual, inverse: Singles, start: Floats, iterations: int = ITERATIONS, tolerance: float = TOLERANCE
+) -> Iterated:
+    """Settle every unit of the residual's table.
+
+    Parameters
+    ----------
+    inverse : (unknowns, unknowns)
+        M, the inverse Jacobian of the nominal unit.
+    start : (unknowns, N)
+        Predicted unknowns.
+    """
+    unknowns, units = start.shape
+    slots = residual.units
+    found = Iterated(
+        start.copy(), np.full(units, np.inf), np.zeros(units, np.intp), np.zeros(units, np.bool_)
+    )
+    history = _History(unknowns, slots)
+    occupant = np.full(slots, -1, dtype=np.intp)  # -1: an idle slot repeats the first unit
+    age = np.zeros(slots, dtype=np.intp)
+    z = np.repeat(start[:, :1], slots, axis=1)
+    residual.load(np.arange(slots), np.zeros(slots, np.intp))
+    coming = 0
+    free = np.arange(slots)
+    right_side = np.empty((unknowns, slots), np.float32)
+    g = np.empty((unknowns, slots), np.float32)
+    while True:
+        if free.size and coming < units:
+            filled = free[: units - coming]
+            entering = np.arange(coming, coming + len(filled))
+            coming += len(filled)
+            residual.load(filled, entering)
+            z[:, filled] = start[:, entering]
+            occupant[filled], age[filled] = entering, 0
+        if np.all(occupant < 0):
+            return found
+        np.negative(residual.evaluate(z), out=right_side, casting="same_kind")
+        np.matmul(inverse, right_side, out=g)
+        size = np.maximum(g.max(axis=0), -g.min(axis=0)).astype(float)
+        history.remember(g)
+        move = history.mix(g, age)
+        longest = np.maximum(move.max(axis=0), -move.min(axis=0))
+        move *= np.minimum(1, LONGEST_MOVE / np.maximum(longest, np.float32(1e-30)))
+        z += move
+        history.last_g[:], history.last_move[:] = g, move
+        age += 1
+        over = (size < tolerance) | ~np.isfinite(size) | (age >= iterations)
+        leaving = np.flatnonzero(over & (occupant >= 0))
+        if leaving.size:
+            who = occupant[leaving]
+            found.z[:, who] = z[:, leaving]
+            found.update[who], found.iterations[who] = size[leaving], age[leaving]
+            found.settled[who] = size[leaving] < tolerance
+            occupant[leaving] = -1
+        broken = np.flatnonzero(~np.isfinite(size))
+        if broken.size:
+            z[:, broken] = start[:, :1]
+            history.clear(broken)
+        free = np.flatnonzero(occupant < 0)

@@ -1,0 +1,86 @@
+"""What the bulk solver prepares once per case: order, inverse Jacobian, predictor."""
+
+from __future__ import annotations
+
+from dataclasses import dataclass, replace
+
+import numpy as np
+
+from tolsim.circuit.bulk.chord import TOLERANCE, Iterated, iterate
+from tolsim.circuit.bulk.grid import Grid
+from tolsim.circuit.bulk.prediction import Predictor, first_order, learn
+from tolsim.circuit.bulk.reference import SLOTS, Reference, settle_reference
+from tolsim.circuit.bulk.residual import Residual
+from tolsim.circuit.bulk.unit_table import Topology, UnitTable, bare_network, heated_junctions
+from tolsim.circuit.continuation import Compass
+from tolsim.circuit.devices import Floats
+from tolsim.circuit.nominal import Nominal
+from tolsim.circuit.thermal import Case
+
+NOISE = 2e-6  # scaled update that single-precision devices may cost; above, they run in double
+
+
+@dataclass(frozen=True)
+class FastPlan:
+    """Everything that solves any unit of one case by collocation; picklable."""
+
+    compass: Compass
+    grid: Grid
+    topology: Topology
+    reference: Reference
+    predictor: Predictor
+    single: bool  # devices in single precision
+    steps: int  # even samples handed on per period
+
+    def residual(self, case: Case) -> Residual:
+        """Work space loaded with the units of a case."""
+        dtype = np.float32 if self.single else np.float64
+        table = UnitTable.of(case, self.topology, dtype)
+        return Residual(case.design, table, self.topology, self.grid, self.reference.anchor, SLOTS)
+
+    def iterate(self, case: Case, start: Floats, tolerance: float = TOLERANCE) -> Iterated:
+        """Chord iteration of every unit of a case."""
+        return iterate(self.residual(case), self.reference.inverse, start, tolerance=tolerance)
+
+
+def prepare_fast(
+    nominal: Nominal, compass: Compass, pilots: Case, steps: int, harmonics: int
+) -> FastPlan:
+    """Prepare a case.
+
+    Parameters
+    ----------
+    pilots : Case
+        The first units of the study, always the same number of them: every unit starts from what
+        they teach, so another set would move the last bits of all answers.
+
+    Raises
+    ------
+    NoReferenceError
+        If the nominal orbit does not settle at this order.
+    TopologyError
+        If units couple what others do not.
+    """
+    frame, case = nominal.frame, nominal.case
+    assert frame is not None
+    grid = Grid(harmonics)
+    hot = heated_junctions(case)
+    networks = (bare_network(case, bool(hot)), bare_network(pilots, bool(hot)))
+    topology = Topology.of(networks, frame.scale, hot)
+    reference = settle_reference(case, nominal.solution, topology, grid)
+    keys = tuple(compass.slopes)
+    predictor = first_order(case, reference, topology, grid, keys)
+    plan = FastPlan(compass, grid, topology, reference, predictor, single=True, steps=steps)
+    plan = replace(plan, single=_device_noise(plan, case) < NOISE)
+    solved = plan.iterate(pilots, predictor.start(pilots))
+    good = np.flatnonzero(solved.settled)
+    return replace(plan, predictor=learn(predictor, pilots.take(good), solved.z[:, good]))
+
+
+def _device_noise(plan: FastPlan, case: Case) -> float:
+    """Update that single precision makes of the settled nominal orbit."""
+    residual = plan.residual(case)
+    slots = np.arange(residual.units)
+    residual.load(slots, np.zeros(len(slots), dtype=np.intp))
+    gap = residual.evaluate(np.repeat(plan.reference.z[:, None], len(slots), axis=1))
+    return float(np.abs(plan.reference.inverse @ gap[:, :1].astype(np.float32)).max())

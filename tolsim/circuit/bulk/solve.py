@@ -1,0 +1,129 @@
+"""Orbits of many units by collocation, what does not settle by shooting."""
+
+from __future__ import annotations
+
+import numpy as np
+
+from tolsim.circuit.bulk.chord import Iterated
+from tolsim.circuit.bulk.grid import synthesis
+from tolsim.circuit.bulk.multipliers import multipliers
+from tolsim.circuit.bulk.plan import FastPlan
+from tolsim.circuit.bulk.residual import HEAT_SCALE, LONGEST_LOG
+from tolsim.circuit.bulk.unit_table import TopologyError
+from tolsim.circuit.continuation import solve_units
+from tolsim.circuit.devices import Floats
+from tolsim.circuit.floquet import largest_beside_charge
+from tolsim.circuit.orbit import Solution, Status
+from tolsim.circuit.thermal import HIGHEST_C, Case
+
+BLOCK = 512  # units turned into samples together
+SMALLEST_SWING = 0.02  # of the nominal orbit's: below, it is another solution than the oscillation
+WAY = "collocation"
+
+
+def solve_units_fast(case: Case, plan: FastPlan) -> Solution:
+    """Orbit of every unit of a case.
+
+    Collocation settles nearly all; an orbit that does not settle, is unstable, or is not the
+    oscillation looked for goes to shooting with its own fall-backs (`continuation.solve_units`).
+
+    Returns
+    -------
+    Solution
+        Samples on the plan's even grid; `way` tells which solver settled each unit.
+    """
+    try:
+        start = plan.predictor.start(case)
+        iterated = plan.iterate(case, start)
+    except TopologyError:
+        return solve_units(case, plan.compass, plan.steps)
+    parts = []
+    for first in range(0, case.units, BLOCK):
+        units = np.arange(first, min(first + BLOCK, case.units))
+        parts.append(_finish(case.take(units), plan, _taken(iterated, units)))
+    solution = joined(parts)
+    left = np.flatnonzero(solution.status != Status.SETTLED)
+    if not left.size:
+        return solution
+    again = solve_units(case.take(left), plan.compass, plan.steps)
+    again.iterations[:] += solution.iterations[left]
+    return solution.put(left, again)
+
+
+def _taken(iterated: Iterated, units: np.ndarray[tuple[int], np.dtype[np.intp]]) -> Iterated:
+    return Iterated(
+        iterated.z[:, units], iterated.update[units], iterated.iterations[units], iterated.settled[units]
+    )
+
+
+def _finish(case: Case, plan: FastPlan, iterated: Iterated) -> Solution:
+    """Samples, multipliers and status of iterated units."""
+    topology, grid = plan.topology, plan.grid
+    n, K, units = topology.states, grid.size, case.units
+    good = iterated.settled & np.isfinite(iterated.z).all(axis=0)
+    z = np.where(good, iterated.z, plan.reference.z[:, None])
+    scaled = z[: n * K].reshape(n, K, units)
+    coefficients = np.ascontiguousarray((scaled * topology.scale[:, None, None]).transpose(1, 2, 0))
+    samples = np.empty((plan.steps + 1, units, n))
+    basis = synthesis(grid.harmonics, plan.steps)
+    np.matmul(basis, coefficients.reshape(K, -1), out=samples[:-1].reshape(plan.steps, -1))
+    samples[-1] = samples[0]
+    turned = np.zeros(units) if topology.driven else z[n * K]
+    period = 2 * np.pi / (plan.reference.anchor.omega * np.exp(turned))
+    junctions = _junctions(case, plan, z)
+    network = case.network(junctions)
+    found = multipliers(network, coefficients, period, samples, topology.scale)
+    good &= _is_the_oscillation(scaled, turned, junctions, plan)
+    stable = largest_beside_charge(found) < 1.0
+    status = np.where(stable, Status.SETTLED, Status.UNSTABLE)
+    lost = ~good
+    samples[:, lost] = np.nan
+    return Solution(
+        status=np.where(good, status, Status.NOT_CONVERGED).astype(np.intp),
+        samples=samples,
+        period=np.where(good, period, np.nan),
+        residual=iterated.update,
+        multipliers=found,
+        iterations=iterated.iterations.copy(),
+        junctions={ref: np.where(good, celsius, np.nan) for ref, celsius in junctions.items()},
+        way=np.full(units, WAY, dtype="U24"),
+    )
+
+
+def _junctions(case: Case, plan: FastPlan, z: Floats) -> dict[str, Floats]:
+    heated = plan.topology.heated
+    if not heated:
+        return case.cold_junctions()
+    rows = z[len(z) - len(heated) :] * HEAT_SCALE
+    return dict(zip(heated, rows, strict=True))
+
+
+def _is_the_oscillation(
+    scaled: Floats, turned: Floats, junctions: dict[str, Floats], plan: FastPlan
+) -> np.ndarray[tuple[int], np.dtype[np.bool_]]:
+    """Of a size, a frequency and a temperature that the nominal orbit makes credible."""
+    nominal = plan.reference.z[: scaled.shape[0] * scaled.shape[1]].reshape(scaled.shape[:2])
+    lead = int(np.argmax(np.linalg.norm(nominal[:, 1:], axis=1)))
+    swing = np.linalg.norm(scaled[lead, 1:], axis=0)
+    alive = swing > SMALLEST_SWING * np.linalg.norm(nominal[lead, 1:])
+    sane = np.abs(turned) < LONGEST_LOG
+    for celsius in junctions.values():
+        sane &= celsius < HIGHEST_C
+    return sane & (alive | plan.topology.driven)
+
+
+def joined(parts: list[Solution]) -> Solution:
+    """Solutions of several blocks as one."""
+    first = parts[0]
+    return Solution(
+        status=np.concatenate([part.status for part in parts]),
+        samples=np.concatenate([part.samples for part in parts], axis=1),
+        period=np.concatenate([part.period for part in parts]),
+        residual=np.concatenate([part.residual for part in parts]),
+        multipliers=np.concatenate([part.multipliers for part in parts]),
+        iterations=np.concatenate([part.iterations for part in parts]),
+        junctions={
+            ref: np.concatenate([part.junctions[ref] for part in parts]) for ref in first.junctions
+        },
+        way=np.concatenate([part.way for part in parts]),
+    )
