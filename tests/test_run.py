@@ -13,7 +13,7 @@ import quick_study
 from tolsim import run as corridor
 from tolsim.errors import RequestError, RunError
 from tolsim.replay import draw_replay, replay_unit, story_text
-from tolsim.results import Results
+from tolsim.answers.results import Results
 from tolsim.run import run_study
 
 UNITS = 12

@@ -31,8 +31,9 @@ A = 1.0 / (GAMMA * (2.0 - GAMMA))
 B = (1.0 - GAMMA) ** 2 * A
 
 PORT_TOLERANCE = 1e-4  # V, last Newton correction of a port voltage (error after it: its square)
-QUICK_ROUNDS = 6
-CAREFUL_ROUNDS = 40
+QUICK_ROUNDS = 8
+CAREFUL_ROUNDS = 60
+HALVINGS = 10
 
 
 @dataclass(frozen=True)
@@ -119,7 +120,7 @@ def solve_ports(
         here = measure(devices, c, v)
         residual = v + apply(K, here.w) - target
         matrix = identity + K @ here.W
-        correction = -np.linalg.solve(matrix, residual[:, :, None])[:, :, 0]
+        correction = _correction(matrix, residual)
         settled = np.abs(correction).max(axis=1, initial=0.0) < PORT_TOLERANCE
         v = v + correction
         if settled.all() or settled.mean() > 0.8:
@@ -158,29 +159,33 @@ def _finish_stragglers(
 def _solve_damped(
     devices: Devices, c: Floats, K: Floats, target: Floats, guess: Floats
 ) -> PortState:
-    """Newton with step halving wherever the residual would grow (sharp diodes and clamps)."""
+    """Newton with a natural monotonicity test, for sharp diodes and clamps.
+
+    A net without linear capacitance sees an impedance of 1e9 ohm and more: residuals in volts then
+    mean nothing.  A step is judged by the correction it leaves, -A^-1 r(trial), which has the size
+    of the error itself (Deuflhard, "Newton Methods for Nonlinear Problems", 2004, section 3.1).
+    """
     identity = np.eye(target.shape[1])
     v = np.where(np.isfinite(guess), guess, 0.0)
-    here = measure(devices, c, v)
-    residual = v + apply(K, here.w) - target
-    size = np.abs(residual).max(axis=1)
     for _ in range(CAREFUL_ROUNDS):
+        here = measure(devices, c, v)
         matrix = identity + K @ here.W
-        correction = -np.linalg.solve(matrix, residual[:, :, None])[:, :, 0]
-        settled = np.abs(correction).max(axis=1) < PORT_TOLERANCE
+        correction = _correction(matrix, v + apply(K, here.w) - target)
+        size = np.abs(correction).max(axis=1)
+        settled = size < PORT_TOLERANCE
         if settled.all():
             break
         share = np.ones(len(v))
-        for _ in range(8):
+        for _ in range(HALVINGS):
             trial = v + share[:, None] * correction
-            there = measure(devices, c, trial)
-            new = trial + apply(K, there.w) - target
-            grown = np.abs(new).max(axis=1) > size * (1 - 0.1 * share) + 1e-9
-            if not grown.any():
+            left = _correction(matrix, trial + apply(K, measure(devices, c, trial).w) - target)
+            # written so that a trial that is not finite counts as too long
+            fine = np.abs(left).max(axis=1) <= (1 - 0.25 * share) * size
+            too_long = ~(fine | settled)
+            if not too_long.any():
                 break
-            share = np.where(grown, 0.5 * share, share)
-        v, here, residual = trial, there, new
-        size = np.abs(residual).max(axis=1)
+            share = np.where(too_long, 0.5 * share, share)
+        v = np.where(settled[:, None], v, trial)
     return PortState(
         v=v + correction,
         q=here.q + apply(here.C, correction),
@@ -190,6 +195,12 @@ def _solve_damped(
         matrix=matrix,
         settled=settled,
     )
+
+
+def _correction(matrix: Floats, residual: Floats) -> Floats:
+    """-A^-1 r for each unit, (N, p)."""
+    move: Floats = -np.linalg.solve(matrix, residual[:, :, None])[:, :, 0]
+    return move
 
 
 @dataclass(frozen=True)
