@@ -93,7 +93,7 @@ def check(study: str, tables_dir: Path | None, *, files_only: bool) -> None:
     from tolsim.nominals import prepare
 
     with console(stderr=True).status("Solving the nominal unit ..."):
-        cases = prepare(opened.study, opened.tables)
+        cases = prepare(opened.study, opened.tables, jobs=None)
     figures = {name: case.figures for name, case in cases.items()}
     show_operating_point(opened.study, figures)
 

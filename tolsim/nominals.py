@@ -6,6 +6,7 @@ from collections.abc import Mapping
 from dataclasses import dataclass, replace
 
 import numpy as np
+from joblib import Parallel, cpu_count, delayed, parallel_config
 
 from tolsim.circuit.bias import bias_point
 from tolsim.circuit.continuation import Compass, aim, solve_units
@@ -43,41 +44,79 @@ def case_of(study: Study, values: Values) -> Case:
     return Case(study.design, values, heated)
 
 
-def prepare(study: Study, tables: Mapping[str, SpreadTable]) -> dict[CaseName, PreparedCase]:
-    """Find the nominal orbit of every case.
+@dataclass(frozen=True)
+class _StateFound:
+    """The nominal units of one load state under every condition, and the way from its orbit."""
+
+    nominals: Mapping[CaseName, Nominal]
+    leader: Compass | None  # None if no condition of this state has an orbit
+
+
+def prepare(
+    study: Study, tables: Mapping[str, SpreadTable], jobs: int | None = 1
+) -> dict[CaseName, PreparedCase]:
+    """Find the nominal orbit of every case, load states side by side.
 
     In each state the first condition is integrated from its kicked bias point; the others are
     followed from it through the change of part values, and only where that fails integrated
     themselves.
+
+    Parameters
+    ----------
+    jobs : int, optional
+        Worker processes; all cores if None.
 
     Raises
     ------
     RunError
         If the nominal unit has no periodic orbit in any case.
     """
+    names = cases_of(study)
+    states = tuple(dict.fromkeys(state for _, state in names))
+    with parallel_config(backend="loky", inner_max_num_threads=1):
+        work = Parallel(n_jobs=min(jobs or cpu_count(), len(states)))
+        by_state = dict(
+            zip(states, work(delayed(_find_state)(study, tables, s) for s in states), strict=True)
+        )
+    if all(found.leader is None for found in by_state.values()):
+        raise RunError(_no_orbit({k: v for f in by_state.values() for k, v in f.nominals.items()}))
+    stand_in = next(found.leader for found in by_state.values() if found.leader is not None)
+    with parallel_config(backend="loky", inner_max_num_threads=1):
+        work = Parallel(n_jobs=min(jobs or cpu_count(), len(states)))
+        prepared = work(
+            delayed(_prepare_state)(study, by_state[state], stand_in) for state in states
+        )
+    merged = {name: case for part in prepared for name, case in part.items()}
+    return {name: merged[name] for name in names}
+
+
+def _find_state(study: Study, tables: Mapping[str, SpreadTable], state: str) -> _StateFound:
+    """Nominal units of one load state."""
     steps = study.run.steps_per_cycle
-    cases = {
-        name: case_of(study, nominal_values(study, tables, *name)) for name in cases_of(study)
-    }
     found: dict[CaseName, Nominal] = {}
-    leaders: dict[str, Compass] = {}
-    for name, case in cases.items():
-        state = name[1]
-        nominal = _follow(case, leaders[state], steps) if state in leaders else None
+    leader: Compass | None = None
+    for name in cases_of(study):
+        if name[1] != state:
+            continue
+        case = case_of(study, nominal_values(study, tables, *name))
+        nominal = None if leader is None else _follow(case, leader, steps)
         found[name] = nominal or find_nominal(case, steps)
-        if state not in leaders and found[name].found:
-            leaders[state] = aim(found[name], tuple(case.values), steps)
-    if not leaders:
-        raise RunError(_no_orbit(found))
-    for name, nominal in found.items():
-        if not nominal.found:  # units may still have an orbit: look from the nearest case
-            found[name] = _follow(cases[name], _leader(leaders, name), steps) or nominal
-    return {name: _prepared(study, nominal, _leader(leaders, name), steps) for name, nominal in found.items()}
+        if leader is None and found[name].found:
+            leader = aim(found[name], tuple(case.values), steps)
+    return _StateFound(found, leader)
 
 
-def _leader(leaders: Mapping[str, Compass], name: CaseName) -> Compass:
-    """Where to look from: an orbit of the same state, else of any."""
-    return leaders.get(name[1], next(iter(leaders.values())))
+def _prepare_state(
+    study: Study, found: _StateFound, stand_in: Compass
+) -> dict[CaseName, PreparedCase]:
+    """Aim from every nominal orbit of a state; one that was not found is looked for once more."""
+    steps = study.run.steps_per_cycle
+    leader = found.leader or stand_in
+    prepared = {}
+    for name, nominal in found.nominals.items():
+        again = nominal if nominal.found else _follow(nominal.case, leader, steps)
+        prepared[name] = _prepared(study, again or nominal, leader, steps)
+    return prepared
 
 
 def _follow(case: Case, leader: Compass, steps: int) -> Nominal | None:

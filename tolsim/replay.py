@@ -69,13 +69,17 @@ def replay_unit(folder: Path | str, number: int) -> Replay:
     names = factors(study, opened.tables)
     draws = draw(names, seed, number, 1)
     _compare_with_stored(results, draws, number)
-    plan = Plan(study, opened.tables, names, prepare(study, opened.tables))
+    plan = Plan(study, opened.tables, names, prepare(study, opened.tables, jobs=None))
     found = {}
     for name, prepared in plan.cases.items():
         case, solution = solve_case(plan, name, draws)
         if prepared.nominal.found and solution.status[0] in (Status.SETTLED, Status.UNSTABLE):
             found[name] = tuple(signals(study, prepared.nominal, case, solution))
-    story = (*_outcome_story(opened, rows), *_draw_story(draws, results), *_neighbour(results, draws))
+    story = (
+        *_outcome_story(opened, rows),
+        *_draw_story(draws, results),
+        *_neighbour(results, draws),
+    )
     return Replay(number, rows, story, found)
 
 
@@ -84,9 +88,7 @@ def _rows_of(results: Results, number: int) -> pd.DataFrame:
     here = np.flatnonzero(units == number)
     if not here.size:
         highest = int(units.max()) if units.size else -1
-        raise RequestError(
-            f"There is no unit {number} in this run. Its units are 0 to {highest}."
-        )
+        raise RequestError(f"There is no unit {number} in this run. Its units are 0 to {highest}.")
     columns = results.unit_columns
     return pd.DataFrame({name: columns.column(name).iloc[here] for name in columns.names})
 
@@ -150,17 +152,16 @@ def _draw_story(draws: Draws, results: Results) -> list[str]:
     """The factors that are far out, those that matter first."""
     distance = np.abs(draws.u[0] - 0.5) * np.sqrt(_weights(results, draws.names))
     order = np.argsort(-distance)[:UNUSUAL]
-    lines = ["What is unusual about it (position among all units, 50 % is the middle):"]
-    for column in order:
-        lines.append(f"  {draws.names[column]}: {100 * draws.u[0, column]:.1f} %")
-    return lines
+    return [
+        "What is unusual about it (position among all units, 50 % is the middle):",
+        *(f"  {draws.names[column]}: {100 * draws.u[0, column]:.1f} %" for column in order),
+    ]
 
 
 def _neighbour(results: Results, draws: Draws) -> list[str]:
     """The passing unit whose important factors are nearest."""
     units = results.unit_columns
-    verdicts = pd.DataFrame({"unit": units.column("unit"), "verdict": units.column("verdict")})
-    passed = verdicts.groupby("unit")["verdict"].agg(lambda words: (words == "pass").all())
+    passed = (units.column("verdict") == "pass").groupby(units.column("unit")).all()
     if not passed.any() or passed.get(draws.first, False):
         return []
     stored = results.factor_columns
@@ -182,7 +183,7 @@ def story_text(replay: Replay) -> str:
 
 
 def draw_replay(replay: Replay, folder: Path | str) -> Path | None:
-    """Picture of the waveforms in the condition where the unit does worst; None without an orbit."""
+    """Picture of the waveforms where the unit does worst; None without an orbit."""
     from tolsim.report.unit_picture import draw_unit  # plotting only when a picture is wanted
 
     words = {
@@ -190,9 +191,7 @@ def draw_replay(replay: Replay, folder: Path | str) -> Path | None:
         for row in replay.rows.to_dict("records")
     }
     failing = [
-        str(row["condition"])
-        for row in replay.rows.to_dict("records")
-        if row["verdict"] != "pass"
+        str(row["condition"]) for row in replay.rows.to_dict("records") if row["verdict"] != "pass"
     ]
     conditions = [condition for condition, _ in replay.signals]
     if not conditions:

@@ -1,7 +1,8 @@
 """The road from a study to its results.
 
 A checked study -> factors -> nominal orbits of every case -> chunks of units, each drawn, solved
-in every case, measured and judged -> statistics -> summary, tables, report.  Read `run_study` first.
+in every case, measured and judged -> statistics -> summary, tables, report.  Read `run_study`
+first.
 """
 
 from __future__ import annotations
@@ -28,7 +29,9 @@ from tolsim.recheck import recheck
 from tolsim.spread.sampling import factors
 from tolsim.study import StudyFile, open_study
 
-CHUNK = 250  # units stored together; a killed run loses at most one per job
+CHUNK = 128  # units stored together; a killed run loses at most one chunk per job
+LARGE_CHUNK = 256  # of long runs: fewer, larger files
+LONG_RUN = 4096  # units
 IDENTITY_FILE = "run.json"
 TABLES_FOLDER = "tables"
 
@@ -77,7 +80,9 @@ def run_study(
     opened = replace(opened, study=_with_request(opened.study, units, seed))
     record = provenance_of(opened)
     store = None if out is None else _open_folder(Path(out), record)
-    cases = prepare(opened.study, opened.tables)
+    if progress is not None:
+        progress(0, opened.study.run.units)
+    cases = prepare(opened.study, opened.tables, jobs)
     plan = Plan(opened.study, opened.tables, factors(opened.study, opened.tables), cases)
     unit_table, factor_table = _build(plan, jobs, store, progress)
     summary = summarise(
@@ -134,10 +139,11 @@ def _build(
     """Evaluate all chunks that are not there yet; give the two tables."""
     units = plan.study.run.units
     finished = store.finished() if store is not None else {}
+    size = LARGE_CHUNK if units > LONG_RUN else CHUNK
     wanted = [
-        (first, min(CHUNK, units - first))
-        for first in range(0, units, CHUNK)
-        if finished.get(first) != min(CHUNK, units - first)
+        (first, min(size, units - first))
+        for first in range(0, units, size)
+        if finished.get(first) != min(size, units - first)
     ]
     done = units - sum(count for _, count in wanted)
     chunks: list[Chunk] = []
@@ -160,9 +166,7 @@ def _build(
     return FrameColumns(rows), FrameColumns(table)
 
 
-def _evaluated(
-    plan: Plan, wanted: list[tuple[int, int]], jobs: int | None
-) -> Iterator[Chunk]:
+def _evaluated(plan: Plan, wanted: list[tuple[int, int]], jobs: int | None) -> Iterator[Chunk]:
     """Chunks as they finish, from worker processes if more than one is asked for."""
     if jobs == 1 or len(wanted) <= 1:
         yield from (evaluate(plan, first, count) for first, count in wanted)
@@ -204,5 +208,3 @@ def _write_report(plan: Plan, opened: StudyFile, results: Results) -> None:
 
     assert results.folder is not None
     write_report(report_content(plan, opened, results), results.folder / "report.html")
-
-

@@ -19,7 +19,7 @@ from tolsim.circuit.startup import Modes, modes, oscillation_scale
 from tolsim.circuit.thermal import Case
 from tolsim.circuit.transient import march
 
-KICKS = (0.05, 0.2, 0.5, 1.0, 2.0, 4.0)  # of the highest supply voltage, on the leading net
+KICKS = (0.2, 0.5, 1.0, 2.0)  # of the highest supply voltage, on the leading net
 COARSE_STEPS = 64  # per cycle of the leading mode, while finding the orbit
 COARSE_CYCLES = 16
 TRIES = 5
@@ -27,6 +27,10 @@ SHOOTING_ROUNDS = 40
 PATIENCE = 3  # rounds that rival kicks get after the first has settled
 LEVEL_SHARE = 0.25
 SCALE_FLOOR = 1e-3  # of the largest amplitude of the same kind of state
+LEAST_PURITY = 0.5  # share of a state's power in its strongest line, for a period to be read off
+LEAST_CROSSINGS = 4  # upward crossings that make a period
+REGULAR_WITHIN = 0.2  # of the coarse period, for an interval between crossings to count
+LEAST_INTERVALS = 2
 
 
 @dataclass(frozen=True)
@@ -42,6 +46,7 @@ class Nominal:
 
     @property
     def found(self) -> bool:
+        """Whether the unit has an orbit."""
         return self.frame is not None
 
 
@@ -70,7 +75,9 @@ def find_nominal(case: Case, steps: int) -> Nominal:
         best = _best(solution, frame)
         if best is not None:
             chosen = solution.take(np.array([best]))
-            return Nominal(case, bias, leading, shift, chosen, frame_of(network, chosen, frame.lead))
+            return Nominal(
+                case, bias, leading, shift, chosen, frame_of(network, chosen, frame.lead)
+            )
     return Nominal(case, bias, leading, shift, _none(case, network, steps), None)
 
 
@@ -117,7 +124,7 @@ def _first_guess(
     case: Case, network: Network, ends: Floats, window: Floats, step: float
 ) -> tuple[Frame, Start] | None:
     """Frame and starts from the tails of the kicked copies."""
-    sound = np.isfinite(window).all(axis=(0, 2))
+    sound = np.all(np.isfinite(window), axis=(0, 2))
     swings = np.ptp(window, axis=0)
     swings[~sound] = -1.0
     best = int(np.argmax(swings.max(axis=1)))
@@ -180,14 +187,12 @@ def _clearest_state(x: Floats, step: float) -> tuple[int, float] | None:
     spectrum = np.abs(np.fft.rfft(flat * np.hanning(count)[:, None], axis=0)) ** 2
     spectrum[:4] = 0.0
     peak = np.argmax(spectrum, axis=0)
-    around = np.array(
-        [spectrum[max(k - 2, 0) : k + 3, i].sum() for i, k in enumerate(peak)]
-    )
+    around = np.array([spectrum[max(k - 2, 0) : k + 3, i].sum() for i, k in enumerate(peak)])
     purity = around / np.maximum(spectrum.sum(axis=0), 1e-300)
     large = np.ptp(flat, axis=0) > 1e-2 * np.ptp(flat, axis=0).max()
     purity = np.where(large & (spectrum.sum(axis=0) > 0), purity, 0.0)
     lead = int(np.argmax(purity))
-    if purity[lead] < 0.5:
+    if purity[lead] < LEAST_PURITY:
         return None
     return lead, count * step / float(peak[lead])
 
@@ -196,12 +201,12 @@ def _last_crossing(x: Floats, step: float, period: float) -> tuple[int, float] |
     """Sample just after the last upward mean crossing but one, and the mean interval."""
     centred = x - 0.5 * (x.max() + x.min())
     up = np.flatnonzero((centred[:-1] < 0) & (centred[1:] >= 0))
-    if len(up) < 4:
+    if len(up) < LEAST_CROSSINGS:
         return None
     times = up + centred[up] / (centred[up] - centred[up + 1])
     gaps = np.diff(times) * step
-    regular = np.abs(gaps / period - 1) < 0.2
-    if regular.sum() < 2:
+    regular = np.abs(gaps / period - 1) < REGULAR_WITHIN
+    if regular.sum() < LEAST_INTERVALS:
         return None
     return int(up[-2]) + 1, float(gaps[regular][-4:].mean())
 
@@ -221,5 +226,3 @@ def frame_of(network: Network, solution: Solution, lead: int) -> Frame:
     flow = (orbit[1] - orbit[-2]) / scale
     driven = network.drive_frequency is not None
     return Frame(scale, orbit[0], flow / np.linalg.norm(flow), lead, driven)
-
-
