@@ -1,4 +1,4 @@
-"""Floquet multipliers of an orbit: do small disturbances die out?
+"""Floquet multipliers of an orbit: they tell whether small disturbances die out.
 
 An autonomous orbit has one multiplier of exactly 1 (a shift in time).  On a finite grid it comes
 out beside 1, so it is taken out beforehand: with v the flow at the start, the multipliers are the
@@ -16,7 +16,7 @@ CHARGE_BAND = 1e-4  # |multiplier - 1| of a charge trapped between capacitors, d
 
 
 def deflated_multipliers(
-    monodromy: Floats, samples: Floats, scale: Floats, driven: bool
+    monodromy: Floats, samples: Floats, scale: Floats, *, driven: bool
 ) -> NDArray[np.complex128]:
     """Multipliers of N orbits, largest first; the phase one becomes 0.
 
@@ -28,11 +28,18 @@ def deflated_multipliers(
     scale : (n,)
         Amplitudes, so that volts and amperes are comparable.
     """
+    return sorted_multipliers(monodromy, None if driven else samples[1] - samples[-2], scale)
+
+
+def sorted_multipliers(
+    monodromy: Floats, flow: Floats | None, scale: Floats
+) -> NDArray[np.complex128]:
+    """Multipliers of N orbits, largest first, with the direction `flow` (N, n) taken out."""
     scaled = monodromy * (scale / scale[:, None])
-    if not driven:
-        flow = (samples[1] - samples[-2]) / scale
-        flow /= np.linalg.norm(flow, axis=1, keepdims=True)
-        project = np.eye(len(scale)) - flow[:, :, None] * flow[:, None, :]
+    if flow is not None:
+        along = flow / scale
+        along /= np.linalg.norm(along, axis=1, keepdims=True)
+        project = np.eye(len(scale)) - along[:, :, None] * along[:, None, :]
         scaled = project @ scaled @ project
     values = np.linalg.eigvals(scaled).astype(complex)
     order = np.argsort(-np.abs(values), axis=1)

@@ -23,7 +23,8 @@ from tolsim.circuit.bulk.residual import Residual
 from tolsim.circuit.devices import Floats, Ints
 
 DEPTH = 3
-TOLERANCE = 2e-5  # scaled update; it understates the error several times, see `choice`
+TOLERANCE = 2e-5  # scaled error, estimated from the last two updates
+FASTEST, SLOWEST = 0.3, 0.95  # contractions that are believed
 ITERATIONS = 30
 LONGEST_MOVE = 0.3  # scaled
 RIDGE = 1e-10  # of the mean square of the history, keeps young units solvable
@@ -118,6 +119,7 @@ def iterate(
     history = _History(unknowns, slots)
     occupant = np.full(slots, -1, dtype=np.intp)  # -1: an idle slot repeats the first unit
     age = np.zeros(slots, dtype=np.intp)
+    last_size = np.zeros(slots)
     z = np.repeat(start[:, :1], slots, axis=1)
     residual.load(np.arange(slots), np.zeros(slots, np.intp))
     coming = 0
@@ -131,7 +133,7 @@ def iterate(
             coming += len(filled)
             residual.load(filled, entering)
             z[:, filled] = start[:, entering]
-            occupant[filled], age[filled] = entering, 0
+            occupant[filled], age[filled], last_size[filled] = entering, 0, 0.0
         if np.all(occupant < 0):
             return found
         np.negative(residual.evaluate(z), out=right_side, casting="same_kind")
@@ -144,16 +146,27 @@ def iterate(
         z += move
         history.last_g[:], history.last_move[:] = g, move
         age += 1
-        over = (size < tolerance) | ~np.isfinite(size) | (age >= iterations)
+        settled = _settled(size, last_size, tolerance)
+        last_size = size
+        over = settled | ~np.isfinite(size) | (age >= iterations)
         leaving = np.flatnonzero(over & (occupant >= 0))
         if leaving.size:
             who = occupant[leaving]
             found.z[:, who] = z[:, leaving]
             found.update[who], found.iterations[who] = size[leaving], age[leaving]
-            found.settled[who] = size[leaving] < tolerance
+            found.settled[who] = settled[leaving]
             occupant[leaving] = -1
         broken = np.flatnonzero(~np.isfinite(size))
         if broken.size:
             z[:, broken] = start[:, :1]
             history.clear(broken)
         free = np.flatnonzero(occupant < 0)
+
+
+def _settled(size: Floats, last_size: Floats, tolerance: float) -> NDArray[np.bool_]:
+    """Whether the error after this update is below the tolerance.
+
+    Updates that shrink by a ratio r leave an error of r/(1 - r) times the last one.
+    """
+    ratio = np.clip(size / np.maximum(last_size, 1e-300), FASTEST, SLOWEST)
+    return size * ratio / (1 - ratio) < tolerance

@@ -1,31 +1,36 @@
 """Floquet multipliers of known orbits: the derivatives of a coarse TR-BDF2 pass along each.
 
 The orbit is known, so nothing is solved for: port voltages at the stage times come from the
-Fourier coefficients, the devices are linearised there, and the columns d/dx0 are carried through
-the stages of `stepper`.  Few steps do for the slow multipliers, which decide stability; the phase
-multiplier comes out wrong (1.25 at 16 steps, measured) and is taken out beforehand (`floquet`).
-Units whose largest multiplier comes near 1 are looked at again with finer steps.
+Fourier coefficients, and the devices are linearised there.  With the matrices of `stepper`,
+W = dw/dv, C = dq/dv at a point, a change u of a stage's linear part x_lin moves
+
+    dx + H dw = u,     dy = Y u,     Y = G + (H C - G H W) (I + K W)^-1 D
+
+so that both stages of a step, from Y0 over Yg, come to one product in u:
+
+    u_g = (2 Y0 - I) u_0,     u_1 = A Yg u_g - B Y0 u_0.
+
+Few steps do for the slow multipliers, which decide stability; the phase multiplier comes out wrong
+(1.25 at 16 steps, measured) and is taken out beforehand (`floquet`).  Units whose largest
+multiplier comes near 1 are looked at again with finer steps, until it is clear of 1.
 """
 
 from __future__ import annotations
-
-from dataclasses import replace
 
 import numpy as np
 from numpy.typing import NDArray
 
 from tolsim.circuit.devices import Floats
-from tolsim.circuit.floquet import deflated_multipliers, largest_beside_charge
+from tolsim.circuit.floquet import largest_beside_charge, sorted_multipliers
 from tolsim.circuit.network import Network
-from tolsim.circuit.stepper import GAMMA, A, B, Point, Stepper, measure
+from tolsim.circuit.stepper import GAMMA, A, B, StepMatrices, apply
 
-COARSE_STEPS = 16
-FINE_STEPS = 64
-DOUBTFUL = 0.985  # from here on the fine steps decide
+STEPS = (16, 32, 128)  # per period: coarse for all, finer for the doubtful
+DOUBTFUL = 0.985  # from this modulus on finer steps decide
 
 
 def multipliers(
-    network: Network, coefficients: Floats, period: Floats, samples: Floats, scale: Floats
+    network: Network, coefficients: Floats, period: Floats, scale: Floats
 ) -> NDArray[np.complex128]:
     """Multipliers (N, n) of N orbits, largest first, the phase one taken out.
 
@@ -33,45 +38,62 @@ def multipliers(
     ----------
     coefficients : (K, N, n)
         Fourier coefficients of the states.
-    samples : (m + 1, N, n)
-        The same orbits on an even grid.
     """
-    driven = network.drive_matrix is not None
-    found = _pass(network, coefficients, period, samples, scale, driven, COARSE_STEPS)
-    doubtful = np.flatnonzero(largest_beside_charge(found) > DOUBTFUL)
-    if doubtful.size:
+    found = np.empty((network.units, network.states), dtype=complex)
+    before = np.full(network.units, np.inf)
+    doubtful = np.arange(network.units)
+    for steps in STEPS:
         found[doubtful] = _pass(
-            network.take(doubtful),
-            coefficients[:, doubtful],
-            period[doubtful],
-            samples[:, doubtful],
-            scale,
-            driven,
-            FINE_STEPS,
+            network.take(doubtful), coefficients[:, doubtful], period[doubtful], scale, steps
         )
+        now = largest_beside_charge(found[doubtful])
+        # halving the steps quarters the error: what the last halving moved is more than is left
+        unsure = (now > DOUBTFUL) & (now + np.abs(now - before[doubtful]) > 1.0)
+        before[doubtful] = now
+        doubtful = doubtful[unsure]
+        if not doubtful.size:
+            break
     return found
 
 
 def _pass(
-    network: Network,
-    coefficients: Floats,
-    period: Floats,
-    samples: Floats,
-    scale: Floats,
-    driven: bool,
-    steps: int,
+    network: Network, coefficients: Floats, period: Floats, scale: Floats, steps: int
 ) -> NDArray[np.complex128]:
-    stepper = Stepper(network, period / steps)
+    matrices = StepMatrices.of(network, period / steps)
     phases = (np.arange(steps)[:, None] + np.array([GAMMA, 1.0])).ravel() / steps
     waves = _values(coefficients, np.concatenate([[0.0], phases]))
-    start = stepper.start(waves[0])
-    slope = stepper.start_sensitivity(start, with_period=False)
+    GH = matrices.G @ matrices.H
+    start = _reach(network, matrices, GH, waves[0])
+    here, identity = start, np.eye(network.states)
+    product = np.broadcast_to(identity, here.shape)
     for k in range(steps):
-        inner = _linearised(stepper, waves[2 * k + 1])
-        end = _linearised(stepper, waves[2 * k + 2])
-        inner_slope = stepper.stage_sensitivity(stepper.trapezoid_sensitivity(slope), inner)
-        slope = stepper.stage_sensitivity(A * inner_slope.dy - B * slope.dy, end)
-    return deflated_multipliers(slope.dx, samples, scale, driven)
+        inner = _reach(network, matrices, GH, waves[2 * k + 1])
+        step = A * (inner @ (2.0 * here - identity)) - B * here
+        product = step @ product
+        last = k == steps - 1
+        here = start if last else _reach(network, matrices, GH, waves[2 * k + 2])
+    driven = network.drive_matrix is not None
+    flow = None if driven else _flow(network, matrices, coefficients)
+    return sorted_multipliers(product, flow, scale)
+
+
+def _reach(network: Network, matrices: StepMatrices, GH: Floats, x: Floats) -> Floats:
+    """Y (N, n, n) at states x (N, n)."""
+    _, _, conductance, capacitance = network.devices.evaluate(network.port_voltages(x))
+    W = capacitance + matrices.c[:, None, None] * conductance
+    within = np.linalg.inv(np.eye(W.shape[1]) + matrices.K @ W)
+    return matrices.G + ((matrices.H @ capacitance - GH @ W) @ within) @ network.D
+
+
+def _flow(network: Network, matrices: StepMatrices, coefficients: Floats) -> Floats:
+    """Direction of the orbit at phase 0 in the coordinates u: dx + H W D dx, (N, n)."""
+    harmonics = len(coefficients) // 2
+    orders = np.arange(1, harmonics + 1)
+    slope = np.tensordot(orders, coefficients[harmonics + 1 :], axes=1)
+    x = coefficients[: harmonics + 1].sum(axis=0)
+    _, _, conductance, capacitance = network.devices.evaluate(network.port_voltages(x))
+    W = capacitance + matrices.c[:, None, None] * conductance
+    return slope + apply(matrices.H @ W, slope @ network.D.T)
 
 
 def _values(coefficients: Floats, phases: Floats) -> Floats:
@@ -81,11 +103,3 @@ def _values(coefficients: Floats, phases: Floats) -> Floats:
     basis = np.concatenate([np.ones((len(phases), 1)), np.cos(angle), np.sin(angle)], axis=1)
     _, units, n = coefficients.shape
     return (basis @ coefficients.reshape(len(coefficients), -1)).reshape(-1, units, n)
-
-
-def _linearised(stepper: Stepper, x: Floats) -> Point:
-    """A point of the orbit with the port matrix I + K W of a stage that ends there."""
-    matrices = stepper.matrices
-    port = measure(stepper.network.devices, matrices.c, stepper.network.port_voltages(x))
-    port = replace(port, matrix=np.eye(port.v.shape[1]) + matrices.K @ port.W)
-    return Point(x, x, port)

@@ -72,7 +72,7 @@ def _finish(case: Case, plan: FastPlan, iterated: Iterated) -> Solution:
     period = 2 * np.pi / (plan.reference.anchor.omega * np.exp(turned))
     junctions = _junctions(case, plan, z)
     network = case.network(junctions)
-    found = multipliers(network, coefficients, period, samples, topology.scale)
+    found = multipliers(network, coefficients, period, topology.scale)
     good &= _is_the_oscillation(scaled, turned, junctions, plan)
     stable = largest_beside_charge(found) < 1.0
     status = np.where(stable, Status.SETTLED, Status.UNSTABLE)

@@ -1,0 +1,206 @@
+"""Which solver, and how many harmonics, for the units of one case: measured on spread pilots.
+
+The nominal unit is no judge: at 32 harmonics its peaks are right to 0.04 % while those of spread
+units are 0.4 % wrong (measured).  So a few dozen spread units are settled by shooting at the
+study's steps and at twice as many; the errors of its second-order steps fall by four, hence
+(4 fine - coarse)/3 as reference (Richardson) for frequency, and for peak and rms of every state.
+Collocation serves the case at the first order that meets the accuracy; where none does (a hard
+clamp, sharp switching) or too few units settle, shooting does.
+"""
+
+from __future__ import annotations
+
+from dataclasses import dataclass, field, fields
+
+import numpy as np
+
+from tolsim.circuit.bulk.plan import FastPlan, prepare_fast
+from tolsim.circuit.bulk.reference import NoReferenceError
+from tolsim.circuit.bulk.solve import WAY, solve_units_fast
+from tolsim.circuit.bulk.unit_table import TopologyError
+from tolsim.circuit.continuation import Compass, solve_units
+from tolsim.circuit.devices import Floats
+from tolsim.circuit.nominal import Nominal
+from tolsim.circuit.orbit import Solution, Status
+from tolsim.circuit.thermal import Case
+from tolsim.figures.waves import highest, largest, rms
+
+ORDERS = (16, 24, 32, 40, 48, 56, 64, 80, 96, 128)
+PROBES = 64  # spread units that decide
+ATTEMPTS = 3  # orders tried
+LARGEST_SYSTEM = 3500  # unknowns: beyond, the inverse Jacobian costs more than it saves
+QUICK_WAY = "predicted"  # of shooting: without its fall-backs
+FREQUENCY_LIMIT = 1e-4
+WAVE_LIMIT = 1e-3  # peaks and rms
+FEWEST_SETTLED = 0.7  # share of the probes that collocation settles itself
+RESERVE = 0.8  # of the accuracy: other units may be a little worse than the probes
+ORDER_POWER = 4.0  # errors fall about like harmonics to this power
+TAIL = 4e-4  # of a state's amplitude: what the first order tried may leave out
+
+
+@dataclass(frozen=True)
+class Errors:
+    """Largest relative differences from the reference over all probes."""
+
+    frequency: float
+    peak: float
+    rms: float
+
+    @property
+    def excess(self) -> float:
+        """Largest error over its limit."""
+        return max(self.frequency / FREQUENCY_LIMIT, max(self.peak, self.rms) / WAVE_LIMIT)
+
+
+@dataclass(frozen=True)
+class Choice:
+    """The solver chosen for a case, and why."""
+
+    solver: str  # "collocation" or "shooting"
+    harmonics: int  # 0 for shooting
+    plan: FastPlan | None = field(repr=False)
+    errors: Errors  # of the chosen solver
+    shooting_errors: Errors
+    settled_share: float  # of the probes, by the chosen solver itself
+    reason: str
+
+    def record(self) -> dict[str, object]:
+        """Plain numbers and words, for the report and the summary."""
+        plain: dict[str, object] = {
+            each.name: getattr(self, each.name)
+            for each in fields(self)
+            if each.name not in ("plan", "errors", "shooting_errors")
+        }
+        for prefix, errors in (("", self.errors), ("shooting_", self.shooting_errors)):
+            plain |= {
+                f"{prefix}{each.name}_error": getattr(errors, each.name)
+                for each in fields(errors)
+            }
+        return plain
+
+    def solve(self, case: Case, compass: Compass, steps: int) -> Solution:
+        """Orbits of the units of the case, by the chosen solver."""
+        if self.plan is None:
+            return solve_units(case, compass, steps)
+        return solve_units_fast(case, self.plan)
+
+
+@dataclass(frozen=True)
+class _Marks:
+    """What is compared, of the probes that settled."""
+
+    frequency: Floats  # (N,)
+    peak: Floats  # (2 n, N) highest value and largest magnitude of every state
+    rms: Floats  # (n, N)
+
+    @classmethod
+    def of(cls, solution: Solution) -> _Marks:
+        waves = [solution.samples[:-1, :, i] for i in range(solution.samples.shape[2])]
+        peaks = [highest(wave - wave.mean(axis=0)) for wave in waves] + [largest(w) for w in waves]
+        return cls(1 / solution.period, np.array(peaks), np.array([rms(wave) for wave in waves]))
+
+    def beyond(self, finer: _Marks) -> _Marks:
+        """Richardson: the limit of steps halved again and again."""
+        return _Marks(
+            (4 * finer.frequency - self.frequency) / 3,
+            (4 * finer.peak - self.peak) / 3,
+            (4 * finer.rms - self.rms) / 3,
+        )
+
+    def errors(self, truth: _Marks, units: np.ndarray[tuple[int], np.dtype[np.bool_]]) -> Errors:
+        if not units.any():
+            return Errors(np.inf, np.inf, np.inf)
+
+        def worst(mine: Floats, true: Floats) -> float:
+            # a state that hardly moves is measured against the largest of its kind over the units
+            size = np.maximum(np.abs(true), 1e-2 * np.abs(true).max(axis=-1, keepdims=True))
+            return float((np.abs(mine - true) / np.maximum(size, 1e-300)).max())
+
+        return Errors(
+            worst(self.frequency[units], truth.frequency[units]),
+            worst(self.peak[:, units], truth.peak[:, units]),
+            worst(self.rms[:, units], truth.rms[:, units]),
+        )
+
+
+def choose(
+    nominal: Nominal, compass: Compass, pilots: Case, steps: int, orders: tuple[int, ...] = ORDERS
+) -> Choice:
+    """Try collocation on spread units and say what shall serve the case.
+
+    Parameters
+    ----------
+    pilots : Case
+        The first units of the study, always the same number of them; the first `PROBES` decide.
+    steps : int
+        TR-BDF2 steps per period of shooting, and even samples of every answer.
+    """
+    probes = pilots.take(np.arange(min(PROBES, pilots.units)))
+    coarse = solve_units(probes, compass, steps)
+    # what one way of shooting does not settle at once serves as no reference
+    quick = np.flatnonzero((coarse.status == Status.SETTLED) & (coarse.way == QUICK_WAY))
+    if not quick.size:
+        return _shooting(coarse, Errors(np.inf, np.inf, np.inf), "no spread unit settles to judge by")
+    probes, coarse = probes.take(quick), coarse.take(quick)
+    fine = solve_units(probes, compass, 2 * steps)
+    sound = fine.status == Status.SETTLED
+    truth = _Marks.of(coarse).beyond(_Marks.of(fine))
+    shot = _Marks.of(coarse).errors(truth, sound)
+    reason = "the waveforms have edges that no affordable number of harmonics carries"
+    order: int | None = _first_order(fine.take(np.flatnonzero(sound)), nominal, orders)
+    for _ in range(ATTEMPTS):
+        if order is None:
+            break
+        try:
+            plan = prepare_fast(nominal, compass, pilots, steps, order)
+        except (NoReferenceError, TopologyError) as problem:
+            reason = f"{order} harmonics: {problem}"
+            order = _next_order(order, 2.0, nominal, orders)
+            continue
+        solution = solve_units_fast(probes, plan)
+        itself = (solution.way == WAY) & (solution.status == Status.SETTLED)
+        share = float(itself[sound].mean()) if sound.any() else 0.0
+        errors = _Marks.of(solution).errors(truth, itself & sound)
+        reason = f"{order} harmonics: {errors.excess:.2g} times the accuracy wanted"
+        if share >= FEWEST_SETTLED and errors.excess <= RESERVE:
+            return Choice(WAY, order, plan, errors, shot, share, reason)
+        if share < FEWEST_SETTLED:
+            reason = f"{order} harmonics: settles only {100 * share:.0f} % of the spread units"
+        order = _next_order(order, max(errors.excess / RESERVE, 1.2), nominal, orders)
+    return _shooting(coarse, shot, reason)
+
+
+def _shooting(tried: Solution, errors: Errors, reason: str) -> Choice:
+    share = float(np.mean(tried.status == Status.SETTLED))
+    return Choice("shooting", 0, None, errors, errors, share, reason)
+
+
+def _first_order(orbits: Solution, nominal: Nominal, orders: tuple[int, ...]) -> int | None:
+    """The first order that leaves out next to nothing of the waveforms that shooting found."""
+    waves = orbits.samples[:-1]
+    if waves.shape[1] == 0:
+        return None
+    lines = np.abs(np.fft.rfft(waves, axis=0)) * 2 / len(waves)
+    size = np.maximum(0.5 * np.ptp(waves, axis=0), 1e-2 * np.abs(waves).max(axis=0))
+    size = np.maximum(size, 1e-6 * size.max())
+    strength = (lines / size).max(axis=(1, 2))
+    for order in _affordable(nominal, orders):
+        if order >= len(strength) - 1 or strength[order + 1 :].max() < TAIL:
+            return order
+    return None
+
+
+def _affordable(nominal: Nominal, orders: tuple[int, ...]) -> list[int]:
+    states = nominal.solution.samples.shape[2]
+    return [order for order in orders if states * (2 * order + 1) <= LARGEST_SYSTEM]
+
+
+def _next_order(
+    order: int, excess: float, nominal: Nominal, orders: tuple[int, ...]
+) -> int | None:
+    """The order at which the errors should meet the accuracy."""
+    needed = order * excess ** (1 / ORDER_POWER)
+    higher = [each for each in _affordable(nominal, orders) if each > order]
+    if not higher or needed > 2 * higher[-1]:
+        return None
+    return next((each for each in higher if each >= needed), higher[-1])
