@@ -11,9 +11,9 @@ import pytest
 import quick_study
 
 from tolsim import run as corridor
+from tolsim.answers.results import Results
 from tolsim.errors import RequestError, RunError
 from tolsim.replay import draw_replay, replay_unit, story_text
-from tolsim.answers.results import Results
 from tolsim.run import run_study
 
 UNITS = 12
@@ -134,7 +134,7 @@ def test_replay_of_a_failing_unit_names_limit_and_neighbour(finished: Path) -> N
 
 def test_replay_of_an_unknown_unit(finished: Path) -> None:
     """The range of units is named."""
-    with pytest.raises(RequestError, match="no unit 400 in this run. Its units are 0 to 11"):
+    with pytest.raises(RequestError, match=r"no unit 400 in this run\. Its units are 0 to 11"):
         replay_unit(finished, 400)
 
 

@@ -9,6 +9,7 @@ import numpy as np
 import pandas as pd
 
 from tolsim.circuit.continuation import solve_units
+from tolsim.circuit.devices import Floats
 from tolsim.circuit.orbit import Solution, Status
 from tolsim.circuit.thermal import Case
 from tolsim.design import Study
@@ -58,10 +59,10 @@ def solve_case(plan: Plan, name: CaseName, draws: Draws) -> tuple[Case, Solution
     return case, solve_units(case, plan.cases[name].compass, plan.study.run.steps_per_cycle)
 
 
-def case_figures(plan: Plan, name: CaseName, case: Case, solution: Solution) -> dict[str, object]:
+def case_figures(plan: Plan, name: CaseName, case: Case, solution: Solution) -> dict[str, Floats]:
     """Figures of solved units, start figures where the state is one to start in."""
     prepared = plan.cases[name]
-    figures: dict[str, object] = dict(measure_orbits(case, solution))
+    figures = dict(measure_orbits(case, solution))
     starts = plan.study.states[name[1]].starts_here
     if starts and plan.study.kind == "self-oscillating":
         figures |= measure_start(case, prepared.compass.nominal)
@@ -73,7 +74,11 @@ def case_rows(plan: Plan, name: CaseName, draws: Draws) -> pd.DataFrame:
     case, solution = solve_case(plan, name, draws)
     figures = case_figures(plan, name, case, solution)
     verdicts = judge(
-        plan.study, *name, solution.status, figures, plan.cases[name].figures  # type: ignore[arg-type]
+        plan.study,
+        *name,
+        solution.status,
+        figures,
+        plan.cases[name].figures,
     )
     figures.pop("mode_match", None)
     condition, state = name

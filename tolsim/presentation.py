@@ -1,4 +1,4 @@
-"""What the report shows beside the statistics: waveforms, inputs with their origin, the small print."""
+"""What the report shows beside the statistics: waveforms, inputs and origins, small print."""
 
 from __future__ import annotations
 
@@ -29,8 +29,10 @@ WAVE_UNITS = 128  # enough for 5 % and 95 % bands
 BAND = (0.05, 0.95)
 
 NOT_MODELLED = (
-    "Power-on and load changes in time: start is judged by the modes at the bias point, running"
-    " by the steady orbit of each load state.",
+    (
+        "Power-on and load changes in time: start is judged by the modes at the bias point,"
+        " running by the steady orbit of each load state."
+    ),
     "Stray inductance and capacitance that the study does not list as parts.",
     "Core loss beyond a constant series resistance, proximity effect that changes with frequency.",
     "Package inductance of the transistors, gate charge plateau beyond the capacitance law.",
@@ -38,16 +40,26 @@ NOT_MODELLED = (
     "Wear-out: ageing laws move values, they do not break parts.",
 )
 CAUTIONS = (
-    "Such a stage makes kilovolts at radio frequency. Burns go deep and hardly hurt at first;"
-    " capacitors stay charged after power-off; hot parts stay hot.",
-    "Lamps and discharges give off ultraviolet light, and air beside them ozone: shield eyes and"
-    " skin, ventilate.",
-    "A unit that does not start can hold both transistors in conduction: limit the supply current"
-    " of first tests.",
-    "These numbers are estimates from a model and from the laws listed above. They do not replace"
-    " measurement on built units, guards and interlocks.",
-    "Follow your local codes for electrical safety, radio emission and exposure, and leave what"
-    " they reserve to licensed practice.",
+    (
+        "Such a stage makes kilovolts at radio frequency. Burns go deep and hardly hurt at first;"
+        " capacitors stay charged after power-off; hot parts stay hot."
+    ),
+    (
+        "Lamps and discharges give off ultraviolet light, and air beside them ozone: shield eyes"
+        " and skin, ventilate."
+    ),
+    (
+        "A unit that does not start can hold both transistors in conduction: limit the supply"
+        " current of first tests."
+    ),
+    (
+        "These numbers are estimates from a model and from the laws listed above. They do not"
+        " replace measurement on built units, guards and interlocks."
+    ),
+    (
+        "Follow your local codes for electrical safety, radio emission and exposure, and leave what"
+        " they reserve to licensed practice."
+    ),
 )
 
 
@@ -185,6 +197,4 @@ def input_rows(study: Study, tables: Mapping[str, SpreadTable]) -> Iterator[Inpu
                         continue
                     origin = spread.origins[aspect]
                     words = spread_words(table, quantity, aspect)
-                    yield InputRow(
-                        ref, quantity, nominal, words, name, origin.basis, origin.source
-                    )
+                    yield InputRow(ref, quantity, nominal, words, name, origin.basis, origin.source)

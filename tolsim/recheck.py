@@ -1,4 +1,4 @@
-"""Does an orbit stay an orbit when it is integrated in time with finer steps?
+"""An orbit must stay an orbit when it is integrated in time with finer steps.
 
 A few units in every case are marched from a point of their orbit through several periods with
 twice the steps.  They agree if frequency, extremes and rms values of every net voltage and branch
@@ -29,6 +29,7 @@ CYCLES = 8
 FINER = 2
 AGREES_WITHIN = 0.005  # of the largest value of each state
 FREQUENCY_WITHIN = 0.0005
+REGULAR_WITHIN = 0.1  # of the period, for an interval between crossings to be one
 
 
 @dataclass(frozen=True)
@@ -173,7 +174,7 @@ def _frequency_gap(wave: Floats, orbit: Floats, steps: int) -> Floats:
         up = np.flatnonzero((centred[:-1] < 0) & (centred[1:] >= 0))
         times = up + centred[up] / (centred[up] - centred[up + 1])
         intervals = np.diff(times)
-        near = intervals[np.abs(intervals / steps - 1) < 0.1]
+        near = intervals[np.abs(intervals / steps - 1) < REGULAR_WITHIN]
         if near.size:
             gap[unit] = abs(near[-1] / steps - 1)
     return gap

@@ -179,8 +179,8 @@ def _nearest(study: Study, cases: Cases) -> Table:
                 worst[key] = (use, bound, case)
     grid = _grid("figure", "part", "nominal>", "limit>", "condition", "state")
     for _, bound, case in sorted(worst.values(), key=lambda row: -row[0])[:_MOST_ROWS]:
-        value = shown(cases[case][bound.column], bound.figure.unit_of_measure)
-        grid.add_row(bound.figure.title, bound.part, value, _limit(bound), *case)
+        nominal = shown(cases[case][bound.column], bound.figure.unit_of_measure)
+        grid.add_row(bound.figure.title, bound.part, nominal, _limit(bound), *case)
     return grid
 
 

@@ -6,7 +6,7 @@ not settle is "undecided" unless something already fails it: it is never left ou
 
 from __future__ import annotations
 
-from collections.abc import Mapping
+from collections.abc import Callable, Mapping
 from dataclasses import dataclass
 
 import numpy as np
@@ -59,11 +59,11 @@ def judge(
         Figures of the nominal unit in the same case.
     """
     starts_here = study.states[state].starts_here and study.kind == "self-oscillating"
-    outcome = _orbit_outcomes(status, starts_here)
+    outcome = _orbit_outcomes(status, starts_here=starts_here)
     if starts_here:
         outcome = _start_outcomes(outcome, status, figures, nominal)
     outcome = _wrong_frequency(study, outcome, status, figures)
-    broken = _broken_limits(study, condition, state, starts_here, figures, len(status))
+    broken = _broken_limits(study, (condition, state), figures, len(status), starts=starts_here)
     outcome = _limit_outcomes(outcome, broken)
     failed = ~np.isin(outcome, (*GOOD_OUTCOMES, "undecided"))
     failed |= np.any([hit for _, hit in broken], axis=0) if broken else False
@@ -71,7 +71,7 @@ def judge(
     return CaseVerdicts(outcome, verdict.astype(WORD_LENGTH), _numbers(broken, len(status)))
 
 
-def _orbit_outcomes(status: NDArray[np.intp], starts_here: bool) -> Words:
+def _orbit_outcomes(status: NDArray[np.intp], *, starts_here: bool) -> Words:
     """What the search for the orbit says by itself."""
     words = {
         Status.SETTLED: "starts" if starts_here else "runs",
@@ -126,18 +126,18 @@ def _wrong_frequency(
 
 def _broken_limits(
     study: Study,
-    condition: str,
-    state: str,
-    starts_here: bool,
+    case: tuple[str, str],
     figures: Mapping[str, Floats],
     units: int,
+    *,
+    starts: bool,
 ) -> list[tuple[Bound, Flags]]:
     """Bounds that count in this case, each with the units that break it."""
     found = []
     for bound in bounds(study):
-        if not applies(study.limits[bound.limit], condition, state):
+        if not applies(study.limits[bound.limit], *case):
             continue
-        if bound.figure.name in START_FIGURES and not starts_here:
+        if bound.figure.name in START_FIGURES and not starts:
             continue
         values = figures.get(bound.column)
         if values is None:
@@ -156,11 +156,12 @@ def _limit_outcomes(outcome: Words, broken: list[tuple[Bound, Flags]]) -> Words:
     """Name the outcome of units that run, but not within their limits."""
     outcome = outcome.copy()
     good = np.isin(outcome, GOOD_OUTCOMES)
-    for word, belongs in (
+    kinds: tuple[tuple[str, Callable[[Bound], bool]], ...] = (
         ("starts late", lambda bound: bound.figure.name == "start_time"),
         ("out of band", lambda bound: bound.figure.name == "frequency"),
         ("over stress", lambda bound: bound.figure.owner != STAGE),
-    ):
+    )
+    for word, belongs in kinds:
         hits = [hit for bound, hit in broken if belongs(bound)]
         if hits:
             outcome[good & np.any(hits, axis=0)] = word

@@ -43,6 +43,7 @@ class DriveLevels:
 
     @classmethod
     def of(cls, ref: str, part: Drive, values: PartValues) -> DriveLevels:
+        """Levels of N units of one drive source."""
         rise = 0.02 / part.frequency if part.rise_time is None else part.rise_time
         return cls(
             low=values[f"{ref}.low"],
@@ -69,6 +70,7 @@ class Stamps:
     series: dict[str, Floats] = field(default_factory=dict)
 
     def conductance(self, a: str, b: str, g: Floats) -> None:
+        """Conductance (N,) between two nets, S."""
         self.meet(a, b)
         self.conductances.append((a, b, g))
 
@@ -78,14 +80,17 @@ class Stamps:
         self.series[inner] = g
 
     def capacitance(self, a: str, b: str, c: Floats) -> None:
+        """Capacitance (N,) between two nets, F."""
         self.meet(a, b)
         self.capacitances.append((a, b, c))
 
     def inductor(self, ref: str, a: str, b: str, inductance: Floats, resistance: Floats) -> None:
+        """Inductance (N,), H, in series with a resistance (N,), ohm, between two nets."""
         self.meet(a, b)
         self.inductors[ref] = (a, b, inductance, resistance)
 
     def meet(self, *nets: str) -> None:
+        """Make these nets known, in the order they are met."""
         for net in nets:
             self.nets.setdefault(net)
 
@@ -109,7 +114,7 @@ def assemble(design: Design, values: PartValues) -> Network:
         else:
             stamps.known[rail.net] = volts
     for ref, part in design.parts.items():
-        _stamp(stamps, design, ref, part, values)
+        _stamp(stamps, ref, part, values)
     ports = Ports()
     devices = collect_devices(design, values, ports)
     for plus, minus in ports.pairs:
@@ -121,7 +126,7 @@ def _full(units: int, value: float) -> Floats:
     return np.full(units, value)
 
 
-def _stamp(stamps: Stamps, design: Design, ref: str, part: object, values: PartValues) -> None:
+def _stamp(stamps: Stamps, ref: str, part: object, values: PartValues) -> None:
     """Linear stamps of one part (nonlinear ones come from `collect_devices`)."""
     match part:
         case Capacitor():

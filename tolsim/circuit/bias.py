@@ -21,6 +21,8 @@ NEWTON_ROUNDS = 60
 LARGEST_MOVE = 2.0  # V or A, per Newton step
 TOLERANCE = 1e-9  # relative to 1 V + |x|
 PSEUDO_STEPS = 80
+PSEUDO_ROUNDS = 12  # Newton rounds per pseudo-transient step
+PSEUDO_TOLERANCE = 1e-7  # V or A, last move of a pseudo-transient step
 
 
 @dataclass(frozen=True)
@@ -79,7 +81,7 @@ def _pseudo_transient(network: Network) -> Floats:
     for step in np.geomspace(1e-9, 10.0, PSEUDO_STEPS):
         _, q0, _, _ = network.devices.evaluate(network.port_voltages(x))
         start = x
-        for _ in range(12):
+        for _ in range(PSEUDO_ROUNDS):
             f, q, g, c = network.devices.evaluate(network.port_voltages(x))
             residual = (
                 apply(network.E, x - start) / step
@@ -91,6 +93,6 @@ def _pseudo_transient(network: Network) -> Floats:
             move = -np.linalg.solve(jacobian, residual[:, :, None])[:, :, 0]
             ports = np.abs(move @ network.D.T).max(axis=1, initial=0.0)
             x = x + move * np.minimum(1.0, LARGEST_MOVE / np.maximum(ports, 1e-300))[:, None]
-            if np.abs(move).max() < 1e-7:
+            if np.abs(move).max() < PSEUDO_TOLERANCE:
                 break
     return x

@@ -98,7 +98,7 @@ def aim(nominal: Nominal, keys: tuple[str, ...], steps: int) -> Compass:
     network = moved.case.network(moved.junctions)
     cycle = run_cycle(network, x0, period, steps, derivatives=False)
     gap = _halves((cycle.samples[-1] - x0) / frame.scale) / reach[:, None]
-    z = -np.linalg.solve(_nominal_matrix(nominal, steps), _pad(gap, frame).T).T
+    z = -np.linalg.solve(_nominal_matrix(nominal, steps), _pad(gap, frame).T).T.astype(np.float64)
     if frame.driven:
         z = np.concatenate([z, np.zeros((len(z), 1))], axis=1)
     # the heat balance where the orbit has moved along: a second period from the moved starts
@@ -120,7 +120,7 @@ def _coupled(nominal: Nominal, keys: tuple[str, ...], z: Floats, answer: Floats)
     """Close the loop between orbit and junctions; the last rows are the junctions' own."""
     transistors = answer.shape[1]
     own, values = slice(len(keys), None), slice(0, len(keys))
-    gain = np.linalg.inv(np.eye(transistors) - answer[own].T)
+    gain = np.linalg.inv(np.eye(transistors) - answer[own].T).astype(np.float64)
     warmings = answer[values] @ gain.T
     slopes = z[values] + warmings @ z[own]
     heat = HeatResponse(gain, z[own]) if nominal.case.heated and transistors else None
@@ -188,7 +188,9 @@ def solve_units(case: Case, compass: Compass, steps: int) -> Solution:
     """
     frame = compass.nominal.frame
     assert frame is not None
-    solution = shoot(case, compass.start(case), frame, steps, SHOOTING_ROUNDS, "predicted", heat=compass.heat)
+    solution = shoot(
+        case, compass.start(case), frame, steps, SHOOTING_ROUNDS, "predicted", heat=compass.heat
+    )
     for attempt in (_lead_in, _decide_in_time):
         open_units = np.flatnonzero(np.isin(solution.status, UNSETTLED))
         if not open_units.size:
@@ -259,7 +261,9 @@ def _decide_in_time(case: Case, compass: Compass, frame: Frame, steps: int) -> S
     swing = np.ptp(tail, axis=0) / np.ptp(orbit.samples[:, 0, frame.lead])
     dead = swing < DECAYED
     again = Start(samples[-1], start.period, start.junctions)
-    solution = shoot(case, again, frame, steps, 2 * SHOOTING_ROUNDS, "time domain", heat=compass.heat)
+    solution = shoot(
+        case, again, frame, steps, 2 * SHOOTING_ROUNDS, "time domain", heat=compass.heat
+    )
     status = np.where(
         dead & (solution.status == Status.NOT_CONVERGED), Status.NO_ORBIT, solution.status
     )

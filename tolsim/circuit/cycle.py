@@ -1,9 +1,10 @@
-"""One period of the drive or oscillation in m equal TR-BDF2 steps, with exact discrete derivatives.
+"""One period of drive or oscillation in m equal TR-BDF2 steps, with exact discrete derivatives.
 
 The period T of each unit is its own: the step is T/m, so c = gamma T/(2m) depends on T and the
 derivative d/dT follows from differentiating the stage equations:
 
-    trapezoid   S dxg = ... + (y_g - y_0)/T dT        BDF2   S dx1 = ... - (a y_g - b y_0 - y_1)/T dT
+    trapezoid   S dxg = ... + (y_g - y_0)/T dT
+    BDF2        S dx1 = ... - (a y_g - b y_0 - y_1)/T dT
 
 (the brackets are S^-1 times the stage's own right-hand terms, see `stepper`).
 """
@@ -62,7 +63,7 @@ def run_cycle(
     stepper = Stepper(network, period / steps)
     autonomous = network.drive_matrix is None
     point = stepper.start(x0)
-    slope = stepper.start_sensitivity(point, autonomous) if derivatives else None
+    slope = stepper.start_sensitivity(point, with_period=autonomous) if derivatives else None
     samples = np.empty((steps + 1, *x0.shape))
     samples[0] = x0
     settled = np.ones(len(x0), dtype=bool)
@@ -94,7 +95,12 @@ def _blend(weights: NDArray[np.float64], a: Floats, b: Floats, c: Floats) -> Flo
 
 
 def _step_slope(
-    stepper: Stepper, slope: Sensitivity, point: Point, inner: Point, end: Point, period: Floats | None
+    stepper: Stepper,
+    slope: Sensitivity,
+    point: Point,
+    inner: Point,
+    end: Point,
+    period: Floats | None,
 ) -> Sensitivity:
     """Carry the derivatives over one step."""
     dx_lin = stepper.trapezoid_sensitivity(slope)

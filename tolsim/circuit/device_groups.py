@@ -38,6 +38,7 @@ class Ports:
 
     @property
     def count(self) -> int:
+        """How many ports there are so far."""
         return len(self.pairs) + len(self.currents)
 
     def between(self, name: str, plus: str, minus: str) -> int:
@@ -117,19 +118,26 @@ def collect_devices(design: Design, values: PartValues, ports: Ports) -> Devices
                 cores[ref] = part
             case _:
                 pass
-    for ref in cores:
+    for ref in cores:  # their ports come last: they are currents, not pairs of nets
         ports.numbers[ref] = ports.count
         ports.currents.append(ref)
+    elements = _gathered(ramps, junctions, biased, ports.count, units)
+    elements += [_core(ref, part, values, ports) for ref, part in cores.items()]
+    return Devices(tuple(elements), ports.count)
+
+
+def _gathered(
+    ramps: _Rows, junctions: _Rows, biased: _Rows, ports: int, units: int
+) -> list[Elements]:
+    """Elements of the kinds that occur."""
     elements: list[Elements] = []
     if ramps.names:
-        elements.append(_ramps(ramps, ports.count, units))
+        elements.append(_ramps(ramps, ports, units))
     if junctions.names:
-        elements.append(_junctions(junctions, ports.count, units))
+        elements.append(_junctions(junctions, ports, units))
     if biased.names:
-        elements.append(_biased(biased, ports.count, units))
-    for ref, part in cores.items():
-        elements.append(_core(ref, part, values, ports))
-    return Devices(tuple(elements), ports.count)
+        elements.append(_biased(biased, ports, units))
+    return elements
 
 
 def _mosfet(
@@ -139,16 +147,17 @@ def _mosfet(
     gs = ports.between(f"{ref}:gs", gate, part.source_net)
     ds = ports.between(f"{ref}:ds", drain, part.source_net)
     threshold, gain = values[f"{ref}.threshold"], values[f"{ref}.gain"]
-    body = part.body_diode
-    channel = {"offset": threshold, "knee": part.knee, "linear": 0.0}
-    ramps.add(f"{ref}:forward", {gs: 1.0}, {ds: 1.0}, square=gain, **channel)
-    ramps.add(f"{ref}:reverse", {gs: 1.0, ds: -1.0}, {ds: 1.0}, square=-gain, **channel)
+    knee, body = part.knee, part.body_diode
+    forward, reverse = {gs: 1.0}, {gs: 1.0, ds: -1.0}
+    ramps.add(f"{ref}:forward", forward, {ds: 1.0}, square=gain, offset=threshold, knee=knee)
+    ramps.add(f"{ref}:reverse", reverse, {ds: 1.0}, square=-gain, offset=threshold, knee=knee)
     ramps.add(
         f"{ref}:body", {ds: -1.0}, offset=body.voltage, knee=body.knee, linear=1 / body.resistance
     )
-    depletion = {"phi": part.junction_potential, "grading": part.grading}
-    junctions.add(f"{ref}:gd", {ds: 1.0, gs: -1.0}, c0=values[f"{ref}.cgd0"], **depletion)
-    junctions.add(f"{ref}:ds", {ds: 1.0}, c0=values[f"{ref}.cds0"], **depletion)
+    phi, grading = part.junction_potential, part.grading
+    cgd0, cds0 = values[f"{ref}.cgd0"], values[f"{ref}.cds0"]
+    junctions.add(f"{ref}:gd", {ds: 1.0, gs: -1.0}, c0=cgd0, phi=phi, grading=grading)
+    junctions.add(f"{ref}:ds", {ds: 1.0}, c0=cds0, phi=phi, grading=grading)
 
 
 def _diode(
@@ -156,9 +165,7 @@ def _diode(
 ) -> None:
     port = ports.between(ref, part.anode, part.cathode)
     conductance = 1 / values[f"{ref}.resistance"]
-    ramps.add(
-        ref, {port: 1.0}, offset=values[f"{ref}.voltage"], knee=part.knee, linear=conductance
-    )
+    ramps.add(ref, {port: 1.0}, offset=values[f"{ref}.voltage"], knee=part.knee, linear=conductance)
     if np.any(values[f"{ref}.capacitance"] > 0):
         junctions.add(
             ref,

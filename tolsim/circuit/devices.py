@@ -1,15 +1,16 @@
 """Nonlinear devices as three kinds of elements over the ports, with exact derivatives.
 
-`v` holds the port voltages, shape (p, N), unit axis last.  An element sees one controlling voltage
-u = `sense` v - offset and acts on the ports through `inject`:
+`v` holds the port voltages, shape (p, N), unit axis last.  An element sees one controlling
+voltage u = `sense` v - offset and acts on the ports through `inject`:
 
     Ramps       current  i = a S(u) + b/2 S(u)^2,   S(u) = s ln(1 + exp(u/s))
     Junctions   charge   q = integral of C0 / (1 + u/phi)^m for u > 0, C0 u below
     others      charge of a class-2 capacitor, flux of a saturating core
 
-A diode or one side of a clamp is one ramp (a); a MOSFET channel is two, i_d = k/2 [S(vgs - Vt)^2 -
-S(vgs - vds - Vt)^2] (b = k and -k): Enz, Krummenacher, Vittoz, "An analytical MOS transistor model
-valid in all regions of operation", Analog Integrated Circuits and Signal Processing 8 (1995) 83-114.
+A diode or one side of a clamp is one ramp (a); a MOSFET channel is two,
+i_d = k/2 [ S(vgs - Vt)^2 - S(vgs - vds - Vt)^2 ] (b = k and -k): Enz, Krummenacher, Vittoz,
+"An analytical MOS transistor model valid in all regions of operation", Analog Integrated Circuits
+and Signal Processing 8 (1995) 83-114.
 """
 
 from __future__ import annotations
@@ -25,20 +26,33 @@ from scipy.interpolate import PchipInterpolator
 Floats = NDArray[np.float64]
 Ints = NDArray[np.intp]
 
+SQUARE_ROOT = 0.5  # grading of an abrupt junction
+
 
 class Elements(Protocol):
     """A set of like elements.  `kind` says whether they give currents or charges."""
 
     @property
-    def names(self) -> tuple[str, ...]: ...
+    def names(self) -> tuple[str, ...]:
+        """Their e names, like "Q1:forward"."""
+
     @property
-    def kind(self) -> str: ...
+    def kind(self) -> str:
+        """What they answer with: "current" or "charge"."""
+
     @property
-    def sense(self) -> Floats: ...  # (e, p)
+    def sense(self) -> Floats:
+        """Weights of the port voltages in the controlling voltages, (e, p)."""
+
     @property
-    def inject(self) -> Floats: ...  # (p, e)
-    def respond(self, v: Floats) -> tuple[Floats, Floats]: ...  # value and d/du, (e, N)
-    def take(self, units: Ints) -> Self: ...
+    def inject(self) -> Floats:
+        """Weights of the answers in the port currents or charges, (p, e)."""
+
+    def respond(self, v: Floats) -> tuple[Floats, Floats]:
+        """Answers and their slopes d/du, (e, N) each, at port voltages (p, N)."""
+
+    def take(self, units: Ints) -> Self:
+        """Return the same elements for some of the units."""
 
 
 def soft_ramp(u: Floats, s: Floats) -> tuple[Floats, Floats]:
@@ -67,11 +81,13 @@ class Ramps:
     kind: str = "current"
 
     def respond(self, v: Floats) -> tuple[Floats, Floats]:
+        """Currents, A, and their slopes, S: (e, N) each, at port voltages (p, N)."""
         ramp, slope = soft_ramp(self.sense @ v - self.offset, self.knee)
         half = 0.5 * self.square * ramp
         return (self.linear + half) * ramp, (self.linear + 2.0 * half) * slope
 
     def take(self, units: Ints) -> Ramps:
+        """Return the same elements for some of the units."""
         return replace(
             self,
             offset=pick(self.offset, units),
@@ -95,9 +111,10 @@ class Junctions:
     @cached_property
     def _square_root(self) -> bool:
         # several times faster than a general power, and by far the usual grading
-        return bool(np.all(self.grading == 0.5))
+        return bool(np.all(self.grading == SQUARE_ROOT))
 
     def respond(self, v: Floats) -> tuple[Floats, Floats]:
+        """Charges, C, and capacitances, F: (e, N) each, at port voltages (p, N)."""
         u = self.sense @ v
         stretch = 1.0 + np.maximum(u, 0.0) / self.phi
         power = np.sqrt(stretch) if self._square_root else stretch**self.grading
@@ -105,6 +122,7 @@ class Junctions:
         return self.c0 * (depth + np.minimum(u, 0.0)), self.c0 / power
 
     def take(self, units: Ints) -> Junctions:
+        """Return the same elements for some of the units."""
         return replace(self, c0=pick(self.c0, units))
 
 
@@ -121,12 +139,14 @@ class BiasedCapacitors:
     kind: str = "charge"
 
     def respond(self, v: Floats) -> tuple[Floats, Floats]:
+        """Charges, C, and capacitances, F: (e, N) each, at port voltages (p, N)."""
         x = (self.sense @ v) / self.half
         soft = 1.0 - self.floor
         charge = self.c0 * self.half * (self.floor * x + soft * np.arctan(x))
         return charge, self.c0 * (self.floor + soft / (1.0 + x * x))
 
     def take(self, units: Ints) -> BiasedCapacitors:
+        """Return the same elements for some of the units."""
         return replace(self, c0=pick(self.c0, units))
 
 
@@ -155,6 +175,7 @@ class SaturatingCore:
         return self._share.antiderivative()
 
     def respond(self, v: Floats) -> tuple[Floats, Floats]:
+        """Flux beyond the constant part, Wb, and its slope, H: (1, N) each, at ports (p, N)."""
         current = self.sense @ v
         size = np.abs(current)
         inside = np.minimum(size, self.currents[-1])
@@ -163,6 +184,7 @@ class SaturatingCore:
         return flux, self.inductance * (self._share(inside) - 1.0)
 
     def take(self, units: Ints) -> SaturatingCore:
+        """Return the same core for some of the units."""
         return replace(self, inductance=pick(self.inductance, units))
 
 
@@ -200,6 +222,7 @@ class Devices:
         )
 
     def take(self, units: Ints) -> Devices:
+        """Return the same devices for some of the units."""
         taken = Devices(tuple(each.take(units) for each in self.elements), self.ports)
         taken.__dict__["_spread"] = self._spread  # depends on the topology only
         return taken

@@ -34,6 +34,7 @@ class SupplyCurrent:
         return np.einsum("...un,un->...u", x, self.row) + self.offset + f @ self.through
 
     def take(self, units: Ints) -> SupplyCurrent:
+        """Return the same supply for some of the units."""
         return replace(
             self, row=self.row[units], offset=self.offset[units], volts=self.volts[units]
         )
@@ -61,10 +62,12 @@ class Network:
 
     @property
     def units(self) -> int:
+        """N."""
         return int(self.E.shape[0])
 
     @property
     def states(self) -> int:
+        """n, the number of unknowns."""
         return int(self.E.shape[1])
 
     def take(self, units: Ints) -> Network:
@@ -131,9 +134,11 @@ class DriveShape:
             return 0.5 + 0.5 * np.sin(0.5 * np.pi * np.clip(distance / half, -1.0, 1.0))
 
         # the rising edge around phase 0 is seen from both ends of the period
-        square = risen(np.full_like(half, turn)) - risen(turn - self.duty) + risen(turn - 1.0 + 0 * half)
+        rising = risen(np.full_like(half, turn)), risen(turn - 1.0 + 0 * half)
+        square = rising[0] - risen(turn - self.duty) + rising[1]
         wave = np.where(self.sine, 0.5 + 0.5 * np.sin(2 * np.pi * turn), square)
         return self.low + (self.high - self.low) * wave
 
     def take(self, units: Ints) -> DriveShape:
+        """Return the same waveforms for some of the units."""
         return replace(self, low=self.low[units], high=self.high[units])

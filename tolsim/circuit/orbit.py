@@ -22,12 +22,14 @@ class Status(IntEnum):
 
     @property
     def sentence(self) -> str:
+        """What it means, for people."""
         return _SENTENCES[self]
 
 
 _SENTENCES = {
     Status.SETTLED: "A periodic orbit was found and small disturbances die out.",
-    Status.UNSTABLE: "A periodic orbit exists but small disturbances grow: it bursts or jumps away.",
+    Status.UNSTABLE: "A periodic orbit exists but small disturbances grow: it bursts or jumps"
+    " away.",
     Status.NO_ORBIT: "The oscillation decays: integrated in time from full swing it died away.",
     Status.NO_THERMAL_BALANCE: "A junction finds no steady temperature: its loss rises faster than"
     " the heat that its cooling removes.",
@@ -51,9 +53,11 @@ class Solution:
 
     @property
     def units(self) -> int:
+        """N."""
         return len(self.period)
 
     def take(self, units: Ints) -> Solution:
+        """Return the orbits of some of the units."""
         picked = {
             field.name: getattr(self, field.name)[units]
             for field in fields(self)
@@ -63,7 +67,7 @@ class Solution:
         return replace(self, samples=self.samples[:, units], junctions=junctions, **picked)
 
     def put(self, units: Ints, other: Solution) -> Solution:
-        """This solution with some units replaced."""
+        """Return a solution with some units replaced."""
         merged = {}
         for field in fields(self):
             if field.name == "junctions":

@@ -46,7 +46,7 @@ class Frame:
 
 @dataclass(frozen=True)
 class HeatResponse:
-    """How heat balance and orbit answer to junction temperatures, k transistors, at the nominal unit.
+    """How heat balance and orbit of the nominal unit answer to its k junction temperatures.
 
     With Theta(T) the balance that the orbit at junction temperatures T leads to, `gain` is
     (I - dTheta/dT)^-1: one Newton step of T = Theta(T) is `gain` (Theta - T).
@@ -65,6 +65,7 @@ class Start:
     junctions: dict[str, Floats]  # (N,) each
 
     def take(self, units: Ints) -> Start:
+        """Return the starts of some of the units."""
         return Start(
             self.x[units],
             self.period[units],
@@ -106,7 +107,7 @@ def shoot(
     units, n = start.x.shape
     found = _unsolved(case, units, n, steps, way)
     active = np.arange(units)
-    here = Start(start.x.copy(), start.period.copy(), {k: t.copy() for k, t in start.junctions.items()})
+    here = start.take(np.arange(units))
     working = case
     rounds_left: int | None = None
     for round_ in range(1, rounds + 1):
@@ -156,7 +157,7 @@ def _unsolved(case: Case, units: int, n: int, steps: int, way: str) -> Solution:
 
 
 def bordered_matrix(cycle: Cycle, frame: Frame, period: Floats) -> Floats:
-    """Newton matrix in scaled unknowns (x / scale, ln T); without the last row and column if driven."""
+    """Newton matrix in scaled unknowns (x / scale, ln T); no last row and column if driven."""
     assert cycle.monodromy is not None
     units, n, _ = cycle.monodromy.shape
     size = n if frame.driven else n + 1
@@ -186,7 +187,7 @@ def _newton_move(cycle: Cycle, here: Start, frame: Frame) -> Floats:
 def _heat_moves(
     here: Start, balance: dict[str, Floats], size: Floats, heat: HeatResponse | None
 ) -> Floats:
-    """Temperature moves (N, k) towards the balance, none while the orbit itself is still far off."""
+    """Temperature moves (N, k) towards the balance, none while the orbit is still far off."""
     if not here.junctions:
         return np.zeros((len(size), 0))
     gap = np.stack(
@@ -213,9 +214,7 @@ def _advance(here: Start, move: Floats, warming: Floats, frame: Frame) -> Start:
     share = np.minimum(1.0, LONGEST_MOVE / np.maximum(longest, 1e-300))
     period = here.period
     if not frame.driven:
-        share = np.minimum(
-            share, LARGEST_PERIOD_MOVE / np.maximum(np.abs(move[:, n]), 1e-300)
-        )
+        share = np.minimum(share, LARGEST_PERIOD_MOVE / np.maximum(np.abs(move[:, n]), 1e-300))
         period = here.period * np.exp(share * move[:, n])
     x = here.x + share[:, None] * move[:, :n] * frame.scale
     junctions = {
@@ -244,7 +243,7 @@ def _record(
     for ref, celsius in here.junctions.items():
         found.junctions[ref][places] = celsius[picked]
     multipliers = deflated_multipliers(
-        cycle.monodromy[picked], cycle.samples[:, picked], frame.scale, frame.driven
+        cycle.monodromy[picked], cycle.samples[:, picked], frame.scale, driven=frame.driven
     )
     found.multipliers[places] = multipliers
     stable = largest_beside_charge(multipliers) < 1.0

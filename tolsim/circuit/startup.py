@@ -11,6 +11,7 @@ oscillation mode vanishes (bias point held): positive means it starts.
 
 from __future__ import annotations
 
+from collections.abc import Callable
 from dataclasses import dataclass
 
 import numpy as np
@@ -42,6 +43,7 @@ class Modes:
 
     @property
     def starts(self) -> NDArray[np.bool_]:
+        """Whether the leading mode grows, (N,)."""
         return self.growth > 0
 
 
@@ -136,7 +138,12 @@ def start_margin(network: Network, bias: Bias, reference: float) -> Floats:
 
 
 def _refine(
-    growth: object, units: NDArray[np.intp], low: Floats, g_low: Floats, high: Floats, g_high: Floats
+    growth: Callable[[Floats, NDArray[np.intp]], Floats],
+    units: NDArray[np.intp],
+    low: Floats,
+    g_low: Floats,
+    high: Floats,
+    g_high: Floats,
 ) -> Floats:
     """Bracketed secant (Illinois rule) on the growth, all units together."""
     a, fa, b, fb = low[units], g_low[units], high[units], g_high[units]
@@ -145,7 +152,7 @@ def _refine(
     for _ in range(MARGIN_ROUNDS):
         slope = np.where(fb == fa, 1.0, fb - fa)
         middle = np.where(fb == fa, 0.5 * (a + b), b - fb * (b - a) / slope)
-        f = growth(middle, units)  # type: ignore[operator]
+        f = growth(middle, units)
         replaces_b = f * fa < 0
         # the end that stays twice in a row loses half its weight
         fa = np.where(replaces_b & (last > 0), 0.5 * fa, fa)
@@ -220,10 +227,8 @@ def oscillation_scale(network: Network, bias: Bias) -> float:
     crossing, crossed = np.inf, 0.0
     for sigma in np.geomspace(1e4, 1e10, SCALE_SHIFTS):
         scaled = J + (factors - 1.0)[:, None, None] * through
-        values = _unshift(
-            np.linalg.eigvals(np.linalg.solve(scaled + sigma * C, np.broadcast_to(C, scaled.shape))),
-            float(sigma),
-        )
+        inverse = np.linalg.solve(scaled + sigma * C, np.broadcast_to(C, scaled.shape))
+        values = _unshift(np.linalg.eigvals(inverse).astype(complex), float(sigma))
         omega = np.abs(values.imag)
         # trust a pair only where the shift is of its own order
         near = (omega > 0.2 * sigma) & (omega < 5.0 * sigma) & np.isfinite(values.real)

@@ -1,7 +1,8 @@
 """One-step integrator TR-BDF2 for N units at once, condensed to the ports.
 
 R. E. Bank et al., "Transient simulation of silicon devices and circuits", IEEE Trans. Electron
-Devices ED-32 (1985) 1992-2007.  With gamma = 2 - sqrt 2 both stages share S = E + c F, c = gamma h/2:
+Devices ED-32 (1985) 1992-2007.  With gamma = 2 - sqrt 2 both stages share S = E + c F, where
+c = gamma h/2:
 
     trapezoid   S xg + P(q_g + c f_g) = E x0 + P q0 - c (F x0 + P f0 - b0 - b_g)
     BDF2        S x1 + P(q_1 + c f_1) = a (E xg + P q_g) - b (E x0 + P q0) + c b_1
@@ -32,6 +33,7 @@ B = (1.0 - GAMMA) ** 2 * A
 
 PORT_TOLERANCE = 1e-4  # V, last Newton correction of a port voltage (error after it: its square)
 QUICK_ROUNDS = 8
+ENOUGH_SETTLED = 0.8  # share of the units; the few others go on alone
 CAREFUL_ROUNDS = 60
 HALVINGS = 10
 
@@ -55,10 +57,12 @@ class StepMatrices:
 
     @property
     def G(self) -> Floats:
+        """S^-1 E, (N, n, n)."""
         return self.GH[:, :, : self.inverse.shape[1]]
 
     @property
     def H(self) -> Floats:
+        """S^-1 P, (N, n, p)."""
         return self.GH[:, :, self.inverse.shape[1] :]
 
     def charge_state(self, x: Floats, q: Floats) -> Floats:
@@ -103,9 +107,7 @@ def measure(devices: Devices, c: Floats, v: Floats) -> PortState:
     )
 
 
-def solve_ports(
-    devices: Devices, c: Floats, K: Floats, target: Floats, guess: Floats
-) -> PortState:
+def solve_ports(devices: Devices, c: Floats, K: Floats, target: Floats, guess: Floats) -> PortState:
     """Solve v + K w(v) = target by Newton; units still open after a few rounds go on alone.
 
     Parameters
@@ -123,7 +125,7 @@ def solve_ports(
         correction = _correction(matrix, residual)
         settled = np.abs(correction).max(axis=1, initial=0.0) < PORT_TOLERANCE
         v = v + correction
-        if settled.all() or settled.mean() > 0.8:
+        if settled.all() or settled.mean() > ENOUGH_SETTLED:
             break
     # one linear step keeps v + K w = target exact, so that charge is conserved to round-off
     state = PortState(
@@ -146,7 +148,11 @@ def _finish_stragglers(
     """Damped Newton for the units that have not settled, from the same guess."""
     open_units = np.flatnonzero(~state.settled)
     careful = _solve_damped(
-        devices.take(open_units), c[open_units], K[open_units], target[open_units], guess[open_units]
+        devices.take(open_units),
+        c[open_units],
+        K[open_units],
+        target[open_units],
+        guess[open_units],
     )
     merged = {}
     for name in ("v", "q", "w", "C", "W", "matrix", "settled"):
@@ -199,8 +205,8 @@ def _solve_damped(
 
 def _correction(matrix: Floats, residual: Floats) -> Floats:
     """-A^-1 r for each unit, (N, p)."""
-    move: Floats = -np.linalg.solve(matrix, residual[:, :, None])[:, :, 0]
-    return move
+    move = -np.linalg.solve(matrix, residual[:, :, None])[:, :, 0]
+    return np.asarray(move, dtype=np.float64)
 
 
 @dataclass(frozen=True)
@@ -222,6 +228,7 @@ class Point:
 
     @property
     def settled(self) -> NDArray[np.bool_]:
+        """Whether the port voltages were found, (N,)."""
         return self.port.settled
 
 
@@ -239,7 +246,7 @@ class Stepper:
         port = measure(self.network.devices, self.matrices.c, self.network.port_voltages(x))
         return Point(x, self.matrices.charge_state(x, port.q), port)
 
-    def start_sensitivity(self, point: Point, with_period: bool) -> Sensitivity:
+    def start_sensitivity(self, point: Point, *, with_period: bool) -> Sensitivity:
         """Columns d/dx0 = I, and d/dT = 0 when the period is unknown."""
         units, n = point.x.shape
         columns = n + int(with_period)
@@ -277,9 +284,11 @@ class Stepper:
         return linear + self.push(phase) + self.push(phase + share)
 
     def trapezoid_sensitivity(self, before: Sensitivity) -> Floats:
+        """Derivatives (N, n, m) of the trapezoid stage's linear part."""
         return 2.0 * before.dy - before.dx - self.matrices.H @ before.dw
 
     def take(self, units: Ints) -> Stepper:
+        """Return a stepper for some of the units."""
         return Stepper(self.network.take(units), self.step[units])
 
 

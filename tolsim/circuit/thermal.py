@@ -54,13 +54,16 @@ class Case:
 
     @property
     def units(self) -> int:
+        """N."""
         return len(self.values["ambient"])
 
     def take(self, units: Ints) -> Case:
+        """Return the case for some of the units."""
         picked = {key: value[units] for key, value in self.values.items()}
         return Case(self.design, picked, self.heated)
 
     def network(self, junctions: Mapping[str, Floats]) -> Network:
+        """Return the circuit at junction temperatures (N,) of every MOSFET, degC."""
         return assemble(self.design, hot_values(self.design, self.values, junctions))
 
     def cold_junctions(self) -> dict[str, Floats]:

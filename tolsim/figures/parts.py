@@ -8,7 +8,7 @@ import numpy as np
 
 from tolsim.circuit.devices import Floats
 from tolsim.figures.waves import Waves, highest, largest, mean, rms
-from tolsim.parts import Capacitor, Clamp, Diode, Inductor, Load, Potentiometer, Resistor
+from tolsim.parts import Capacitor, Clamp, Diode, Inductor, Potentiometer, Resistor
 
 Figures = dict[str, Floats]
 PartValues = Mapping[str, Floats]
@@ -33,6 +33,7 @@ def capacitor(ref: str, part: Capacitor, waves: Waves, values: PartValues) -> Fi
 
 
 def inductor(ref: str, part: Inductor, waves: Waves, values: PartValues) -> Figures:
+    """Currents, loss in the winding, use of its saturation rating."""
     current = waves.branch(ref)
     loss = mean(current**2) * values[f"{ref}.resistance"]
     peak = largest(current)
@@ -58,6 +59,7 @@ def _warming(loss: Floats, thermal_resistance: float | None, values: PartValues)
 
 
 def resistor(ref: str, part: Resistor, waves: Waves, values: PartValues) -> Figures:
+    """Heat."""
     return {"dissipation": mean(waves.across(*part.nets) ** 2) / values[f"{ref}.resistance"]}
 
 
@@ -72,6 +74,7 @@ def potentiometer(ref: str, part: Potentiometer, waves: Waves, values: PartValue
 
 
 def load(ref: str, waves: Waves, values: PartValues) -> Figures:
+    """Power taken, current and voltage of the coupled loop."""
     current = waves.branch(ref)
     resistance = values[f"{ref}.resistance"]
     return {
@@ -82,6 +85,7 @@ def load(ref: str, waves: Waves, values: PartValues) -> Figures:
 
 
 def diode(ref: str, part: Diode, waves: Waves) -> Figures:
+    """Heat, forward currents, reverse voltage."""
     voltage = waves.across(part.anode, part.cathode)
     current = waves.currents[ref]
     return {
@@ -93,6 +97,7 @@ def diode(ref: str, part: Diode, waves: Waves) -> Figures:
 
 
 def clamp(ref: str, part: Clamp, waves: Waves) -> Figures:
+    """Heat and currents, both directions together."""
     current = waves.currents[f"{ref}:up"] - waves.currents[f"{ref}:down"]
     return {
         "dissipation": mean(waves.across(*part.nets) * current),

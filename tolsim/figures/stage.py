@@ -55,7 +55,9 @@ def measure_orbits(case: Case, solution: Solution) -> dict[str, Floats]:
     return {name: _spread_out(values, solved, case.units) for name, values in figures.items()}
 
 
-def _spread_out(values: Floats, solved: np.ndarray[tuple[int], np.dtype[np.intp]], units: int) -> Floats:
+def _spread_out(
+    values: Floats, solved: np.ndarray[tuple[int], np.dtype[np.intp]], units: int
+) -> Floats:
     """Values of the solved units among all, NaN elsewhere."""
     whole = np.full(units, np.nan)
     whole[solved] = values

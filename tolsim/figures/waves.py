@@ -1,7 +1,8 @@
 """Voltages and currents of every part along one period, on an even grid of m points.
 
 Arrays are (m, N).  Means and rms values are plain averages over the grid: for a smooth periodic
-function that is the most accurate rule there is (Trefethen, Weideman, SIAM Review 56 (2014) 385-458).
+function that is the most accurate rule there is (Trefethen, Weideman, SIAM Review 56 (2014)
+385-458).
 """
 
 from __future__ import annotations
@@ -27,6 +28,7 @@ class Waves:
 
     @classmethod
     def of(cls, network: Network, solution: Solution) -> Waves:
+        """Waves of solved orbits; the last sample, equal to the first, is left out."""
         return cls(network, solution.samples[:-1], solution.period)
 
     @cached_property
@@ -44,6 +46,7 @@ class Waves:
         return self.network.potential(name, self.x)
 
     def across(self, plus: str, minus: str) -> Floats:
+        """Voltage between two nets, (m, N)."""
         return self.net(plus) - self.net(minus)
 
     def port(self, name: str) -> Floats:
@@ -102,8 +105,10 @@ def largest(wave: Floats) -> Floats:
 
 
 def rms(wave: Floats) -> Floats:
+    """Root of the mean square over the period, (N,)."""
     return np.sqrt(np.mean(wave**2, axis=0))
 
 
 def mean(wave: Floats) -> Floats:
+    """Mean over the period, (N,)."""
     return np.mean(wave, axis=0)

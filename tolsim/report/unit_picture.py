@@ -22,15 +22,24 @@ class Wave(Protocol):
     """What is drawn in one panel; see `presentation.Signal`."""
 
     @property
-    def title(self) -> str: ...
+    def title(self) -> str:
+        """Head of its panel."""
+
     @property
-    def unit_of_measure(self) -> str: ...
+    def unit_of_measure(self) -> str:
+        """Unit of measure of the waves, "V" or "A"."""
+
     @property
-    def time(self) -> Floats: ...
+    def time(self) -> Floats:
+        """Time along the nominal period, s, (m,)."""
+
     @property
-    def nominal(self) -> Floats: ...
+    def nominal(self) -> Floats:
+        """The nominal unit's wave, (m,)."""
+
     @property
-    def units(self) -> Floats: ...
+    def units(self) -> Floats:
+        """The waves of the units, of which the first is drawn, (m, N)."""
 
 
 def draw_unit(
