@@ -147,7 +147,7 @@ def _differences(sample: _Sample, steps: int) -> tuple[Floats, Floats]:
             CYCLES * steps,
             1 / steps if driven else 0.0,
         )
-    last = path[-steps - 1 :]
+    last = path[-steps - 1 :: FINER]  # the instants of the orbit's own grid
     orbit = solution.samples
     largest = np.maximum(np.abs(orbit).max(axis=0), sample.scale)
     gaps = [
