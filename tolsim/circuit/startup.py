@@ -18,14 +18,17 @@ import numpy as np
 from numpy.typing import NDArray
 
 from tolsim.circuit.bias import Bias
+from tolsim.circuit.critical import Critical, critical_of, follow_critical
 from tolsim.circuit.devices import Floats
 from tolsim.circuit.network import Network
 
 Complexes = NDArray[np.complex128]
+Growth = Callable[[Floats, NDArray[np.intp]], Floats]  # (dB, units) -> relative growth
 
 BOLTZMANN = 1.380649e-23  # J/K, exact (SI 2019)
 MARGIN_STEPS_DB = (6.0, 14.0, 30.0, 60.0)  # outward search for the sign change
 MARGIN_ROUNDS = 12
+SUSTAINED = 1e-4  # relative growth that counts as none
 MARGIN_TOLERANCE_DB = 0.005
 SCALE_FACTORS = 25  # transconductance factors tried, 1e-4 to 1
 SCALE_SHIFTS = 13  # shifts tried, 1e4 to 1e10 1/s
@@ -99,13 +102,23 @@ def _rank(eigenvalues: Complexes, sigma: float) -> Floats:
     return np.where(oscillates | (real > 1e-6 * sigma), real, -np.inf)
 
 
-def start_margin(network: Network, bias: Bias, reference: float) -> Floats:
+def start_margin(
+    network: Network,
+    bias: Bias,
+    reference: float,
+    near: Critical | None = None,
+    known: Modes | None = None,
+) -> Floats:
     """Margin of every unit in dB, within +-60 dB.
 
     Parameters
     ----------
     reference : float, rad/s
         Angular frequency of the nominal oscillation mode.
+    near : Critical, optional
+        Critical point of the nominal unit: most units are followed from it, which is quicker.
+    known : Modes, optional
+        The units' modes with the same shift, where they are known already.
     """
     C, J, through = small_signal(network, bias)
 
@@ -116,29 +129,61 @@ def start_margin(network: Network, bias: Bias, reference: float) -> Floats:
         return _mode_growth(_unshift(mu.astype(complex), reference), reference) / reference
 
     every = np.arange(network.units)
-    here = np.zeros(network.units)
-    g_here = growth(here, every)
-    upward = np.where(g_here > 0, 1.0, -1.0)  # a starting unit is weakened, a dead one strengthened
-    low, g_low = here.copy(), g_here.copy()
-    high, g_high = here.copy(), g_here.copy()
-    open_units = every
+    if known is None:
+        g_here = growth(np.zeros(network.units), every)
+    else:
+        g_here = _mode_growth(known.eigenvalues, reference) / reference
+    margin = np.where(g_here > 0, 1.0, -1.0) * MARGIN_STEPS_DB[-1]
+    left = every
+    if near is not None:
+        found = follow_critical(C, J, through, near)
+        decibel = -20.0 * np.log10(found.factor)
+        likely = found.settled & (np.abs(decibel) < MARGIN_STEPS_DB[-1]) & (decibel * g_here > 0)
+        followed = np.flatnonzero(likely)
+        # no other mode may grow where the followed one is just sustained
+        followed = followed[np.abs(growth(decibel[followed], followed)) < SUSTAINED]
+        margin[followed] = decibel[followed]
+        left = np.setdiff1d(every, followed)
+    if left.size:
+        margin[left] = _search_margin(growth, left, g_here[left])
+    return margin
+
+
+def critical_point(network: Network, bias: Bias, reference: float) -> Critical | None:
+    """Where the mode of the first unit is just sustained; None if nowhere within +-60 dB."""
+    C, J, through = (matrix[:1] for matrix in small_signal(network, bias))
+    decibel = float(start_margin(network, bias, reference)[0])
+    if abs(decibel) >= MARGIN_STEPS_DB[-1]:
+        return None
+    found = critical_of(C, J, through, 10.0 ** (-decibel / 20.0), reference)
+    return found if found.settled[0] else None
+
+
+def _search_margin(growth: Growth, units: NDArray[np.intp], g_start: Floats) -> Floats:
+    """Margin of some units by outward steps until the growth changes sign, then inward."""
+    upward = np.where(g_start > 0, 1.0, -1.0)  # weaken what starts, strengthen what does not
+    low, g_low = np.zeros(len(units)), g_start.copy()
+    high, g_high = low.copy(), g_low.copy()
+    open_units = np.arange(len(units))
     for step in MARGIN_STEPS_DB:
         trial = upward[open_units] * step
-        g_trial = growth(trial, open_units)
-        crossed = g_trial * g_here[open_units] <= 0
+        g_trial = growth(trial, units[open_units])
+        crossed = g_trial * g_start[open_units] <= 0
         low[open_units], g_low[open_units] = high[open_units], g_high[open_units]
         high[open_units], g_high[open_units] = trial, g_trial
         open_units = open_units[~crossed]
         if not open_units.size:
             break
     margin = upward * MARGIN_STEPS_DB[-1]
-    bracketed = np.setdiff1d(every, open_units)
-    margin[bracketed] = _refine(growth, bracketed, low, g_low, high, g_high)
+    crossing = np.setdiff1d(np.arange(len(units)), open_units)
+    margin[crossing] = _refine(
+        growth, units[crossing], low[crossing], g_low[crossing], high[crossing], g_high[crossing]
+    )
     return margin
 
 
 def _refine(
-    growth: Callable[[Floats, NDArray[np.intp]], Floats],
+    growth: Growth,
     units: NDArray[np.intp],
     low: Floats,
     g_low: Floats,
@@ -146,7 +191,7 @@ def _refine(
     g_high: Floats,
 ) -> Floats:
     """Bracketed secant (Illinois rule) on the growth, all units together."""
-    a, fa, b, fb = low[units], g_low[units], high[units], g_high[units]
+    a, fa, b, fb = low, g_low, high, g_high
     last = np.zeros(len(units))
     middle = 0.5 * (a + b)
     for _ in range(MARGIN_ROUNDS):

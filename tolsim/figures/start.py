@@ -5,9 +5,10 @@ from __future__ import annotations
 import numpy as np
 
 from tolsim.circuit.bias import bias_point
+from tolsim.circuit.critical import Critical
 from tolsim.circuit.devices import Floats
 from tolsim.circuit.nominal import Nominal
-from tolsim.circuit.startup import modes, noise_amplitude, resemblance, start_margin
+from tolsim.circuit.startup import critical_point, modes, noise_amplitude, resemblance, start_margin
 from tolsim.circuit.thermal import Case, mosfets
 
 FULL_SWING = 0.9  # of the orbit's amplitude
@@ -26,7 +27,7 @@ def measure_start(case: Case, nominal: Nominal) -> dict[str, Floats]:
     guess = np.broadcast_to(nominal.bias.x[0], (case.units, network.states))
     bias = bias_point(network, guess)
     lead = modes(network, bias, nominal.shift)
-    margin = start_margin(network, bias, nominal.shift)
+    margin = start_margin(network, bias, nominal.shift, _nominal_critical(nominal), lead)
     noise = noise_amplitude(network, bias, lead.vector, case.values["ambient"])
     swing = _orbit_swing(nominal)
     with np.errstate(divide="ignore", invalid="ignore"):
@@ -52,6 +53,11 @@ def measure_start(case: Case, nominal: Nominal) -> dict[str, Floats]:
         current = channel[f"{ref}:forward"][0] + channel[f"{ref}:reverse"][0]
         figures[f"{ref}.idle_dissipation"] = current * bias.v[:, network.ports[f"{ref}:ds"]]
     return {name: values * unsettled for name, values in figures.items()}
+
+
+def _nominal_critical(nominal: Nominal) -> Critical | None:
+    network = nominal.case.network(nominal.case.cold_junctions())
+    return critical_point(network, nominal.bias, nominal.shift)
 
 
 def _orbit_swing(nominal: Nominal) -> float:

@@ -45,8 +45,9 @@ class Scratch:
 
     @classmethod
     def of(cls, points: int, units: int, dtype: type[np.floating]) -> Scratch:
-        slabs = [np.empty((points, units), dtype) for _ in range(3)]
-        return cls(*slabs, quiet=float(np.log(np.finfo(dtype).eps)) - 2.0)
+        shape = (points, units)
+        quiet = float(np.log(np.finfo(dtype).eps)) - 2.0
+        return cls(np.empty(shape, dtype), np.empty(shape, dtype), np.empty(shape, dtype), quiet)
 
 
 @dataclass(frozen=True)

@@ -97,7 +97,7 @@ def _residual_at(residual: Residual, z: Floats) -> Floats:
 
 def _inverse(residual: Residual, z: Floats) -> Floats:
     """Inverse of the Jacobian at z."""
-    return np.linalg.inv(jacobian(residual, z))
+    return np.linalg.inv(jacobian(residual, z)).astype(np.float64)
 
 
 def jacobian(residual: Residual, z: Floats) -> Floats:
