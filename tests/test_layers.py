@@ -25,7 +25,7 @@ FLOORS = [
     {"circuit.devices"},
     {"circuit.network", "circuit.orbit", "circuit.floquet"},
     {"circuit.device_groups", "circuit.stepper"},
-    {"circuit.assembly", "circuit.bias", "circuit.cycle"},
+    {"circuit.assembly", "circuit.bias", "circuit.charge", "circuit.cycle"},
     {"circuit.thermal", "circuit.critical", "circuit.transient"},
     {"circuit.startup"},
     {"circuit.shooting"},

@@ -98,9 +98,10 @@ def _start_outcomes(
     outcome = outcome.copy()
     settled = status == Status.SETTLED
     outcome[settled & ~grows] = "starts only with a kick"
-    other = (figures["mode_match"] < LIKE_NOMINAL) & (
-        np.abs(figures["start_frequency"] / nominal["start_frequency"] - 1) > OFF_FREQUENCY
-    )
+    # a nominal unit that leaves its bias point without oscillating has no frequency to compare
+    usual = nominal["start_frequency"]
+    off = np.abs(figures["start_frequency"] - usual) > OFF_FREQUENCY * usual
+    other = (figures["mode_match"] < LIKE_NOMINAL) & off
     outcome[settled & grows & other] = "wrong mode"
     without = status == Status.NO_ORBIT
     running = nominal.get("supply_current", np.nan)

@@ -256,6 +256,7 @@ def _number(design: Design, stamps: Stamps, ports: Ports, devices: Devices) -> N
         known=stamps.known,
         supplies=_supplies(design, stamps, ports, index),
         series_conductance=stamps.series,
+        leak=design.leak,
         drive_matrix=matrix,
         drive_shape=shape,
         drive_frequency=frequency,

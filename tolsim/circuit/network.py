@@ -59,6 +59,7 @@ class Network:
     drive_matrix: Floats | None = None  # (N, n, d)
     drive_shape: DriveShape | None = None
     drive_frequency: float | None = None
+    leak: float = 0.0  # S, from every net to ground
 
     @property
     def units(self) -> int:

@@ -18,6 +18,7 @@ from dataclasses import dataclass
 import numpy as np
 from numpy.typing import NDArray
 
+from tolsim.circuit.charge import charge_rows, islands
 from tolsim.circuit.cycle import Cycle, run_cycle
 from tolsim.circuit.devices import Floats, Ints
 from tolsim.circuit.floquet import deflated_multipliers, largest_beside_charge
@@ -106,6 +107,7 @@ def shoot(
     """
     units, n = start.x.shape
     found = _unsolved(case, units, n, steps, way)
+    members: Floats | None = None
     active = np.arange(units)
     here = start.take(np.arange(units))
     working = case
@@ -124,7 +126,10 @@ def shoot(
         done = (size < TOLERANCE) & (still < HEAT_TOLERANCE) & cycle.settled & alive
         if done.any():
             picked = np.flatnonzero(done)
-            _record(found, active[picked], picked, cycle, here, size, frame, round_)
+            if members is None:
+                members = islands(network)
+            charges = charge_rows(network.take(picked), members, here.x[picked])
+            _record(found, active[picked], picked, cycle, here, size, frame, charges)
         lost = ~np.isfinite(size) | ~alive | ~cycle.settled
         runaway = (size < HEAT_FROM) & _at_ceiling(here, balance)
         found.status[active[runaway & ~done]] = Status.NO_THERMAL_BALANCE
@@ -232,18 +237,21 @@ def _record(
     here: Start,
     size: Floats,
     frame: Frame,
-    round_: int,
+    charges: Floats,
 ) -> None:
     """Write settled units into the solution (which is still being built here)."""
     assert cycle.monodromy is not None
     found.samples[:, places] = cycle.samples[:, picked]
     found.period[places] = here.period[picked]
     found.residual[places] = size[picked]
-    found.iterations[places] = round_
     for ref, celsius in here.junctions.items():
         found.junctions[ref][places] = celsius[picked]
     multipliers = deflated_multipliers(
-        cycle.monodromy[picked], cycle.samples[:, picked], frame.scale, driven=frame.driven
+        cycle.monodromy[picked],
+        cycle.samples[:, picked],
+        frame.scale,
+        charges,
+        driven=frame.driven,
     )
     found.multipliers[places] = multipliers
     stable = largest_beside_charge(multipliers) < 1.0
