@@ -30,7 +30,8 @@ def deflated_multipliers(
     charges : (N, i, n)
         Rows of trapped charge, see `charge`.
     """
-    flow = None if driven else samples[1] - samples[-2]
+    # the sum of the first and last step leaves out the gap by which the orbit does not close
+    flow = None if driven else samples[1] - samples[0] + samples[-1] - samples[-2]
     return sorted_multipliers(monodromy, flow, scale, charges)
 
 
