@@ -106,13 +106,14 @@ def _stage_figures(
 ) -> dict[str, Floats]:
     """Powers, currents of the rails, efficiency and the energy balance."""
     answer: dict[str, Floats] = {"frequency": 1.0 / waves.period}
-    flows = np.zeros(waves.ports.shape)
-    for name, current in waves.currents.items():
-        flows += current[..., None] * _injection(network, name)
     supply_power = np.zeros(network.units)
     total_current = np.zeros(network.units)
     for rail, supply in network.supplies.items():
-        current = supply.at(waves.x, flows)
+        current = supply.at(waves.x, np.zeros(len(supply.through)))
+        for name, branch in waves.currents.items():
+            share = float(_injection(network, name) @ supply.through)
+            if share:
+                current = current + share * branch
         answer[f"{rail}.current_mean"] = mean(current)
         answer[f"{rail}.current_ripple"] = np.ptp(current, axis=0)
         total_current = total_current + mean(current)

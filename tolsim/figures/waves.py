@@ -12,6 +12,7 @@ from functools import cached_property
 
 import numpy as np
 
+from tolsim.circuit.bulk.kernels import element_currents
 from tolsim.circuit.devices import Floats
 from tolsim.circuit.network import Network
 from tolsim.circuit.orbit import Solution
@@ -29,17 +30,25 @@ class Waves:
     @classmethod
     def of(cls, network: Network, solution: Solution) -> Waves:
         """Waves of solved orbits; the last sample, equal to the first, is left out."""
-        return cls(network, solution.samples[:-1], solution.period)
+        # each state's wave in one piece of memory, seen as (m, N, n)
+        waves = np.ascontiguousarray(solution.samples[:-1].transpose(2, 0, 1))
+        return cls(network, waves.transpose(1, 2, 0), solution.period)
 
     @cached_property
     def ports(self) -> Floats:
-        """Port voltages (m, N, p)."""
-        return self.network.port_voltages(self.x)
+        """Port voltages (m, N, p), each port's wave in one piece of memory."""
+        m, units, _ = self.x.shape
+        volts = np.empty((len(self.network.D), m, units))
+        for port, row in enumerate(self.network.D):
+            volts[port] = self.network.v0[:, port]
+            for state in np.flatnonzero(row):
+                volts[port] += row[state] * self.x[..., state]
+        return volts.transpose(1, 2, 0)
 
     @cached_property
     def currents(self) -> dict[str, Floats]:
         """Current of every nonlinear element, along its own controlling direction."""
-        return self.network.devices.currents(self.ports)
+        return element_currents(self.network.devices, self.ports.transpose(2, 0, 1))
 
     def net(self, name: str) -> Floats:
         """Voltage of a net."""

@@ -200,3 +200,15 @@ def _core(elements: SaturatingCore) -> tuple[list[Floats], Response]:
         return scratch.a
 
     return [elements.inductance[0]], respond
+
+
+def element_currents(devices: Devices, v: Floats) -> dict[str, Floats]:
+    """Current of every ramp element by name, (m, N) each, at port voltages v (p, m, N)."""
+    _, points, units = v.shape
+    scratch = Scratch.of(points, units, np.float64)
+    answer = {}
+    for kernel in kernels_of(devices, units):
+        if kernel.kind == "current":
+            current = kernel.evaluate(v, tuple(kernel.rows), scratch)
+            answer[kernel.name] = np.zeros((points, units)) if current is None else current.copy()
+    return answer
