@@ -210,5 +210,6 @@ def element_currents(devices: Devices, v: Floats) -> dict[str, Floats]:
     for kernel in kernels_of(devices, units):
         if kernel.kind == "current":
             current = kernel.evaluate(v, tuple(kernel.rows), scratch)
-            answer[kernel.name] = np.zeros((points, units)) if current is None else current.copy()
+            idle = current is None
+            answer[kernel.name] = np.zeros((points, units)) if idle else np.array(current, float)
     return answer

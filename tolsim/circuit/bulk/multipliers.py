@@ -20,6 +20,7 @@ from __future__ import annotations
 import numpy as np
 from numpy.typing import NDArray
 
+from tolsim.circuit.charge import islands
 from tolsim.circuit.devices import Floats
 from tolsim.circuit.floquet import largest_beside_charge, sorted_multipliers
 from tolsim.circuit.network import Network
@@ -74,7 +75,9 @@ def _pass(
         here = start if last else _reach(network, matrices, GH, waves[2 * k + 2])
     driven = network.drive_matrix is not None
     flow = None if driven else _flow(network, matrices, coefficients)
-    return sorted_multipliers(product, flow, scale)
+    # an island's charge is the row (E + P C P') of its nets; in u it reads E + c F, a constant
+    charges = islands(network) @ (network.E + matrices.c[:, None, None] * network.F)
+    return sorted_multipliers(product, flow, scale, charges)
 
 
 def _reach(network: Network, matrices: StepMatrices, GH: Floats, x: Floats) -> Floats:
