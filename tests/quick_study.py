@@ -16,7 +16,7 @@ kind = "self-oscillating"
 [run]
 units = {units}
 seed = {seed}
-steps_per_cycle = 64
+steps_per_cycle = 128
 rank = ["QA.drain_peak"]
 
 [rails.vdd]
@@ -103,7 +103,7 @@ def text(
     units: int = 12,
     seed: int = 5,
     bias: float = 4.2,
-    drain_share: float = 0.66,
+    drain_share: float = 0.63,
     conditions: tuple[tuple[str, float, float], ...] = (("room", 25, 0),),
 ) -> str:
     """TOML of the study; conditions are (name, degC, supply deviation in percent)."""

@@ -59,7 +59,7 @@ FLOORS = [
     {"nominals", "answers.provenance", "answers.ranking"},
     {"evaluation", "answers.summary", "answers.lines", "report.content", "report.tables"},
     {"report.charts"},
-    {"report.page"},
+    {"report.page", "report.unit_picture"},
     {"report"},
     # the corridor, and the faces
     {"presentation", "recheck"},

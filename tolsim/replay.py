@@ -15,14 +15,13 @@ import pandas as pd
 from numpy.typing import NDArray
 
 from tolsim.answers.bounds import bounds
-from tolsim.answers.results import STUDY_FILE, Results
+from tolsim.answers.results import STUDY_FILE, TABLES_FOLDER, Results
 from tolsim.answers.wording import shown
 from tolsim.circuit.orbit import Status
 from tolsim.errors import RequestError
 from tolsim.evaluation import Plan, solve_case
 from tolsim.nominals import CaseName, prepare
 from tolsim.presentation import Signal, signals
-from tolsim.run import TABLES_FOLDER
 from tolsim.spread.sampling import Draws, draw, factors
 from tolsim.study import StudyFile, open_study
 

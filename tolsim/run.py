@@ -18,7 +18,7 @@ import pandas as pd
 from joblib import Parallel, delayed, parallel_config
 
 from tolsim.answers.provenance import provenance_of, used_tables
-from tolsim.answers.results import SUMMARY_FILE, Results
+from tolsim.answers.results import SUMMARY_FILE, TABLES_FOLDER, Results
 from tolsim.answers.summary import summarise
 from tolsim.answers.unit_files import Columns, FrameColumns, UnitFiles, write_text
 from tolsim.design import Study
@@ -33,7 +33,6 @@ CHUNK = 128  # units stored together; a killed run loses at most one chunk per j
 LARGE_CHUNK = 256  # of long runs: fewer, larger files
 LONG_RUN = 4096  # units
 IDENTITY_FILE = "run.json"
-TABLES_FOLDER = "tables"
 
 Progress = Callable[[int, int], None]
 

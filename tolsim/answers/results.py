@@ -58,6 +58,7 @@ from tolsim.errors import RequestError
 
 SUMMARY_FILE = "summary.json"
 STUDY_FILE = "study.toml"
+TABLES_FOLDER = "tables"
 
 
 @dataclass(frozen=True)

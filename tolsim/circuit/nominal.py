@@ -23,6 +23,7 @@ KICKS = (0.2, 0.5, 1.0, 2.0)  # of the highest supply voltage, on the leading ne
 COARSE_STEPS = 64  # per cycle of the leading mode, while finding the orbit
 COARSE_CYCLES = 16
 TRIES = 5
+STILL_DYING = 0.97  # swing in the second half of the last cycles, relative to the first half
 SHOOTING_ROUNDS = 40
 PATIENCE = 3  # rounds that rival kicks get after the first has settled
 LEVEL_SHARE = 0.25
@@ -66,6 +67,8 @@ def find_nominal(case: Case, steps: int) -> Nominal:
     leading = modes(network, bias, shift)
     for attempt in range(TRIES):
         ends, window, step = _settle(network, bias, leading, shift, COARSE_CYCLES * 2**attempt)
+        if attempt and leading.growth[0] < 0 and _dying(network, window):
+            break
         guess = _first_guess(case, network, ends, window, step)
         if guess is None:
             continue
@@ -105,7 +108,7 @@ def _settle(
     network: Network, bias: Bias, leading: Modes, shift: float, cycles: int
 ) -> tuple[Floats, Floats, float]:
     """Integrate the kicked copies; return the last quarter of the run and its step."""
-    highest = max(float(np.max(volts)) for volts in network.known.values())
+    highest = _highest_supply(network)
     swing = np.max(np.abs(leading.vector[0]))
     mode = leading.vector[0].real / swing
     copies = network.take(np.zeros(len(KICKS), dtype=np.intp))
@@ -118,6 +121,18 @@ def _settle(
         samples = march(copies, x0, np.full(len(KICKS), step), count, phase_step)
     tail = samples[-(count // 4) - 1 :]
     return samples[-1], tail, step
+
+
+def _dying(network: Network, window: Floats) -> bool:
+    """Whether every kicked copy, small kick or large, still loses swing at the end of the run."""
+    nets = [i for name, i in network.index.items() if name not in network.branches]
+    half = len(window) // 2
+    before, after = (np.ptp(part[:, :, nets], axis=0).max(axis=1) for part in (window[:half], window[half:]))
+    return bool(np.all(after < STILL_DYING * before))
+
+
+def _highest_supply(network: Network) -> float:
+    return max(float(np.max(volts)) for volts in network.known.values())
 
 
 def _first_guess(
