@@ -146,6 +146,14 @@ def test_a_factor_that_does_not_vary_has_no_share():
     assert found.distinguishable.tolist() == [False, True]
 
 
+def test_few_failing_units_leave_some_replicates_without_any():
+    """Of 40 units 5 fail: one bootstrap sample in 200 holds none of them."""
+    u = np.random.default_rng(8).random((40, 2))
+    found = rank_factors(u, u[:, 0] > np.sort(u[:, 0])[-6], np.random.default_rng(10))
+    assert np.isfinite([found.share_low, found.share_high]).all()
+    assert found.distinguishable.tolist() == [True, False]
+
+
 def test_shapes_are_checked():
     with pytest.raises(ValueError, match=r"\(n, k\)"):
         rank_factors(np.zeros(4), np.zeros(4), np.random.default_rng(1))
