@@ -2,6 +2,7 @@
 
 import subprocess
 import sys
+import tarfile
 import tomllib
 import zipfile
 from importlib.metadata import version
@@ -40,19 +41,41 @@ def test_public_names_are_all_there():
         _ = tolsim.nothing
 
 
-@pytest.mark.slow
-def test_wheel_holds_package_tables_and_studies_only(tmp_path):
+def build(source, kind, target):
+    """File that hatchling builds of the project in `source`."""
     subprocess.run(  # noqa: S603 - our own interpreter
-        [sys.executable, "-m", "hatchling", "build", "-t", "wheel", "-d", str(tmp_path)],
-        cwd=ROOT,
+        [sys.executable, "-m", "hatchling", "build", "-t", kind, "-d", str(target)],
+        cwd=source,
         check=True,
         capture_output=True,
     )
-    (wheel,) = tmp_path.glob("*.whl")
-    names = zipfile.ZipFile(wheel).namelist()
+    (built,) = target.glob("*.whl" if kind == "wheel" else "*.tar.gz")
+    return built
+
+
+@pytest.mark.slow
+def test_wheel_holds_package_tables_and_studies_only(tmp_path):
+    wheel = zipfile.ZipFile(build(ROOT, "wheel", tmp_path))
+    names = wheel.namelist()
     tops = {name.split("/")[0] for name in names}
-    assert tops == {"tolsim", f"tolsim-{tolsim.__version__}.dist-info"}
+    information = f"tolsim-{tolsim.__version__}.dist-info"
+    assert tops == {"tolsim", information}
     for folder in ("distributions", "studies"):
         shipped = {Path(name).name for name in names if name.startswith(f"tolsim/_data/{folder}/")}
         assert shipped == {path.name for path in (ROOT / folder).glob("*.toml")}
-    assert "tolsim/report/templates" in {str(Path(name).parent) for name in names}
+    templates = {name for name in names if name.startswith("tolsim/report/templates/")}
+    assert len(templates) == len(list((ROOT / "tolsim/report/templates").iterdir()))
+    assert "# tolsim" in wheel.read(f"{information}/METADATA").decode()
+
+
+@pytest.mark.slow
+def test_wheel_made_from_the_source_archive_is_the_same(tmp_path):
+    with tarfile.open(build(ROOT, "sdist", tmp_path)) as archive:
+        archive.extractall(tmp_path, filter="data")
+    unpacked = tmp_path / f"tolsim-{tolsim.__version__}"
+    assert (unpacked / "tests" / "test_packaging.py").is_file()
+    for place in ("direct", "again"):
+        (tmp_path / place).mkdir()
+    direct = build(ROOT, "wheel", tmp_path / "direct")
+    again = build(unpacked, "wheel", tmp_path / "again")
+    assert sorted(zipfile.ZipFile(again).namelist()) == sorted(zipfile.ZipFile(direct).namelist())
