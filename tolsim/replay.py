@@ -14,7 +14,7 @@ import numpy as np
 import pandas as pd
 from numpy.typing import NDArray
 
-from tolsim.answers.bounds import bounds
+from tolsim.answers.bounds import Bound, bounds
 from tolsim.answers.results import STUDY_FILE, TABLES_FOLDER, Results
 from tolsim.answers.wording import shown
 from tolsim.circuit.orbit import Status
@@ -22,10 +22,15 @@ from tolsim.errors import RequestError
 from tolsim.evaluation import Plan, solve_case
 from tolsim.nominals import CaseName, prepare
 from tolsim.presentation import Signal, signals
+from tolsim.quantity import show
 from tolsim.spread.sampling import Draws, draw, factors
+from tolsim.stats.ranking import rank_correlation
 from tolsim.study import StudyFile, open_study
 
 UNUSUAL = 6  # factors named in the story
+FEWEST_UNITS = 20  # stored units from which a rank correlation means something
+CONFIDENCE = 0.95
+FINE_DIGITS = 6
 DRAW_TOLERANCE = 1e-12
 
 
@@ -74,10 +79,12 @@ def replay_unit(folder: Path | str, number: int) -> Replay:
         case, solution = solve_case(plan, name, draws)
         if prepared.nominal.found and solution.status[0] in (Status.SETTLED, Status.UNSTABLE):
             found[name] = tuple(signals(study, prepared.nominal, case, solution))
+    broken = _broken(opened, rows)
+    influence = _influence(results, draws.names, broken)
     story = (
-        *_outcome_story(opened, rows),
-        *_draw_story(draws, results),
-        *_neighbour(results, draws),
+        *_outcome_story(opened, rows, broken),
+        *_draw_story(draws, influence),
+        *_neighbour(results, draws, influence),
     )
     return Replay(number, rows, story, found)
 
@@ -107,73 +114,130 @@ def _compare_with_stored(results: Results, draws: Draws, number: int) -> None:
             )
 
 
-def _outcome_story(opened: StudyFile, rows: pd.DataFrame) -> list[str]:
-    """One sentence per case, with every limit it breaks."""
+@dataclass(frozen=True)
+class _Broken:
+    """A limit that the unit does not keep, in one case."""
+
+    bound: Bound
+    condition: str
+    state: str
+    value: float
+
+    def sentence(self, rule: str) -> str:
+        """By how much, and which rule."""
+        unit, figure, part = self.bound.figure.unit_of_measure, self.bound.figure, self.bound.part
+        who = f"{part} {figure.title.lower()}" if part else figure.title
+        above = self.bound.at_most is not None and self.value > self.bound.at_most
+        limit = self.bound.at_most if above else self.bound.at_least
+        side = "above" if above else "below"
+        value, edge = shown(self.value, unit), shown(limit, unit)
+        if value == edge and limit is not None:  # just over: more digits tell them apart
+            value, edge = show(self.value, unit, FINE_DIGITS), show(limit, unit, FINE_DIGITS)
+        return f"  {who} {value} is {side} {edge} ({rule})."
+
+
+def _broken(opened: StudyFile, rows: pd.DataFrame) -> list[_Broken]:
+    """Every limit the unit breaks, by case."""
     every = bounds(opened.study)
+    found = []
+    for row in rows.to_dict("records"):
+        numbers = {int(text) for text in str(row["failed_limits"]).split(";") if text}
+        for bound in every:
+            value = float(row.get(bound.column, np.nan))
+            over = bound.at_most is not None and value > bound.at_most
+            under = bound.at_least is not None and value < bound.at_least
+            if bound.limit in numbers and (over or under):
+                found.append(_Broken(bound, str(row["condition"]), str(row["state"]), value))
+    return found
+
+
+def _outcome_story(opened: StudyFile, rows: pd.DataFrame, broken: list[_Broken]) -> list[str]:
+    """One sentence per case, with every limit it breaks."""
     story = []
     for row in rows.to_dict("records"):
         where = f"{row['condition']} / {row['state']}"
-        status = Status[str(row["status"]).upper().replace(" ", "_")]
         if row["verdict"] == "pass":
             story.append(f"{where}: {row['outcome']}, within every limit.")
             continue
+        status = Status[str(row["status"]).upper().replace(" ", "_")]
         story.append(f"{where}: {row['outcome']}. {status.sentence}")
-        broken = {int(text) for text in str(row["failed_limits"]).split(";") if text}
-        for bound in every:
-            value = row.get(bound.column)
-            if bound.limit not in broken or value is None or not np.isfinite(value):
-                continue
-            unit = bound.figure.unit_of_measure
-            who = f"{bound.part} {bound.figure.title.lower()}" if bound.part else bound.figure.title
-            rule = opened.study.limits[bound.limit].rule
-            if bound.at_most is not None and value > bound.at_most:
-                limit = shown(bound.at_most, unit)
-                story.append(f"  {who} {shown(value, unit)} is above {limit} ({rule}).")
-            if bound.at_least is not None and value < bound.at_least:
-                limit = shown(bound.at_least, unit)
-                story.append(f"  {who} {shown(value, unit)} is below {limit} ({rule}).")
+        for one in broken:
+            if (one.condition, one.state) == (row["condition"], row["state"]):
+                story.append(one.sentence(opened.study.limits[one.bound.limit].rule))
     return story
 
 
-def _weights(results: Results, names: tuple[str, ...]) -> NDArray[np.float64]:
-    """How much each factor matters for pass or fail, or for the start margin; equal if unknown."""
-    for target in ("pass/fail", "start_margin"):
-        for entry in results.summary.get("ranking", []):
-            if entry["target"] == target and entry["factors"]:
-                shares = {row["factor"]: row["share"] or 0.0 for row in entry["factors"]}
-                weights = np.array([max(shares.get(name, 0.0), 0.0) for name in names])
-                if weights.sum() > 0:
-                    return weights / weights.sum()
-    return np.full(len(names), 1.0 / max(len(names), 1))
+@dataclass(frozen=True)
+class _Influence:
+    """How the factors of all stored units go with one figure."""
+
+    title: str
+    names: tuple[str, ...]
+    numbers: NDArray[np.int64]  # (N,) units
+    factors: NDArray[np.float64]  # (N, k)
+    correlation: NDArray[np.float64]  # (k,) rank correlation; 0 where it may be chance
+
+    @property
+    def weights(self) -> NDArray[np.float64]:
+        """Share of each factor, summing to 1; equal if none can be told apart."""
+        squares = self.correlation**2
+        total = squares.sum()
+        return squares / total if total > 0 else np.full(len(squares), 1 / max(len(squares), 1))
 
 
-def _draw_story(draws: Draws, results: Results) -> list[str]:
-    """The factors that are far out, those that matter first."""
-    distance = np.abs(draws.u[0] - 0.5) * np.sqrt(_weights(results, draws.names))
-    order = np.argsort(-distance)[:UNUSUAL]
+def _influence(results: Results, names: tuple[str, ...], broken: list[_Broken]) -> _Influence:
+    """What goes with the first broken limit, or with the start margin if none is broken."""
+    stored, units = results.factor_columns, results.unit_columns
+    table = np.column_stack([stored.column(name).to_numpy(float) for name in names])
+    numbers = stored.column("unit").to_numpy(np.int64)
+    if broken:
+        one = broken[0]
+        column, title = one.bound.column, f"{one.bound.part} {one.bound.figure.title.lower()}"
+        here = (units.column("condition") == one.condition) & (units.column("state") == one.state)
+    else:
+        column, title = "start_margin", "start margin"
+        here = units.column("unit") >= 0
+    if column not in units.names:
+        return _Influence(title, names, numbers, table, np.zeros(len(names)))
+    values = units.column(column)[here].groupby(units.column("unit")[here]).min()
+    target = values.reindex(numbers).to_numpy(float)
+    known = np.isfinite(target)
+    if known.sum() < FEWEST_UNITS:
+        return _Influence(title, names, numbers, table, np.zeros(len(names)))
+    r, low, high = rank_correlation(table[known], target[known], CONFIDENCE)
+    return _Influence(title, names, numbers, table, np.where((low > 0) | (high < 0), r, 0.0))
+
+
+def _draw_story(draws: Draws, influence: _Influence) -> list[str]:
+    """The draws that matter most for what is wrong with the unit."""
+    push = (draws.u[0] - 0.5) * influence.correlation
+    if not np.any(push):
+        return []
+    order = [k for k in np.argsort(-np.abs(push))[:UNUSUAL] if push[k] != 0]
     return [
-        "What is unusual about it (position among all units, 50 % is the middle):",
-        *(f"  {draws.names[column]}: {100 * draws.u[0, column]:.1f} %" for column in order),
+        f"What moves its {influence.title.strip()} (place among all units, 50 % is the middle):",
+        *(
+            f"  {draws.names[k]} at {100 * draws.u[0, k]:.0f} %: {'up' if push[k] > 0 else 'down'}"
+            for k in order
+        ),
     ]
 
 
-def _neighbour(results: Results, draws: Draws) -> list[str]:
+def _neighbour(results: Results, draws: Draws, influence: _Influence) -> list[str]:
     """The passing unit whose important factors are nearest."""
     units = results.unit_columns
     passed = (units.column("verdict") == "pass").groupby(units.column("unit")).all()
     if not passed.any() or passed.get(draws.first, False):
         return []
-    stored = results.factor_columns
-    table = np.column_stack([stored.column(name).to_numpy(float) for name in draws.names])
-    numbers = stored.column("unit").to_numpy()
+    table = influence.factors
     spread = np.where(table.std(axis=0) > 0, table.std(axis=0), 1.0)
     away = (table - draws.values[0]) / spread
-    gap = (away**2 * _weights(results, draws.names)).sum(axis=1)
-    gap[~passed.reindex(numbers).to_numpy(bool)] = np.inf
+    gap = (away**2 * influence.weights).sum(axis=1)
+    gap[~passed.reindex(influence.numbers).to_numpy(bool)] = np.inf
     nearest = int(np.argmin(gap))
-    leading = np.argsort(-np.abs(away[nearest]) * np.sqrt(_weights(results, draws.names)))[:3]
+    leading = np.argsort(-np.abs(away[nearest]) * np.sqrt(influence.weights))[:3]
     moves = ", ".join(f"{draws.names[k]} {away[nearest, k]:+.1f} sd" for k in leading)
-    return [f"Nearest passing unit: {numbers[nearest]}, which differs by {moves}."]
+    return [f"Nearest passing unit: {influence.numbers[nearest]}, which differs by {moves}."]
 
 
 def story_text(replay: Replay) -> str:
