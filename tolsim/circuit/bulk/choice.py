@@ -13,6 +13,7 @@ from __future__ import annotations
 from dataclasses import dataclass, field, fields
 
 import numpy as np
+from numpy.typing import NDArray
 
 from tolsim.circuit.bulk.plan import FastPlan, prepare_fast
 from tolsim.circuit.bulk.reference import NoReferenceError
@@ -107,7 +108,7 @@ class _Marks:
             (4 * finer.rms - self.rms) / 3,
         )
 
-    def errors(self, truth: _Marks, units: np.ndarray[tuple[int], np.dtype[np.bool_]]) -> Errors:
+    def errors(self, truth: _Marks, units: NDArray[np.bool_]) -> Errors:
         if not units.any():
             return Errors(np.inf, np.inf, np.inf)
 
@@ -140,13 +141,15 @@ def choose(
     # what one way of shooting does not settle at once serves as no reference
     quick = np.flatnonzero((coarse.status == Status.SETTLED) & (coarse.way == QUICK_WAY))
     if not quick.size:
-        return _shooting(coarse, Errors(np.inf, np.inf, np.inf), "no spread unit settles to judge by")
+        unknown = Errors(np.inf, np.inf, np.inf)
+        return _shooting(coarse, unknown, "no spread unit settles to judge by")
     probes, coarse = probes.take(quick), coarse.take(quick)
     fine = solve_units(probes, compass, 2 * steps)
     sound = fine.status == Status.SETTLED
     truth = _Marks.of(coarse).beyond(_Marks.of(fine))
     shot = _Marks.of(coarse).errors(truth, sound)
     reason = "the waveforms have edges that no affordable number of harmonics carries"
+    best: Choice | None = None
     order: int | None = _first_order(fine.take(np.flatnonzero(sound)), nominal, orders)
     for _ in range(ATTEMPTS):
         if order is None:
@@ -162,11 +165,16 @@ def choose(
         share = float(itself[sound].mean()) if sound.any() else 0.0
         errors = _Marks.of(solution).errors(truth, itself & sound)
         reason = f"{order} harmonics: {errors.excess:.2g} times the accuracy wanted"
-        if share >= FEWEST_SETTLED and errors.excess <= RESERVE:
-            return Choice(WAY, order, plan, errors, shot, share, reason)
         if share < FEWEST_SETTLED:
             reason = f"{order} harmonics: settles only {100 * share:.0f} % of the spread units"
+        elif best is None or errors.excess < best.errors.excess:
+            best = Choice(WAY, order, plan, errors, shot, share, reason)
+            if errors.excess <= RESERVE:
+                return best
         order = _next_order(order, max(errors.excess / RESERVE, 1.2), nominal, orders)
+    # short of the accuracy both ways, the smaller error serves
+    if best is not None and best.errors.excess < max(shot.excess, 1.0):
+        return best
     return _shooting(coarse, shot, reason)
 
 

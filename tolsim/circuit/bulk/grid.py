@@ -56,6 +56,7 @@ class Grid:
 
     @property
     def points(self) -> int:
+        """Points of the grid the devices are evaluated on."""
         return POINTS_PER_HARMONIC * self.harmonics
 
     @cached_property

@@ -1,7 +1,7 @@
 """Device elements evaluated in place on (m, U) slabs: one element, all grid points, U units.
 
-The same equations as `tolsim.circuit.devices`, without derivatives and without temporaries; per-unit
-numbers are rows of a parameter table (U,), and everything runs in the precision of the slabs.
+The same equations as `tolsim.circuit.devices`, without derivatives and temporaries; per-unit
+numbers are rows of a parameter table (U,); everything runs in the precision of the slabs.
 A ramp is written in units of its knee: with y = (u - offset)/s and S = s L(y), L = ln(1 + e^y),
 
     i = a S + b/2 S^2 = L (a s + b s^2/2 L).
@@ -28,6 +28,7 @@ from tolsim.circuit.devices import (
     SaturatingCore,
 )
 
+SQUARE_ROOT = 0.5  # the usual grading, several times faster than a general power
 Slab = NDArray[np.floating]  # (m, U) or (U,), float32 or float64
 Weights = tuple[tuple[int, float], ...]  # (port, weight) of one row of `sense` or `inject`
 Response = Callable[[Slab, "Rows", "Scratch"], "Slab | None"]
@@ -45,6 +46,7 @@ class Scratch:
 
     @classmethod
     def of(cls, points: int, units: int, dtype: type[np.floating]) -> Scratch:
+        """Scratch for slabs (points, units)."""
         shape = (points, units)
         quiet = float(np.log(np.finfo(dtype).eps)) - 2.0
         return cls(np.empty(shape, dtype), np.empty(shape, dtype), np.empty(shape, dtype), quiet)
@@ -153,7 +155,7 @@ def _junction(elements: Junctions, place: int) -> tuple[list[Floats], Response]:
         depth = np.maximum(u, 0, out=scratch.a)
         depth *= 1 / phi
         depth += 1
-        if grading == 0.5:
+        if grading == SQUARE_ROOT:
             np.sqrt(depth, out=depth)
         else:
             np.power(depth, 1 - grading, out=depth)

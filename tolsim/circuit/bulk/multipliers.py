@@ -37,7 +37,7 @@ def multipliers(
 
     Parameters
     ----------
-    coefficients : (K, N, n)
+    coefficients : (N, K, n)
         Fourier coefficients of the states.
     """
     found = np.empty((network.units, network.states), dtype=complex)
@@ -45,7 +45,7 @@ def multipliers(
     doubtful = np.arange(network.units)
     for steps in STEPS:
         found[doubtful] = _pass(
-            network.take(doubtful), coefficients[:, doubtful], period[doubtful], scale, steps
+            network.take(doubtful), coefficients[doubtful], period[doubtful], scale, steps
         )
         now = largest_beside_charge(found[doubtful])
         # halving the steps quarters the error: what the last halving moved is more than is left
@@ -90,19 +90,18 @@ def _reach(network: Network, matrices: StepMatrices, GH: Floats, x: Floats) -> F
 
 def _flow(network: Network, matrices: StepMatrices, coefficients: Floats) -> Floats:
     """Direction of the orbit at phase 0 in the coordinates u: dx + H W D dx, (N, n)."""
-    harmonics = len(coefficients) // 2
-    orders = np.arange(1, harmonics + 1)
-    slope = np.tensordot(orders, coefficients[harmonics + 1 :], axes=1)
-    x = coefficients[: harmonics + 1].sum(axis=0)
+    harmonics = coefficients.shape[1] // 2
+    orders = np.arange(1.0, harmonics + 1)
+    slope = orders @ coefficients[:, harmonics + 1 :]
+    x = coefficients[:, : harmonics + 1].sum(axis=1)
     _, _, conductance, capacitance = network.devices.evaluate(network.port_voltages(x))
     W = capacitance + matrices.c[:, None, None] * conductance
     return slope + apply(matrices.H @ W, slope @ network.D.T)
 
 
 def _values(coefficients: Floats, phases: Floats) -> Floats:
-    """States (m, N, n) at given phases."""
-    harmonics = len(coefficients) // 2
+    """States (m, N, n) at given phases; one small product per unit, whatever their number."""
+    harmonics = coefficients.shape[1] // 2
     angle = 2 * np.pi * phases[:, None] * np.arange(1, harmonics + 1)
     basis = np.concatenate([np.ones((len(phases), 1)), np.cos(angle), np.sin(angle)], axis=1)
-    _, units, n = coefficients.shape
-    return (basis @ coefficients.reshape(len(coefficients), -1)).reshape(-1, units, n)
+    return (basis @ coefficients).transpose(1, 0, 2)

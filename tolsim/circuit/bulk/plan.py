@@ -65,7 +65,7 @@ def prepare_fast(
     assert frame is not None
     grid = Grid(harmonics)
     hot = heated_junctions(case)
-    networks = (bare_network(case, bool(hot)), bare_network(pilots, bool(hot)))
+    networks = (bare_network(case), bare_network(pilots))
     topology = Topology.of(networks, frame.scale, hot)
     reference = settle_reference(case, nominal.solution, topology, grid)
     keys = tuple(compass.slopes)

@@ -21,7 +21,7 @@ from numpy.typing import NDArray
 
 from tolsim.circuit.bulk.grid import Grid
 from tolsim.circuit.bulk.kernels import Scratch, weighted
-from tolsim.circuit.bulk.unit_table import Topology, UnitTable, drive_spectra
+from tolsim.circuit.bulk.unit_table import Place, Topology, UnitTable, drive_spectra
 from tolsim.circuit.devices import Floats, Ints
 from tolsim.circuit.thermal import KELVIN, REFERENCE_C, mosfets
 from tolsim.design import Design
@@ -57,7 +57,13 @@ class Residual:
     """Work space for U units; `load` puts units into slots, `evaluate` gives R."""
 
     def __init__(
-        self, design: Design, table: UnitTable, topology: Topology, grid: Grid, anchor: Anchor, units: int
+        self,
+        design: Design,
+        table: UnitTable,
+        topology: Topology,
+        grid: Grid,
+        anchor: Anchor,
+        units: int,
     ) -> None:
         self.table, self.topology, self.grid, self.anchor = table, topology, grid, anchor
         self.units = units
@@ -97,7 +103,7 @@ class Residual:
         n, K, h = self.topology.states, self.grid.size, self.grid.harmonics
         x = z[: n * K].reshape(n, K, self.units)
         out = self._out[: n * K].reshape(n, K, self.units)
-        hot = z[self._out.shape[0] - len(self._hot) :] * HEAT_SCALE
+        hot = z[len(z) - len(self._hot) :] * HEAT_SCALE
         self._conduct(x, out)
         device = self._heat_devices(hot)
         drifts = self._heat_drifts(x, hot, out)
@@ -118,10 +124,10 @@ class Residual:
         ambient = self._rows("ambient")[0]
         for k, spot in enumerate(self._hot):
             rise = spot.thermal_resistance * (losses[k] + drifts[k])
-            self._out[self._out.shape[0] - len(self._hot) + k] = (hot[k] - ambient - rise) / HEAT_SCALE
+            self._out[k - len(self._hot)] = (hot[k] - ambient - rise) / HEAT_SCALE
         return self._out
 
-    def _products(self, places: tuple[tuple[int, int], ...], name: str, x: Floats, out: Floats) -> None:
+    def _products(self, places: tuple[Place, ...], name: str, x: Floats, out: Floats) -> None:
         for (i, j), entry in zip(places, self._rows(name), strict=True):
             np.multiply(x[j], entry, out=self._slab)
             out[i] += self._slab
@@ -146,7 +152,8 @@ class Residual:
         hot_kernels = {k: place for place, spot in enumerate(self._hot) for k in spot.kernels}
         losses = [np.zeros(self.units) for _ in self._hot]
         for k, kernel in enumerate(self.table.kernels):
-            amount = kernel.evaluate(self._v, tuple(device[self.table.kernel_rows[k]]), self._scratch)
+            rows = tuple(device[self.table.kernel_rows[k]])
+            amount = kernel.evaluate(self._v, rows, self._scratch)
             if amount is None:
                 continue
             for port, weight in kernel.inject:
@@ -246,6 +253,13 @@ def _combine(x: Floats, weights: tuple[tuple[int, float], ...], out: Floats) -> 
     return out
 
 
+def _channel(names: list[str], ref: str) -> tuple[int, int, int]:
+    forward, reverse, body = (
+        names.index(f"{ref}:{name}") for name in ("forward", "reverse", "body")
+    )
+    return forward, reverse, body
+
+
 def _hot_spots(design: Design, table: UnitTable, topology: Topology) -> tuple[HotSpot, ...]:
     names = [kernel.name for kernel in table.kernels]
     index = table.network.index
@@ -259,7 +273,7 @@ def _hot_spots(design: Design, table: UnitTable, topology: Topology) -> tuple[Ho
         spots.append(
             HotSpot(
                 ref,
-                (names.index(f"{ref}:forward"), names.index(f"{ref}:reverse"), names.index(f"{ref}:body")),
+                _channel(names, ref),
                 ends(part.drain, f"{ref}:drain"),
                 ends(part.gate, f"{ref}:gate"),
                 part.threshold_slope,

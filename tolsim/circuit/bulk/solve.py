@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import numpy as np
+from numpy.typing import NDArray
 
 from tolsim.circuit.bulk.chord import Iterated
 from tolsim.circuit.bulk.grid import synthesis
@@ -11,7 +12,7 @@ from tolsim.circuit.bulk.plan import FastPlan
 from tolsim.circuit.bulk.residual import HEAT_SCALE, LONGEST_LOG
 from tolsim.circuit.bulk.unit_table import TopologyError
 from tolsim.circuit.continuation import solve_units
-from tolsim.circuit.devices import Floats
+from tolsim.circuit.devices import Floats, Ints
 from tolsim.circuit.floquet import largest_beside_charge
 from tolsim.circuit.orbit import Solution, Status
 from tolsim.circuit.thermal import HIGHEST_C, Case
@@ -50,9 +51,12 @@ def solve_units_fast(case: Case, plan: FastPlan) -> Solution:
     return solution.put(left, again)
 
 
-def _taken(iterated: Iterated, units: np.ndarray[tuple[int], np.dtype[np.intp]]) -> Iterated:
+def _taken(iterated: Iterated, units: Ints) -> Iterated:
     return Iterated(
-        iterated.z[:, units], iterated.update[units], iterated.iterations[units], iterated.settled[units]
+        iterated.z[:, units],
+        iterated.update[units],
+        iterated.iterations[units],
+        iterated.settled[units],
     )
 
 
@@ -63,10 +67,10 @@ def _finish(case: Case, plan: FastPlan, iterated: Iterated) -> Solution:
     good = iterated.settled & np.isfinite(iterated.z).all(axis=0)
     z = np.where(good, iterated.z, plan.reference.z[:, None])
     scaled = z[: n * K].reshape(n, K, units)
-    coefficients = np.ascontiguousarray((scaled * topology.scale[:, None, None]).transpose(1, 2, 0))
+    coefficients = np.ascontiguousarray(scaled.transpose(2, 1, 0)) * topology.scale
     samples = np.empty((plan.steps + 1, units, n))
-    basis = synthesis(grid.harmonics, plan.steps)
-    np.matmul(basis, coefficients.reshape(K, -1), out=samples[:-1].reshape(plan.steps, -1))
+    # one product per unit: its bits do not depend on how many there are
+    samples[:-1] = (synthesis(grid.harmonics, plan.steps) @ coefficients).transpose(1, 0, 2)
     samples[-1] = samples[0]
     turned = np.zeros(units) if topology.driven else z[n * K]
     period = 2 * np.pi / (plan.reference.anchor.omega * np.exp(turned))
@@ -100,7 +104,7 @@ def _junctions(case: Case, plan: FastPlan, z: Floats) -> dict[str, Floats]:
 
 def _is_the_oscillation(
     scaled: Floats, turned: Floats, junctions: dict[str, Floats], plan: FastPlan
-) -> np.ndarray[tuple[int], np.dtype[np.bool_]]:
+) -> NDArray[np.bool_]:
     """Of a size, a frequency and a temperature that the nominal orbit makes credible."""
     nominal = plan.reference.z[: scaled.shape[0] * scaled.shape[1]].reshape(scaled.shape[:2])
     lead = int(np.argmax(np.linalg.norm(nominal[:, 1:], axis=1)))

@@ -50,6 +50,7 @@ class Topology:
 
     @property
     def states(self) -> int:
+        """Number of states n."""
         return len(self.scale)
 
     def unknowns(self, grid: Grid) -> int:
@@ -76,6 +77,7 @@ class UnitTable:
 
     @property
     def units(self) -> int:
+        """Number of units N."""
         return int(self.linear.shape[1])
 
     def take(self, units: Ints) -> UnitTable:
@@ -91,7 +93,7 @@ class UnitTable:
         TopologyError
             If a unit has an entry that the topology lacks.
         """
-        network = bare_network(case, bool(topology.heated))
+        network = bare_network(case)
         groups: dict[str, list[Floats]] = {
             "E": _entries(network.E, topology.storage, topology.scale),
             "F": _entries(network.F, topology.conduction, topology.scale),
@@ -138,9 +140,9 @@ def _stack(groups: dict[str, list[Floats]], units: int) -> tuple[dict[str, slice
     return entries, table
 
 
-def bare_network(case: Case, heated: bool) -> Network:
+def bare_network(case: Case) -> Network:
     """Transistors at 25 degC if their temperature is an unknown, at ambient if it is given."""
-    if heated:
+    if case.heated:
         return assemble(case.design, case.values)
     return case.network(case.cold_junctions())
 
