@@ -82,12 +82,19 @@ def test_nothing_seen_is_never_a_bare_zero():
 def test_verdict_follows_the_pattern():
     summary = bare(493, 7, 0, 0.9714, 0.9943)
     summary["limits"] = [
-        {"rule": "3 dB to start", "by_part": [], "units": 7, "first_units": [12, 40]}
+        {
+            "title": "Start margin",
+            "unit_of_measure": "dB",
+            "bound": {"at_most": None, "at_least": 3.0, "share_of_rating": None},
+            "by_part": [],
+            "units": 7,
+            "first_units": [12, 40],
+        }
     ]
     assert verdict_sentence(summary) == (
         "Of 500 simulated units, 493 pass every limit in every state and condition: yield "
-        "98.6 % (95 % interval 97.1 to 99.4 %). 0 undecided. Most common failure: 3 dB to start, "
-        "in 7 units, first 12."
+        "98.6 % (95 % interval 97.1 to 99.4 %). 0 undecided. Most often failed: start margin at "
+        "least 3 dB, in 7 units, first 12."
     )
 
 

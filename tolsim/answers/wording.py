@@ -109,13 +109,32 @@ def failures(summary: Summary) -> list[Failure]:
         if entry["units"]:
             parts = [part["part"] for part in entry["by_part"]]
             where = f" ({', '.join(parts)})" if parts else ""
-            found.append(Failure(entry["rule"] + where, entry["units"], entry["first_units"]))
+            name = f"{entry['title'][:1].lower()}{entry['title'][1:]} {bound_words(entry)}{where}"
+            found.append(Failure(name, entry["units"], entry["first_units"]))
     for entry in summary["outcomes"]:
         rest = entry["no_limit_broken"]
         if rest["units"]:
             name = f"{entry['outcome']} ({entry['condition']}, {entry['state']})"
             found.append(Failure(name, rest["units"], rest["first_units"]))
     return sorted(found, key=lambda failure: -failure.units)
+
+
+def bound_words(entry: Mapping[str, Any]) -> str:
+    """What a limit asks of its figure: "at most 80 % of rating", "at least 3 dB"."""
+    bound, unit = entry["bound"], entry["unit_of_measure"]
+    if bound["share_of_rating"] is not None:
+        return f"at most {100 * bound['share_of_rating']:.3g} % of rating"
+    return limits_words(bound["at_least"], bound["at_most"], unit)
+
+
+def limits_words(at_least: float | None, at_most: float | None, unit: str) -> str:
+    """Limits of a figure in words; empty without any."""
+    words = []
+    if at_least is not None:
+        words.append(f"at least {shown(at_least, unit)}")
+    if at_most is not None:
+        words.append(f"at most {shown(at_most, unit)}")
+    return ", ".join(words)
 
 
 def hardest(summary: Summary) -> list[tuple[float, Mapping[str, Any]]]:
@@ -149,7 +168,7 @@ def verdict_sentence(summary: Summary) -> str:
         worst = found[0]
         first = worst.first_units[0]
         units = f"unit {first}" if worst.units == 1 else f"{worst.units} units, first {first}"
-        return f"{sentence} Most common failure: {worst.name}, in {units}."
+        return f"{sentence} Most often failed: {worst.name}, in {units}."
     if not y["failed"]:
         unseen = percent(1.0 - y["low"])
         return f"{sentence} No failure was seen; up to {unseen} of units may still fail."

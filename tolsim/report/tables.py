@@ -11,7 +11,9 @@ from tolsim.answers.wording import (
     GOOD,
     NO_START,
     between,
+    bound_words,
     hardest,
+    limits_words,
     list_of_units,
     measured,
     percent,
@@ -176,32 +178,17 @@ def other_rows(summary: Summary) -> list[dict[str, str]]:
     ]
 
 
-def limits_words(at_least: float | None, at_most: float | None, unit: str) -> str:
-    """Limits of a figure in words; empty without any."""
-    words = []
-    if at_least is not None:
-        words.append(f"at least {shown(at_least, unit)}")
-    if at_most is not None:
-        words.append(f"at most {shown(at_most, unit)}")
-    return ", ".join(words)
-
-
 def limit_rows(summary: Summary) -> list[dict[str, Any]]:
     """One row per limit of the study: what it asks, how many units break it, and where."""
     rows = []
     for entry in summary["limits"]:
-        bound = entry["bound"]
-        words = limits_words(bound["at_least"], bound["at_most"], entry["unit_of_measure"])
-        if bound["share_of_rating"] is not None:
-            share = f"at most {100 * bound['share_of_rating']:.3g} % of rating"
-            words = f"{words}, {share}" if words else share
         parts = entry["by_part"]
         broken = [case for case in entry["by_case"] if case["units"]]
         rows.append(
             {
                 "rule": entry["rule"],
                 "figure": entry["title"],
-                "bound": words,
+                "bound": bound_words(entry),
                 "units": entry["units"],
                 "share": share_with_interval(entry),
                 "where": "; ".join(
