@@ -161,9 +161,11 @@ def _outcome_story(opened: StudyFile, rows: pd.DataFrame, broken: list[_Broken])
             continue
         status = Status[str(row["status"]).upper().replace(" ", "_")]
         story.append(f"{where}: {row['outcome']}. {status.sentence}")
-        for one in broken:
-            if (one.condition, one.state) == (row["condition"], row["state"]):
-                story.append(one.sentence(opened.study.limits[one.bound.limit].rule))
+        story += [
+            one.sentence(opened.study.limits[one.bound.limit].rule)
+            for one in broken
+            if (one.condition, one.state) == (row["condition"], row["state"])
+        ]
     return story
 
 

@@ -30,9 +30,7 @@ def main() -> None:
     began = time.perf_counter()
     nominal = find_nominal(Case(design, typical_values(design)), STEPS)
     nominal_time = time.perf_counter() - began
-    values = scattered(
-        typical_values(design, UNITS), np.random.default_rng(1), CIRCUIT_A_SPREAD
-    )
+    values = scattered(typical_values(design, UNITS), np.random.default_rng(1), CIRCUIT_A_SPREAD)
     keys = tuple(key for key, value in values.items() if np.ptp(value) > 0)
     case = Case(design, values)
     rates, ratios = [], []

@@ -127,7 +127,8 @@ def _dying(network: Network, window: Floats) -> bool:
     """Whether every kicked copy, small kick or large, still loses swing at the end of the run."""
     nets = [i for name, i in network.index.items() if name not in network.branches]
     half = len(window) // 2
-    before, after = (np.ptp(part[:, :, nets], axis=0).max(axis=1) for part in (window[:half], window[half:]))
+    parts = window[:half, :, nets], window[half:, :, nets]
+    before, after = (np.ptp(part, axis=0).max(axis=1) for part in parts)
     return bool(np.all(after < STILL_DYING * before))
 
 
