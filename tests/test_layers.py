@@ -36,7 +36,7 @@ FLOORS = [
     {"circuit.bulk.unit_table"},
     {"circuit.bulk.residual"},
     {"circuit.bulk.reference", "circuit.bulk.chord"},
-    {"circuit.bulk.prediction"},
+    {"circuit.bulk.prediction", "circuit.bulk.newton"},
     {"circuit.bulk.plan"},
     {"circuit.bulk.solve"},
     # figures of an orbit and what they are worth
@@ -62,7 +62,7 @@ FLOORS = [
     {"report.page", "report.unit_picture"},
     {"report"},
     # the corridor, and the faces
-    {"presentation", "recheck"},
+    {"crosscheck", "presentation", "recheck", "solver_choice"},
     {"run", "replay"},
     {"terminal"},
     {"cli"},

@@ -3,11 +3,12 @@
 from __future__ import annotations
 
 from collections.abc import Mapping, Sequence
-from dataclasses import dataclass
+from dataclasses import dataclass, field
 
 import numpy as np
 import pandas as pd
 
+from tolsim.circuit.bulk.choice import Choice
 from tolsim.circuit.continuation import solve_units
 from tolsim.circuit.devices import Floats
 from tolsim.circuit.orbit import Solution, Status
@@ -31,6 +32,7 @@ class Plan:
     tables: Mapping[str, SpreadTable]
     factors: tuple[Factor, ...]
     cases: Mapping[CaseName, PreparedCase]
+    choices: Mapping[CaseName, Choice] = field(default_factory=dict)  # none: shooting
 
 
 @dataclass(frozen=True)
@@ -42,12 +44,16 @@ class Chunk:
     factors: pd.DataFrame  # one row per unit
 
 
-def evaluate(plan: Plan, first: int, count: int) -> Chunk:
-    """Units `first` ... `first + count - 1` in every case."""
-    draws = draw(plan.factors, plan.study.run.seed, first, count)
-    tables = [case_rows(plan, name, draws) for name in plan.cases]
+def evaluate(plan: Plan, first: int, count: int, block: int) -> Chunk:
+    """Units `first` ... `first + count - 1` in every case.
+
+    Always `block` units are solved side by side, the surplus is dropped: so the last bits of a
+    unit do not depend on how many units the run has.
+    """
+    draws = draw(plan.factors, plan.study.run.seed, first, block)
+    tables = [case_rows(plan, name, draws).head(count) for name in plan.cases]
     rows = pd.concat(tables, ignore_index=True)
-    factors = pd.DataFrame(draws.values, columns=list(draws.names))
+    factors = pd.DataFrame(draws.values[:count], columns=list(draws.names))
     factors.insert(0, "unit", np.arange(first, first + count))
     return Chunk(first, rows, factors)
 
@@ -56,7 +62,11 @@ def solve_case(plan: Plan, name: CaseName, draws: Draws) -> tuple[Case, Solution
     """Orbits of the drawn units in one case."""
     values = part_values(plan.study, plan.tables, *name, draws)
     case = case_of(plan.study, values)
-    return case, solve_units(case, plan.cases[name].compass, plan.study.run.steps_per_cycle)
+    compass, steps = plan.cases[name].compass, plan.study.run.steps_per_cycle
+    choice = plan.choices.get(name)
+    if choice is None:
+        return case, solve_units(case, compass, steps)
+    return case, choice.solve(case, compass, steps)
 
 
 def case_figures(plan: Plan, name: CaseName, case: Case, solution: Solution) -> dict[str, Floats]:

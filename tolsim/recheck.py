@@ -13,14 +13,13 @@ from dataclasses import dataclass
 from typing import Any
 
 import numpy as np
-from numpy.typing import NDArray
 
 from tolsim.circuit.devices import Floats
-from tolsim.circuit.orbit import Solution, Status
+from tolsim.circuit.orbit import Solution, Status, joined
 from tolsim.circuit.thermal import Case
 from tolsim.circuit.transient import march
 from tolsim.evaluation import Plan, solve_case
-from tolsim.spread.sampling import Draws, draw
+from tolsim.spread.sampling import draw_chosen
 
 LEAST_UNITS = 4  # per case
 SHARE = 0.01
@@ -82,7 +81,7 @@ def _sample(plan: Plan) -> _Sample | None:
     units = plan.study.run.units
     count = min(units, MOST_UNITS, max(LEAST_UNITS, round(SHARE * units)))
     numbers = np.unique(np.linspace(0, units - 1, count).astype(int))
-    draws = _gather(plan, numbers)
+    draws = draw_chosen(plan.factors, plan.study.run.seed, numbers)
     cases, solutions, scales, lead = [], [], [], 0
     for name, prepared in plan.cases.items():
         frame = prepared.compass.nominal.frame
@@ -96,18 +95,7 @@ def _sample(plan: Plan) -> _Sample | None:
             scales.append(np.broadcast_to(frame.scale, (settled.size, len(frame.scale))))
     if not cases:
         return None
-    return _Sample(_side_by_side(cases), _joined(solutions), np.concatenate(scales), lead)
-
-
-def _gather(plan: Plan, numbers: NDArray[np.intp]) -> Draws:
-    """Draws of units that do not follow each other."""
-    each = [draw(plan.factors, plan.study.run.seed, int(number), 1) for number in numbers]
-    return Draws(
-        plan.factors,
-        int(numbers[0]),
-        np.concatenate([one.u for one in each]),
-        np.concatenate([one.values for one in each]),
-    )
+    return _Sample(_side_by_side(cases), joined(solutions), np.concatenate(scales), lead)
 
 
 def _side_by_side(cases: list[Case]) -> Case:
@@ -115,23 +103,6 @@ def _side_by_side(cases: list[Case]) -> Case:
         key: np.concatenate([case.values[key] for case in cases]) for key in cases[0].values
     }
     return Case(cases[0].design, values, cases[0].heated)
-
-
-def _joined(solutions: list[Solution]) -> Solution:
-    first = solutions[0]
-    return Solution(
-        status=np.concatenate([each.status for each in solutions]),
-        samples=np.concatenate([each.samples for each in solutions], axis=1),
-        period=np.concatenate([each.period for each in solutions]),
-        residual=np.concatenate([each.residual for each in solutions]),
-        multipliers=np.concatenate([each.multipliers for each in solutions]),
-        iterations=np.concatenate([each.iterations for each in solutions]),
-        junctions={
-            ref: np.concatenate([each.junctions[ref] for each in solutions])
-            for ref in first.junctions
-        },
-        way=np.concatenate([each.way for each in solutions]),
-    )
 
 
 def _differences(sample: _Sample, steps: int) -> tuple[Floats, Floats]:

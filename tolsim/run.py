@@ -21,17 +21,17 @@ from tolsim.answers.provenance import provenance_of, used_tables
 from tolsim.answers.results import SUMMARY_FILE, TABLES_FOLDER, Results
 from tolsim.answers.summary import summarise
 from tolsim.answers.unit_files import Columns, FrameColumns, UnitFiles, write_text
+from tolsim.crosscheck import crosscheck
 from tolsim.design import Study
 from tolsim.errors import RequestError
 from tolsim.evaluation import Chunk, Plan, evaluate
 from tolsim.nominals import prepare
 from tolsim.recheck import recheck
+from tolsim.solver_choice import choose_solvers, wants_bulk
 from tolsim.spread.sampling import factors
 from tolsim.study import StudyFile, open_study
 
 CHUNK = 128  # units stored together; a killed run loses at most one chunk per job
-LARGE_CHUNK = 256  # of long runs: fewer, larger files
-LONG_RUN = 4096  # units
 IDENTITY_FILE = "run.json"
 
 Progress = Callable[[int, int], None]
@@ -82,7 +82,13 @@ def run_study(
     if progress is not None:
         progress(0, opened.study.run.units)
     cases = prepare(opened.study, opened.tables, jobs)
-    plan = Plan(opened.study, opened.tables, factors(opened.study, opened.tables), cases)
+    names = factors(opened.study, opened.tables)
+    choices = (
+        choose_solvers(opened.study, opened.tables, names, cases, jobs)
+        if wants_bulk(opened.study)
+        else {}
+    )
+    plan = Plan(opened.study, opened.tables, names, cases, choices)
     unit_table, factor_table = _build(plan, jobs, store, progress)
     summary = summarise(
         opened.study,
@@ -138,11 +144,10 @@ def _build(
     """Evaluate all chunks that are not there yet; give the two tables."""
     units = plan.study.run.units
     finished = store.finished() if store is not None else {}
-    size = LARGE_CHUNK if units > LONG_RUN else CHUNK
     wanted = [
-        (first, min(size, units - first))
-        for first in range(0, units, size)
-        if finished.get(first) != min(size, units - first)
+        (first, min(CHUNK, units - first))
+        for first in range(0, units, CHUNK)
+        if finished.get(first) != min(CHUNK, units - first)
     ]
     done = units - sum(count for _, count in wanted)
     chunks: list[Chunk] = []
@@ -168,12 +173,12 @@ def _build(
 def _evaluated(plan: Plan, wanted: list[tuple[int, int]], jobs: int | None) -> Iterator[Chunk]:
     """Chunks as they finish, from worker processes if more than one is asked for."""
     if jobs == 1 or len(wanted) <= 1:
-        yield from (evaluate(plan, first, count) for first, count in wanted)
+        yield from (evaluate(plan, first, count, CHUNK) for first, count in wanted)
         return
     # the arrays of a unit are small: threads inside a worker would only get in the way
     with parallel_config(backend="loky", inner_max_num_threads=1):
         work = Parallel(n_jobs=jobs or -1, return_as="generator_unordered")
-        yield from work(delayed(evaluate)(plan, first, count) for first, count in wanted)
+        yield from work(delayed(evaluate)(plan, first, count, CHUNK) for first, count in wanted)
 
 
 def _quality(plan: Plan, units: Columns) -> dict[str, Any]:
@@ -189,6 +194,12 @@ def _quality(plan: Plan, units: Columns) -> dict[str, Any]:
         }
     ways = units.column("way").value_counts()
     answer["solved_by"] = {str(way): int(count) for way, count in ways.items()}
+    choices = {name: choice.record() for name, choice in plan.choices.items()}
+    answer["solvers"] = [
+        {"condition": condition, "state": state, **record}
+        for (condition, state), record in choices.items()
+    ]
+    answer["crosscheck"] = crosscheck(plan)
     return answer | recheck(plan)
 
 

@@ -81,3 +81,20 @@ class Solution:
             junctions[ref] = celsius.copy()
             junctions[ref][units] = other.junctions[ref]
         return replace(self, junctions=junctions, **merged)
+
+
+def joined(parts: list[Solution]) -> Solution:
+    """Solutions of several sets of units as one."""
+    first = parts[0]
+    return Solution(
+        status=np.concatenate([part.status for part in parts]),
+        samples=np.concatenate([part.samples for part in parts], axis=1),
+        period=np.concatenate([part.period for part in parts]),
+        residual=np.concatenate([part.residual for part in parts]),
+        multipliers=np.concatenate([part.multipliers for part in parts]),
+        iterations=np.concatenate([part.iterations for part in parts]),
+        junctions={
+            ref: np.concatenate([part.junctions[ref] for part in parts]) for ref in first.junctions
+        },
+        way=np.concatenate([part.way for part in parts]),
+    )

@@ -214,6 +214,17 @@ def draw(factors: Sequence[Factor], seed: int, first: int, count: int) -> Draws:
     return Draws(tuple(factors), first, u, values)
 
 
+def draw_chosen(factors: Sequence[Factor], seed: int, numbers: NDArray[np.intp]) -> Draws:
+    """Draw some units that need not follow each other; `first` is the lowest of them."""
+    each = [draw(factors, seed, int(number), 1) for number in numbers]
+    return Draws(
+        tuple(factors),
+        int(np.min(numbers)),
+        np.concatenate([one.u for one in each]),
+        np.concatenate([one.values for one in each]),
+    )
+
+
 def _stream(seed: int, name: str, first: int, count: int) -> NDArray[np.float64]:
     """Numbers `first` ... `first + count - 1` of the stream of a factor, in (0, 1).
 

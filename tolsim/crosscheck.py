@@ -1,0 +1,93 @@
+"""Two solvers, one truth: a share of the units is solved by shooting beside the bulk solver."""
+
+from __future__ import annotations
+
+from collections.abc import Mapping
+from typing import Any
+
+import numpy as np
+from numpy.typing import NDArray
+
+from tolsim.answers.bounds import bounds, named_figure, rating_of
+from tolsim.circuit.continuation import solve_units
+from tolsim.design import Study
+from tolsim.evaluation import Plan, solve_case
+from tolsim.figure_names import figures_of
+from tolsim.figures import measure_orbits
+from tolsim.nominals import CaseName
+from tolsim.spread.sampling import Draws, draw_chosen
+
+Floats = NDArray[np.float64]
+
+SHARE = 0.01
+LEAST_UNITS = 16
+WARNING = 0.005  # relative disagreement from which the verdict carries a warning
+FLOOR = 0.1  # of a bound or rating: smaller values are compared with this much of it
+ALWAYS = ("frequency", "supply_current", "input_power", "output_power")
+
+
+def crosscheck(plan: Plan) -> dict[str, Any]:
+    """Solve some units of every case served by the bulk solver by shooting as well.
+
+    Returns
+    -------
+    dict
+        {units, share, worst {figure, condition, state, difference} or None, warning}; empty if
+        shooting served every case.  Differences are relative, over stage figures and all figures
+        with a rating or limit.
+    """
+    served = {name: choice for name, choice in plan.choices.items() if choice.plan is not None}
+    if not served:
+        return {}
+    units = plan.study.run.units
+    wanted = min(units, max(-(-LEAST_UNITS // len(served)), round(SHARE * units)))
+    # any units will do, but the same ones every time the run is repeated
+    rng = np.random.default_rng([plan.study.run.seed, units])
+    numbers = np.sort(rng.choice(units, wanted, replace=False))
+    draws = draw_chosen(plan.factors, plan.study.run.seed, numbers)
+    found = [_compare(plan, name, draws) for name in served]
+    worst = max(found, key=lambda entry: entry["difference"])
+    return {
+        "units": wanted * len(served),
+        "share": wanted / units,
+        "worst": worst,
+        "warning": bool(worst["difference"] > WARNING),
+    }
+
+
+def _compare(plan: Plan, name: CaseName, draws: Draws) -> dict[str, Any]:
+    """Largest relative difference of any figure that matters, in one case."""
+    case, mine = solve_case(plan, name, draws)
+    steps = plan.study.run.steps_per_cycle
+    other = solve_units(case, plan.cases[name].compass, steps)
+    ours, theirs = measure_orbits(case, mine), measure_orbits(case, other)
+    figure, worst = "", 0.0
+    for column, floor in _floors(plan.study).items():
+        if column not in ours or column not in theirs:
+            continue
+        size = np.maximum(np.maximum(np.abs(ours[column]), np.abs(theirs[column])), floor)
+        gap = np.abs(ours[column] - theirs[column]) / np.where(size > 0, size, 1.0)
+        difference = float(np.nanmax(gap, initial=0.0))
+        if difference > worst:
+            figure, worst = column, difference
+    return {"figure": figure, "condition": name[0], "state": name[1], "difference": worst}
+
+
+def _floors(study: Study) -> Mapping[str, float]:
+    """Columns that are compared, each with the size below which a relative difference is moot."""
+    floors = dict.fromkeys(ALWAYS, 0.0)
+    for bound in bounds(study):
+        size = bound.at_most if bound.at_most is not None else bound.at_least
+        floors[bound.column] = FLOOR * abs(size or 0.0)
+    for ref, part in study.design.parts.items():
+        for figure_column in (f"{ref}.{name}" for name in _rated(part.kind)):
+            named = named_figure(study, figure_column)
+            rating = None if named is None else rating_of(study, *named)
+            if rating is not None:
+                floors.setdefault(figure_column, FLOOR * rating)
+    return floors
+
+
+def _rated(kind: str) -> tuple[str, ...]:
+    """Figures of a kind of part that are compared with a rating."""
+    return tuple(info.name for info in figures_of(kind) if info.rating is not None)

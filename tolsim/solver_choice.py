@@ -1,0 +1,93 @@
+"""Which solver serves each case of a run, measured on the study's own first units.
+
+Order and solver are decided in the first condition of every load state on spread pilot units
+(`circuit.bulk.choice`); the other conditions of that state take the same order.  The pilots are
+always the first units of the study, however many the run has, so that unit k comes out the same.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Mapping, Sequence
+from dataclasses import replace
+
+from joblib import Parallel, cpu_count, delayed, parallel_config
+
+from tolsim.circuit.bulk.choice import Choice, choose
+from tolsim.circuit.bulk.plan import prepare_fast
+from tolsim.circuit.bulk.reference import NoReferenceError
+from tolsim.circuit.bulk.unit_table import TopologyError
+from tolsim.circuit.thermal import Case
+from tolsim.design import Study
+from tolsim.nominals import CaseName, PreparedCase, case_of
+from tolsim.spread.part_values import part_values
+from tolsim.spread.sampling import Factor, draw
+from tolsim.spread.table import SpreadTable
+
+PILOTS = 256
+FAST_FROM = 4000  # units from which preparing the bulk solver pays when the study leaves it open
+
+
+def wants_bulk(study: Study) -> bool:
+    """Whether the bulk solver is to be tried: asked for, or left open in a long run."""
+    if study.run.solver == "auto":
+        return study.run.units >= FAST_FROM
+    return study.run.solver == "collocation"
+
+
+def choose_solvers(
+    study: Study,
+    tables: Mapping[str, SpreadTable],
+    factors: Sequence[Factor],
+    cases: Mapping[CaseName, PreparedCase],
+    jobs: int | None,
+) -> dict[CaseName, Choice]:
+    """Choose a solver for every case whose nominal unit has an orbit; shooting serves the others.
+
+    Parameters
+    ----------
+    jobs : int, optional
+        Worker processes; all cores if None.
+    """
+    states = tuple(dict.fromkeys(state for _, state in cases))
+    own = {
+        state: {
+            name: case for name, case in cases.items() if name[1] == state and case.nominal.found
+        }
+        for state in states
+    }
+    with parallel_config(backend="loky", inner_max_num_threads=1):
+        work = Parallel(n_jobs=min(jobs or cpu_count(), len(states)))
+        found = work(delayed(_choose_in_state)(study, tables, factors, own[s]) for s in states)
+    return {name: choice for part in found for name, choice in part.items()}
+
+
+def _choose_in_state(
+    study: Study,
+    tables: Mapping[str, SpreadTable],
+    factors: Sequence[Factor],
+    cases: Mapping[CaseName, PreparedCase],
+) -> dict[CaseName, Choice]:
+    """Choose in the first condition, follow in the others."""
+    draws = draw(factors, study.run.seed, 0, PILOTS)
+    found: dict[CaseName, Choice] = {}
+    first: Choice | None = None
+    for name, prepared in cases.items():
+        pilots = case_of(study, part_values(study, tables, *name, draws))
+        if first is None:
+            first = choose(prepared.nominal, prepared.compass, pilots, study.run.steps_per_cycle)
+            found[name] = first
+        else:
+            found[name] = _follow(first, prepared, pilots, study.run.steps_per_cycle)
+    return found
+
+
+def _follow(first: Choice, prepared: PreparedCase, pilots: Case, steps: int) -> Choice:
+    """The same solver and order in another condition."""
+    if first.plan is None:
+        return first
+    try:
+        plan = prepare_fast(prepared.nominal, prepared.compass, pilots, steps, first.harmonics)
+    except (NoReferenceError, TopologyError) as problem:
+        words = f"{first.harmonics} harmonics: {problem}"
+        return replace(first, solver="shooting", harmonics=0, plan=None, reason=words)
+    return replace(first, plan=plan)
