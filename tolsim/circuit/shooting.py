@@ -28,6 +28,7 @@ from tolsim.circuit.thermal import HIGHEST_C, Case
 TOLERANCE = 2e-5  # accepted Newton correction, relative to the amplitude of each state
 HEAT_TOLERANCE = 0.05  # K
 LONGEST_MOVE = 0.6  # of the amplitude, per round
+LONGEST_DRIVEN_MOVE = 10.0  # the same: a clocked stage is nearly linear, its guess far off
 LARGEST_PERIOD_MOVE = 0.08  # relative, per round
 HEAT_FROM = 0.05  # temperatures move once the correction is below this
 LARGEST_HEAT_MOVE = 40.0  # K per round
@@ -215,13 +216,11 @@ def _at_ceiling(here: Start, balance: dict[str, Floats]) -> NDArray[np.bool_]:
 def _advance(here: Start, move: Floats, warming: Floats, frame: Frame) -> Start:
     """Apply the correction, shortened where it is too long to be trusted."""
     n = here.x.shape[1]
-    # switches clocked from outside leave a nearly linear circuit: there the full step is best,
-    # even to a choke current thousands of times the one of the guess
-    share = np.ones(len(here.x))
+    longest = np.abs(move[:, :n]).max(axis=1)
+    limit = LONGEST_DRIVEN_MOVE if frame.driven else LONGEST_MOVE
+    share = np.minimum(1.0, limit / np.maximum(longest, 1e-300))
     period = here.period
     if not frame.driven:
-        longest = np.abs(move[:, :n]).max(axis=1)
-        share = np.minimum(share, LONGEST_MOVE / np.maximum(longest, 1e-300))
         share = np.minimum(share, LARGEST_PERIOD_MOVE / np.maximum(np.abs(move[:, n]), 1e-300))
         period = here.period * np.exp(share * move[:, n])
     x = here.x + share[:, None] * move[:, :n] * frame.scale
