@@ -19,10 +19,11 @@ from tolsim.circuit.bulk.plan import FastPlan, prepare_fast
 from tolsim.circuit.bulk.reference import NoReferenceError
 from tolsim.circuit.bulk.solve import WAY, solve_units_fast
 from tolsim.circuit.bulk.unit_table import TopologyError
-from tolsim.circuit.continuation import Compass, solve_units
+from tolsim.circuit.continuation import SHOOTING_ROUNDS, Compass, solve_units
 from tolsim.circuit.devices import Floats
 from tolsim.circuit.nominal import Nominal
 from tolsim.circuit.orbit import Solution, Status
+from tolsim.circuit.shooting import Start, shoot
 from tolsim.circuit.thermal import Case
 from tolsim.figures.waves import highest, largest, rms
 
@@ -30,7 +31,6 @@ ORDERS = (16, 24, 32, 40, 48, 56, 64, 80, 96, 128)
 PROBES = 64  # spread units that decide
 ATTEMPTS = 3  # orders tried
 LARGEST_SYSTEM = 3500  # unknowns: beyond, the inverse Jacobian costs more than it saves
-QUICK_WAY = "predicted"  # of shooting: without its fall-backs
 FREQUENCY_LIMIT = 1e-4
 WAVE_LIMIT = 1e-3  # peaks and rms
 FEWEST_SETTLED = 0.7  # share of the probes that collocation settles itself
@@ -137,14 +137,15 @@ def choose(
         TR-BDF2 steps per period of shooting, and even samples of every answer.
     """
     probes = pilots.take(np.arange(min(PROBES, pilots.units)))
-    coarse = solve_units(probes, compass, steps)
-    # what one way of shooting does not settle at once serves as no reference
-    quick = np.flatnonzero((coarse.status == Status.SETTLED) & (coarse.way == QUICK_WAY))
+    coarse = _shot(probes, compass, compass.start(probes), steps)
+    # what shooting does not settle at once serves as no reference
+    quick = np.flatnonzero(coarse.status == Status.SETTLED)
     if not quick.size:
         unknown = Errors(np.inf, np.inf, np.inf)
         return _shooting(coarse, unknown, "no spread unit settles to judge by")
     probes, coarse = probes.take(quick), coarse.take(quick)
-    fine = solve_units(probes, compass, 2 * steps)
+    begin = Start(coarse.samples[0], coarse.period, coarse.junctions)
+    fine = _shot(probes, compass, begin, 2 * steps)
     sound = fine.status == Status.SETTLED
     truth = _Marks.of(coarse).beyond(_Marks.of(fine))
     shot = _Marks.of(coarse).errors(truth, sound)
@@ -176,6 +177,13 @@ def choose(
     if best is not None and best.errors.excess < max(shot.excess, 1.0):
         return best
     return _shooting(coarse, shot, reason)
+
+
+def _shot(case: Case, compass: Compass, start: Start, steps: int) -> Solution:
+    """Orbits by shooting without its fall-backs."""
+    frame = compass.nominal.frame
+    assert frame is not None
+    return shoot(case, start, frame, steps, SHOOTING_ROUNDS, "probe", heat=compass.heat)
 
 
 def _shooting(tried: Solution, errors: Errors, reason: str) -> Choice:

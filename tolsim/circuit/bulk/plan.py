@@ -17,6 +17,7 @@ from tolsim.circuit.devices import Floats
 from tolsim.circuit.nominal import Nominal
 from tolsim.circuit.thermal import Case
 
+FEW_SLOTS = 4  # for the few units that need long iterations
 NOISE = 2e-6  # scaled update that single-precision devices may cost; above, they run in double
 
 
@@ -32,11 +33,12 @@ class FastPlan:
     single: bool  # devices in single precision
     steps: int  # even samples handed on per period
 
-    def residual(self, case: Case) -> Residual:
-        """Work space loaded with the units of a case."""
-        dtype = np.float32 if self.single else np.float64
+    def residual(self, case: Case, *, exact: bool = False) -> Residual:
+        """Work space for the units of a case; `exact`: few slots in double precision."""
+        slots = FEW_SLOTS if exact else SLOTS
+        dtype = np.float32 if self.single and not exact else np.float64
         table = UnitTable.of(case, self.topology, dtype)
-        return Residual(case.design, table, self.topology, self.grid, self.reference.anchor, SLOTS)
+        return Residual(case.design, table, self.topology, self.grid, self.reference.anchor, slots)
 
     def iterate(self, case: Case, start: Floats, tolerance: float = TOLERANCE) -> Iterated:
         """Chord iteration of every unit of a case."""

@@ -87,7 +87,8 @@ def settle_reference(case: Case, solution: Solution, topology: Topology, grid: G
         raise NoReferenceError(f"last update {last:.1e} at {grid.harmonics} harmonics")
     if np.abs(z - start).max() > LONGEST_MOVE:
         raise NoReferenceError("slipped to another orbit than shooting found")
-    return Reference(anchor, z, _inverse(residual, z).astype(np.float32))
+    # taken within `NEAR` of the orbit: spread units are much further away than that
+    return Reference(anchor, z, inverse.astype(np.float32))
 
 
 def _residual_at(residual: Residual, z: Floats) -> Floats:

@@ -2,31 +2,37 @@
 
 from __future__ import annotations
 
+from dataclasses import replace
+
 import numpy as np
 from numpy.typing import NDArray
 
 from tolsim.circuit.bulk.chord import Iterated
 from tolsim.circuit.bulk.grid import synthesis
 from tolsim.circuit.bulk.multipliers import multipliers
+from tolsim.circuit.bulk.newton import settle_stubborn
 from tolsim.circuit.bulk.plan import FastPlan
 from tolsim.circuit.bulk.residual import HEAT_SCALE, LONGEST_LOG
 from tolsim.circuit.bulk.unit_table import TopologyError
 from tolsim.circuit.continuation import solve_units
 from tolsim.circuit.devices import Floats, Ints
 from tolsim.circuit.floquet import largest_beside_charge
-from tolsim.circuit.orbit import Solution, Status
+from tolsim.circuit.orbit import Solution, Status, joined
 from tolsim.circuit.thermal import HIGHEST_C, Case
 
 BLOCK = 512  # units turned into samples together
 SMALLEST_SWING = 0.02  # of the nominal orbit's: below, it is another solution than the oscillation
+NEAR = 0.02  # last update of a chord iteration that is worth going on from
 WAY = "collocation"
+STUBBORN_WAY = "collocation, Newton"
 
 
 def solve_units_fast(case: Case, plan: FastPlan) -> Solution:
     """Orbit of every unit of a case.
 
-    Collocation settles nearly all; an orbit that does not settle, is unstable, or is not the
-    oscillation looked for goes to shooting with its own fall-backs (`continuation.solve_units`).
+    The chord iteration settles nearly all.  An orbit that does not settle, is unstable, or is not
+    the oscillation looked for is tried again by Newton-GMRES, then by shooting with its own
+    fall-backs (`continuation.solve_units`).
 
     Returns
     -------
@@ -44,11 +50,25 @@ def solve_units_fast(case: Case, plan: FastPlan) -> Solution:
         parts.append(_finish(case.take(units), plan, _taken(iterated, units)))
     solution = joined(parts)
     left = np.flatnonzero(solution.status != Status.SETTLED)
+    if left.size:
+        near = np.isfinite(iterated.update) & (iterated.update < NEAR)
+        begin = np.where(near, iterated.z, start)[:, left]
+        again = _settle_stubborn(case.take(left), plan, begin)
+        again.iterations[:] += solution.iterations[left]
+        solution = solution.put(left, again)
+    left = np.flatnonzero(solution.status != Status.SETTLED)
     if not left.size:
         return solution
     again = solve_units(case.take(left), plan.compass, plan.steps)
     again.iterations[:] += solution.iterations[left]
     return solution.put(left, again)
+
+
+def _settle_stubborn(case: Case, plan: FastPlan, start: Floats) -> Solution:
+    """Newton-GMRES."""
+    residual = plan.residual(case, exact=True)
+    solution = _finish(case, plan, settle_stubborn(residual, plan.reference.inverse, start))
+    return replace(solution, way=np.full(case.units, STUBBORN_WAY, dtype="U24"))
 
 
 def _taken(iterated: Iterated, units: Ints) -> Iterated:
@@ -114,20 +134,3 @@ def _is_the_oscillation(
     for celsius in junctions.values():
         sane &= celsius < HIGHEST_C
     return sane & (alive | plan.topology.driven)
-
-
-def joined(parts: list[Solution]) -> Solution:
-    """Solutions of several blocks as one."""
-    first = parts[0]
-    return Solution(
-        status=np.concatenate([part.status for part in parts]),
-        samples=np.concatenate([part.samples for part in parts], axis=1),
-        period=np.concatenate([part.period for part in parts]),
-        residual=np.concatenate([part.residual for part in parts]),
-        multipliers=np.concatenate([part.multipliers for part in parts]),
-        iterations=np.concatenate([part.iterations for part in parts]),
-        junctions={
-            ref: np.concatenate([part.junctions[ref] for part in parts]) for ref in first.junctions
-        },
-        way=np.concatenate([part.way for part in parts]),
-    )

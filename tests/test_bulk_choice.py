@@ -1,0 +1,79 @@
+"""The order and the solver are chosen on spread units, and the choice says what it measured."""
+
+from dataclasses import replace
+
+import numpy as np
+import pytest
+from circuits import CIRCUIT_A_SPREAD, circuit_a, scattered, typical_values
+
+from tolsim.circuit.bulk import choice as chosen
+from tolsim.circuit.bulk.choice import Choice, Errors, choose
+from tolsim.circuit.continuation import aim
+from tolsim.circuit.nominal import find_nominal
+from tolsim.circuit.thermal import Case
+
+STEPS, PILOTS = 128, 24
+
+
+@pytest.fixture(scope="module")
+def stage():
+    """Nominal unit, compass and pilots of circuit A."""
+    design = circuit_a()
+    nominal = find_nominal(Case(design, typical_values(design), heated=False), STEPS)
+    values = typical_values(design, PILOTS)
+    pilots = Case(design, scattered(values, np.random.default_rng(2), CIRCUIT_A_SPREAD), False)
+    keys = tuple(key for key in values if not key.endswith("largest_share"))
+    return nominal, aim(nominal, keys, STEPS), pilots
+
+
+@pytest.fixture(scope="module")
+def made(stage):
+    return choose(*stage, STEPS)
+
+
+def test_circuit_a_is_served_by_collocation_within_the_accuracy(made):
+    assert made.solver == "collocation"
+    assert made.harmonics >= 40
+    assert made.errors.frequency < 1e-4
+    assert max(made.errors.peak, made.errors.rms) < 1e-3
+    assert made.settled_share == 1.0
+
+
+def test_the_record_is_plain_and_complete(made):
+    record = made.record()
+    assert {"solver", "harmonics", "frequency_error", "peak_error", "rms_error"} <= record.keys()
+    assert all(isinstance(value, str | int | float) for value in record.values())
+
+
+def test_too_few_harmonics_are_noticed_and_left_to_shooting(stage, monkeypatch):
+    monkeypatch.setattr(chosen, "TAIL", 1.0)  # lets a hopeless order be tried
+    made = choose(*stage, STEPS, orders=(16,))
+    assert made.solver == "shooting"
+    assert made.plan is None
+    assert "16 harmonics" in made.reason
+
+
+def test_edges_that_no_order_carries_are_left_to_shooting(stage):
+    made = choose(*stage, STEPS, orders=(16, 24))
+    assert made.solver == "shooting"
+    assert "edges" in made.reason
+
+
+def test_the_next_order_follows_from_the_excess(stage):
+    nominal, orders = stage[0], (32, 48, 64, 96)
+    assert chosen._next_order(32, 1.2, nominal, orders) == 48
+    assert chosen._next_order(32, 12.0, nominal, orders) == 64
+    assert chosen._next_order(96, 2.0, nominal, orders) is None
+
+
+def test_errors_are_measured_against_their_own_limits():
+    assert Errors(1e-4, 0.0, 0.0).excess == pytest.approx(1.0)
+    assert Errors(0.0, 1e-3, 2e-3).excess == pytest.approx(2.0)
+
+
+def test_a_choice_without_plan_solves_by_shooting(stage, made):
+    _, compass, pilots = stage
+    units = pilots.take(np.arange(2))
+    shooting: Choice = replace(made, solver="shooting", plan=None)
+    assert list(shooting.solve(units, compass, STEPS).way) == ["predicted"] * 2
+    assert list(made.solve(units, compass, STEPS).way) == ["collocation"] * 2
