@@ -12,6 +12,7 @@ import quick_study
 
 from tolsim import run as corridor
 from tolsim.answers.results import Results
+from tolsim.circuit.shooting import TOLERANCE
 from tolsim.errors import RequestError, RunError
 from tolsim.replay import draw_replay, replay_unit, story_text
 from tolsim.run import run_study
@@ -65,7 +66,7 @@ def test_every_unit_has_a_row_with_verdict_and_figures(finished: Path) -> None:
 def test_same_seed_same_answer_whatever_the_chunks_and_units(
     finished: Path, tmp_path: Path
 ) -> None:
-    """Unit k is the same unit in a shorter run, to the last bit; with other chunks to 1e-6."""
+    """Unit k is the same to the last bit in a shorter run, nearly so with other chunks."""
     stored = pd.read_parquet(finished / "units.parquet").head(4)
     numbers = [name for name in stored.columns if stored[name].dtype == np.float64]
     with pytest.MonkeyPatch.context() as patch:
@@ -75,7 +76,7 @@ def test_same_seed_same_answer_whatever_the_chunks_and_units(
     other = run_study(write(tmp_path), units=4, jobs=1).units
     numbers.remove("orbit_residual")  # an error itself
     scale = stored[numbers].abs().max().clip(lower=1e-9)
-    assert ((other[numbers] - stored[numbers]).abs() / scale).max().max() < 1e-6
+    assert ((other[numbers] - stored[numbers]).abs() / scale).max().max() < TOLERANCE
     assert other["verdict"].tolist() == stored["verdict"].tolist()
 
 

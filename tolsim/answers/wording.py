@@ -168,11 +168,30 @@ def verdict_sentence(summary: Summary) -> str:
         worst = found[0]
         first = worst.first_units[0]
         units = f"unit {first}" if worst.units == 1 else f"{worst.units} units, first {first}"
-        return f"{sentence} Most often failed: {worst.name}, in {units}."
-    if not y["failed"]:
+        sentence = f"{sentence} Most often failed: {worst.name}, in {units}."
+    elif not y["failed"]:
         unseen = percent(1.0 - y["low"])
-        return f"{sentence} No failure was seen; up to {unseen} of units may still fail."
-    return sentence
+        sentence = f"{sentence} No failure was seen; up to {unseen} of units may still fail."
+    return " ".join([sentence, *doubts(summary)])
+
+
+def doubts(summary: Summary) -> list[str]:
+    """Warnings that belong beside the verdict: checks of the solution that did not agree."""
+    found = []
+    crosscheck = summary["quality"].get("crosscheck") or {}
+    if crosscheck.get("warning"):
+        worst = crosscheck["worst"]
+        found.append(
+            f"Warning: two solvers differ by {percent(worst['difference'])} in {worst['figure']}"
+            f" ({worst['condition']}, {worst['state']})."
+        )
+    again = summary["quality"].get("rechecked") or {}
+    if again.get("agreed", 0) < again.get("units", 0):
+        found.append(
+            f"Warning: {again['units'] - again['agreed']} of {again['units']} units solved again"
+            " in the time domain came out differently."
+        )
+    return found
 
 
 def confidence_words(summary: Summary) -> str:

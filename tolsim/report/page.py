@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import math
 from pathlib import Path
 from typing import Any
 
@@ -113,11 +114,32 @@ def _quality(quality: dict[str, Any]) -> list[tuple[str, str]]:
             f"worst difference {_ratio(again['worst_difference'])}"
         )
         words.append(("Solved again in the time domain", text))
+    words += _solvers(known.pop("solvers", []), known.pop("crosscheck", {}))
     return words + _lines(known)
 
 
+def _solvers(solvers: list[dict[str, Any]], crosscheck: dict[str, Any]) -> list[tuple[str, str]]:
+    """Which solver served each case and how far it was off on the pilot units."""
+    words = []
+    for entry in solvers:
+        order = f", {entry['harmonics']} harmonics" if entry["harmonics"] else ""
+        errors = ", ".join(
+            f"{name} {_ratio(entry[f'{name}_error'])}" for name in ("frequency", "peak", "rms")
+        )
+        name = f"Solver, {entry['condition']}, {entry['state']}"
+        words.append((name, f"{entry['solver']}{order}; largest errors on pilot units: {errors}"))
+    if crosscheck:
+        worst = crosscheck["worst"]
+        text = (
+            f"{crosscheck['units']}; largest difference {_ratio(worst['difference'])}"
+            f" ({worst['figure']}, {worst['condition']}, {worst['state']})"
+        )
+        words.append(("Units solved by both solvers", text))
+    return words
+
+
 def _ratio(value: float | None) -> str:
-    if value is None:
+    if value is None or not math.isfinite(value):
         return DASH
     return f"{100 * value:.2g} %" if abs(value) >= READABLE else f"{value:.1e}"
 
