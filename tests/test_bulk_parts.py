@@ -122,7 +122,8 @@ def test_coarse_multipliers_are_deflated_and_refine_to_those_of_shooting(nominal
     """Undeflated, the phase multiplier reads about 1.2 at 16 steps: it would look unstable."""
     network = nominal.case.network(nominal.solution.junctions)
     orbit = nominal.solution
-    coefficients = analyse(orbit.samples[:-1], 48).transpose(1, 0, 2)
+    waves = orbit.samples[:-1] / nominal.frame.scale
+    coefficients = analyse(waves, 48).transpose(2, 0, 1)
     truth = np.sort(np.abs(orbit.multipliers[0]))[::-1]
     for steps, tolerance in ((16, 0.03), (128, 2e-3)):
         found = _pass(network, coefficients, orbit.period, nominal.frame.scale, steps)

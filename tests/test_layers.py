@@ -32,8 +32,8 @@ FLOORS = [
     {"circuit.nominal"},
     {"circuit.continuation"},
     # the bulk solver
-    {"circuit.bulk.grid", "circuit.bulk.kernels", "circuit.bulk.multipliers"},
-    {"circuit.bulk.unit_table"},
+    {"circuit.bulk.grid", "circuit.bulk.kernels"},
+    {"circuit.bulk.unit_table", "circuit.bulk.multipliers"},
     {"circuit.bulk.residual"},
     {"circuit.bulk.reference", "circuit.bulk.chord"},
     {"circuit.bulk.prediction", "circuit.bulk.newton"},

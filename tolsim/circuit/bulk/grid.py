@@ -20,6 +20,7 @@ import numpy as np
 from tolsim.circuit.devices import Floats
 
 POINTS_PER_HARMONIC = 4
+WIDTH = 64  # units sampled in one product
 
 
 def synthesis(harmonics: int, points: int) -> Floats:
@@ -41,6 +42,22 @@ def analyse(samples: Floats, harmonics: int) -> Floats:
     coefficients[1 : kept + 1] = 2 * spectrum[1 : kept + 1].real
     coefficients[harmonics + 1 : harmonics + kept + 1] = -2 * spectrum[1 : kept + 1].imag
     return coefficients
+
+
+def sampled(coefficients: Floats, basis: Floats) -> Floats:
+    """Values (n, m, N) of coefficients (n, K, N) with a basis (m, K).
+
+    Always `WIDTH` units in one product, so that a unit's bits do not depend on their number.
+    """
+    n, size, units = coefficients.shape
+    values = np.empty((n, len(basis), units))
+    block = np.zeros((size, WIDTH))
+    for first in range(0, units, WIDTH):
+        here = slice(first, min(first + WIDTH, units))
+        for state in range(n):
+            block[:, : here.stop - first] = coefficients[state, :, here]
+            values[state, :, here] = (basis @ block)[:, : here.stop - first]
+    return values
 
 
 @dataclass(frozen=True)

@@ -20,6 +20,7 @@ from __future__ import annotations
 import numpy as np
 from numpy.typing import NDArray
 
+from tolsim.circuit.bulk.grid import sampled
 from tolsim.circuit.charge import islands
 from tolsim.circuit.devices import Floats
 from tolsim.circuit.floquet import largest_beside_charge, sorted_multipliers
@@ -37,15 +38,15 @@ def multipliers(
 
     Parameters
     ----------
-    coefficients : (N, K, n)
-        Fourier coefficients of the states.
+    coefficients : (n, K, N)
+        Fourier coefficients of the states over their scales.
     """
     found = np.empty((network.units, network.states), dtype=complex)
     before = np.full(network.units, np.inf)
     doubtful = np.arange(network.units)
     for steps in STEPS:
         found[doubtful] = _pass(
-            network.take(doubtful), coefficients[doubtful], period[doubtful], scale, steps
+            network.take(doubtful), coefficients[:, :, doubtful], period[doubtful], scale, steps
         )
         now = largest_beside_charge(found[doubtful])
         # halving the steps quarters the error: what the last halving moved is more than is left
@@ -62,7 +63,8 @@ def _pass(
 ) -> NDArray[np.complex128]:
     matrices = StepMatrices.of(network, period / steps)
     phases = (np.arange(steps)[:, None] + np.array([GAMMA, 1.0])).ravel() / steps
-    waves = _values(coefficients, np.concatenate([[0.0], phases]))
+    basis = _basis(coefficients.shape[1] // 2, np.concatenate([[0.0], phases]))
+    waves = sampled(coefficients, basis).transpose(1, 2, 0) * scale
     GH = matrices.G @ matrices.H
     start = _reach(network, matrices, GH, waves[0])
     here, identity = start, np.eye(network.states)
@@ -74,7 +76,7 @@ def _pass(
         last = k == steps - 1
         here = start if last else _reach(network, matrices, GH, waves[2 * k + 2])
     driven = network.drive_matrix is not None
-    flow = None if driven else _flow(network, matrices, coefficients)
+    flow = None if driven else _flow(network, matrices, waves[0], waves[-1])
     # an island's charge is the row (E + P C P') of its nets; in u it reads E + c F, a constant
     charges = islands(network) @ (network.E + matrices.c[:, None, None] * network.F)
     return sorted_multipliers(product, flow, scale, charges)
@@ -88,20 +90,17 @@ def _reach(network: Network, matrices: StepMatrices, GH: Floats, x: Floats) -> F
     return matrices.G + ((matrices.H @ capacitance - GH @ W) @ within) @ network.D
 
 
-def _flow(network: Network, matrices: StepMatrices, coefficients: Floats) -> Floats:
-    """Direction of the orbit at phase 0 in the coordinates u: dx + H W D dx, (N, n)."""
-    harmonics = coefficients.shape[1] // 2
-    orders = np.arange(1.0, harmonics + 1)
-    slope = orders @ coefficients[:, harmonics + 1 :]
-    x = coefficients[:, : harmonics + 1].sum(axis=1)
+def _flow(network: Network, matrices: StepMatrices, x: Floats, slope: Floats) -> Floats:
+    """Direction of the orbit in the coordinates u: dx + H W D dx, (N, n)."""
     _, _, conductance, capacitance = network.devices.evaluate(network.port_voltages(x))
     W = capacitance + matrices.c[:, None, None] * conductance
     return slope + apply(matrices.H @ W, slope @ network.D.T)
 
 
-def _values(coefficients: Floats, phases: Floats) -> Floats:
-    """States (m, N, n) at given phases; one small product per unit, whatever their number."""
-    harmonics = coefficients.shape[1] // 2
-    angle = 2 * np.pi * phases[:, None] * np.arange(1, harmonics + 1)
-    basis = np.concatenate([np.ones((len(phases), 1)), np.cos(angle), np.sin(angle)], axis=1)
-    return (basis @ coefficients).transpose(1, 0, 2)
+def _basis(harmonics: int, phases: Floats) -> Floats:
+    """Rows that give values at the phases, and a last one for the slope at phase 0."""
+    orders = np.arange(1.0, harmonics + 1)
+    angle = 2 * np.pi * phases[:, None] * orders
+    values = np.concatenate([np.ones((len(phases), 1)), np.cos(angle), np.sin(angle)], axis=1)
+    slope = np.concatenate([np.zeros(harmonics + 1), orders])
+    return np.concatenate([values, slope[None]])

@@ -76,6 +76,7 @@ class Residual:
         self._slab, self._stored = np.empty((K, units)), np.empty((n, K, units))
         self._v = np.empty((ports, m, units), dtype)
         self._f, self._q = np.empty_like(self._v), np.empty_like(self._v)
+        self._narrow = np.empty((K, units), dtype)
         self._scratch = Scratch.of(m, units, dtype.type)
         self._synthesis = grid.synthesis
         self._analysis = grid.analysis.astype(dtype)
@@ -172,14 +173,14 @@ class Residual:
     def _inject(self, out: Floats, stored: Floats) -> None:
         """P F_h into R, P Q into the stored charges (both through D' without the scales)."""
         for port, row in enumerate(self.table.network.D):
-            current, charge = self._analysis @ self._f[port], self._analysis @ self._q[port]
-            for state in np.flatnonzero(row):
-                if row[state] > 0:
-                    out[state] += current
-                    stored[state] += charge
-                else:
-                    out[state] -= current
-                    stored[state] -= charge
+            for wave, target in ((self._f, out), (self._q, stored)):
+                np.matmul(self._analysis, wave[port], out=self._narrow)
+                np.copyto(self._slab, self._narrow)
+                for state in np.flatnonzero(row):
+                    if row[state] > 0:
+                        target[state] += self._slab
+                    else:
+                        target[state] -= self._slab
 
     def _heat_devices(self, hot: Floats) -> NDArray[np.floating]:
         """Device rows at the junction temperatures (see `thermal.hot_values`)."""

@@ -8,7 +8,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from tolsim.circuit.bulk.chord import Iterated
-from tolsim.circuit.bulk.grid import synthesis
+from tolsim.circuit.bulk.grid import sampled, synthesis
 from tolsim.circuit.bulk.multipliers import multipliers
 from tolsim.circuit.bulk.newton import settle_stubborn
 from tolsim.circuit.bulk.plan import FastPlan
@@ -85,18 +85,18 @@ def _finish(case: Case, plan: FastPlan, iterated: Iterated) -> Solution:
     topology, grid = plan.topology, plan.grid
     n, K, units = topology.states, grid.size, case.units
     good = iterated.settled & np.isfinite(iterated.z).all(axis=0)
-    z = np.where(good, iterated.z, plan.reference.z[:, None])
+    z = iterated.z if good.all() else np.where(good, iterated.z, plan.reference.z[:, None])
     scaled = z[: n * K].reshape(n, K, units)
-    coefficients = np.ascontiguousarray(scaled.transpose(2, 1, 0)) * topology.scale
-    samples = np.empty((plan.steps + 1, units, n))
-    # one product per unit: its bits do not depend on how many there are
-    samples[:-1] = (synthesis(grid.harmonics, plan.steps) @ coefficients).transpose(1, 0, 2)
-    samples[-1] = samples[0]
+    waves = np.empty((n, plan.steps + 1, units))
+    waves[:, :-1] = sampled(scaled, synthesis(grid.harmonics, plan.steps))
+    waves[:, :-1] *= topology.scale[:, None, None]
+    waves[:, -1] = waves[:, 0]
+    samples = waves.transpose(1, 2, 0)
     turned = np.zeros(units) if topology.driven else z[n * K]
     period = 2 * np.pi / (plan.reference.anchor.omega * np.exp(turned))
     junctions = _junctions(case, plan, z)
     network = case.network(junctions)
-    found = multipliers(network, coefficients, period, topology.scale)
+    found = multipliers(network, scaled, period, topology.scale)
     good &= _is_the_oscillation(scaled, turned, junctions, plan)
     stable = largest_beside_charge(found) < 1.0
     status = np.where(stable, Status.SETTLED, Status.UNSTABLE)
