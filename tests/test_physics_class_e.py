@@ -99,7 +99,7 @@ def test_exact_solution_with_the_same_switch() -> None:
 
 
 def test_default_steps() -> None:
-    """At the default of 128 steps a hard-switched stage is within 0.2 %, its switch current 0.3 %."""
+    """At the default of 128 steps a hard-switched stage is within 0.2 %, switch current 0.3 %."""
     stage = exact.optimum(5.0, feed=1e3)
     known = exact.figures(stage)
     peak, power, switch_peak, switch_rms = normalised(figures_of(stage, 128))

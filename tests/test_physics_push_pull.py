@@ -63,7 +63,7 @@ def test_relay(q: float, frequency: float, peak: float, power: float) -> None:
 
 
 def test_current_mode_class_d() -> None:
-    """Q = 40: drain peak pi V, power pi^2 V^2 / 2R, currents and choke ripple of the ideal stage."""
+    """Q = 40: drain peak pi V, power pi^2 V^2 / 2R, currents, choke ripple of the ideal."""
     figures, waves = settle(40.0)
     supply, current = waves["a"].mean(), figures["supply_current"]
     assert figures["QA.drain_peak"] / supply == pytest.approx(pi, rel=3e-4)

@@ -9,6 +9,7 @@ capacitance matrix, which depends on the voltages through Cgd(vdg) and Cds(vds).
 from __future__ import annotations
 
 from dataclasses import astuple, dataclass
+from functools import cache
 
 import numpy as np
 from scipy.integrate import solve_ivp
@@ -152,6 +153,7 @@ def kicked(values: Values, size: float = 1.0) -> Array:
     return x
 
 
+@cache  # several tests ask for the nominal one
 def settled_orbit(values: Values, cycles: int = 80) -> Orbit:
     """Settled orbit: a kicked transient of about `cycles`, then Newton on the period map."""
     slope = slope_of(values)
