@@ -24,13 +24,15 @@ from tolsim.spread.sampling import Factor, draw
 from tolsim.spread.table import SpreadTable
 
 PILOTS = 256
-FAST_FROM = 4000  # units from which preparing the bulk solver pays when the study leaves it open
 
 
 def wants_bulk(study: Study) -> bool:
-    """Whether the bulk solver is to be tried: asked for, or left open in a long run."""
+    """Whether the bulk solver is to be tried: asked for, or left open in a run of some length.
+
+    A run shorter than the pilot set would spend more on the choice than on its units.
+    """
     if study.run.solver == "auto":
-        return study.run.units >= FAST_FROM
+        return study.run.units >= PILOTS
     return study.run.solver == "collocation"
 
 
