@@ -8,6 +8,7 @@ import pytest
 from circuits import CIRCUIT_A_SPREAD, circuit_a, scattered, typical_values
 
 from tolsim.circuit.bulk.chord import iterate
+from tolsim.circuit.bulk.newton import settle_stubborn
 from tolsim.circuit.bulk.plan import prepare_fast
 from tolsim.circuit.bulk.solve import WAY, solve_units_fast
 from tolsim.circuit.continuation import aim, solve_units
@@ -136,6 +137,17 @@ def test_pilots_improve_the_first_order_start(push_pull):
     ) @ x
     learnt = np.median(np.abs(start - end).max(axis=0))
     assert learnt < np.median(np.abs(straight - end).max(axis=0))
+
+
+def test_newton_comes_to_the_same_orbits_as_the_chord(push_pull):
+    plan, _, case = push_pull
+    units = case.take(np.arange(3))
+    end = plan.iterate(units, plan.predictor.start(units))
+    nominal = np.repeat(plan.reference.z[:, None], 3, axis=1)
+    residual = plan.residual(units, exact=True)
+    newton = settle_stubborn(residual, plan.reference.inverse, nominal)
+    assert newton.settled.all()
+    np.testing.assert_allclose(newton.z, end.z, atol=2e-4)
 
 
 def test_what_does_not_settle_goes_to_shooting(push_pull, monkeypatch):

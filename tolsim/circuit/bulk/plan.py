@@ -18,7 +18,7 @@ from tolsim.circuit.nominal import Nominal
 from tolsim.circuit.thermal import Case
 
 FEW_SLOTS = 4  # for the few units that need long iterations
-NOISE = 2e-6  # scaled update that single-precision devices may cost; above, they run in double
+NOISE = 1e-5  # scaled update that single precision may make; above, devices run in double
 
 
 @dataclass(frozen=True)

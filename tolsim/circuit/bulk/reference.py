@@ -98,7 +98,13 @@ def _residual_at(residual: Residual, z: Floats) -> Floats:
 
 def _inverse(residual: Residual, z: Floats) -> Floats:
     """Inverse of the Jacobian at z."""
-    return np.linalg.inv(jacobian(residual, z)).astype(np.float64)
+    matrix = jacobian(residual, z)
+    if not np.isfinite(matrix).all():
+        raise NoReferenceError("the Jacobian has entries that are no numbers")
+    try:
+        return np.linalg.inv(matrix).astype(np.float64)
+    except np.linalg.LinAlgError as problem:
+        raise NoReferenceError("the Jacobian is singular") from problem
 
 
 def jacobian(residual: Residual, z: Floats) -> Floats:

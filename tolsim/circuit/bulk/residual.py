@@ -78,7 +78,7 @@ class Residual:
         self._f, self._q = np.empty_like(self._v), np.empty_like(self._v)
         self._narrow = np.empty((K, units), dtype)
         self._scratch = Scratch.of(m, units, dtype.type)
-        self._synthesis = grid.synthesis
+        self._synthesis = grid.synthesis.astype(dtype)
         self._analysis = grid.analysis.astype(dtype)
         self._ports = [_port_weights(row, topology.scale) for row in table.network.D]
         self._spectra = drive_spectra(table.network, grid)
@@ -147,7 +147,8 @@ class Residual:
         for port, (weights, offset) in enumerate(zip(self._ports, self._rows("v0"), strict=True)):
             coefficients = _combine(x, weights, self._slab)
             coefficients[0] += offset
-            self._v[port] = self._synthesis @ coefficients
+            np.copyto(self._narrow, coefficients, casting="same_kind")
+            np.matmul(self._synthesis, self._narrow, out=self._v[port])
         self._f[:], self._q[:] = 0, 0
         amounts = {"current": self._f, "charge": self._q}
         hot_kernels = {k: place for place, spot in enumerate(self._hot) for k in spot.kernels}

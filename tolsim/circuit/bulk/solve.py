@@ -20,7 +20,7 @@ from tolsim.circuit.floquet import largest_beside_charge
 from tolsim.circuit.orbit import Solution, Status, joined
 from tolsim.circuit.thermal import HIGHEST_C, Case
 
-BLOCK = 512  # units turned into samples together
+BLOCK = 1024  # units turned into samples together
 SMALLEST_SWING = 0.02  # of the nominal orbit's: below, it is another solution than the oscillation
 NEAR = 0.02  # last update of a chord iteration that is worth going on from
 WAY = "collocation"
