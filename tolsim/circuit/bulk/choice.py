@@ -20,7 +20,7 @@ from tolsim.circuit.bulk.reference import NoReferenceError
 from tolsim.circuit.bulk.solve import WAY, solve_units_fast
 from tolsim.circuit.bulk.unit_table import TopologyError
 from tolsim.circuit.continuation import SHOOTING_ROUNDS, Compass, solve_units
-from tolsim.circuit.devices import Floats
+from tolsim.circuit.devices import Floats, Ints
 from tolsim.circuit.nominal import Nominal
 from tolsim.circuit.orbit import Solution, Status
 from tolsim.circuit.shooting import Start, shoot
@@ -30,12 +30,13 @@ from tolsim.figures.waves import highest, largest, rms
 ORDERS = (16, 24, 32, 40, 48, 56, 64, 80, 96, 128)
 PROBES = 64  # spread units that decide
 ATTEMPTS = 3  # orders tried
-LARGEST_SYSTEM = 3500  # unknowns: beyond, the inverse Jacobian costs more than it saves
+LARGEST_SYSTEM = 3000  # unknowns: beyond, the inverse Jacobian costs more than it saves
 FREQUENCY_LIMIT = 1e-4
 WAVE_LIMIT = 1e-3  # peaks and rms
 FEWEST_SETTLED = 0.7  # share of the probes that collocation settles itself
 RESERVE = 0.8  # of the accuracy: other units may be a little worse than the probes
 ORDER_POWER = 4.0  # errors fall about like harmonics to this power
+LAST_LINES = 8  # of a spectrum, that tell how it ends
 TAIL = 4e-4  # of a state's amplitude: what the first order tried may leave out
 
 
@@ -108,6 +109,15 @@ class _Marks:
             (4 * finer.rms - self.rms) / 3,
         )
 
+    def among(self, units: int, places: Ints) -> _Marks:
+        """The same marks among more units, NaN elsewhere."""
+        marks = []
+        for values in (self.frequency, self.peak, self.rms):
+            whole = np.full((*values.shape[:-1], units), np.nan)
+            whole[..., places] = values
+            marks.append(whole)
+        return _Marks(*marks)
+
     def errors(self, truth: _Marks, units: NDArray[np.bool_]) -> Errors:
         if not units.any():
             return Errors(np.inf, np.inf, np.inf)
@@ -137,21 +147,10 @@ def choose(
         TR-BDF2 steps per period of shooting, and even samples of every answer.
     """
     probes = pilots.take(np.arange(min(PROBES, pilots.units)))
-    coarse = _shot(probes, compass, compass.start(probes), steps)
-    # what shooting does not settle at once serves as no reference
-    quick = np.flatnonzero(coarse.status == Status.SETTLED)
-    if not quick.size:
-        unknown = Errors(np.inf, np.inf, np.inf)
-        return _shooting(coarse, unknown, "no spread unit settles to judge by")
-    probes, coarse = probes.take(quick), coarse.take(quick)
-    begin = Start(coarse.samples[0], coarse.period, coarse.junctions)
-    fine = _shot(probes, compass, begin, 2 * steps)
-    sound = fine.status == Status.SETTLED
-    truth = _Marks.of(coarse).beyond(_Marks.of(fine))
-    shot = _Marks.of(coarse).errors(truth, sound)
     reason = "the waveforms have edges that no affordable number of harmonics carries"
     best: Choice | None = None
-    order: int | None = _first_order(fine.take(np.flatnonzero(sound)), nominal, orders)
+    judge: _Judge | None = None
+    order = _first_order(nominal, orders)
     for _ in range(ATTEMPTS):
         if order is None:
             break
@@ -162,21 +161,56 @@ def choose(
             order = _next_order(order, 2.0, nominal, orders)
             continue
         solution = solve_units_fast(probes, plan)
+        judge = judge or _judge(probes, compass, steps, solution)
         itself = (solution.way == WAY) & (solution.status == Status.SETTLED)
-        share = float(itself[sound].mean()) if sound.any() else 0.0
-        errors = _Marks.of(solution).errors(truth, itself & sound)
+        share = float(itself[judge.sound].mean()) if judge.sound.any() else 0.0
+        errors = _Marks.of(solution).errors(judge.truth, itself & judge.sound)
         reason = f"{order} harmonics: {errors.excess:.2g} times the accuracy wanted"
         if share < FEWEST_SETTLED:
             reason = f"{order} harmonics: settles only {100 * share:.0f} % of the spread units"
         elif best is None or errors.excess < best.errors.excess:
-            best = Choice(WAY, order, plan, errors, shot, share, reason)
+            best = Choice(WAY, order, plan, errors, judge.errors, share, reason)
             if errors.excess <= RESERVE:
                 return best
         order = _next_order(order, max(errors.excess / RESERVE, 1.2), nominal, orders)
+    judge = judge or _judge(probes, compass, steps, None)
     # short of the accuracy both ways, the smaller error serves
-    if best is not None and best.errors.excess < max(shot.excess, 1.0):
+    if best is not None and best.errors.excess < max(judge.errors.excess, 1.0):
         return best
-    return _shooting(coarse, shot, reason)
+    share = float(judge.sound.mean())
+    return Choice("shooting", 0, None, judge.errors, judge.errors, share, reason)
+
+
+@dataclass(frozen=True)
+class _Judge:
+    """The reference, the probes that have one, and how far shooting at the study's steps is off."""
+
+    truth: _Marks
+    sound: NDArray[np.bool_]
+    errors: Errors
+
+
+def _judge(probes: Case, compass: Compass, steps: int, near: Solution | None) -> _Judge:
+    """Shoot at the study's steps and at twice as many, from orbits near by where there are some."""
+    start = compass.start(probes)
+    if near is not None:
+        settled = near.status == Status.SETTLED
+        start.x[settled] = near.samples[0, settled]
+        start.period[settled] = near.period[settled]
+        for ref, celsius in near.junctions.items():
+            start.junctions[ref][settled] = celsius[settled]
+    coarse = _shot(probes, compass, start, steps)
+    # what shooting does not settle at once serves as no reference
+    quick = np.flatnonzero(coarse.status == Status.SETTLED)
+    coarse = coarse.take(quick)
+    begin = Start(coarse.samples[0], coarse.period, coarse.junctions)
+    fine = _shot(probes.take(quick), compass, begin, 2 * steps)
+    truth = _Marks.of(coarse).beyond(_Marks.of(fine))
+    both = fine.status == Status.SETTLED
+    errors = _Marks.of(coarse).errors(truth, both)
+    sound = np.zeros(probes.units, dtype=bool)
+    sound[quick] = both
+    return _Judge(truth.among(probes.units, quick), sound, errors)
 
 
 def _shot(case: Case, compass: Compass, start: Start, steps: int) -> Solution:
@@ -186,22 +220,18 @@ def _shot(case: Case, compass: Compass, start: Start, steps: int) -> Solution:
     return shoot(case, start, frame, steps, SHOOTING_ROUNDS, "probe", heat=compass.heat)
 
 
-def _shooting(tried: Solution, errors: Errors, reason: str) -> Choice:
-    share = float(np.mean(tried.status == Status.SETTLED))
-    return Choice("shooting", 0, None, errors, errors, share, reason)
-
-
-def _first_order(orbits: Solution, nominal: Nominal, orders: tuple[int, ...]) -> int | None:
-    """The first order that leaves out next to nothing of the waveforms that shooting found."""
-    waves = orbits.samples[:-1]
-    if waves.shape[1] == 0:
-        return None
+def _first_order(nominal: Nominal, orders: tuple[int, ...]) -> int | None:
+    """The first order that leaves out next to nothing of the nominal waveforms."""
+    waves = nominal.solution.samples[:-1]
     lines = np.abs(np.fft.rfft(waves, axis=0)) * 2 / len(waves)
     size = np.maximum(0.5 * np.ptp(waves, axis=0), 1e-2 * np.abs(waves).max(axis=0))
     size = np.maximum(size, 1e-6 * size.max())
     strength = (lines / size).max(axis=(1, 2))
+    end = len(strength) - 1
     for order in _affordable(nominal, orders):
-        if order >= len(strength) - 1 or strength[order + 1 :].max() < TAIL:
+        # beyond what the samples can show, lines go on falling about like this
+        left = strength[min(order + 1, end - LAST_LINES) :].max() * min(1.0, end / order) ** 3
+        if left < TAIL:
             return order
     return None
 
