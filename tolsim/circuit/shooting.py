@@ -124,7 +124,8 @@ def shoot(
         still = np.abs(warming).max(axis=1, initial=0.0)
         swing = np.ptp(cycle.samples[:, :, frame.lead], axis=0) / frame.scale[frame.lead]
         alive = frame.driven | (swing > SMALLEST_SWING)
-        done = (size < TOLERANCE) & (still < HEAT_TOLERANCE) & cycle.settled & alive
+        runaway = (size < HEAT_FROM) & _at_ceiling(here, balance)
+        done = (size < TOLERANCE) & (still < HEAT_TOLERANCE) & cycle.settled & alive & ~runaway
         if done.any():
             picked = np.flatnonzero(done)
             if members is None:
@@ -132,8 +133,7 @@ def shoot(
             charges = charge_rows(network.take(picked), members, here.x[picked])
             _record(found, active[picked], picked, cycle, here, size, frame, charges)
         lost = ~np.isfinite(size) | ~alive | ~cycle.settled
-        runaway = (size < HEAT_FROM) & _at_ceiling(here, balance)
-        found.status[active[runaway & ~done]] = Status.NO_THERMAL_BALANCE
+        found.status[active[runaway]] = Status.NO_THERMAL_BALANCE
         found.iterations[active] = round_
         if patience is not None and np.any(found.status == Status.SETTLED):
             rounds_left = patience if rounds_left is None else rounds_left - 1
