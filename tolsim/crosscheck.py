@@ -22,7 +22,6 @@ Floats = NDArray[np.float64]
 SHARE = 0.01
 LEAST_UNITS = 16
 WARNING = 0.005  # relative disagreement from which the verdict carries a warning
-FLOOR = 0.1  # of a bound or rating: smaller values are compared with this much of it
 ALWAYS = ("frequency", "supply_current", "input_power", "output_power")
 
 
@@ -33,8 +32,9 @@ def crosscheck(plan: Plan) -> dict[str, Any]:
     -------
     dict
         {units, share, worst {figure, condition, state, difference} or None, warning}; empty if
-        shooting served every case.  Differences are relative, over stage figures and all figures
-        with a rating or limit.
+        shooting served every case.  Differences are over stage figures and all figures with a
+        rating or limit, relative to the value or to that limit, whichever is larger: a narrow
+        current spike is right to a few percent of itself, which matters only near its limit.
     """
     served = {name: choice for name, choice in plan.choices.items() if choice.plan is not None}
     if not served:
@@ -74,17 +74,17 @@ def _compare(plan: Plan, name: CaseName, draws: Draws) -> dict[str, Any]:
 
 
 def _floors(study: Study) -> Mapping[str, float]:
-    """Columns that are compared, each with the size below which a relative difference is moot."""
+    """Columns that are compared, each with its limit or rating (0 without one)."""
     floors = dict.fromkeys(ALWAYS, 0.0)
     for bound in bounds(study):
         size = bound.at_most if bound.at_most is not None else bound.at_least
-        floors[bound.column] = FLOOR * abs(size or 0.0)
+        floors[bound.column] = abs(size or 0.0)
     for ref, part in study.design.parts.items():
         for figure_column in (f"{ref}.{name}" for name in _rated(part.kind)):
             named = named_figure(study, figure_column)
             rating = None if named is None else rating_of(study, *named)
             if rating is not None:
-                floors.setdefault(figure_column, FLOOR * rating)
+                floors.setdefault(figure_column, rating)
     return floors
 
 

@@ -78,14 +78,15 @@ def run_study(
     opened = study if isinstance(study, StudyFile) else open_study(study)
     opened = replace(opened, study=_with_request(opened.study, units, seed))
     record = provenance_of(opened)
-    store = None if out is None else _open_folder(Path(out), record)
+    bulk = wants_bulk(opened.study)
+    store = None if out is None else _open_folder(Path(out), record, bulk=bulk)
     if progress is not None:
         progress(0, opened.study.run.units)
     cases = prepare(opened.study, opened.tables, jobs)
     names = factors(opened.study, opened.tables)
     choices = (
         choose_solvers(opened.study, opened.tables, names, cases, jobs)
-        if wants_bulk(opened.study)
+        if bulk
         else {}
     )
     plan = Plan(opened.study, opened.tables, names, cases, choices)
@@ -116,15 +117,16 @@ def _with_request(study: Study, units: int | None, seed: int | None) -> Study:
     return study.model_copy(update={"run": study.run.model_copy(update=changes)})
 
 
-def _open_folder(folder: Path, record: Mapping[str, Any]) -> UnitFiles:
+def _open_folder(folder: Path, record: Mapping[str, Any], *, bulk: bool) -> UnitFiles:
     """Make the results folder, or find the finished chunks of the same run in it."""
     identity_file = folder / IDENTITY_FILE
     # more units of the same run are welcome: unit k is the same unit whatever their number
     identity = {key: record[key] for key in ("seed", "study_sha256", "tables", "versions")}
+    identity["solver"] = "measured" if bulk else "shooting"
     if identity_file.exists():
         if json.loads(identity_file.read_text(encoding="utf-8")) != identity:
             raise RequestError(
-                f"'{folder}' holds a run of another study, seed or version."
+                f"'{folder}' holds a run of another study, seed or version (or a much shorter run)."
                 " Name another folder with --out, or remove it first."
             )
     elif folder.exists() and any(folder.iterdir()):

@@ -24,15 +24,13 @@ from tolsim.spread.sampling import Factor, draw
 from tolsim.spread.table import SpreadTable
 
 PILOTS = 256
+LONG_RUN = 2000  # units from which preparing the bulk solver pays, even for stages of 25 states
 
 
 def wants_bulk(study: Study) -> bool:
-    """Whether the bulk solver is to be tried: asked for, or left open in a run of some length.
-
-    A run shorter than the pilot set would spend more on the choice than on its units.
-    """
+    """Whether the bulk solver is to be tried: asked for, or left open in a long run."""
     if study.run.solver == "auto":
-        return study.run.units >= PILOTS
+        return study.run.units >= LONG_RUN
     return study.run.solver == "collocation"
 
 

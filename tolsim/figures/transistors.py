@@ -25,9 +25,12 @@ def mosfet(
 
     Notes
     -----
-    Voltages are those at the terminals.  The channel's loss counts as conduction where the
-    channel is ohmic (vds < vgs - Vt) and as switching where it is saturated: there the drain
-    voltage has not collapsed yet, or has come back already.
+    Voltages are those at the terminals, and so is the drain current: with the charge that goes
+    into and out of the drain's capacitances, without what circulates inside (the output
+    capacitance discharging through the channel is a loss, not a current of the terminal).
+    The channel's loss counts as conduction where the channel is ohmic (vds < vgs - Vt) and as
+    switching where it is saturated: there the drain voltage has not collapsed yet, or has come
+    back already.
     """
     inner_gate, inner_drain = waves.port(f"{ref}:gs"), waves.port(f"{ref}:ds")
     drain = waves.across(part.drain, part.source_net)
@@ -42,7 +45,7 @@ def mosfet(
     switching = mean(np.where(ohmic, 0.0, power))
     body_loss = mean(body * inner_drain)
     turn_on = _at_turn_on(inner_gate - threshold, inner_drain)
-    conducted = channel + body
+    drawn = _drain_current(ref, part, waves, channel + body)
     return {
         "drain_peak": highest(drain),
         "drain_negative_peak": np.maximum(-lowest(drain), 0.0),
@@ -51,8 +54,8 @@ def mosfet(
         "gate_peak": largest(gate),
         "gate_positive_peak": highest(gate),
         "gate_negative_peak": np.maximum(-lowest(gate), 0.0),
-        "drain_current_peak": largest(conducted),
-        "drain_current_rms": rms(conducted),
+        "drain_current_peak": largest(drawn),
+        "drain_current_rms": rms(drawn),
         "dissipation": conduction + switching + body_loss + gate_loss,
         "conduction_loss": conduction,
         "switching_loss": switching,
@@ -60,6 +63,14 @@ def mosfet(
         "gate_loss": gate_loss,
         "junction_temperature": junction,
     }
+
+
+def _drain_current(ref: str, part: Mosfet, waves: Waves, conducted: Floats) -> Floats:
+    """Current into the drain terminal, (m, N)."""
+    inner = f"{ref}:drain"
+    if inner in waves.network.index:
+        return waves.series_current(part.drain, inner)
+    return conducted + waves.rate(waves.charge(f"{ref}:gd") + waves.charge(f"{ref}:ds"))
 
 
 def _series(waves: Waves, outer: str, inner: str) -> Floats:

@@ -13,7 +13,7 @@ from functools import cached_property
 import numpy as np
 
 from tolsim.circuit.bulk.kernels import element_currents
-from tolsim.circuit.devices import Floats
+from tolsim.circuit.devices import Floats, Junctions
 from tolsim.circuit.network import Network
 from tolsim.circuit.orbit import Solution
 from tolsim.parts import Capacitor
@@ -49,6 +49,13 @@ class Waves:
     def currents(self) -> dict[str, Floats]:
         """Current of every nonlinear element, along its own controlling direction."""
         return element_currents(self.network.devices, self.ports.transpose(2, 0, 1))
+
+    def charge(self, name: str) -> Floats:
+        """Charge of one junction element ("Q1:ds"), C, (m, N)."""
+        for elements in self.network.devices.elements:
+            if isinstance(elements, Junctions) and name in elements.names:
+                return elements.only(name).respond_along(self.ports.transpose(2, 0, 1))
+        raise KeyError(name)
 
     def net(self, name: str) -> Floats:
         """Voltage of a net."""
