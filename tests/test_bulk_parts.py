@@ -30,9 +30,7 @@ def some_devices(units):
     return Devices(
         (
             Ramps(("r",), see, act, 1.2 * around, np.array([[0.1]]), around, 3 * around),
-            Ramps(
-                ("far",), see, act, 90 * around, np.array([[0.1]]), around, np.zeros((1, units))
-            ),
+            Ramps(("far",), see, act, 90 * around, np.array([[0.1]]), around, np.zeros((1, units))),
             Junctions(("j",), see, see.T, around, np.array([[0.8]]), np.array([[0.5]])),
             Junctions(("k",), see, see.T, around, np.array([[0.7]]), np.array([[0.33]])),
             BiasedCapacitors(("b",), see, see.T, around, np.array([[5.0]]), np.array([[0.2]])),

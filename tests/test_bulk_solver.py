@@ -14,8 +14,8 @@ from tolsim.circuit.bulk.solve import WAY, solve_units_fast
 from tolsim.circuit.continuation import aim, solve_units
 from tolsim.circuit.nominal import find_nominal
 from tolsim.circuit.orbit import Status
+from tolsim.circuit.periodic import highest, rms
 from tolsim.circuit.thermal import Case
-from tolsim.figures.waves import highest, rms
 
 STEPS, HARMONICS, PILOTS = 128, 32, 48
 
@@ -132,9 +132,9 @@ def test_pilots_improve_the_first_order_start(push_pull):
     start = plan.predictor.start(fresh)
     end = plan.iterate(fresh, start).z
     x = plan.predictor.deviations(fresh)
-    straight = plan.predictor.origin[:, None] + np.stack(
-        list(plan.predictor.slopes.values()), axis=1
-    ) @ x
+    straight = (
+        plan.predictor.origin[:, None] + np.stack(list(plan.predictor.slopes.values()), axis=1) @ x
+    )
     learnt = np.median(np.abs(start - end).max(axis=0))
     assert learnt < np.median(np.abs(straight - end).max(axis=0))
 

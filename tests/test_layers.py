@@ -23,7 +23,7 @@ FLOORS = [
     {"answers.bounds"},
     # the circuit: it knows the design, but neither studies nor spread
     {"circuit.devices"},
-    {"circuit.network", "circuit.orbit", "circuit.floquet"},
+    {"circuit.network", "circuit.orbit", "circuit.periodic", "circuit.floquet"},
     {"circuit.device_groups", "circuit.stepper"},
     {"circuit.assembly", "circuit.bias", "circuit.charge", "circuit.cycle"},
     {"circuit.thermal", "circuit.critical", "circuit.transient"},

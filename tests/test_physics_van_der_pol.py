@@ -17,8 +17,8 @@ from references import van_der_pol
 from tolsim.circuit.devices import Devices
 from tolsim.circuit.network import Network
 from tolsim.circuit.nominal import Nominal, find_nominal
+from tolsim.circuit.periodic import highest
 from tolsim.circuit.shooting import Start, shoot
-from tolsim.figures.waves import highest
 
 OMEGA = 1e7  # rad/s, of the tank alone
 

@@ -7,7 +7,8 @@ from collections.abc import Mapping
 import numpy as np
 
 from tolsim.circuit.devices import Floats
-from tolsim.figures.waves import Waves, highest, largest, mean, rms
+from tolsim.circuit.periodic import highest, largest, mean, rms
+from tolsim.figures.waves import Waves
 from tolsim.parts import Capacitor, Clamp, Diode, Inductor, Potentiometer, Resistor
 
 Figures = dict[str, Floats]

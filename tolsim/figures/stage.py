@@ -8,11 +8,12 @@ from tolsim.circuit.devices import Floats
 from tolsim.circuit.floquet import largest_beside_charge
 from tolsim.circuit.network import Network
 from tolsim.circuit.orbit import Solution
+from tolsim.circuit.periodic import mean
 from tolsim.circuit.thermal import Case, hot_values
 from tolsim.design import Design
 from tolsim.figures import parts as passive
 from tolsim.figures.transistors import mosfet
-from tolsim.figures.waves import Waves, mean
+from tolsim.figures.waves import Waves
 from tolsim.parts import (
     AnyPart,
     Capacitor,

@@ -5,7 +5,8 @@ from __future__ import annotations
 import numpy as np
 
 from tolsim.circuit.devices import Floats
-from tolsim.figures.waves import Waves, highest, largest, lowest, mean, rms
+from tolsim.circuit.periodic import highest, largest, lowest, mean, rms
+from tolsim.figures.waves import Waves
 from tolsim.parts import Mosfet
 
 

@@ -1,8 +1,6 @@
 """Voltages and currents of every part along one period, on an even grid of m points.
 
-Arrays are (m, N).  Means and rms values are plain averages over the grid: for a smooth periodic
-function that is the most accurate rule there is (Trefethen, Weideman, SIAM Review 56 (2014)
-385-458).
+Arrays are (m, N).
 """
 
 from __future__ import annotations
@@ -95,36 +93,3 @@ class Waves:
         x = voltage / part.half_voltage
         left = part.bias_floor + (1 - part.bias_floor) / (1 + x * x)
         return capacitance * left * self.rate(voltage)
-
-
-def highest(wave: Floats) -> Floats:
-    """Largest value of a periodic wave, by a parabola through the three points around it."""
-    top = np.argmax(wave, axis=0)
-    units = np.arange(wave.shape[1])
-    middle = wave[top, units]
-    before, after = wave[top - 1, units], wave[(top + 1) % len(wave), units]
-    bend = before - 2 * middle + after
-    slope = 0.5 * (after - before)
-    lift = np.where(bend < 0, -(slope**2) / np.where(bend < 0, 2 * bend, 1.0), 0.0)
-    # a vertex can lie at most half a step from the largest sample
-    return middle + np.minimum(lift, 0.5 * np.abs(slope))
-
-
-def lowest(wave: Floats) -> Floats:
-    """Smallest value of a periodic wave."""
-    return -highest(-wave)
-
-
-def largest(wave: Floats) -> Floats:
-    """Largest magnitude of a periodic wave."""
-    return np.maximum(highest(wave), highest(-wave))
-
-
-def rms(wave: Floats) -> Floats:
-    """Root of the mean square over the period, (N,)."""
-    return np.sqrt(np.mean(wave**2, axis=0))
-
-
-def mean(wave: Floats) -> Floats:
-    """Mean over the period, (N,)."""
-    return np.mean(wave, axis=0)

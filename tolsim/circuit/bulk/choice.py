@@ -23,9 +23,9 @@ from tolsim.circuit.continuation import SHOOTING_ROUNDS, Compass, solve_units
 from tolsim.circuit.devices import Floats, Ints
 from tolsim.circuit.nominal import Nominal
 from tolsim.circuit.orbit import Solution, Status
+from tolsim.circuit.periodic import highest, largest, rms
 from tolsim.circuit.shooting import Start, shoot
 from tolsim.circuit.thermal import Case
-from tolsim.figures.waves import highest, largest, rms
 
 ORDERS = (16, 24, 32, 40, 48, 56, 64, 80, 96, 128)
 PROBES = 64  # spread units that decide
@@ -75,8 +75,7 @@ class Choice:
         }
         for prefix, errors in (("", self.errors), ("shooting_", self.shooting_errors)):
             plain |= {
-                f"{prefix}{each.name}_error": getattr(errors, each.name)
-                for each in fields(errors)
+                f"{prefix}{each.name}_error": getattr(errors, each.name) for each in fields(errors)
             }
         return plain
 
@@ -241,9 +240,7 @@ def _affordable(nominal: Nominal, orders: tuple[int, ...]) -> list[int]:
     return [order for order in orders if states * (2 * order + 1) <= LARGEST_SYSTEM]
 
 
-def _next_order(
-    order: int, excess: float, nominal: Nominal, orders: tuple[int, ...]
-) -> int | None:
+def _next_order(order: int, excess: float, nominal: Nominal, orders: tuple[int, ...]) -> int | None:
     """The order at which the errors should meet the accuracy."""
     needed = order * excess ** (1 / ORDER_POWER)
     higher = [each for each in _affordable(nominal, orders) if each > order]

@@ -66,9 +66,7 @@ class Predictor:
 
     def deviations(self, case: Case) -> Floats:
         """x (k, N)."""
-        return np.stack(
-            [distance(key, case.values[key], self.values[key]) for key in self.slopes]
-        )
+        return np.stack([distance(key, case.values[key], self.values[key]) for key in self.slopes])
 
     def _learnt(self, x: Floats) -> Floats:
         likeness = kernel(self.places.T @ (self.weights[:, None] * x)).astype(np.float32)
