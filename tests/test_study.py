@@ -188,6 +188,21 @@ def test_files_that_cannot_be_read(tmp_path):
         load_study(file)
 
 
+def test_a_mark_before_the_first_letter_is_no_mistake(tmp_path):
+    """Some editors begin every UTF-8 file with one."""
+    study = tmp_path / "stage.toml"
+    study.write_text(GOOD.replace('spread = "c-5"', ""), encoding="utf-8-sig")
+    assert open_study(study).text.startswith(GOOD[:20])
+
+
+def test_what_else_lies_beside_the_study(tmp_path):
+    (tmp_path / "old.toml").mkdir()
+    (tmp_path / "lost.toml").symlink_to(tmp_path / "nowhere")
+    study = tmp_path / "stage.toml"
+    study.write_text(GOOD.replace('spread = "c-5"', ""), encoding="utf-8")
+    assert open_study(study).study.title
+
+
 def test_tables_lie_beside_the_study(tmp_path):
     (tmp_path / "stage.toml").write_text(GOOD, encoding="utf-8")
     with pytest.raises(StudyError, match="a known spread table"):

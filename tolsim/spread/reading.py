@@ -100,7 +100,15 @@ def _read_folder(folder: Path, problems: list[Problem]) -> dict[str, SpreadTable
     """Tables of one folder; a name used twice in it is a mistake."""
     tables: dict[str, SpreadTable] = {}
     for path in sorted(folder.glob("*.toml")):
-        data = path.read_bytes()
+        if not path.is_file():
+            continue
+        try:
+            data = path.read_bytes()
+        except OSError as error:
+            got = error.strerror or str(error)
+            cure = "Give yourself the right to read it, or move it away."
+            problems.append(Problem(path.name, "", "", got, "a file that can be read", cure=cure))
+            continue
         if b"[table." not in data:  # a study, or anything else that happens to lie here
             continue
         for name, table in read_tables(data, path.name, problems).items():
@@ -122,7 +130,7 @@ def _read_folder(folder: Path, problems: list[Problem]) -> dict[str, SpreadTable
 def read_tables(data: bytes, file: str, problems: list[Problem]) -> dict[str, SpreadTable]:
     """Tables in the bytes of one file; mistakes are appended to `problems`."""
     try:
-        text = data.decode("utf-8")
+        text = data.decode("utf-8-sig")  # some editors write a mark before the first letter
         content = tomllib.loads(text)
     except (tomllib.TOMLDecodeError, UnicodeDecodeError) as error:
         problems.append(Problem(file, "", "", str(error), "a valid TOML file in UTF-8"))

@@ -109,7 +109,7 @@ def open_study(path: Path | str, tables_dir: Path | str | None = None) -> StudyF
     """
     path = Path(path)
     try:
-        text = path.read_bytes().decode("utf-8")
+        text = path.read_bytes().decode("utf-8-sig")  # editors may write a mark first
     except OSError as error:
         cure = "Check the name of the file."
         raise _only(path.name, error.strerror or str(error), "a study file", cure) from None
