@@ -14,6 +14,7 @@ from tolsim import __version__
 from tolsim.errors import RequestError, RunError, TolsimError, nearest_name
 from tolsim.library import find_study, shipped_studies
 
+_PLAINEST = "tip-heater"  # of the shipped studies: one transistor, starts by itself
 _CAUTIONS = """
 A self-oscillating stage of some tens of watts makes kilovolts at radio frequency: burns
 that go deep, shocks, and near lamps and discharges ultraviolet light and ozone.  Results
@@ -126,13 +127,15 @@ def run(
     """
     from tolsim.run import run_study
     from tolsim.study import open_study
-    from tolsim.terminal import progress, show_summary
+    from tolsim.terminal import progress, show_summary, tell
 
     path = find_study(study)
     opened = open_study(path, tables_dir)
     folder = out or Path("results") / path.stem
     if folder.is_file():
         raise RequestError(f"'{folder}' is a file. Name another folder with --out.")
+    cases = len(opened.study.states) * len(opened.study.conditions)
+    tell(f"Finding the nominal orbit of {cases} case{'' if cases == 1 else 's'} ...")
     with progress() as step:
         results = run_study(opened, units=units, seed=seed, jobs=jobs, out=folder, progress=step)
     show_summary(results.summary, folder)
@@ -177,13 +180,20 @@ def tables(name: str | None, tables_dir: Path | None) -> None:
 
 @main.command()
 @click.argument("file", type=click.Path(dir_okay=False, path_type=Path))
-@click.option("--from", "name", metavar="NAME", help="Shipped study to start from.")
-def new(file: Path, name: str | None) -> None:
+@click.option(
+    "--from",
+    "name",
+    metavar="NAME",
+    default=_PLAINEST,
+    show_default=True,
+    help=f"Shipped study to start from: {', '.join(shipped_studies())}.",
+)
+def new(file: Path, name: str) -> None:
     """Write a commented study to FILE, to be changed into your own."""
     shipped = shipped_studies()
-    if name is not None and name not in shipped:
+    if name not in shipped:
         raise _unknown("shipped study", name, list(shipped))
-    source = shipped[name] if name is not None else next(iter(shipped.values()))
+    source = shipped[name]
     try:
         with file.open("xb") as target:
             target.write(source.read_bytes())
@@ -191,7 +201,12 @@ def new(file: Path, name: str | None) -> None:
         raise RequestError(f"'{file}' exists already. Choose another name.") from None
     except OSError as error:
         raise RequestError(f"'{file}' cannot be written: {error.strerror}.") from None
-    click.echo(f"{file} written, from the shipped study {source.stem}. Next: tolsim check {file}")
+    click.echo(f"{file} written, from the shipped study {name}. Next: tolsim check {_typed(file)}")
+
+
+def _typed(path: Path) -> str:
+    """Path as it is typed: in quotes if it has blanks."""
+    return f'"{path}"' if " " in str(path) else str(path)
 
 
 def _unknown(what: str, name: str, valid: list[str]) -> RequestError:

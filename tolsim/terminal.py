@@ -21,11 +21,12 @@ from tolsim.answers.wording import shown
 from tolsim.design import Study
 from tolsim.figure_names import FIGURES
 from tolsim.quantity import show
-from tolsim.spread.table import SpreadTable
+from tolsim.spread.table import BASES, SpreadTable
 from tolsim.spread.words import assumptions, describe
 from tolsim.study import StudyFile
 
 _WIDTH = 80
+_BASIS = max(map(len, BASES))
 _MOST_ROWS = 8  # of the list of limits that are near
 _POINT = ("frequency", "start_margin", "input_power", "output_power")
 
@@ -39,6 +40,11 @@ Cases = Mapping[tuple[str, str], Mapping[str, float]]
 def console(*, stderr: bool = False) -> Console:
     """Terminal of at most 80 columns."""
     return Console(width=min(_WIDTH, Console().width), stderr=stderr, highlight=False)
+
+
+def tell(news: str) -> None:
+    """Say on stderr what is being done."""
+    console(stderr=True).print(Text(news))
 
 
 @contextmanager
@@ -108,12 +114,23 @@ def _paragraphs(screen: Console, head: str, texts: Sequence[str]) -> None:
 
 
 def show_tables(tables: Mapping[str, SpreadTable]) -> None:
-    """List spread tables: name, kinds of part, basis, title."""
+    """List spread tables by the kinds of part they are for: name, basis, title."""
     screen = console()
-    grid = _grid("table", "for", "basis", "title")
+    by_kind: dict[str, list[tuple[str, SpreadTable]]] = {}
     for name, table in tables.items():
-        grid.add_row(name, ", ".join(table.kinds), table.basis, table.title)
-    screen.print(grid)
+        by_kind.setdefault(", ".join(table.kinds), []).append((name, table))
+    width = max(map(len, tables), default=0)
+    for kinds in sorted(by_kind):
+        screen.print(Text(f"{kinds}:", style="bold"))
+        grid = Table(box=None, show_header=False, pad_edge=False, padding=(0, 2, 0, 0))
+        grid.add_column(min_width=width, no_wrap=True)  # a name that is cut cannot be used
+        grid.add_column(min_width=_BASIS, no_wrap=True)
+        grid.add_column()
+        for name, table in by_kind[kinds]:
+            grid.add_row(name, table.basis, table.title)
+        screen.print(grid)
+        screen.print()
+    screen.print(Text("All about one of them: tolsim tables NAME"))
 
 
 def show_table(table: SpreadTable) -> None:
