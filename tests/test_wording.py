@@ -11,6 +11,7 @@ from tolsim.answers.wording import (
     failures,
     hardest,
     measured,
+    outcome_words,
     percent,
     percents,
     share_with_interval,
@@ -111,6 +112,21 @@ def test_failures_are_ordered_and_name_outcomes_without_limits():
     )
     assert "latched both on (cold, dark)" in {failure.name for failure in found}
     assert not any("over stress" in failure.name for failure in found)
+
+
+@pytest.mark.parametrize(
+    ("outcome", "units", "words"),
+    [
+        ("starts only with a kick", 1, "starts only with a kick"),
+        ("starts only with a kick", 3, "start only with a kick"),
+        ("dies away", 2, "die away"),
+        ("starts late", 2, "start late"),
+        ("latched both on", 2, "latched both on"),
+        ("wrong mode", 2, "wrong mode"),
+    ],
+)
+def test_outcomes_agree_with_the_number_of_units(outcome, units, words):
+    assert outcome_words({"outcome": outcome, "units": units}) == words
 
 
 def test_hardest_driven_first():

@@ -69,7 +69,8 @@ def _stresses(summary: Summary) -> Iterator[str]:
 def _factors(summary: Summary) -> Iterator[str]:
     for ranking in summary["ranking"]:
         if ranking["reason"]:
-            yield f"{ranking['title']}: not ranked, {ranking['reason']}"
+            told = f"{ranking['title']}: not ranked, {ranking['reason']}"
+            yield from textwrap.wrap(told, WIDTH - 2, subsequent_indent="  ")
             continue
         yield f"{ranking['title']}:"
         seen = [factor for factor in ranking["factors"] if factor["distinguishable"]]

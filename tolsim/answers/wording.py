@@ -99,6 +99,16 @@ class Failure:
     first_units: list[int]
 
 
+def outcome_words(entry: Mapping[str, Any]) -> str:
+    """Outcome as said of its units: "1 starts only with a kick", "3 start only with a kick"."""
+    verb, _, rest = entry["outcome"].partition(" ")
+    if verb not in {"starts", "runs"} and entry["outcome"] != "dies away":
+        return str(entry["outcome"])
+    if entry["units"] != 1:
+        verb = "die" if verb == "dies" else verb.removesuffix("s")
+    return f"{verb} {rest}".rstrip()
+
+
 def failures(summary: Summary) -> list[Failure]:
     """Every way units fail, most frequent first: limits, then outcomes that break none.
 
@@ -187,9 +197,11 @@ def doubts(summary: Summary) -> list[str]:
         )
     again = summary["quality"].get("rechecked") or {}
     if again.get("agreed", 0) < again.get("units", 0):
+        off = again.get("worst_difference")
+        by = "" if off is None else f", by up to {percent(off)}"
         found.append(
             f"Warning: {again['units'] - again['agreed']} of {again['units']} units solved again"
-            " in the time domain came out differently."
+            f" in the time domain came out differently{by}; more steps_per_cycle may cure it."
         )
     return found
 

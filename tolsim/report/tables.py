@@ -16,6 +16,7 @@ from tolsim.answers.wording import (
     limits_words,
     list_of_units,
     measured,
+    outcome_words,
     percent,
     percents,
     share_with_interval,
@@ -254,7 +255,7 @@ def start_sentences(summary: Summary, start_states: tuple[str, ...]) -> list[str
         )
         for entry in others:
             sentence += (
-                f" {entry['units']} {entry['outcome']}: {share_with_interval(entry)}, "
+                f" {entry['units']} {outcome_words(entry)}: {share_with_interval(entry)}, "
                 f"{'unit' if entry['units'] == 1 else 'units'} "
                 f"{list_of_units(entry['first_units'], entry['units'])}."
             )
