@@ -84,11 +84,7 @@ def run_study(
         progress(0, opened.study.run.units)
     cases = prepare(opened.study, opened.tables, jobs)
     names = factors(opened.study, opened.tables)
-    choices = (
-        choose_solvers(opened.study, opened.tables, names, cases, jobs)
-        if bulk
-        else {}
-    )
+    choices = choose_solvers(opened.study, opened.tables, names, cases, jobs) if bulk else {}
     plan = Plan(opened.study, opened.tables, names, cases, choices)
     unit_table, factor_table = _build(plan, jobs, store, progress)
     summary = summarise(

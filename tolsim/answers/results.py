@@ -39,7 +39,13 @@ not known (an interval that this many units cannot close).  Every `low`, `high` 
                 high, distinguishable, rank_correlation, rank_low, rank_high}], largest share
                 first}]
 ``quality``     {energy_balance {worst, median}, orbit_residual {worst, median},
-                rechecked {units, share, agreed, worst_difference}, steps {...}}
+                solved_by {way: rows}, solvers [{condition, state, solver, harmonics (0 for
+                shooting), frequency_error, peak_error, rms_error (largest on the pilot units),
+                shooting_frequency_error ..., settled_share, reason}] (empty: shooting served all
+                cases), crosscheck {units, share, worst {figure, condition, state, difference},
+                warning} (empty without bulk solver),
+                rechecked {units, share, agreed, worst_difference, worst_frequency_difference},
+                steps {steps_per_cycle, recheck_steps_per_cycle, recheck_cycles}}
 ``provenance``  {seed, versions {name: version}, study_sha256, tables {name: sha256}, ...}
 """
 
