@@ -201,9 +201,14 @@ def solve_units(case: Case, compass: Compass, steps: int) -> Solution:
 
 
 def _keep_better(solution: Solution, units: Ints, again: Solution) -> Solution:
-    """Take the new answer of those units for which it is one."""
-    better = (again.status != Status.NOT_CONVERGED) & ~(
-        (again.status == Status.UNSTABLE) & (solution.status[units] == Status.UNSTABLE)
+    """Take the new answer of those units for which it is one.
+
+    A burst that happens to be quiet when the time-domain run ends is not "no orbit": whatever was
+    found unstable stays so unless a stable orbit turns up.
+    """
+    was_unstable = solution.status[units] == Status.UNSTABLE
+    better = np.where(
+        was_unstable, again.status == Status.SETTLED, again.status != Status.NOT_CONVERGED
     )
     spent = solution.iterations.copy()
     spent[units] += again.iterations
