@@ -13,7 +13,16 @@ from tolsim.circuit.nominal import find_nominal
 from tolsim.circuit.thermal import Case
 from tolsim.design import Design, Rail
 from tolsim.figures import measure_orbits
-from tolsim.parts import Capacitor, DeviceModel, Drive, Inductor, Mosfet, Resistor
+from tolsim.parts import (
+    Capacitor,
+    Coupling,
+    DeviceModel,
+    Diode,
+    Drive,
+    Inductor,
+    Mosfet,
+    Resistor,
+)
 
 Floats = NDArray[np.float64]
 
@@ -124,3 +133,30 @@ def crossed_pair(q: float, *, gain: float = 3.0, choke_resistance: float = 10.0)
         parts[f"Q{side.upper()}"] = mosfet(side, other, 0.05, gain, cgs=1e-15, knee=0.01)
     rails = {"vdd": Rail(net="vdd", voltage=PAIR_SUPPLY)}
     return Design(parts=parts, rails=rails, leak=1e-12)
+
+
+def self_biased() -> Design:
+    """Drain tank with a coupled gate coil; a diode at the gate sets the bias by the amplitude.
+
+    Five states, and it can do everything: run, die (R1 too small), burst (RG times CC too long
+    against the tank's own decay), run hot.
+    """
+    parts = {
+        "L1": inductor("vdd", "d", 1e-6, 0.01),
+        "L2": inductor("w", "gnd", 1e-6 / 9, 0.01),
+        "K1": Coupling(kind="coupling", inductors=("L1", "L2"), coupling=0.95),
+        "C1": capacitor("d", "gnd", 1e-9),
+        "R1": resistor("vdd", "d", 632.0, delivers_output=True),
+        "CC": capacitor("w", "g", 200e-12),
+        "RG": resistor("vb", "g", 1e3),
+        "D1": Diode(kind="diode", anode="g", cathode="k", voltage=0.7, resistance=5.0, knee=0.1),
+        "Q1": mosfet(
+            *("d", "g", 3.0, 0.05), cgs=20e-12, cgd0=2e-12, cds0=50e-12, thermal_resistance=20.0
+        ),
+    }
+    rails = {
+        "vdd": Rail(net="vdd", voltage=48.0),
+        "vb": Rail(net="vb", voltage=4.0),
+        "vk": Rail(net="k", voltage=4.5),
+    }
+    return Design(parts=parts, rails=rails)
