@@ -106,6 +106,26 @@ def test_a_run_that_cannot_be_finished_ends_with_1(place, monkeypatch):
     assert "Error: the nominal unit settles on no orbit" in answer.output
 
 
+def test_a_stopped_run_says_how_to_go_on(place, monkeypatch):
+    import tolsim.run
+
+    def stopped(*_, **__):
+        raise KeyboardInterrupt
+
+    monkeypatch.setattr(tolsim.run, "run_study", stopped)
+    written(place, GOOD.replace('spread = "c-5"', ""))
+    answer = call("run", "stage.toml")
+    assert answer.exit_code == 1
+    assert "the same command goes on from there" in answer.output
+
+
+def test_places_that_cannot_be_written_end_with_2(place):
+    written(place, GOOD.replace('spread = "c-5"', ""))
+    answer = call("run", "stage.toml", "--out", "stage.toml/out")
+    assert answer.exit_code == 2
+    assert "Error: 'stage.toml" in answer.output
+
+
 def test_run_hands_over_what_was_asked(place, monkeypatch):
     import fake_run
 

@@ -11,7 +11,8 @@ import tolsim
 
 FLOORS = [
     # words and numbers: they know nothing of circuits
-    {"errors", "figure_names", "answers.unit_files", "stats.proportion"},
+    {"errors", "figure_names", "stats.proportion"},
+    {"answers.unit_files"},
     {"quantity", "library", "records", "answers.results", "laws.law"}
     | {"spread.codes", "spread.coil", "stats.percentiles", "stats.ranking"},
     {"laws.lognormal", "laws.sorted_out", "laws.triangular", "laws.truncated_normal"}

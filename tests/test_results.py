@@ -17,7 +17,7 @@ from hypothesis import strategies as st
 from tolsim.answers.results import Results, summary_json
 from tolsim.answers.summary import summarise
 from tolsim.answers.unit_files import FrameColumns, UnitFiles, UnitRows
-from tolsim.errors import TolsimError
+from tolsim.errors import RequestError, TolsimError
 
 YIELD_KEYS = {"estimate", "low", "high", "confidence", "units", "passed", "failed", "undecided"}
 FIGURE_KEYS = {
@@ -247,6 +247,15 @@ def test_a_killed_run_leaves_its_finished_chunks_readable(tmp_path):
     assert not results.complete
     assert len(results.factors) == 50
     assert len(results.units) == 300
+
+
+@pytest.mark.parametrize("name", ["summary.json", "units.parquet", "factors.parquet"])
+def test_a_damaged_folder_is_told_plainly(run, tmp_path, summary, name):
+    _, units, factors = run
+    Results.in_memory(summary, "", units, factors).save(tmp_path)
+    (tmp_path / name).write_bytes(b"PAR1 and no more")
+    with pytest.raises(RequestError, match=f"{name}' is damaged"):
+        Results.open(tmp_path)
 
 
 def test_a_folder_without_results_is_told_plainly(tmp_path):

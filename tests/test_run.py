@@ -108,7 +108,7 @@ def test_killed_run_leaves_finished_chunks_and_is_taken_up(
 
 def test_another_run_in_the_folder_is_refused(finished: Path, tmp_path: Path) -> None:
     """A folder belongs to one study and seed."""
-    with pytest.raises(RequestError, match="holds a run of another study, seed or version"):
+    with pytest.raises(RequestError, match="holds a run of another kind: another seed\\."):
         run_study(write(tmp_path), seed=99, out=finished)
     (tmp_path / "mine").mkdir()
     (tmp_path / "mine" / "thesis.txt").write_text("do not touch", encoding="utf-8")

@@ -5,6 +5,7 @@ Everything heavy is imported inside the verbs, so that `tolsim --help` answers a
 
 from __future__ import annotations
 
+import warnings
 from pathlib import Path
 from typing import Any
 
@@ -14,6 +15,7 @@ from tolsim import __version__
 from tolsim.errors import RequestError, RunError, TolsimError, nearest_name
 from tolsim.library import find_study, shipped_studies
 
+_WRONG_PLACE = (PermissionError, NotADirectoryError, IsADirectoryError, FileNotFoundError)
 _PLAINEST = "tip-heater"  # of the shipped studies: one transistor, starts by itself
 _CAUTIONS = """
 A self-oscillating stage of some tens of watts makes kilovolts at radio frequency: burns
@@ -40,6 +42,12 @@ class _NotFinished(click.ClickException):
     exit_code = 1
 
 
+def _trouble(error: OSError) -> str:
+    """What the system says about which file."""
+    where = "" if error.filename is None else f"'{error.filename}': "
+    return f"{where}{error.strerror or error}."
+
+
 class _Verbs(click.Group):
     """Group that turns errors of ours into messages and exit codes."""
 
@@ -51,6 +59,10 @@ class _Verbs(click.Group):
             raise _NotFinished(str(error)) from error
         except TolsimError as error:
             raise _Told(str(error)) from error
+        except _WRONG_PLACE as error:
+            raise _Told(_trouble(error)) from error
+        except OSError as error:  # a full disk, a drive that went away
+            raise _NotFinished(_trouble(error)) from error
 
     def format_epilog(self, ctx: click.Context, formatter: click.HelpFormatter) -> None:
         """Write cautions and exit codes under the list of verbs."""
@@ -136,8 +148,15 @@ def run(
         raise RequestError(f"'{folder}' is a file. Name another folder with --out.")
     cases = len(opened.study.states) * len(opened.study.conditions)
     tell(f"Finding the nominal orbit of {cases} case{'' if cases == 1 else 's'} ...")
-    with progress() as step:
-        results = run_study(opened, units=units, seed=seed, jobs=jobs, out=folder, progress=step)
+    warnings.filterwarnings("ignore", "[0-9]+ tasks which were still being processed")
+    try:
+        with progress() as step:
+            results = run_study(
+                opened, units=units, seed=seed, jobs=jobs, out=folder, progress=step
+            )
+    except KeyboardInterrupt:
+        told = f"stopped. '{folder}' keeps what is finished; the same command goes on from there."
+        raise RunError(told) from None
     show_summary(results.summary, folder)
 
 

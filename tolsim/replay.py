@@ -14,6 +14,7 @@ import numpy as np
 import pandas as pd
 from numpy.typing import NDArray
 
+from tolsim import __version__
 from tolsim.answers.bounds import Bound, bounds
 from tolsim.answers.results import STUDY_FILE, TABLES_FOLDER, Results
 from tolsim.answers.wording import shown
@@ -82,11 +83,22 @@ def replay_unit(folder: Path | str, number: int) -> Replay:
     broken = _broken(opened, rows)
     influence = _influence(results, draws.names, broken)
     story = (
+        *_version_story(results),
         *_outcome_story(opened, rows, broken),
         *_draw_story(draws, influence),
         *_neighbour(results, draws, influence),
     )
     return Replay(number, rows, story, found)
+
+
+def _version_story(results: Results) -> list[str]:
+    """A warning if another version of tolsim made the results."""
+    made_by = results.provenance.get("versions", {}).get("tolsim", __version__)
+    if made_by == __version__:
+        return []
+    return [
+        f"Made by tolsim {made_by}, solved again by {__version__}: figures may differ a little."
+    ]
 
 
 def _rows_of(results: Results, number: int) -> pd.DataFrame:

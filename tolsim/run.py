@@ -20,7 +20,7 @@ from joblib import Parallel, delayed, parallel_config
 from tolsim.answers.provenance import provenance_of, used_tables
 from tolsim.answers.results import SUMMARY_FILE, TABLES_FOLDER, Results
 from tolsim.answers.summary import summarise
-from tolsim.answers.unit_files import Columns, FrameColumns, UnitFiles, write_text
+from tolsim.answers.unit_files import Columns, FrameColumns, UnitFiles, damaged, write_text
 from tolsim.crosscheck import crosscheck
 from tolsim.design import Study
 from tolsim.errors import RequestError
@@ -33,6 +33,13 @@ from tolsim.study import StudyFile, open_study
 
 CHUNK = 128  # units stored together; a killed run loses at most one chunk per job
 IDENTITY_FILE = "run.json"
+_IDENTITY = {
+    "study_sha256": "another study file",
+    "seed": "another seed",
+    "tables": "other spread tables",
+    "versions": "another version of tolsim or of a library",
+    "solver": "another solver, since the numbers of units differ much",
+}
 
 Progress = Callable[[int, int], None]
 
@@ -120,9 +127,11 @@ def _open_folder(folder: Path, record: Mapping[str, Any], *, bulk: bool) -> Unit
     identity = {key: record[key] for key in ("seed", "study_sha256", "tables", "versions")}
     identity["solver"] = "measured" if bulk else "shooting"
     if identity_file.exists():
-        if json.loads(identity_file.read_text(encoding="utf-8")) != identity:
+        held = _identity_of(identity_file)
+        other = [words for key, words in _IDENTITY.items() if held.get(key) != identity[key]]
+        if other:
             raise RequestError(
-                f"'{folder}' holds a run of another study, seed or version (or a much shorter run)."
+                f"'{folder}' holds a run of another kind: {', '.join(other)}."
                 " Name another folder with --out, or remove it first."
             )
     elif folder.exists() and any(folder.iterdir()):
@@ -134,6 +143,17 @@ def _open_folder(folder: Path, record: Mapping[str, Any], *, bulk: bool) -> Unit
     for stale in (SUMMARY_FILE, "units.parquet", "factors.parquet"):
         (folder / stale).unlink(missing_ok=True)
     return UnitFiles(folder)
+
+
+def _identity_of(file: Path) -> Mapping[str, Any]:
+    """What the run in a folder was made from."""
+    try:
+        identity = json.loads(file.read_bytes())
+    except ValueError:
+        identity = None
+    if not isinstance(identity, dict):
+        raise damaged(file)
+    return identity
 
 
 def _build(

@@ -59,7 +59,7 @@ from typing import Any
 
 import pandas as pd
 
-from tolsim.answers.unit_files import Columns, FrameColumns, UnitFiles, write_text
+from tolsim.answers.unit_files import Columns, FrameColumns, UnitFiles, damaged, write_text
 from tolsim.errors import RequestError
 
 SUMMARY_FILE = "summary.json"
@@ -107,20 +107,23 @@ class Results:
         Raises
         ------
         RequestError
-            If the folder holds neither a summary nor a finished chunk.
+            If the folder holds neither a summary nor a finished chunk, or one is damaged.
         """
         place = Path(folder)
         files = UnitFiles(place)
         summary_file, study_file = place / SUMMARY_FILE, place / STUDY_FILE
-        summary = (
-            json.loads(summary_file.read_text(encoding="utf-8")) if summary_file.exists() else {}
-        )
+        try:
+            summary = json.loads(summary_file.read_bytes()) if summary_file.exists() else {}
+        except ValueError:
+            raise damaged(summary_file) from None
         if not summary and not files.units().paths:
             raise RequestError(
                 f"'{place}' holds no results: neither {SUMMARY_FILE} nor a finished chunk. "
                 "Name the folder that `tolsim run` wrote."
             )
         text = study_file.read_text(encoding="utf-8") if study_file.exists() else ""
+        for columns in (files.units(), files.factors()):
+            columns.check()
         return cls(summary, text, place, files.units(), files.factors())
 
     @property

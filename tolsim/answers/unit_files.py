@@ -18,6 +18,8 @@ import pyarrow as pa
 import pyarrow.parquet as pq
 from numpy.typing import NDArray
 
+from tolsim.errors import RequestError
+
 KEY_COLUMNS = ("unit", "condition", "state", "verdict", "outcome", "failed_limits", "status")
 
 
@@ -48,6 +50,11 @@ class FrameColumns:
         return self.frame[name].reset_index(drop=True)
 
 
+def damaged(path: Path) -> RequestError:
+    """What to say of a file of a results folder that cannot be read."""
+    return RequestError(f"'{path}' is damaged. Run the study again into another folder.")
+
+
 @dataclass(frozen=True)
 class FileColumns:
     """Columns of one or several parquet files of the same layout, one below the other."""
@@ -58,6 +65,20 @@ class FileColumns:
     def names(self) -> tuple[str, ...]:
         """Column names in order; empty without files."""
         return tuple(pq.read_schema(self.paths[0]).names) if self.paths else ()
+
+    def check(self) -> None:
+        """Look whether every file can be read at all.
+
+        Raises
+        ------
+        RequestError
+            Naming the first that cannot.
+        """
+        for path in self.paths:
+            try:
+                pq.read_schema(path)
+            except pa.ArrowInvalid:
+                raise damaged(path) from None
 
     def column(self, name: str) -> pd.Series[Any]:
         """One whole column; nothing else is read."""
@@ -105,7 +126,10 @@ class UnitFiles:
         for path in self._chunks("factors"):
             first = int(path.stem.split("-")[1])
             if (path.parent / f"units-{first:07d}.parquet").exists():
-                found[first] = pq.read_metadata(path).num_rows
+                try:
+                    found[first] = pq.read_metadata(path).num_rows
+                except pa.ArrowInvalid:
+                    raise damaged(path) from None
         return found
 
     def merge(self) -> None:
