@@ -23,7 +23,7 @@ from tolsim.circuit.nominal import Nominal, find_nominal
 from tolsim.circuit.thermal import Case
 from tolsim.figures import measure_orbits, measure_start
 
-STEPS, UNITS, CHUNK, PILOTS, RUNS = 192, 4096, 1024, 512, 5
+STEPS, UNITS, CHUNK, PILOTS, RUNS = 192, 4096, 1024, 256, 5
 RECHECKED = 0.01
 CYCLES, FREQUENCY = 60, 6.6e6
 
