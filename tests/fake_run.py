@@ -177,7 +177,8 @@ QUALITY = {
     "energy_balance": {"worst": 0.0031, "median": 0.0004},
     "orbit_residual": {"worst": 8e-9, "median": 3e-11},
     "rechecked": {"units": 25, "share": 0.05, "agreed": 25, "worst_difference": 0.0011},
-    "steps": {"per_cycle": 128, "worst_difference_at_twice": 0.0008},
+    "steps": {"steps_per_cycle": 128, "recheck_steps_per_cycle": 256, "recheck_cycles": 8},
+    "solved_by": {"predicted": 2990, "blended": 10},
 }
 PROVENANCE = {
     "seed": 7,

@@ -9,7 +9,10 @@ import numpy as np
 import pytest
 
 from tolsim.answers.wording import verdict_sentence
+from tolsim.library import find_study
+from tolsim.presentation import input_rows
 from tolsim.report import render, write_report
+from tolsim.study import open_study
 
 
 @pytest.fixture(scope="module")
@@ -91,10 +94,37 @@ def test_guesses_are_marked(page):
     assert "not stated" in text_of(page)  # a guess without a source
 
 
+def test_parts_of_the_same_law_share_a_row():
+    opened = open_study(find_study("plant-lamp"))
+    rows = list(input_rows(opened.study, opened.tables))
+    laws = [(row.quantity, row.law, row.table, row.basis, row.source) for row in rows]
+    assert len(laws) == len(set(laws))
+    (row,) = [row for row in rows if row.quantity == "esr"]
+    assert row.part.startswith("C1, C2, C3, C4")
+    (row,) = [r for r in rows if r.part.startswith("C1,") and "lot shift" in r.law]
+    assert row.nominal.startswith("C1, C2: 680 pF; C3, C4: 470 pF")
+
+
 def test_no_rate_without_interval(page):
     text = text_of(page)
     assert "none seen (up to" in text
     assert not re.search(r"[^.\d]0 %(?! \()", text.replace("to 0 %", ""))
+
+
+def test_every_caution_stands_there_once(page):
+    text = text_of(page)
+    for word in ("kilovolts", "ultraviolet", "ozone", "licensed practice"):
+        assert text.count(word) == 1
+
+
+def test_shares_beyond_everything_are_called_chance(content):
+    ranking = [
+        {**entry, "remainder": {"share": -0.2, "low": -0.4, "high": -0.1}}
+        for entry in content.summary["ranking"]
+    ]
+    page = render(replace(content, summary={**content.summary, "ranking": ranking}))
+    assert "add up to more than 100 %" in text_of(page)
+    assert "Left over: -" not in text_of(page)
 
 
 def test_failing_units_are_named(page):

@@ -39,26 +39,14 @@ NOT_MODELLED = (
     "The discharge itself: each load state is a coupled loop with fixed resistance.",
     "Wear-out: ageing laws move values, they do not break parts.",
 )
-CAUTIONS = (
-    (
-        "Such a stage makes kilovolts at radio frequency. Burns go deep and hardly hurt at first;"
-        " capacitors stay charged after power-off; hot parts stay hot."
-    ),
-    (
-        "Lamps and discharges give off ultraviolet light, and air beside them ozone: shield eyes"
-        " and skin, ventilate."
-    ),
+CAUTIONS = (  # beside those that stand on every page
     (
         "A unit that does not start can hold both transistors in conduction: limit the supply"
         " current of first tests."
     ),
     (
-        "These numbers are estimates from a model and from the laws listed above. They do not"
+        "The numbers are estimates from a model and from the laws listed above. They do not"
         " replace measurement on built units, guards and interlocks."
-    ),
-    (
-        "Follow your local codes for electrical safety, radio emission and exposure, and leave what"
-        " they reserve to licensed practice."
     ),
 )
 
@@ -176,7 +164,21 @@ UNIT_OF_MEASURE = {
 
 
 def input_rows(study: Study, tables: Mapping[str, SpreadTable]) -> Iterator[InputRow]:
-    """One row per spreading number (or per part without spread), with law, basis and source."""
+    """One row per law (or one for all parts without spread): its parts, basis and source."""
+    alike: dict[tuple[str, ...], dict[str, list[str]]] = {}
+    for row in _single_rows(study, tables):
+        key = (row.quantity, row.law, row.table, row.basis, row.source)
+        alike.setdefault(key, {}).setdefault(row.nominal, []).append(row.part)
+    for (quantity, law, table, basis, source), nominals in alike.items():
+        parts = ", ".join(ref for refs in nominals.values() for ref in refs)
+        nominal = next(iter(nominals))
+        if len(nominals) > 1:
+            given = {value: refs for value, refs in nominals.items() if value}
+            nominal = "; ".join(f"{', '.join(refs)}: {value}" for value, refs in given.items())
+        yield InputRow(parts, quantity, nominal, law, table, basis, source)
+
+
+def _single_rows(study: Study, tables: Mapping[str, SpreadTable]) -> Iterator[InputRow]:
     for ref, part in {**study.design.parts, **study.design.rails}.items():
         names = list(tables_of(study, ref))
         if not names:

@@ -123,6 +123,7 @@ def _mark(axes: Axes, place: float, words: str, colour: str, height: float) -> N
         va="top",
         fontsize=10.5,
         color=colour,
+        bbox={"fc": "white", "ec": "none", "pad": 0.6},  # a second line may stand behind it
     )
 
 

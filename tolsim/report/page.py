@@ -68,7 +68,8 @@ def render(content: ReportInput) -> str:
         ],
         guesses=sum(row.guess for row in content.inputs),
         quality=_quality(summary["quality"]),
-        provenance=_lines(summary["provenance"]),
+        provenance=_lines({k: v for k, v in summary["provenance"].items() if k != "tables"}),
+        tables=_lines(summary["provenance"].get("tables", {})),
     )
 
 
@@ -115,6 +116,17 @@ def _quality(quality: dict[str, Any]) -> list[tuple[str, str]]:
         )
         words.append(("Solved again in the time domain", text))
     words += _solvers(known.pop("solvers", []), known.pop("crosscheck", {}))
+    ways = known.pop("solved_by", {})
+    if ways:
+        text = ", ".join(f"{count} {way}" for way, count in ways.items())
+        words.append(("How units were solved (each in every case)", text))
+    steps = known.pop("steps", {})
+    if steps:
+        text = (
+            f"{steps['steps_per_cycle']}; when solved again {steps['recheck_steps_per_cycle']},"
+            f" over {steps['recheck_cycles']} cycles"
+        )
+        words.append(("Steps per cycle", text))
     return words + _lines(known)
 
 

@@ -296,6 +296,7 @@ def _ranking_column(entry: Mapping[str, Any]) -> dict[str, Any]:
         ],
         "seen": len(seen),
         "not_seen": len(factors) - len(seen),
+        "too_much": bool(seen) and rest["share"] < 0.0,
         "remainder": (
             ""
             if entry["reason"]
