@@ -16,6 +16,7 @@ from typing import Any
 import numpy as np
 import pandas as pd
 from joblib import Parallel, delayed, parallel_config
+from threadpoolctl import threadpool_limits
 
 from tolsim.answers.provenance import provenance_of, used_tables
 from tolsim.answers.results import SUMMARY_FILE, TABLES_FOLDER, Results
@@ -85,12 +86,27 @@ def run_study(
     opened = study if isinstance(study, StudyFile) else open_study(study)
     opened = replace(opened, study=_with_request(opened.study, units, seed))
     record = provenance_of(opened)
-    bulk = wants_bulk(opened.study)
-    store = None if out is None else _open_folder(Path(out), record, bulk=bulk)
+    store = None
+    if out is not None:
+        store = _open_folder(Path(out), record, bulk=wants_bulk(opened.study))
     if progress is not None:
         progress(0, opened.study.run.units)
+    # many small matrices: threads of the linear algebra would only get in each other's way
+    with threadpool_limits(limits=1):
+        return _solve_and_judge(opened, store, record, jobs, progress)
+
+
+def _solve_and_judge(
+    opened: StudyFile,
+    store: UnitFiles | None,
+    record: Mapping[str, Any],
+    jobs: int | None,
+    progress: Progress | None,
+) -> Results:
+    """The road itself, for a checked request."""
     cases = prepare(opened.study, opened.tables, jobs)
     names = factors(opened.study, opened.tables)
+    bulk = wants_bulk(opened.study)
     choices = choose_solvers(opened.study, opened.tables, names, cases, jobs) if bulk else {}
     plan = Plan(opened.study, opened.tables, names, cases, choices)
     unit_table, factor_table = _build(plan, jobs, store, progress)
@@ -129,7 +145,7 @@ def _open_folder(folder: Path, record: Mapping[str, Any], *, bulk: bool) -> Unit
     if identity_file.exists():
         held = _identity_of(identity_file)
         other = [words for key, words in _IDENTITY.items() if held.get(key) != identity[key]]
-        if other:
+        if other and ((folder / SUMMARY_FILE).exists() or UnitFiles(folder).finished()):
             raise RequestError(
                 f"'{folder}' holds a run of another kind: {', '.join(other)}."
                 " Name another folder with --out, or remove it first."
