@@ -109,7 +109,8 @@ def _start_outcomes(
     outcome[without & ~grows & latched] = "latched both on"
     # growth without an orbit to grow into is a contradiction only the time domain can resolve
     outcome[without & grows] = "undecided"
-    outcome[np.isnan(growth)] = "undecided"
+    # without a bias point nobody knows whether it starts; what bursts or overheats fails anyway
+    outcome[np.isnan(growth) & (settled | without)] = "undecided"
     return outcome
 
 
