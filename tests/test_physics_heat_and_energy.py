@@ -59,16 +59,15 @@ def test_mean_drain_voltage(batch: tuple[Case, Solution, dict]) -> None:
     mean = solution.samples[:-1].mean(axis=0)
     for drain, choke in (("a", "LA"), ("b", "LB")):
         drop = mean[:, index[choke]] * case.values[f"{choke}.resistance"]
-        # the mean over the end points of the steps is not the one the stages use: 1e-3 at 128 steps
-        assert mean[:, index[drain]] == pytest.approx(case.values["vdd.voltage"] - drop, rel=1e-3)
+        assert mean[:, index[drain]] == pytest.approx(case.values["vdd.voltage"] - drop, rel=5e-5)
 
 
 def test_energy_balance_of_a_push_pull(batch: tuple[Case, Solution, dict]) -> None:
-    """DC power in equals all heat and output to 0.5 % for every unit; most are far closer."""
+    """DC power in equals all heat and output to 0.5 % at worst: here 0.1 % for every unit."""
     _, _, figures = batch
     balance = np.abs(figures["energy_balance"])
-    assert balance.max() < 5e-3
-    assert np.median(balance) < 2e-3
+    assert balance.max() < 1e-3
+    assert np.median(balance) < 5e-4
 
 
 def test_junctions_close_the_loop(batch: tuple[Case, Solution, dict]) -> None:
