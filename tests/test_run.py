@@ -142,6 +142,14 @@ def test_replay_of_an_unknown_unit(finished: Path) -> None:
         replay_unit(finished, 400)
 
 
+def test_a_run_that_built_nothing_does_not_hold_its_folder(tmp_path: Path) -> None:
+    """After a study that could not be solved, the mended one may use the same folder."""
+    out = tmp_path / "out"
+    out.mkdir()
+    (out / "run.json").write_text('{"seed": 99}', encoding="utf-8")
+    assert run_study(write(tmp_path), units=3, jobs=1, out=out).complete
+
+
 def test_study_without_any_orbit(tmp_path: Path) -> None:
     """A stage biased far below threshold, without feedback, says that it cannot run."""
     text = quick_study.text(bias=0.1).replace('"75 pF"', '"0.01 pF"')

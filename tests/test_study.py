@@ -203,6 +203,17 @@ def test_what_else_lies_beside_the_study(tmp_path):
     assert open_study(study).study.title
 
 
+def test_tables_in_the_study_itself_are_told_once(tmp_path):
+    study = tmp_path / "stage.toml"
+    good = GOOD.replace('spread = "c-5"', "")
+    study.write_text(f"# [table.x] in a remark is none\n{good}", encoding="utf-8")
+    assert open_study(study).study.title
+    study.write_text(f"{good}\n[table.mine]\ntitle = 'x'\n", encoding="utf-8")
+    with pytest.raises(StudyError, match="to another file beside the study") as caught:
+        open_study(study)
+    assert len(caught.value.problems) == 1
+
+
 def test_tables_lie_beside_the_study(tmp_path):
     (tmp_path / "stage.toml").write_text(GOOD, encoding="utf-8")
     with pytest.raises(StudyError, match="a known spread table"):

@@ -9,6 +9,7 @@ every file is reported at once.
 from __future__ import annotations
 
 import hashlib
+import re
 import tomllib
 from collections.abc import Mapping
 from dataclasses import dataclass, field
@@ -55,6 +56,7 @@ UNITS: Final[Mapping[str, str]] = {
 }
 """Units of measure of the quantities; those not named are pure numbers."""
 
+_ENTRY: Final = re.compile(rb"^\s*\[table\.", re.MULTILINE)
 _HEAD: Final = ("title", "for", "basis", "source")
 _SETTINGS: Final = ("deviation", "implied_half_window")
 
@@ -90,14 +92,16 @@ def load_tables(study_path: Path | None, tables_dir: Path | None) -> dict[str, S
     found: dict[str, SpreadTable] = {}
     problems: list[Problem] = []
     for place in places:
-        found |= _read_folder(place, problems)
+        found |= _read_folder(place, problems, study_path)
     if problems:
         raise StudyError(problems)
     return dict(sorted(found.items()))
 
 
-def _read_folder(folder: Path, problems: list[Problem]) -> dict[str, SpreadTable]:
-    """Tables of one folder; a name used twice in it is a mistake."""
+def _read_folder(
+    folder: Path, problems: list[Problem], study: Path | None
+) -> dict[str, SpreadTable]:
+    """Tables of one folder; a name used twice in it is a mistake, and so is one in the study."""
     tables: dict[str, SpreadTable] = {}
     for path in sorted(folder.glob("*.toml")):
         if not path.is_file():
@@ -109,7 +113,12 @@ def _read_folder(folder: Path, problems: list[Problem]) -> dict[str, SpreadTable
             cure = "Give yourself the right to read it, or move it away."
             problems.append(Problem(path.name, "", "", got, "a file that can be read", cure=cure))
             continue
-        if b"[table." not in data:  # a study, or anything else that happens to lie here
+        if not _ENTRY.search(data):  # a study, or anything else that happens to lie here
+            continue
+        if study is not None and path.resolve() == study.resolve():
+            cure = "Move the entries [table.NAME] to another file beside the study."
+            want = "spread tables in a file of their own"
+            problems.append(Problem(path.name, "table", "", "some in the study", want, "", cure))
             continue
         for name, table in read_tables(data, path.name, problems).items():
             if name in tables:
