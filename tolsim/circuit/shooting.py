@@ -23,6 +23,7 @@ from tolsim.circuit.cycle import Cycle, run_cycle
 from tolsim.circuit.devices import Floats, Ints
 from tolsim.circuit.floquet import deflated_multipliers, largest_beside_charge
 from tolsim.circuit.orbit import Solution, Status
+from tolsim.circuit.stepper import solve_each
 from tolsim.circuit.thermal import HIGHEST_C, Case
 
 TOLERANCE = 2e-5  # accepted Newton correction, relative to the amplitude of each state
@@ -185,7 +186,7 @@ def _newton_move(cycle: Cycle, here: Start, frame: Frame) -> Floats:
         gap = np.concatenate([gap, phase[:, None]], axis=1)
     sound = np.isfinite(matrix).all(axis=(1, 2)) & np.isfinite(gap).all(axis=1)
     matrix[~sound] = np.eye(matrix.shape[1])
-    move = -np.linalg.solve(matrix, gap[:, :, None])[:, :, 0]
+    move = -solve_each(matrix, gap[:, :, None])[:, :, 0]
     move[~sound] = np.nan
     return move
 

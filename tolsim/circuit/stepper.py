@@ -123,9 +123,11 @@ def solve_ports(devices: Devices, c: Floats, K: Floats, target: Floats, guess: F
         residual = v + apply(K, here.w) - target
         matrix = identity + K @ here.W
         correction = _correction(matrix, residual)
-        settled = np.abs(correction).max(axis=1, initial=0.0) < PORT_TOLERANCE
+        size = np.abs(correction).max(axis=1, initial=0.0)
+        settled = size < PORT_TOLERANCE
         v = v + correction
-        if settled.all() or settled.mean() > ENOUGH_SETTLED:
+        # a unit that is not a number any more is not waited for
+        if not (size >= PORT_TOLERANCE).any() or settled.mean() > ENOUGH_SETTLED:
             break
     # one linear step keeps v + K w = target exact, so that charge is conserved to round-off
     state = PortState(
@@ -179,7 +181,8 @@ def _solve_damped(
         correction = _correction(matrix, v + apply(K, here.w) - target)
         size = np.abs(correction).max(axis=1)
         settled = size < PORT_TOLERANCE
-        if settled.all():
+        finished = settled | ~np.isfinite(size)  # from nowhere no correction leads back
+        if finished.all():
             break
         share = np.ones(len(v))
         for _ in range(HALVINGS):
@@ -187,11 +190,11 @@ def _solve_damped(
             left = _correction(matrix, trial + apply(K, measure(devices, c, trial).w) - target)
             # written so that a trial that is not finite counts as too long
             fine = np.abs(left).max(axis=1) <= (1 - 0.25 * share) * size
-            too_long = ~(fine | settled)
+            too_long = ~(fine | finished)
             if not too_long.any():
                 break
             share = np.where(too_long, 0.5 * share, share)
-        v = np.where(settled[:, None], v, trial)
+        v = np.where(finished[:, None], v, trial)
     return PortState(
         v=v + correction,
         q=here.q + apply(here.C, correction),
@@ -205,8 +208,19 @@ def _solve_damped(
 
 def _correction(matrix: Floats, residual: Floats) -> Floats:
     """-A^-1 r for each unit, (N, p)."""
-    move = -np.linalg.solve(matrix, residual[:, :, None])[:, :, 0]
-    return np.asarray(move, dtype=np.float64)
+    return -solve_each(matrix, residual[:, :, None])[:, :, 0]
+
+
+def solve_each(matrix: Floats, sides: Floats) -> Floats:
+    """A^-1 b for each unit; NaN for one that ran away so far that its matrix is singular."""
+    try:
+        return np.asarray(np.linalg.solve(matrix, sides), dtype=np.float64)
+    except np.linalg.LinAlgError:
+        lost = np.linalg.slogdet(matrix).sign == 0
+        sound = np.where(lost[:, None, None], np.eye(matrix.shape[1]), matrix)
+        answer = np.asarray(np.linalg.solve(sound, sides), dtype=np.float64)
+        answer[lost] = np.nan
+        return answer
 
 
 @dataclass(frozen=True)
@@ -273,7 +287,7 @@ class Stepper:
     def stage_sensitivity(self, dx_lin: Floats, point: Point) -> Sensitivity:
         """Derivatives of a solved stage from those of its linear part (N, n, m)."""
         m, port = self.matrices, point.port
-        dv = np.linalg.solve(port.matrix, self.network.D @ dx_lin)
+        dv = solve_each(port.matrix, self.network.D @ dx_lin)
         dw = port.W @ dv
         dx = dx_lin - m.H @ dw
         return Sensitivity(dx, m.G @ dx + m.H @ (port.C @ dv), dw)
