@@ -4,7 +4,9 @@ from __future__ import annotations
 
 from collections.abc import Mapping, Sequence
 from dataclasses import dataclass, field
+from functools import lru_cache
 
+import joblib
 import numpy as np
 import pandas as pd
 
@@ -56,6 +58,18 @@ def evaluate(plan: Plan, first: int, count: int, block: int) -> Chunk:
     factors = pd.DataFrame(draws.values[:count], columns=list(draws.names))
     factors.insert(0, "unit", np.arange(first, first + count))
     return Chunk(first, rows, factors)
+
+
+@lru_cache(maxsize=1)
+def _stored(plan_file: str) -> Plan:
+    """Read a plan once per worker, its large arrays shared between workers through the file."""
+    plan: Plan = joblib.load(plan_file, mmap_mode="r")
+    return plan
+
+
+def evaluate_stored(plan_file: str, first: int, count: int, block: int) -> Chunk:
+    """Evaluate for a worker: the plan comes from a file, not with every task."""
+    return evaluate(_stored(plan_file), first, count, block)
 
 
 def solve_case(plan: Plan, name: CaseName, draws: Draws) -> tuple[Case, Solution]:

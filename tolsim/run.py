@@ -11,8 +11,10 @@ import json
 from collections.abc import Callable, Iterator, Mapping
 from dataclasses import replace
 from pathlib import Path
+from tempfile import TemporaryDirectory
 from typing import Any
 
+import joblib
 import numpy as np
 import pandas as pd
 from joblib import Parallel, delayed, parallel_config
@@ -25,7 +27,7 @@ from tolsim.answers.unit_files import Columns, FrameColumns, UnitFiles, damaged,
 from tolsim.crosscheck import crosscheck
 from tolsim.design import Study
 from tolsim.errors import RequestError
-from tolsim.evaluation import Chunk, Plan, evaluate
+from tolsim.evaluation import Chunk, Plan, evaluate, evaluate_stored
 from tolsim.nominals import prepare
 from tolsim.recheck import recheck
 from tolsim.solver_choice import choose_solvers, wants_bulk
@@ -39,7 +41,7 @@ _IDENTITY = {
     "seed": "another seed",
     "tables": "other spread tables",
     "versions": "another version of tolsim or of a library",
-    "solver": "another solver, since the numbers of units differ much",
+    "solver": "another choice of solvers",
 }
 
 Progress = Callable[[int, int], None]
@@ -209,10 +211,17 @@ def _evaluated(plan: Plan, wanted: list[tuple[int, int]], jobs: int | None) -> I
     if jobs == 1 or len(wanted) <= 1:
         yield from (evaluate(plan, first, count, CHUNK) for first, count in wanted)
         return
-    # the arrays of a unit are small: threads inside a worker would only get in the way
-    with parallel_config(backend="loky", inner_max_num_threads=1):
+    with (
+        TemporaryDirectory(prefix="tolsim-", ignore_cleanup_errors=True) as folder,
+        # the arrays of a unit are small: threads inside a worker would only get in the way
+        parallel_config(backend="loky", inner_max_num_threads=1),
+    ):
+        plan_file = str(Path(folder) / "plan.joblib")
+        joblib.dump(plan, plan_file)
         work = Parallel(n_jobs=jobs or -1, return_as="generator_unordered")
-        yield from work(delayed(evaluate)(plan, first, count, CHUNK) for first, count in wanted)
+        yield from work(
+            delayed(evaluate_stored)(plan_file, first, count, CHUNK) for first, count in wanted
+        )
 
 
 def _quality(plan: Plan, units: Columns) -> dict[str, Any]:
