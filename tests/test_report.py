@@ -127,6 +127,12 @@ def test_shares_beyond_everything_are_called_chance(content):
     assert "Left over: -" not in text_of(page)
 
 
+def test_yield_over_lots_is_not_the_yield_of_a_lot(content):
+    words = "so this is the yield over many lots"
+    assert words in text_of(render(replace(content, lots=True)))
+    assert words not in text_of(render(replace(content, lots=False)))
+
+
 def test_failing_units_are_named(page):
     text = text_of(page)
     assert "latched both on" in text

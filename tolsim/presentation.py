@@ -62,8 +62,17 @@ def report_content(plan: Plan, opened: StudyFile, results: Results) -> ReportInp
         assumptions=assumptions(study, opened.tables),
         not_modelled=NOT_MODELLED,
         cautions=CAUTIONS,
+        lots=_lots_differ(study, opened.tables),
         repeat_command=f"tolsim run study.toml --units {study.run.units} --seed {study.run.seed}",
     )
+
+
+def _lots_differ(study: Study, tables: Mapping[str, SpreadTable]) -> bool:
+    """True if a spread table of the study has a law for whole lots."""
+    references = (*study.design.parts, *study.design.rails)
+    names = {name for ref in references for name in tables_of(study, ref)}
+    spreads = [spread for name in names for spread in tables[name].quantities.values()]
+    return any(spread.lot is not None or spread.shared for spread in spreads)
 
 
 def reference_condition(study: Study) -> str:

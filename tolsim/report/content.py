@@ -101,6 +101,8 @@ class ReportInput:
     repeat_command : str
         What to type to get the same numbers again.
     study_text : str
+    lots : bool
+        True if units differ by what a whole lot of parts shares.
     """
 
     title: str
@@ -117,6 +119,7 @@ class ReportInput:
     cautions: tuple[str, ...]
     repeat_command: str
     study_text: str
+    lots: bool
 
 
 def report_input(
@@ -129,6 +132,7 @@ def report_input(
     not_modelled: Sequence[str] = (),
     cautions: Sequence[str] = (),
     repeat_command: str = "",
+    lots: bool = False,
 ) -> ReportInput:
     """Gather the content of the report from the results of a run.
 
@@ -163,6 +167,7 @@ def report_input(
         cautions=tuple(cautions),
         repeat_command=repeat_command,
         study_text=results.study_text,
+        lots=lots,
     )
 
 

@@ -259,7 +259,7 @@ def start_sentences(summary: Summary, start_states: tuple[str, ...]) -> list[str
                 f"{'unit' if entry['units'] == 1 else 'units'} "
                 f"{list_of_units(entry['first_units'], entry['units'])}."
             )
-        sentences.append(sentence)
+        sentences.append(sentence.replace("….", "…"))
     return sentences
 
 
