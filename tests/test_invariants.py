@@ -74,7 +74,7 @@ def joined(parts: list[tuple[Solution, dict[str, np.ndarray]]]):
     return whole, {name: np.concatenate([figures[name] for _, figures in parts]) for name in names}
 
 
-@settings(max_examples=4, deadline=None)
+@settings(max_examples=3, deadline=None, derandomize=True)
 @given(seed=st.integers(0, 2**32 - 1), size=st.integers(1, 5))
 def test_chunk_size_changes_nothing(compass: Compass, seed: int, size: int) -> None:
     """Batch equals loop (chunks of 1) and any other chunks: values, status, rounds."""
@@ -84,7 +84,7 @@ def test_chunk_size_changes_nothing(compass: Compass, seed: int, size: int) -> N
     same(answers(case, compass), joined(chunks))
 
 
-@settings(max_examples=4, deadline=None)
+@settings(max_examples=3, deadline=None, derandomize=True)
 @given(seed=st.integers(0, 2**32 - 1), order=st.permutations(range(6)))
 def test_permuting_units_permutes_answers(compass: Compass, seed: int, order: list[int]) -> None:
     case, shuffle = units(6, seed), np.array(order)
@@ -163,6 +163,7 @@ def test_troubled_units_alone_and_together(compass: Compass) -> None:
         np.testing.assert_allclose(alone.period[0], together.period[unit], rtol=1e-6)
 
 
+@pytest.mark.slow
 def test_where_bursts_begin(compass: Compass) -> None:
     """A complex pair of multipliers leaves the unit circle as the bias gets slower."""
     resistances = np.array([1e4, 3e4, 5e4, 6e4])
