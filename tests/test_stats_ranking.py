@@ -165,3 +165,15 @@ def test_hundred_factors_are_ranked_quickly():
     start = time.perf_counter()
     rank_factors(x, x[:, 0], rng)
     assert time.perf_counter() - start < 2.0
+
+
+def test_a_hundred_idle_factors_beside_a_strong_one_are_hardly_ever_seen():
+    idle = 0
+    for seed in range(8):
+        rng = np.random.default_rng(seed)
+        x = rng.normal(size=(60, 100))
+        y = 3.0 * x[:, 0] + rng.normal(size=60)
+        seen = rank_factors(x, y, np.random.default_rng(1)).distinguishable
+        assert seen[0]
+        idle += int(seen[1:].sum())
+    assert idle <= 1
