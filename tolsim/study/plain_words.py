@@ -142,13 +142,18 @@ def describe(field: FieldInfo) -> str:
             return mark.kind.phrase()
         for bound, (word, attribute) in _BOUNDS.items():
             if isinstance(mark, bound):
-                bounds.append(f"{word} {getattr(mark, attribute)}")
+                bounds.append(f"{word} {_plain(getattr(mark, attribute))}")
     if bounds:
         number = "a whole number" if field.annotation is int else "a number"
         return f"{number} {' and '.join(bounds)}"
     if field.annotation is bool:
         return "true or false"
     return "a text in quotes" if field.annotation is str else ""
+
+
+def _plain(bound: float) -> str:
+    """A bound without the ".0" and the many digits of a float."""
+    return f"{bound:.15g}"
 
 
 def _length(field: FieldInfo) -> int:
