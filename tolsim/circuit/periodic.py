@@ -11,6 +11,9 @@ import numpy as np
 from tolsim.circuit.devices import Floats
 
 
+LARGEST_LIFT = 0.01  # of peak-to-peak; a sine of 32 points per period asks for a quarter of it
+
+
 def highest(wave: Floats) -> Floats:
     """Largest value of a periodic wave, by a parabola through the three points around it."""
     top = np.argmax(wave, axis=0)
@@ -20,8 +23,10 @@ def highest(wave: Floats) -> Floats:
     bend = before - 2 * middle + after
     slope = 0.5 * (after - before)
     lift = np.where(bend < 0, -(slope**2) / np.where(bend < 0, 2 * bend, 1.0), 0.0)
-    # a vertex can lie at most half a step from the largest sample
-    return middle + np.minimum(lift, 0.5 * np.abs(slope))
+    # a vertex lies at most half a step from the largest sample; beside an edge that rises within
+    # one step the parabola knows nothing, and what it may add is bounded
+    bound = np.minimum(0.5 * np.abs(slope), LARGEST_LIFT * np.ptp(wave, axis=0))
+    return middle + np.minimum(lift, bound)
 
 
 def lowest(wave: Floats) -> Floats:
