@@ -222,17 +222,20 @@ def _mode_growth(eigenvalues: Complexes, reference: float) -> Floats:
     return np.where(np.isfinite(best), best, -reference)
 
 
-def noise_amplitude(network: Network, bias: Bias, vector: Complexes, ambient_c: Floats) -> Floats:
-    """Thermal amplitude of a mode relative to its largest port voltage, V.
+def noise_amplitude(network: Network, bias: Bias, lead: Modes, ambient_c: Floats) -> Floats:
+    """Thermal amplitude of the leading modes on their largest port, V.
 
-    Equipartition: the mode stores k T / 2 per quadratic term, so its port amplitude is
-    sqrt(k T / C_eff) with C_eff = x* C x / |x_port|^2 (Nyquist, Phys. Rev. 32 (1928) 110).
+    Equipartition (Nyquist, Phys. Rev. 32 (1928) 110): a mode of g quadratic terms holds g k T / 2,
+    and its mean energy at amplitude 1 is x* C x / (2 g), with g = 2 for one that oscillates and 1
+    for one that does not.  So its port amplitude is g sqrt(k T / C_eff), with
+    C_eff = x* C x / |x_port|^2.
     """
     C, _, _ = small_signal(network, bias)
-    energy = np.einsum("ui,uij,uj->u", vector.conj(), C, vector).real
-    swing = np.abs(vector @ network.D.T).max(axis=1)
+    energy = np.einsum("ui,uij,uj->u", lead.vector.conj(), C, lead.vector).real
+    swing = np.abs(lead.vector @ network.D.T).max(axis=1)
     capacitance = np.abs(energy) / np.maximum(swing, 1e-300) ** 2
-    return np.sqrt(BOLTZMANN * (ambient_c + 273.15) / np.maximum(capacitance, 1e-15))
+    terms = np.where(lead.frequency > 0, 2.0, 1.0)
+    return terms * np.sqrt(BOLTZMANN * (ambient_c + 273.15) / np.maximum(capacitance, 1e-15))
 
 
 def resemblance(network: Network, vector: Complexes, reference: Complexes) -> Floats:

@@ -28,7 +28,7 @@ def measure_start(case: Case, nominal: Nominal) -> dict[str, Floats]:
     bias = bias_point(network, guess)
     lead = modes(network, bias, nominal.shift)
     margin = start_margin(network, bias, nominal.shift, _nominal_critical(nominal), lead)
-    noise = noise_amplitude(network, bias, lead.vector, case.values["ambient"])
+    noise = noise_amplitude(network, bias, lead, case.values["ambient"])
     swing = _orbit_swing(nominal)
     with np.errstate(divide="ignore", invalid="ignore"):
         time = np.where(lead.growth > 0, np.log(FULL_SWING * swing / noise) / lead.growth, np.inf)
