@@ -36,6 +36,14 @@ def test_the_study_is_short_and_without_mistakes(place):
     assert tolsim.load_study("beacon.toml").title in text
 
 
+def test_the_spread_table_shown_can_be_used(place):
+    (table,) = re.findall(r"\n((?: {6}\S.*\n)+)", README)
+    (place / "ours.toml").write_text(re.sub(r"(?m)^ {6}", "", table), encoding="utf-8")
+    study = (place / "beacon.toml").read_text(encoding="utf-8")
+    (place / "beacon.toml").write_text(study.replace("film-pp-5pct", "our-film"), encoding="utf-8")
+    assert tolsim.load_study("beacon.toml")
+
+
 def test_the_study_runs_and_its_failures_are_those_told(place):
     arguments = ["run", "beacon.toml", "--units", "30", "--jobs", "1"]
     answer = CliRunner().invoke(main, arguments)
