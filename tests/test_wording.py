@@ -7,6 +7,7 @@ from hypothesis import strategies as st
 
 from tolsim.answers.lines import summary_lines
 from tolsim.answers.wording import (
+    FARTHEST_DB,
     between,
     failures,
     hardest,
@@ -18,6 +19,7 @@ from tolsim.answers.wording import (
     shown,
     verdict_sentence,
 )
+from tolsim.circuit.startup import MARGIN_STEPS_DB
 
 
 def bare(passed, failed, undecided, low, high):
@@ -147,3 +149,10 @@ def test_terminal_summary_fits_80_columns_and_begins_with_the_verdict():
 
 def test_terminal_summary_of_next_to_nothing():
     assert summary_lines(bare(1, 0, 0, 0.025, 1.0))[0].startswith("Of 1 simulated units, 1 passes")
+
+
+def test_margins_at_the_end_of_the_search_say_so():
+    assert MARGIN_STEPS_DB[-1] == FARTHEST_DB
+    assert shown(60.0, "dB") == "60 dB or more"
+    assert shown(-60.0, "dB") == "-60 dB or less"
+    assert shown(59.2, "dB") == "59.2 dB"

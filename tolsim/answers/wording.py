@@ -12,6 +12,7 @@ from tolsim.quantity import show
 Summary = Mapping[str, Any]
 
 DIGITS = 3
+FARTHEST_DB = 60.0  # margins are not searched for beyond, see circuit.startup
 MOST_DECIMALS = 6
 DASH = "\u2013"  # nothing to show
 OPEN = "open"  # an end this many units cannot bound
@@ -31,6 +32,9 @@ def shown(value: float | None, unit_of_measure: str) -> str:
     """Number with its unit of measure, three significant digits; a dash for nothing."""
     if value is None or not math.isfinite(value):
         return DASH
+    if unit_of_measure == "dB" and abs(value) >= FARTHEST_DB:
+        end = f"{math.copysign(FARTHEST_DB, value):.0f} dB"
+        return f"{end} or more" if value > 0 else f"{end} or less"
     return show(value, unit_of_measure, DIGITS).replace("degC", "°C")
 
 
