@@ -22,7 +22,7 @@ import numpy as np
 
 from tolsim.circuit.cycle import run_cycle
 from tolsim.circuit.devices import Floats, Ints
-from tolsim.circuit.nominal import Nominal
+from tolsim.circuit.nominal import Nominal, last_crossing
 from tolsim.circuit.orbit import Solution, Status
 from tolsim.circuit.shooting import Frame, HeatResponse, Start, bordered_matrix, shoot
 from tolsim.circuit.thermal import Case
@@ -252,6 +252,22 @@ def _lead_in(case: Case, compass: Compass, frame: Frame, steps: int) -> Solution
     return solution
 
 
+def _seen_in_time(tail: Floats, start: Start, step: Floats, frame: Frame) -> Start:
+    """Start shooting where and as fast as each unit was seen to swing at the end of the run.
+
+    Far from the nominal unit the predicted period would send Newton astray.
+    """
+    x, period = tail[-1].copy(), start.period.copy()
+    if frame.driven:
+        return Start(x, period, start.junctions)
+    for unit in range(len(period)):  # a handful: what neither prediction nor blends settled
+        seen = last_crossing(tail[:, unit, frame.lead], float(step[unit]), float(period[unit]))
+        if seen is not None:
+            place, period[unit] = seen
+            x[unit] = tail[place, unit]
+    return Start(x, period, start.junctions)
+
+
 def _decide_in_time(case: Case, compass: Compass, frame: Frame, steps: int) -> Solution:
     """Integrate from the nominal orbit: decay means no orbit, a lasting swing is shot at again."""
     orbit = compass.nominal.solution
@@ -262,10 +278,10 @@ def _decide_in_time(case: Case, compass: Compass, frame: Frame, steps: int) -> S
     phase = 1 / LEAD_STEPS if frame.driven else 0.0
     with np.errstate(all="ignore"):
         samples = march(network, orbit.samples[0][copies], step, LEAD_STEPS * LEAD_CYCLES, phase)
-    tail = samples[-4 * LEAD_STEPS :, :, frame.lead]
-    swing = np.ptp(tail, axis=0) / np.ptp(orbit.samples[:, 0, frame.lead])
+    tail = samples[-8 * LEAD_STEPS :]
+    swing = np.ptp(tail[..., frame.lead], axis=0) / np.ptp(orbit.samples[:, 0, frame.lead])
     dead = swing < DECAYED
-    again = Start(samples[-1], start.period, start.junctions)
+    again = _seen_in_time(tail, start, step, frame)
     solution = shoot(
         case, again, frame, steps, 2 * SHOOTING_ROUNDS, "time domain", heat=compass.heat
     )

@@ -159,7 +159,7 @@ def _first_guess(
     lead, coarse_period = found
     places, periods = [], []
     for copy in np.flatnonzero(sound):
-        crossing = _last_crossing(window[:, copy, lead], step, coarse_period)
+        crossing = last_crossing(window[:, copy, lead], step, coarse_period)
         if crossing is not None:
             places.append((copy, crossing[0]))
             periods.append(crossing[1])
@@ -213,8 +213,11 @@ def _clearest_state(x: Floats, step: float) -> tuple[int, float] | None:
     return lead, count * step / float(peak[lead])
 
 
-def _last_crossing(x: Floats, step: float, period: float) -> tuple[int, float] | None:
-    """Sample just after the last upward mean crossing but one, and the mean interval."""
+def last_crossing(x: Floats, step: float, period: float) -> tuple[int, float] | None:
+    """Sample just after the last upward mean crossing but one, and the mean interval, s.
+
+    Intervals off the expected period by more than a fifth are ripple; None without two that fit.
+    """
     centred = x - 0.5 * (x.max() + x.min())
     up = np.flatnonzero((centred[:-1] < 0) & (centred[1:] >= 0))
     if len(up) < LEAST_CROSSINGS:
