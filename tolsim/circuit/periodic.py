@@ -10,7 +10,6 @@ import numpy as np
 
 from tolsim.circuit.devices import Floats
 
-
 LARGEST_LIFT = 0.01  # of peak-to-peak; a sine of 32 points per period asks for a quarter of it
 
 
