@@ -17,6 +17,7 @@ kind = "self-oscillating"
 units = {units}
 seed = {seed}
 steps_per_cycle = 128
+solver = "{solver}"
 rank = ["QA.drain_peak"]
 
 [rails.vdd]
@@ -104,10 +105,11 @@ def text(
     seed: int = 5,
     bias: float = 4.2,
     drain_share: float = 0.63,
+    solver: str = "shooting",
     conditions: tuple[tuple[str, float, float], ...] = (("room", 25, 0),),
 ) -> str:
     """TOML of the study; conditions are (name, degC, supply deviation in percent)."""
-    head = HEAD.format(units=units, seed=seed, bias=bias, drain_share=drain_share)
+    head = HEAD.format(units=units, seed=seed, bias=bias, drain_share=drain_share, solver=solver)
     sides = [
         SIDE.format(up=up, low=up.lower(), near=near, far=far)
         for up, near, far in (("A", "p", "q"), ("B", "q", "p"))

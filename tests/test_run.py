@@ -157,3 +157,17 @@ def test_study_without_any_orbit(tmp_path: Path) -> None:
     path.write_text(text, encoding="utf-8")
     with pytest.raises(RunError, match="settles on no periodic orbit in any case"):
         run_study(path, units=2, jobs=1)
+
+
+def test_the_bulk_solver_serves_and_is_checked(tmp_path: Path) -> None:
+    """Left to choose, the run says what served, how far off it was, and what the other said."""
+    results = run_study(write(tmp_path, units=20, solver="auto"), jobs=1)
+    (served,) = results.quality["solvers"]
+    assert (served["solver"], served["state"]) == ("collocation", "lit")
+    assert max(served["peak_error"], served["rms_error"]) < 1e-3
+    crosscheck = results.quality["crosscheck"]
+    assert crosscheck["units"] >= 16
+    assert not crosscheck["warning"]
+    assert set(results.units["way"]) == {"collocation"}
+    longer = run_study(write(tmp_path, units=24, solver="auto"), jobs=2).units.head(20)
+    pd.testing.assert_frame_equal(results.units, longer, check_exact=True)

@@ -93,7 +93,7 @@ class Run(Frozen):
     seed: Annotated[int, Field(ge=0)] = 1
     confidence: Annotated[float, Field(gt=0.5, lt=1)] = 0.95
     steps_per_cycle: Annotated[int, Field(ge=32, le=4096)] = 192
-    solver: Literal["auto", "shooting", "collocation"] = "auto"
+    solver: Literal["auto", "shooting"] = "auto"
     rank: tuple[str, ...] = ()  # figures to rank factors for, "Q1.drain_peak"
 
 

@@ -24,14 +24,15 @@ from tolsim.spread.sampling import Factor, draw
 from tolsim.spread.table import SpreadTable
 
 PILOTS = 256
-LONG_RUN = 2000  # units from which preparing the bulk solver pays, even for stages of 25 states
 
 
 def wants_bulk(study: Study) -> bool:
-    """Whether the bulk solver is to be tried: asked for, or left open in a long run."""
-    if study.run.solver == "auto":
-        return study.run.units >= LONG_RUN
-    return study.run.solver == "collocation"
+    """Whether the bulk solver is tried: unless the study pins shooting.
+
+    The number of units must not matter: the same solver serves unit k in a short run and in a
+    long one.
+    """
+    return study.run.solver != "shooting"
 
 
 def choose_solvers(
