@@ -31,8 +31,9 @@ def crosscheck(plan: Plan) -> dict[str, Any]:
     Returns
     -------
     dict
-        {units, share, worst {figure, condition, state, difference} or None, warning}; empty if
-        shooting served every case.  Differences are over stage figures and all figures with a
+        {units, share, worst {figure, condition, state, difference}, worst_judged (the same among
+        stage figures and those a limit of the study judges), warning (of `worst_judged`)}; empty
+        if shooting served every case.  Differences are over stage figures and all figures with a
         rating or limit, relative to the value or to that limit, whichever is larger: a narrow
         current spike is right to a few percent of itself, which matters only near its limit.
     """
@@ -45,32 +46,38 @@ def crosscheck(plan: Plan) -> dict[str, Any]:
     rng = np.random.default_rng([plan.study.run.seed, units])
     numbers = np.sort(rng.choice(units, wanted, replace=False))
     draws = draw_chosen(plan.factors, plan.study.run.seed, numbers)
-    found = [_compare(plan, name, draws) for name in served]
-    worst = max(found, key=lambda entry: entry["difference"])
+    found = [entry for name in served for entry in _compare(plan, name, draws)]
+    judged = {*ALWAYS, *(bound.column for bound in bounds(plan.study))}
+    worst_judged = _largest([entry for entry in found if entry["figure"] in judged])
     return {
         "units": wanted * len(served),
         "share": wanted / units,
-        "worst": worst,
-        "warning": bool(worst["difference"] > WARNING),
+        "worst": _largest(found),
+        "worst_judged": worst_judged,
+        "warning": bool(worst_judged["difference"] > WARNING),
     }
 
 
-def _compare(plan: Plan, name: CaseName, draws: Draws) -> dict[str, Any]:
-    """Largest relative difference of any figure that matters, in one case."""
+def _largest(entries: list[dict[str, Any]]) -> dict[str, Any]:
+    return max(entries, key=lambda entry: float(entry["difference"]))
+
+
+def _compare(plan: Plan, name: CaseName, draws: Draws) -> list[dict[str, Any]]:
+    """Largest relative difference over the units, of every figure that matters, in one case."""
     case, mine = solve_case(plan, name, draws)
     steps = plan.study.run.steps_per_cycle
     other = solve_units(case, plan.cases[name].compass, steps)
     ours, theirs = measure_orbits(case, mine), measure_orbits(case, other)
-    figure, worst = "", 0.0
+    found = []
     for column, floor in _floors(plan.study).items():
         if column not in ours or column not in theirs:
             continue
         size = np.maximum(np.maximum(np.abs(ours[column]), np.abs(theirs[column])), floor)
         gap = np.abs(ours[column] - theirs[column]) / np.where(size > 0, size, 1.0)
         difference = float(np.nanmax(gap, initial=0.0))
-        if difference > worst:
-            figure, worst = column, difference
-    return {"figure": figure, "condition": name[0], "state": name[1], "difference": worst}
+        place = {"condition": name[0], "state": name[1]}
+        found.append({"figure": column, **place, "difference": difference})
+    return found
 
 
 def _floors(study: Study) -> Mapping[str, float]:

@@ -88,6 +88,13 @@ def _quality(quality: Mapping[str, Any]) -> Iterator[str]:
         yield f"energy balance: worst unit off by {percent(balance['worst'])}"
     if again:
         yield f"solved again in the time domain: {again['units']}, {again['agreed']} agree"
+    crosscheck = quality.get("crosscheck")
+    if crosscheck:
+        worst = crosscheck["worst"]
+        yield (
+            f"solved by both solvers: {crosscheck['units']}, at most"
+            f" {percent(worst['difference'])} apart ({worst['figure']})"
+        )
 
 
 def _cut(line: str) -> str:

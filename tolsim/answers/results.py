@@ -43,7 +43,8 @@ not known (an interval that this many units cannot close).  Every `low`, `high` 
                 shooting), frequency_error, peak_error, rms_error (largest on the pilot units),
                 shooting_frequency_error ..., settled_share, reason}] (empty: shooting served all
                 cases), crosscheck {units, share, worst {figure, condition, state, difference},
-                warning} (empty without bulk solver),
+                worst_judged (the same among figures the study judges), warning (of it)} (empty
+                without bulk solver),
                 rechecked {units, share, agreed, worst_difference, worst_frequency_difference},
                 steps {steps_per_cycle, recheck_steps_per_cycle, recheck_cycles}}
 ``provenance``  {seed, versions {name: version}, study_sha256, tables {name: sha256}, ...}

@@ -194,7 +194,7 @@ def doubts(summary: Summary) -> list[str]:
     found = []
     crosscheck = summary["quality"].get("crosscheck") or {}
     if crosscheck.get("warning"):
-        worst = crosscheck["worst"]
+        worst = crosscheck["worst_judged"]
         found.append(
             f"Warning: two solvers differ by {percent(worst['difference'])} in {worst['figure']}"
             f" ({worst['condition']}, {worst['state']})."
