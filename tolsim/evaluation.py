@@ -23,8 +23,6 @@ from tolsim.spread.sampling import Draws, Factor, draw
 from tolsim.spread.table import SpreadTable
 from tolsim.verdicts import judge
 
-BATCH = 256  # units solved side by side: enough to amortise calls, small enough for the cache
-
 
 @dataclass(frozen=True)
 class Plan:

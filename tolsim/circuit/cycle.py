@@ -18,21 +18,8 @@ from numpy.typing import NDArray
 
 from tolsim.circuit.devices import Floats
 from tolsim.circuit.network import Network
-from tolsim.circuit.stepper import GAMMA, A, B, Point, Sensitivity, Stepper
-
-
-def _extrapolation(known: tuple[float, float, float], wanted: float) -> NDArray[np.float64]:
-    """Lagrange weights of a quadratic through three times, at a fourth."""
-    weights = np.ones(3)
-    for i, here in enumerate(known):
-        for j, other in enumerate(known):
-            if i != j:
-                weights[i] *= (wanted - other) / (here - other)
-    return weights
-
-
-STAGE_WEIGHTS = _extrapolation((-1.0, GAMMA - 1.0, 0.0), GAMMA)
-END_WEIGHTS = _extrapolation((GAMMA - 1.0, 0.0, GAMMA), 1.0)
+from tolsim.circuit.stepper import A, B, Point, Sensitivity, Stepper
+from tolsim.circuit.walk import walk
 
 
 @dataclass(frozen=True)
@@ -67,31 +54,17 @@ def run_cycle(
     samples = np.empty((steps + 1, *x0.shape))
     samples[0] = x0
     settled = np.ones(len(x0), dtype=bool)
-    earlier, middle = point.port.v, point.port.v
-    for k in range(steps):
-        phase = k / steps
-        guess = point.port.v if k == 0 else _blend(STAGE_WEIGHTS, earlier, middle, point.port.v)
-        inner = stepper.stage(stepper.trapezoid_part(point, phase, GAMMA / steps), guess)
-        if k == 0:
-            guess = point.port.v + (inner.port.v - point.port.v) / GAMMA
-        else:
-            guess = _blend(END_WEIGHTS, middle, point.port.v, inner.port.v)
-        x_lin = A * inner.y - B * point.y + stepper.push(phase + 1 / steps)
-        end = stepper.stage(x_lin, guess)
+    known = period if autonomous else None
+    for k, (here, inner, end) in enumerate(walk(stepper, point, steps, 1 / steps)):
         if slope is not None:
-            slope = _step_slope(stepper, slope, point, inner, end, period if autonomous else None)
+            slope = _step_slope(stepper, slope, here, inner, end, known)
         settled &= inner.settled & end.settled
-        earlier, middle, point = point.port.v, inner.port.v, end
         samples[k + 1] = end.x
     if slope is None:
         return Cycle(samples, None, None, settled)
     n = x0.shape[1]
     by_period = slope.dx[:, :, n] if autonomous else None
     return Cycle(samples, slope.dx[:, :, :n], by_period, settled)
-
-
-def _blend(weights: NDArray[np.float64], a: Floats, b: Floats, c: Floats) -> Floats:
-    return weights[0] * a + weights[1] * b + weights[2] * c
 
 
 def _step_slope(

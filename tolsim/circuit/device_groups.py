@@ -5,7 +5,7 @@ Devices across the same pair of nets share a port, so a gate clamp costs no extr
 
 from __future__ import annotations
 
-from collections.abc import Mapping
+from collections.abc import Callable, Mapping
 from dataclasses import dataclass, field
 
 import numpy as np
@@ -131,12 +131,13 @@ def _gathered(
 ) -> list[Elements]:
     """Elements of the kinds that occur."""
     elements: list[Elements] = []
-    if ramps.names:
-        elements.append(_ramps(ramps, ports, units))
-    if junctions.names:
-        elements.append(_junctions(junctions, ports, units))
-    if biased.names:
-        elements.append(_biased(biased, ports, units))
+    for kind, rows, numbers in (
+        (Ramps, ramps, ("offset", "knee", "linear", "square")),
+        (Junctions, junctions, ("c0", "phi", "grading")),
+        (BiasedCapacitors, biased, ("c0", "half", "floor")),
+    ):
+        if rows.names:
+            elements.append(_built(kind, rows, numbers, ports, units))
     return elements
 
 
@@ -185,41 +186,13 @@ def _clamp(ref: str, part: Clamp, values: PartValues, ports: Ports, ramps: _Rows
     ramps.add(f"{ref}:down", {port: -1.0}, offset=lower, knee=part.knee, linear=conductance)
 
 
-def _ramps(rows: _Rows, ports: int, units: int) -> Ramps:
+def _built(
+    kind: Callable[..., Elements], rows: _Rows, numbers: tuple[str, ...], ports: int, units: int
+) -> Elements:
+    """Elements of one kind from their collected rows, `numbers` named as the kind names them."""
     sense, inject = rows.matrices(ports)
-    return Ramps(
-        names=tuple(rows.names),
-        sense=sense,
-        inject=inject,
-        offset=rows.stack("offset", units),
-        knee=rows.stack("knee", units),
-        linear=rows.stack("linear", units),
-        square=rows.stack("square", units),
-    )
-
-
-def _junctions(rows: _Rows, ports: int, units: int) -> Junctions:
-    sense, inject = rows.matrices(ports)
-    return Junctions(
-        names=tuple(rows.names),
-        sense=sense,
-        inject=inject,
-        c0=rows.stack("c0", units),
-        phi=rows.stack("phi", units),
-        grading=rows.stack("grading", units),
-    )
-
-
-def _biased(rows: _Rows, ports: int, units: int) -> BiasedCapacitors:
-    sense, inject = rows.matrices(ports)
-    return BiasedCapacitors(
-        names=tuple(rows.names),
-        sense=sense,
-        inject=inject,
-        c0=rows.stack("c0", units),
-        half=rows.stack("half", units),
-        floor=rows.stack("floor", units),
-    )
+    stacked = {name: rows.stack(name, units) for name in numbers}
+    return kind(names=tuple(rows.names), sense=sense, inject=inject, **stacked)
 
 
 def _core(ref: str, part: Inductor, values: PartValues, ports: Ports) -> SaturatingCore:

@@ -19,12 +19,12 @@ so Newton runs only on the p port voltages.
 
 from __future__ import annotations
 
-from dataclasses import dataclass, replace
+from dataclasses import dataclass
 
 import numpy as np
 from numpy.typing import NDArray
 
-from tolsim.circuit.devices import Devices, Floats, Ints
+from tolsim.circuit.devices import Devices, Floats
 from tolsim.circuit.network import Network
 
 GAMMA = 2.0 - np.sqrt(2.0)
@@ -301,12 +301,3 @@ class Stepper:
     def trapezoid_sensitivity(self, before: Sensitivity) -> Floats:
         """Derivatives (N, n, m) of the trapezoid stage's linear part."""
         return 2.0 * before.dy - before.dx - self.matrices.H @ before.dw
-
-    def take(self, units: Ints) -> Stepper:
-        """Return a stepper for some of the units."""
-        return Stepper(self.network.take(units), self.step[units])
-
-
-def replace_unsettled(point: Point, settled: NDArray[np.bool_]) -> Point:
-    """Fold earlier failures into a point's settled flags."""
-    return replace(point, port=replace(point.port, settled=point.port.settled & settled))

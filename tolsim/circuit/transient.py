@@ -4,10 +4,10 @@ from __future__ import annotations
 
 import numpy as np
 
-from tolsim.circuit.cycle import END_WEIGHTS, STAGE_WEIGHTS
 from tolsim.circuit.devices import Floats
 from tolsim.circuit.network import Network
-from tolsim.circuit.stepper import GAMMA, A, B, Stepper
+from tolsim.circuit.stepper import Stepper
+from tolsim.circuit.walk import walk
 
 
 def march(
@@ -26,21 +26,6 @@ def march(
     point = stepper.start(x0)
     samples = np.empty((count + 1, *x0.shape))
     samples[0] = x0
-    earlier = middle = point.port.v
-    for k in range(count):
-        phase = k * phase_step
-        now = point.port.v
-        guess = (
-            now
-            if k == 0
-            else STAGE_WEIGHTS[0] * earlier + STAGE_WEIGHTS[1] * middle + STAGE_WEIGHTS[2] * now
-        )
-        inner = stepper.stage(stepper.trapezoid_part(point, phase, GAMMA * phase_step), guess)
-        if k == 0:
-            guess = now + (inner.port.v - now) / GAMMA
-        else:
-            guess = END_WEIGHTS[0] * middle + END_WEIGHTS[1] * now + END_WEIGHTS[2] * inner.port.v
-        x_lin = A * inner.y - B * point.y + stepper.push(phase + phase_step)
-        earlier, middle, point = now, inner.port.v, stepper.stage(x_lin, guess)
-        samples[k + 1] = point.x
+    for k, (_, _, end) in enumerate(walk(stepper, point, count, phase_step)):
+        samples[k + 1] = end.x
     return samples
