@@ -99,11 +99,42 @@ def test_an_array_is_answered_as_its_elements_are(law):
     np.testing.assert_allclose(together, alone, rtol=0, atol=1e-15 * max(1.0, np.max(abs(alone))))
 
 
+@every_law
+def test_pdf_is_the_slope_of_cdf_and_nothing_outside(law):
+    ends = law.ppf(np.linspace(1e-6, 1.0 - 1e-6, 41))
+    for low, high in pairwise(ends):
+        # where the density steps: at the edges of a bin that was sorted out, at a mode
+        edges = (
+            getattr(law, name, None) or 0.0 for name in ("removed_low", "removed_high", "mode")
+        )
+        inside = sorted({low, high, *(e for e in edges if low < e < high)})
+        mass = sum(quad(law.pdf, a, b, epsabs=1e-13)[0] for a, b in pairwise(inside))
+        assert mass == pytest.approx(float(law.cdf(high) - law.cdf(low)), rel=1e-7)
+    bottom, top = law.support
+    assert float(law.pdf(bottom - 0.1)) == 0.0
+    assert float(law.pdf(min(top, 1e9) + 0.1)) == pytest.approx(0.0, abs=1e-12)
+
+
+@pytest.mark.parametrize(
+    ("law", "known"),
+    [
+        (Uniform(-0.05, 0.05), stats.uniform(-0.05, 0.1)),
+        (TruncatedNormal(-0.05, 0.05, 0.02), stats.truncnorm(-2.5, 2.5, 0.0, 0.02)),
+        (LogNormal(1000.0, 0.5), stats.lognorm(0.5, 0.0, 1000.0)),
+        (Triangular(-1.0, 2.0, mode=0.5), stats.triang(0.5, -1.0, 3.0)),
+    ],
+)
+def test_pdf_agrees_with_scipy(law, known):
+    x = law.ppf(np.linspace(0.001, 0.999, 101))
+    np.testing.assert_allclose(law.pdf(x), known.pdf(x), rtol=1e-9)
+
+
 def test_fixed_never_varies():
     law = Fixed(0.3)
     assert np.all(law.ppf(np.linspace(0.01, 0.99, 5)) == 0.3)
     assert (law.mean, law.sd, law.support) == (0.3, 0.0, (0.3, 0.3))
     assert list(law.cdf([0.2, 0.3, 0.4])) == [0.0, 1.0, 1.0]
+    assert list(law.pdf([0.2, 0.3, 0.4])) == [0.0, np.inf, 0.0]
 
 
 # sd of a law within +-t: uniform t/sqrt 3, triangular t/sqrt 6 (closed forms); normal cut at n

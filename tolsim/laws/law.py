@@ -24,7 +24,7 @@ Floats = NDArray[np.float64]
 class Law(ABC):
     """Probability law of one number.
 
-    `ppf` and `cdf` take and return arrays of any shape; u lies in the open interval (0, 1).
+    `ppf`, `cdf` and `pdf` take and return arrays of any shape; u lies in the open interval (0, 1).
     """
 
     NAME: ClassVar[str] = ""
@@ -36,6 +36,10 @@ class Law(ABC):
     @abstractmethod
     def cdf(self, x: ArrayLike) -> Floats:
         """Share of the population at or below `x`."""
+
+    @abstractmethod
+    def pdf(self, x: ArrayLike) -> Floats:
+        """Density at `x`, per unit of measure of the value; 0 outside the support."""
 
     @property
     @abstractmethod

@@ -76,6 +76,16 @@ class LogNormal(Law):
         z = np.clip(np.log(ratio) / self.sigma, below, above)
         return as_floats((ndtr(z) - ndtr(below)) / (ndtr(above) - ndtr(below)))
 
+    def pdf(self, x: ArrayLike) -> Floats:
+        """Density at `x`."""
+        x = as_floats(x)
+        below, above = self._limits
+        low, high = self.support
+        offset = np.maximum(x - self.origin, np.finfo(float).tiny)
+        z = np.log(offset / self._scale) / self.sigma
+        mass = (ndtr(above) - ndtr(below)) * self.sigma * math.sqrt(2.0 * math.pi)
+        return np.where((low < x) & (x <= high), np.exp(-0.5 * z**2) / (offset * mass), 0.0)
+
     def _moment(self, order: int) -> float:
         """Mean of (x - origin)^order: partial moments of the lognormal law."""
         below, above = self._limits

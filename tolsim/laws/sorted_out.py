@@ -58,6 +58,12 @@ class SortedOut(Law):
         above = np.maximum(v - self._removed, self._below)
         return np.where(v < self._below, v, above) / (1.0 - self._removed)
 
+    def pdf(self, x: ArrayLike) -> Floats:
+        """Density at `x`."""
+        x = as_floats(x)
+        left = (x <= self.removed_low) | (x >= self.removed_high)
+        return np.where(left, self.whole.pdf(x) / (1.0 - self._removed), 0.0)
+
     def _mean_of(self, power: int, about: float) -> float:
         """Mean of (x - about)^power, by quadrature over the two parts that are left."""
 

@@ -48,6 +48,13 @@ class Asymmetric(Law):
         right = 1.0 - (1.0 - self.below) * ((self.high - x) / (self.high - self.mode)) ** 2
         return np.where(x < self.mode, left, right)
 
+    def pdf(self, x: ArrayLike) -> Floats:
+        """Density at `x`."""
+        x = as_floats(x)
+        left = 2.0 * self.below * (x - self.low) / (self.mode - self.low) ** 2
+        right = 2.0 * (1.0 - self.below) * (self.high - x) / (self.high - self.mode) ** 2
+        return np.maximum(np.where(x < self.mode, left, right), 0.0)
+
     @property
     def mean(self) -> float:
         """Mean of the population."""
@@ -105,6 +112,15 @@ class Triangular(Law):
         from_low = (x - self.low) ** 2 / (width * (left or 1.0))
         from_high = 1.0 - (self.high - x) ** 2 / (width * (right or 1.0))
         return np.where(x < self._peak, from_low, from_high)
+
+    def pdf(self, x: ArrayLike) -> Floats:
+        """Density at `x`."""
+        x = as_floats(x)
+        width, left, right = self.high - self.low, self._peak - self.low, self.high - self._peak
+        from_low = 2.0 * (x - self.low) / (width * (left or 1.0))
+        from_high = 2.0 * (self.high - x) / (width * (right or 1.0))
+        rising = (x < self._peak) if right else (x <= self._peak)
+        return np.maximum(np.where(rising, from_low, from_high), 0.0)
 
     @property
     def mean(self) -> float:

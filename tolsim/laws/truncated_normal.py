@@ -71,14 +71,26 @@ class TruncatedNormal(Law):
             return as_floats((ndtr(-below) - ndtr(-z)) / (ndtr(-below) - ndtr(-above)))
         return as_floats((ndtr(z) - ndtr(below)) / (ndtr(above) - ndtr(below)))
 
+    def pdf(self, x: ArrayLike) -> Floats:
+        """Density at `x`."""
+        x = as_floats(x)
+        z = (x - self._centre) / self.sigma
+        density = np.exp(-0.5 * z**2) / (math.sqrt(2.0 * math.pi) * self.sigma * self._mass)
+        return np.where((self.low <= x) & (x <= self.high), density, 0.0)
+
+    @property
+    def _mass(self) -> float:
+        """Share of the uncut law between the limits."""
+        below, above = self._limits
+        if below > 0.0:
+            return float(ndtr(-below) - ndtr(-above))
+        return float(ndtr(above) - ndtr(below))
+
     @property
     def _moments(self) -> tuple[float, float]:
         """Mean and variance in units of sigma, about the centre."""
         below, above = self._limits
-        if below > 0.0:
-            mass = float(ndtr(-below) - ndtr(-above))
-        else:
-            mass = float(ndtr(above) - ndtr(below))
+        mass = self._mass
         density_below = math.exp(-0.5 * below**2) / math.sqrt(2.0 * math.pi)
         density_above = math.exp(-0.5 * above**2) / math.sqrt(2.0 * math.pi)
         mean = (density_below - density_above) / mass

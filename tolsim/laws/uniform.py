@@ -34,6 +34,11 @@ class Uniform(Law):
         """Share of the population at or below `x`."""
         return np.clip((as_floats(x) - self.low) / (self.high - self.low), 0.0, 1.0)
 
+    def pdf(self, x: ArrayLike) -> Floats:
+        """Density at `x`."""
+        x = as_floats(x)
+        return np.where((self.low <= x) & (x <= self.high), 1.0 / (self.high - self.low), 0.0)
+
     @property
     def mean(self) -> float:
         """Mean of the population."""
@@ -68,6 +73,10 @@ class Fixed(Law):
     def cdf(self, x: ArrayLike) -> Floats:
         """Share of the population at or below `x`."""
         return as_floats(as_floats(x) >= self.value)
+
+    def pdf(self, x: ArrayLike) -> Floats:
+        """Density at `x`: all of it in one point, so infinite there."""
+        return np.where(as_floats(x) == self.value, np.inf, 0.0)
 
     @property
     def mean(self) -> float:
