@@ -14,13 +14,13 @@ FLOORS = [
     {"errors", "figure_names", "stats.proportion"},
     {"answers.unit_files"},
     {"quantity", "library", "records", "answers.results", "laws.law"}
-    | {"spread.codes", "spread.coil", "stats.percentiles", "stats.ranking"},
+    | {"spread.codes", "spread.coil", "spread.wire", "stats.percentiles", "stats.ranking"},
     {"laws.lognormal", "laws.sorted_out", "laws.triangular", "laws.truncated_normal"}
-    | {"laws.uniform", "stats", "mosfet_sheet", "study.plain_words", "answers.wording"},
+    | {"laws.uniform", "stats", "mosfet_sheet", "winding", "study.plain_words", "answers.wording"},
     {"laws"},
     # the design: parts, then what is made of them
     {"parts", "laws.reading"},
-    {"design", "spread.datasheet", "spread.temperature", "spread.ageing"},
+    {"design", "spread.datasheet", "spread.temperature", "spread.ageing", "spread.winding"},
     {"answers.bounds"},
     # the circuit: it knows the design, but neither studies nor spread
     {"circuit.devices"},

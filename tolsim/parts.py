@@ -25,7 +25,6 @@ from tolsim.quantity import (
     Duration,
     Frequency,
     Inductance,
-    Length,
     Power,
     ReactivePower,
     Resistance,
@@ -39,6 +38,7 @@ from tolsim.quantity import (
     show,
 )
 from tolsim.records import Frozen, at_most_one, both_or_neither, exactly_one
+from tolsim.winding import Coil, Core
 
 Net = Annotated[str, Field(pattern=r"^[A-Za-z][A-Za-z0-9_]*$")]
 
@@ -62,6 +62,7 @@ class Part(Frozen):
     """What every part has: a spread table, a reel it is fed from, ratings, an origin note."""
 
     QUANTITIES: ClassVar[tuple[str, ...]] = ()
+    SHAPE: ClassVar[tuple[str, ...]] = ()  # spread by tables too, but not set by load states
     RATINGS: ClassVar[tuple[str, ...]] = ()
 
     spread: str | None = None
@@ -112,27 +113,22 @@ class Capacitor(Part):
         yield from both_or_neither(given, "tan_delta", "loss_frequency")
 
 
-class Coil(Frozen):
-    """Geometry of a single-layer air coil; gives its inductance."""
-
-    turns: Annotated[float, Field(gt=0, le=10_000)]
-    diameter: Length
-    length: Length
-
-
 class Inductor(Part):
-    """Inductor: inductance (or air-coil geometry), winding resistance (or Q at a frequency).
+    """Inductor: inductance (or air coil, or core), winding resistance (or Q at a frequency).
 
-    `saturation` lists (current, share of the small-signal inductance left).
+    A coil whose wire and frequency are known needs neither resistance nor Q.  `saturation`
+    lists (current, share of the small-signal inductance left).
     """
 
     QUANTITIES: ClassVar = ("inductance", "resistance")
+    SHAPE: ClassVar = ("turns", "diameter", "length", "pitch", "wire", "al")
     RATINGS: ClassVar = ("current", "saturation_current", "power", "temperature")
 
     kind: Literal["inductor"]
     nets: tuple[Net, Net]
     inductance: Inductance | None = None
     coil: Coil | None = None
+    core: Core | None = None
     resistance: ResistanceOrZero | None = None
     q: Annotated[float, Field(gt=0, le=1e5)] | None = None
     q_frequency: Frequency | None = None
@@ -142,9 +138,26 @@ class Inductor(Part):
     @classmethod
     def together(cls, given: Collection[str]) -> Iterator[Mistake]:
         """Inductance and loss are each given in exactly one way, and q at a frequency."""
-        yield from exactly_one(given, "inductance", "coil")
-        yield from exactly_one(given, "resistance", "q")
+        yield from exactly_one(given, "inductance", "core" if "core" in given else "coil")
+        if "core" in given:
+            yield from at_most_one(given, "core", "coil")
+        if "coil" in given:  # its wire may give the loss
+            yield from at_most_one(given, "resistance", "q")
+        else:
+            yield from exactly_one(given, "resistance", "q")
         yield from both_or_neither(given, "q", "q_frequency")
+
+    @model_validator(mode="after")
+    def _has_loss(self) -> Self:
+        wire = self.coil is not None and self.coil.gives_resistance
+        if self.resistance is None and self.q is None and not wire:
+            raise Mistake(
+                "either resistance or q, or a coil with wire and frequency",
+                "Give one of them.",
+                key="resistance",
+                got="neither",
+            )
+        return self
 
     @model_validator(mode="after")
     def _saturation_falls(self) -> Self:

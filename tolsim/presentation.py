@@ -20,6 +20,7 @@ from tolsim.quantity import show
 from tolsim.report import InputRow, ReportInput, Waveform, report_input
 from tolsim.spread.sampling import draw, tables_of
 from tolsim.spread.table import ASPECTS, SpreadTable
+from tolsim.spread.winding import shape_of
 from tolsim.spread.words import assumptions, spread_words
 from tolsim.study import StudyFile
 
@@ -162,6 +163,11 @@ def _pairs(
 UNIT_OF_MEASURE = {
     "capacitance": "F",
     "inductance": "H",
+    "diameter": "m",
+    "length": "m",
+    "pitch": "m",
+    "wire": "m",
+    "al": "H",
     "resistance": "ohm",
     "esr": "ohm",
     "voltage": "V",
@@ -198,7 +204,8 @@ def _single_rows(study: Study, tables: Mapping[str, SpreadTable]) -> Iterator[In
         for name in names:
             table = tables[name]
             for quantity, spread in table.quantities.items():
-                value = getattr(part, quantity, None)
+                shape = shape_of(part) if isinstance(part, Inductor) else {}
+                value = shape.get(quantity, getattr(part, quantity, None))
                 nominal = (
                     show(value, UNIT_OF_MEASURE.get(quantity, "1"))
                     if isinstance(value, float)

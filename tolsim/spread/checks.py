@@ -9,11 +9,12 @@ from collections.abc import Iterator, Mapping
 
 from tolsim.design import Study
 from tolsim.errors import Mistake, Problem
-from tolsim.parts import Mosfet
+from tolsim.parts import Inductor, Mosfet
 from tolsim.spread.datasheet import device_parameters
 from tolsim.spread.reading import UNITS
 from tolsim.spread.sampling import CONDITION_UNITS, condition_law, tables_of
 from tolsim.spread.table import QuantitySpread, SpreadTable
+from tolsim.spread.winding import shape_of
 
 
 def check_spread(study: Study, tables: Mapping[str, SpreadTable], file: str) -> list[Problem]:
@@ -38,6 +39,7 @@ def check_spread(study: Study, tables: Mapping[str, SpreadTable], file: str) -> 
         *_datasheets(study, file),
         *_reels(study, file),
         *_reach(study, tables, file),
+        *_shapes(study, tables, file),
     ]
 
 
@@ -86,6 +88,26 @@ def _reels(study: Study, file: str) -> Iterator[Problem]:
             )
 
 
+def _shapes(study: Study, tables: Mapping[str, SpreadTable], file: str) -> Iterator[Problem]:
+    """A law on the shape of a winding needs a part whose shape is given."""
+    for reference, part in study.design.parts.items():
+        if not isinstance(part, Inductor):
+            continue
+        known = shape_of(part)
+        for name in tables_of(study, reference):
+            laws = [quantity for quantity in part.SHAPE if quantity in tables[name].quantities]
+            missing = [quantity for quantity in laws if quantity not in known]
+            if missing:
+                yield Problem(
+                    file,
+                    f"parts.{reference}",
+                    "spread",
+                    f"{name} with laws for {', '.join(missing)}",
+                    "a part that states " + ", ".join(missing),
+                    cure="Give coil (with wire) or core, or take a table with an inductance law.",
+                )
+
+
 def _reach(study: Study, tables: Mapping[str, SpreadTable], file: str) -> Iterator[Problem]:
     """No spread may make a value negative, or couple two coils fully."""
     for reference in study.design.parts:
@@ -107,7 +129,9 @@ def _reach(study: Study, tables: Mapping[str, SpreadTable], file: str) -> Iterat
 
 def _nominals(study: Study, reference: str, quantity: str) -> Iterator[float]:
     """The nominal value of a quantity, and those the load states put in its place."""
-    own = getattr(study.design.parts[reference], quantity, None)
+    part = study.design.parts[reference]
+    shape = shape_of(part) if isinstance(part, Inductor) else {}
+    own = shape.get(quantity, getattr(part, quantity, None))
     if isinstance(own, float):
         yield own
     for state in study.states.values():

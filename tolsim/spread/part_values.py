@@ -27,7 +27,6 @@ from tolsim.parts import (
     Mosfet,
     Potentiometer,
 )
-from tolsim.spread.coil import air_coil_inductance
 from tolsim.spread.datasheet import device_parameters, threshold_window
 from tolsim.spread.sampling import (
     CONDITION_UNITS,
@@ -38,6 +37,7 @@ from tolsim.spread.sampling import (
     reel_of,
 )
 from tolsim.spread.table import QuantitySpread, SpreadTable
+from tolsim.spread.winding import inductance_of, resistance_of, shape_of
 
 Floats = NDArray[np.float64]
 Values = dict[str, Floats]
@@ -136,9 +136,8 @@ class _Maker:
         if isinstance(part, Mosfet):
             return self._of_mosfet(reference, part)
         if isinstance(part, Inductor):
-            nominal = _inductor(part)
-        else:
-            nominal = {quantity: getattr(part, quantity) for quantity in part.QUANTITIES}
+            return self._of_inductor(reference, part)
+        nominal = {quantity: getattr(part, quantity) for quantity in part.QUANTITIES}
         values = {
             f"{reference}.{quantity}": self.spread(reference, quantity, value, part.reel)
             for quantity, value in nominal.items()
@@ -173,6 +172,21 @@ class _Maker:
             f"{reference}.esr": esr,
         }
 
+    def _of_inductor(self, reference: str, part: Inductor) -> Values:
+        """Inductance and resistance: given, or those of the winding as this unit has it."""
+        shape = shape_of(part)
+        wound = {
+            name: self.spread(reference, name, value, part.reel) for name, value in shape.items()
+        }
+        inductance = inductance_of(part, wound)
+        as_drawn = {name: np.asarray(value) for name, value in shape.items()}
+        nominal = float(inductance_of(part, as_drawn))
+        resistance = resistance_of(part, nominal, wound)
+        return {
+            f"{reference}.inductance": self.spread(reference, "inductance", inductance, part.reel),
+            f"{reference}.resistance": self.spread(reference, "resistance", resistance, part.reel),
+        }
+
     def _of_mosfet(self, reference: str, part: Mosfet) -> Values:
         """Model parameters at 25 degC; one scale for all three capacitances."""
         nominal = device_parameters(part)
@@ -203,7 +217,7 @@ class _Maker:
         self,
         reference: str,
         quantity: str,
-        nominal: float,
+        nominal: float | Floats,
         reel: str | None,
         piece: int | None = None,
     ) -> Floats:
@@ -211,12 +225,12 @@ class _Maker:
         base = self._nominal(reference, quantity, nominal)
         spread = self._laws(reference, quantity)
         if spread is None:
-            return np.full(self.count, base)
+            return np.full(self.count, base, dtype=np.float64)
         deviation = self._deviation(reference, quantity, reel, piece)
         value = base + deviation if spread.deviation == "absolute" else base * (1.0 + deviation)
         return value * self._drift(reference, quantity, reel)
 
-    def _nominal(self, reference: str, quantity: str, value: float) -> float:
+    def _nominal(self, reference: str, quantity: str, value: float | Floats) -> float | Floats:
         """Nominal value, or what the load state puts in its place."""
         return self.state.values.get(f"{reference}.{quantity}", value)
 
@@ -274,18 +288,3 @@ def _esr(part: Capacitor) -> float:
     if part.tan_delta is not None and part.loss_frequency is not None:
         return part.tan_delta / (2.0 * math.pi * part.loss_frequency * part.capacitance)
     return 0.0
-
-
-def _inductor(part: Inductor) -> dict[str, float]:
-    """Nominal inductance (given or from the geometry) and resistance (given or from Q)."""
-    if part.inductance is not None:
-        inductance = part.inductance
-    elif part.coil is not None:
-        coil = part.coil
-        inductance = float(air_coil_inductance(coil.turns, coil.diameter, coil.length))
-    else:
-        inductance = math.nan
-    resistance = part.resistance or 0.0
-    if part.q is not None and part.q_frequency is not None:
-        resistance = 2.0 * math.pi * part.q_frequency * inductance / part.q
-    return {"inductance": inductance, "resistance": resistance}

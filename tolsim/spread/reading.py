@@ -35,7 +35,7 @@ from tolsim.spread.table import (
 
 QUANTITIES: Final[Mapping[str, tuple[str, ...]]] = {
     **{
-        get_args(part.model_fields["kind"].annotation)[0]: part.QUANTITIES
+        get_args(part.model_fields["kind"].annotation)[0]: part.QUANTITIES + part.SHAPE
         for part in get_args(get_args(AnyPart)[0])
     },
     "rail": ("voltage",),
@@ -46,6 +46,11 @@ UNITS: Final[Mapping[str, str]] = {
     "capacitance": "F",
     "esr": "ohm",
     "inductance": "H",
+    "diameter": "m",
+    "length": "m",
+    "pitch": "m",
+    "wire": "m",
+    "al": "H",
     "resistance": "ohm",
     "voltage": "V",
     "threshold": "V",

@@ -7,7 +7,7 @@ from dataclasses import fields
 
 from tolsim.design import Study
 from tolsim.laws import Law
-from tolsim.parts import Capacitor, Mosfet
+from tolsim.parts import Capacitor, Inductor, Mosfet
 from tolsim.quantity import show
 from tolsim.spread.ageing import AgeingLaw
 from tolsim.spread.datasheet import device_parameters, window_assumptions
@@ -15,6 +15,7 @@ from tolsim.spread.reading import UNITS
 from tolsim.spread.sampling import tables_of
 from tolsim.spread.table import ASPECTS, QuantitySpread, SpreadTable
 from tolsim.spread.temperature import TemperatureLaw
+from tolsim.spread.winding import winding_notes
 
 _LABELS: Mapping[str, str] = {
     "tolerance": "scatter within the lot",
@@ -87,6 +88,8 @@ def assumptions(study: Study, tables: Mapping[str, SpreadTable]) -> tuple[str, .
                     ]
         if isinstance(part, Capacitor) and part.esr is None and part.tan_delta is None:
             lossless.append(reference)
+        if isinstance(part, Inductor):
+            said += [f"{reference}: {words}" for words in winding_notes(part)]
         if len(names) > 1:
             said.append(
                 f"{reference}: a unit keeps its rank in every load state; each state's table "
