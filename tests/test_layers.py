@@ -24,7 +24,8 @@ FLOORS = [
     {"answers.bounds"},
     # the circuit: it knows the design, but neither studies nor spread
     {"circuit.devices"},
-    {"circuit.network", "circuit.orbit", "circuit.periodic", "circuit.floquet"},
+    {"circuit.supply_ramp"}
+    | {"circuit.network", "circuit.orbit", "circuit.periodic", "circuit.floquet"},
     {"circuit.device_groups", "circuit.stepper"},
     {"circuit.assembly", "circuit.bias", "circuit.charge", "circuit.walk"},
     {"circuit.cycle"},

@@ -14,9 +14,13 @@ from pydantic import Field
 from tolsim.parts import AnyPart, Net
 from tolsim.quantity import (
     Age,
+    Capacitance,
     Current,
     Duration,
+    DurationOrZero,
     Frequency,
+    Inductance,
+    InnerShare,
     Leak,
     ResistanceOrZero,
     Share,
@@ -30,17 +34,52 @@ from tolsim.records import Frozen
 GROUND = "gnd"
 
 
+class Dip(Frozen):
+    """A passing fall of a supply's voltage: to 1 - `depth` of what it would be."""
+
+    at: DurationOrZero  # s after power-on
+    depth: Share
+    length: Duration
+
+
+class Bounce(Frozen):
+    """A switch whose contact opens again `count` times after the first touch."""
+
+    count: Annotated[int, Field(ge=1, le=100)]
+    period: Duration  # s, from one touch to the next
+    open_share: InnerShare = 0.5  # of the period
+
+
 class Rail(Frozen):
-    """A net held at a DC voltage by a supply."""
+    """A net held at a DC voltage by a supply: source, limit, resistance, cable, bulk capacitor.
+
+    The source rises to `voltage` by its ramp; without one it is a step.  The current limit holds
+    at full output voltage and falls to the share `foldback` of it at short circuit.
+    """
 
     net: Net
     voltage: Voltage
     resistance: ResistanceOrZero = 0.0
-    ramp_time: Duration | None = None
+    inductance: Inductance | None = None  # of the cable
     current_limit: Current | None = None
+    foldback: Share | None = None
+    bulk_capacitance: Capacitance | None = None  # from the net to ground
+    bulk_resistance: ResistanceOrZero = 0.0  # in series with it
+    ramp: Literal["step", "linear", "smooth", "exponential", "csv"] | None = None
+    ramp_time: Duration | None = None
+    ramp_file: str | None = None
+    ramp_points: tuple[tuple[float, float], ...] = ()  # s and share of the voltage, of the file
+    delay: DurationOrZero = 0.0
+    dip: Dip | None = None
+    bounce: Bounce | None = None
     follows_supply: bool = True  # scaled by the supply deviation of a condition
     spread: str | None = None
     source: str | None = None
+
+    @property
+    def own_current(self) -> bool:
+        """Whether the supply's current is a quantity of its own: it has a limit or a cable."""
+        return self.inductance is not None or self.current_limit is not None
 
 
 class Design(Frozen):

@@ -34,7 +34,7 @@ NOT_MODELLED = (
         "Power-on and load changes in time: start is judged by the modes at the bias point,"
         " running by the steady orbit of each load state."
     ),
-    "Ramp time and current limit of a rail: read, but the supply counts as up and unlimited.",
+    "Ramp of a rail: read, but the supply counts as up.",
     "Stray inductance and capacitance that the study does not list as parts.",
     "Core loss beyond a constant series resistance, proximity effect that changes with frequency.",
     "Package inductance of the transistors, gate charge plateau beyond the capacitance law.",

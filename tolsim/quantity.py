@@ -190,6 +190,7 @@ KINDS: Final[Mapping[str, Kind]] = {
     )
 }
 _SHARE: Final = Kind("a share", "1", 0.0, 1.0, "80 %")
+_INNER_SHARE: Final = Kind("a share", "1", 0.01, 0.99, "50 %")
 _SIGNED_SHARE: Final = Kind("a deviation", "1", -1.0, 1.0, "-10 %")
 _SIGNED_VOLTAGE: Final = Kind("a voltage", "V", -1e6, 1e6, "-5 V")
 _VOLTAGE_SLOPE: Final = Kind("a voltage slope", "V/K", -1.0, 1.0, "-6 mV/K")
@@ -235,6 +236,7 @@ Voltage = Annotated[float, _field(KINDS["voltage"])]
 SignedVoltage = Annotated[float, _field(_SIGNED_VOLTAGE)]
 Frequency = Annotated[float, _field(KINDS["frequency"])]
 Duration = Annotated[float, _field(KINDS["duration"])]
+DurationOrZero = Annotated[float, _field(KINDS["duration"], zero=True)]
 Length = Annotated[float, _field(KINDS["length"])]
 Power = Annotated[float, _field(KINDS["power"])]
 ReactivePower = Annotated[float, _field(KINDS["reactive power"])]
@@ -244,5 +246,6 @@ ThermalResistance = Annotated[float, _field(KINDS["thermal resistance"])]
 VoltageSlope = Annotated[float, _field(_VOLTAGE_SLOPE)]
 Gain = Annotated[float, _field(KINDS["gain"])]
 Share = Annotated[float, _field(_SHARE)]
+InnerShare = Annotated[float, _field(_INNER_SHARE)]
 SignedShare = Annotated[float, _field(_SIGNED_SHARE)]
 Age = Annotated[float, _field(KINDS["age"])]  # hours

@@ -11,10 +11,16 @@ from dataclasses import dataclass, field
 
 import numpy as np
 
-from tolsim.circuit.device_groups import Ports, collect_devices, inner_nets, plate_net
+from tolsim.circuit.device_groups import (
+    Ports,
+    collect_devices,
+    feed_branch,
+    inner_nets,
+    plate_net,
+)
 from tolsim.circuit.devices import Devices, Floats
 from tolsim.circuit.network import DriveShape, Network, SupplyCurrent
-from tolsim.design import GROUND, Design
+from tolsim.design import GROUND, Design, Rail
 from tolsim.parts import (
     Capacitor,
     Clamp,
@@ -28,6 +34,9 @@ from tolsim.parts import (
 )
 
 PartValues = Mapping[str, Floats]
+
+IDEAL_RESISTANCE = 1e-6  # ohm, of an ideal rail while it is live
+LEAST_RESISTANCE = 1e-3  # ohm, of a supply whose current is limited or runs through a cable
 
 
 @dataclass(frozen=True)
@@ -95,31 +104,52 @@ class Stamps:
             self.nets.setdefault(net)
 
 
-def assemble(design: Design, values: PartValues) -> Network:
+def assemble(design: Design, values: PartValues, *, live_rails: bool = False) -> Network:
     """Build the network of N units.
 
     Parameters
     ----------
     values : mapping of "REF.quantity" to (N,)
         Part values; MOSFET parameters at their junction temperature (`thermal.hot_values`).
+    live_rails : bool
+        Leave the voltages of the rails open: every net but ground becomes an unknown (an ideal
+        rail gets `IDEAL_RESISTANCE`), and what the rails push stands in `rail_matrix` instead of
+        `source`.
     """
     units = len(next(iter(values.values())))
     stamps = Stamps(units)
     stamps.known[GROUND] = np.zeros(units)
     for name, rail in design.rails.items():
-        volts = values[f"{name}.voltage"]
-        if rail.resistance > 0:
-            stamps.known[f"{name}:source"] = volts
-            stamps.conductance(f"{name}:source", rail.net, _full(units, 1 / rail.resistance))
-        else:
-            stamps.known[rail.net] = volts
+        _stamp_rail(stamps, name, rail, values, live=live_rails)
     for ref, part in design.parts.items():
         _stamp(stamps, ref, part, values)
     ports = Ports()
     devices = collect_devices(design, values, ports)
     for plus, minus in ports.pairs:
         stamps.meet(plus, minus)
-    return _number(design, stamps, ports, devices)
+    return _number(design, stamps, ports, devices, live_rails=live_rails)
+
+
+def _stamp_rail(stamps: Stamps, name: str, rail: Rail, values: PartValues, *, live: bool) -> None:
+    """Source, resistance and cable of a rail, and the bulk capacitor at its net."""
+    source, volts, units = f"{name}:source", values[f"{name}.voltage"], stamps.units
+    if rail.own_current:
+        stamps.known[source] = volts
+        inductance = _full(units, rail.inductance or 0.0)
+        resistance = _full(units, max(rail.resistance, LEAST_RESISTANCE))
+        stamps.inductor(feed_branch(name), source, rail.net, inductance, resistance)
+    elif rail.resistance > 0 or live:
+        stamps.known[source] = volts
+        stamps.conductance(
+            source, rail.net, _full(units, 1 / (rail.resistance or IDEAL_RESISTANCE))
+        )
+    else:
+        stamps.known[rail.net] = volts
+    if rail.bulk_capacitance is not None:
+        inner = f"{name}:bulk" if rail.bulk_resistance > 0 else rail.net
+        if rail.bulk_resistance > 0:
+            stamps.series_conductance(rail.net, inner, _full(units, 1 / rail.bulk_resistance))
+        stamps.capacitance(inner, GROUND, _full(units, rail.bulk_capacitance))
 
 
 def _full(units: int, value: float) -> Floats:
@@ -194,13 +224,18 @@ class _Equations:
     E: Floats
     F: Floats
     source: Floats
+    pushes: Mapping[str, Floats]  # right-hand sides of their own, by net of a live rail's source
+
+    def right_side(self, net: str) -> Floats:
+        """The right-hand side (N, n) that a known net pushes on."""
+        return self.pushes.get(net, self.source)
 
     def conductance(self, a: str, b: str, g: Floats) -> None:
         for row, column, sign in ((a, a, 1), (a, b, -1), (b, b, 1), (b, a, -1)):
             if row in self.index and column in self.index:
                 self.F[:, self.index[row], self.index[column]] += sign * g
             elif row in self.index:
-                self.source[:, self.index[row]] -= sign * g * self.known[column]
+                self.right_side(column)[:, self.index[row]] -= sign * g * self.known[column]
 
     def capacitance(self, a: str, b: str, c: Floats) -> None:
         # a plate on a net of fixed voltage only shifts the charge by a constant
@@ -218,16 +253,25 @@ class _Equations:
                 self.F[:, self.index[net], branch] += sign
                 self.F[:, branch, self.index[net]] -= sign
             else:
-                self.source[:, branch] += sign * self.known[net]
+                self.right_side(net)[:, branch] += sign * self.known[net]
 
 
-def _number(design: Design, stamps: Stamps, ports: Ports, devices: Devices) -> Network:
+def _number(
+    design: Design, stamps: Stamps, ports: Ports, devices: Devices, *, live_rails: bool
+) -> Network:
     """Number the unknowns and fill the matrices."""
     nets = [net for net in stamps.nets if net not in stamps.known]
     index = {name: i for i, name in enumerate([*nets, *stamps.inductors])}
     units, n = stamps.units, len(index)
+    rails = tuple(design.rails) if live_rails else ()
+    push = np.zeros((units, n, len(rails)))
     eq = _Equations(
-        index, stamps.known, np.zeros((units, n, n)), np.zeros((units, n, n)), np.zeros((units, n))
+        index,
+        stamps.known,
+        np.zeros((units, n, n)),
+        np.zeros((units, n, n)),
+        np.zeros((units, n)),
+        {f"{name}:source": push[:, :, r] for r, name in enumerate(rails)},
     )
     for a, b, g in stamps.conductances:
         eq.conductance(a, b, g)
@@ -253,13 +297,15 @@ def _number(design: Design, stamps: Stamps, ports: Ports, devices: Devices) -> N
         index=index,
         branches=frozenset(stamps.inductors),
         ports=ports.numbers,
-        known=stamps.known,
+        known={GROUND: stamps.known[GROUND]} if live_rails else stamps.known,
         supplies=_supplies(design, stamps, ports, index),
         series_conductance=stamps.series,
         leak=design.leak,
         drive_matrix=matrix,
         drive_shape=shape,
         drive_frequency=frequency,
+        rail_matrix=push if live_rails else None,
+        rail_names=rails,
     )
 
 
@@ -274,7 +320,7 @@ def _incidence(ports: Ports, index: Mapping[str, int], stamps: Stamps) -> tuple[
             else:
                 offset[:, port] += sign * stamps.known[net]
     for port, ref in enumerate(ports.currents, start=len(ports.pairs)):
-        incidence[port, index[ref]] = 1.0
+        incidence[port, index[ref]] = ports.scale.get(ref, 1.0)
     return incidence, offset
 
 
@@ -284,7 +330,8 @@ def _supplies(
     """Current delivered by each rail as a linear function of x, plus port currents."""
     supplies = {}
     for name, rail in design.rails.items():
-        terminal = f"{name}:source" if rail.resistance > 0 else rail.net
+        source = f"{name}:source"
+        terminal = source if source in stamps.known else rail.net
         row = np.zeros((stamps.units, len(index)))
         offset = np.zeros(stamps.units)
         for a, b, g in stamps.conductances:

@@ -5,7 +5,7 @@ Devices across the same pair of nets share a port, so a gate clamp costs no extr
 
 from __future__ import annotations
 
-from collections.abc import Callable, Mapping
+from collections.abc import Callable, Iterable, Mapping
 from dataclasses import dataclass, field
 
 import numpy as np
@@ -19,22 +19,28 @@ from tolsim.circuit.devices import (
     Ramps,
     SaturatingCore,
 )
-from tolsim.design import Design
+from tolsim.design import GROUND, Design, Rail
 from tolsim.parts import Capacitor, Clamp, Diode, Inductor, Mosfet
 
 PartValues = Mapping[str, Floats]
 Weights = dict[int, float]  # port -> weight
 
 BACKWARD_DROP = 0.7  # V, a one-way clamp conducts backwards like a diode
+SHORT_EXCESS = 0.002  # of the current limit, by which it is exceeded at short circuit
+LIMIT_KNEE = 0.001  # of the current limit, over which it sets in
 
 
 @dataclass
 class Ports:
-    """Ports in the order they were asked for: net pairs first, then inductor currents."""
+    """Ports in the order they were asked for: net pairs first, then inductor currents.
+
+    A current with a `scale` (ohm) is seen as a voltage, so that it has the size of the others.
+    """
 
     pairs: list[tuple[str, str]] = field(default_factory=list)
     currents: list[str] = field(default_factory=list)
     numbers: dict[str, int] = field(default_factory=dict)
+    scale: dict[str, float] = field(default_factory=dict)
 
     @property
     def count(self) -> int:
@@ -46,6 +52,13 @@ class Ports:
         if (plus, minus) not in self.pairs:
             self.pairs.append((plus, minus))
         self.numbers[name] = self.pairs.index((plus, minus))
+        return self.numbers[name]
+
+    def current(self, name: str, branch: str, scale: float = 1.0) -> int:
+        """Port number of an inductor's current; all pairs of nets must be there before."""
+        self.numbers[name] = self.count
+        self.currents.append(branch)
+        self.scale[branch] = scale
         return self.numbers[name]
 
 
@@ -97,6 +110,11 @@ def plate_net(ref: str, part: Capacitor, values: PartValues) -> str:
     return f"{ref}:plate" if np.any(values[f"{ref}.esr"] > 0) else part.nets[0]
 
 
+def feed_branch(rail: str) -> str:
+    """Name of the branch that carries the current of a rail with a limit or a cable."""
+    return f"{rail}:feed"
+
+
 def collect_devices(design: Design, values: PartValues, ports: Ports) -> Devices:
     """Elements of the design; `ports` is filled on the way."""
     units = len(values["ambient"])
@@ -118,12 +136,22 @@ def collect_devices(design: Design, values: PartValues, ports: Ports) -> Devices
                 cores[ref] = part
             case _:
                 pass
-    for ref in cores:  # their ports come last: they are currents, not pairs of nets
-        ports.numbers[ref] = ports.count
-        ports.currents.append(ref)
+    _see_currents(design, cores, ports, ramps)
     elements = _gathered(ramps, junctions, biased, ports.count, units)
     elements += [_core(ref, part, values, ports) for ref, part in cores.items()]
     return Devices(tuple(elements), ports.count)
+
+
+def _see_currents(design: Design, cores: Iterable[str], ports: Ports, ramps: _Rows) -> None:
+    """Ports of saturating cores and limited supplies; they come last, being no pairs of nets."""
+    limited = {name: rail for name, rail in design.rails.items() if rail.current_limit is not None}
+    for name, rail in limited.items():
+        if rail.foldback is not None:
+            ports.between(f"{name}:output", rail.net, GROUND)
+    for ref in cores:
+        ports.current(ref, ref)
+    for name, rail in limited.items():
+        _limiter(name, rail, ports, ramps)
 
 
 def _gathered(
@@ -184,6 +212,30 @@ def _clamp(ref: str, part: Clamp, values: PartValues, ports: Ports, ramps: _Rows
     lower = upper if part.direction == "both" else BACKWARD_DROP
     ramps.add(f"{ref}:up", {port: 1.0}, offset=upper, knee=part.knee, linear=conductance)
     ramps.add(f"{ref}:down", {port: -1.0}, offset=lower, knee=part.knee, linear=conductance)
+
+
+def _limiter(name: str, rail: Rail, ports: Ports, ramps: _Rows) -> None:
+    """Voltage drop in the supply's branch that holds its current i at the limit.
+
+    With u = (V / I) i, I the limit and V the nominal voltage, the drop is S(u - V) / `SHORT_EXCESS`
+    for a constant limit, and S(u - f V - (1 - f) v) / `SHORT_EXCESS` for one that falls with the
+    output voltage v to its share f at short circuit.
+    """
+    assert rail.current_limit is not None
+    as_voltage = rail.voltage / rail.current_limit
+    port = ports.current(f"{name}:limit", feed_branch(name), as_voltage)
+    left = 1.0 if rail.foldback is None else rail.foldback
+    sense = {port: 1.0}
+    if rail.foldback is not None:
+        sense[ports.numbers[f"{name}:output"]] = left - 1.0
+    ramps.add(
+        f"{name}:limit",
+        sense,
+        {port: 1.0 / as_voltage},  # the port's scale stands in its row of P too
+        offset=left * rail.voltage,
+        knee=LIMIT_KNEE * rail.voltage,
+        linear=1.0 / SHORT_EXCESS,
+    )
 
 
 def _built(

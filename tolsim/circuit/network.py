@@ -7,6 +7,9 @@ Modified nodal analysis with unknowns x = net voltages and inductor currents, sh
 E, F (N, n, n); D (p, n) is the same for every unit; b = `source` + `drive_matrix` u(phase) with
 u the periodic drive waveforms.  Nets held by an ideal supply are not unknowns: their voltages
 stand in `source` and v0.
+
+With live rails every net but ground is an unknown, and b gains the sum over the rails of
+level_r(t) `rail_matrix`[:, :, r], level 1 being the rail's full voltage.
 """
 
 from __future__ import annotations
@@ -22,16 +25,19 @@ from tolsim.circuit.devices import Devices, Floats, Ints
 
 @dataclass(frozen=True)
 class SupplyCurrent:
-    """Current a rail delivers: row . x + offset + through . f (conduction only, A)."""
+    """Current a rail delivers: row . x + level offset + through . f (conduction only, A).
+
+    The level is 1 but in networks with live rails, where it is that of this rail.
+    """
 
     row: Floats  # (N, n)
     offset: Floats  # (N,)
     through: Floats  # (p,)
     volts: Floats  # (N,) voltage of the ideal source
 
-    def at(self, x: Floats, f: Floats) -> Floats:
-        """Current (..., N) for states (..., N, n) and port currents (..., N, p)."""
-        return np.einsum("...un,un->...u", x, self.row) + self.offset + f @ self.through
+    def at(self, x: Floats, f: Floats, level: Floats | float = 1.0) -> Floats:
+        """Current (..., N) for states (..., N, n), port currents (..., N, p), levels (..., N)."""
+        return np.einsum("...un,un->...u", x, self.row) + level * self.offset + f @ self.through
 
     def take(self, units: Ints) -> SupplyCurrent:
         """Return the same supply for some of the units."""
@@ -60,6 +66,8 @@ class Network:
     drive_shape: DriveShape | None = None
     drive_frequency: float | None = None
     leak: float = 0.0  # S, from every net to ground
+    rail_matrix: Floats | None = None  # (N, n, R), only with live rails
+    rail_names: tuple[str, ...] = ()  # of its R columns
 
     @property
     def units(self) -> int:
@@ -85,7 +93,16 @@ class Network:
             series_conductance={net: g[units] for net, g in self.series_conductance.items()},
             drive_matrix=None if self.drive_matrix is None else self.drive_matrix[units],
             drive_shape=None if self.drive_shape is None else self.drive_shape.take(units),
+            rail_matrix=None if self.rail_matrix is None else self.rail_matrix[units],
         )
+
+    def raised(self, level: Floats | float = 1.0) -> Network:
+        """The circuit with its live rails held at levels (one, or (R,), or (N, R)) for good."""
+        if self.rail_matrix is None:
+            return self
+        levels = np.broadcast_to(level, (self.units, len(self.rail_names)))
+        pushed = np.einsum("unr,ur->un", self.rail_matrix, levels)
+        return replace(self, source=self.source + pushed, rail_matrix=None, rail_names=())
 
     def port_voltages(self, x: Floats) -> Floats:
         """v = D x + v0 for x of shape (..., N, n)."""

@@ -56,11 +56,18 @@ def small_signal(network: Network, bias: Bias) -> tuple[Floats, Floats, Floats]:
     through = bias.G.copy()
     diagonal = np.arange(through.shape[1])
     through[:, diagonal, diagonal] = 0.0  # only transistors couple one port to another
+    through[:, _currents(network)] = 0.0  # and supplies whose limit falls with their voltage
     return (
         network.E + D.T @ bias.C @ D,
         network.F + D.T @ bias.G @ D,
         D.T @ through @ D,
     )
+
+
+def _currents(network: Network) -> NDArray[np.intp]:
+    """Ports that are currents of branches."""
+    branches = [network.index[name] for name in network.branches]
+    return np.flatnonzero(np.any(network.D[:, branches] != 0, axis=1))
 
 
 def modes(network: Network, bias: Bias, sigma: float) -> Modes:

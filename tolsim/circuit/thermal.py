@@ -62,9 +62,10 @@ class Case:
         picked = {key: value[units] for key, value in self.values.items()}
         return Case(self.design, picked, self.heated)
 
-    def network(self, junctions: Mapping[str, Floats]) -> Network:
+    def network(self, junctions: Mapping[str, Floats], *, live_rails: bool = False) -> Network:
         """Return the circuit at junction temperatures (N,) of every MOSFET, degC."""
-        return assemble(self.design, hot_values(self.design, self.values, junctions))
+        hot = hot_values(self.design, self.values, junctions)
+        return assemble(self.design, hot, live_rails=live_rails)
 
     def cold_junctions(self) -> dict[str, Floats]:
         """Every junction at ambient."""

@@ -4,13 +4,14 @@ from __future__ import annotations
 
 import numpy as np
 
+from tolsim.circuit.device_groups import feed_branch
 from tolsim.circuit.devices import Floats
 from tolsim.circuit.floquet import largest_beside_charge
 from tolsim.circuit.network import Network
 from tolsim.circuit.orbit import Solution
 from tolsim.circuit.periodic import mean
 from tolsim.circuit.thermal import Case, hot_values
-from tolsim.design import Design
+from tolsim.design import Design, Rail
 from tolsim.figures import parts as passive
 from tolsim.figures.transistors import mosfet
 from tolsim.figures.waves import Waves
@@ -118,7 +119,9 @@ def _stage_figures(
         answer[f"{rail}.current_mean"] = mean(current)
         answer[f"{rail}.current_ripple"] = np.ptp(current, axis=0)
         total_current = total_current + mean(current)
-        supply_power = supply_power + supply.volts * mean(current)
+        supply_power = (
+            supply_power + supply.volts * mean(current) - _held_back(waves, rail, current)
+        )
     output = _output_power(design, figures, network.units)
     driven = _drive_power(design, network, waves)
     incoming = supply_power + driven
@@ -130,6 +133,12 @@ def _stage_figures(
         "efficiency": output / np.where(incoming > 0, incoming, np.nan),
         "energy_balance": (incoming - spent) / np.where(incoming > 0, incoming, np.nan),
     }
+
+
+def _held_back(waves: Waves, rail: str, current: Floats) -> Floats:
+    """Power that a supply does not give because its limit lowers its voltage, W."""
+    drop = waves.currents.get(f"{rail}:limit")
+    return np.zeros(waves.network.units) if drop is None else mean(drop * current)
 
 
 def _injection(network: Network, name: str) -> Floats:
@@ -178,10 +187,24 @@ def _dissipated(
         elif name is not None:
             total = total + figures[f"{ref}.{name}"]
     for name, rail in design.rails.items():
-        if rail.resistance > 0:
-            total = total + mean(waves.across(f"{name}:source", rail.net) ** 2) / rail.resistance
+        total = total + _supply_loss(network, waves, name, rail)
     nets = [i for net, i in network.index.items() if net not in network.branches]
     return total + design.leak * np.sum(np.mean(waves.x[..., nets] ** 2, axis=0), axis=-1)
+
+
+def _supply_loss(network: Network, waves: Waves, name: str, rail: Rail) -> Floats:
+    """Heat in the resistance and cable of a supply and in its bulk capacitor, W."""
+    total = np.zeros(network.units)
+    feed = feed_branch(name)
+    if feed in network.index:
+        resistance = network.F[:, network.index[feed], network.index[feed]]
+        total = total + resistance * mean(waves.branch(feed) ** 2)
+    elif rail.resistance > 0:
+        total = total + mean(waves.across(f"{name}:source", rail.net) ** 2) / rail.resistance
+    bulk = f"{name}:bulk"
+    if bulk in network.index:
+        total = total + mean(waves.series_current(rail.net, bulk) * waves.across(rail.net, bulk))
+    return total
 
 
 def _heat_figure(part: AnyPart) -> str | None:

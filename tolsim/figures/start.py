@@ -43,12 +43,14 @@ def measure_start(case: Case, nominal: Nominal) -> dict[str, Floats]:
     port_current, *_ = network.devices.evaluate(bias.v)
     idle_current = np.zeros(case.units)
     idle_power = np.zeros(case.units)
-    for supply in network.supplies.values():
+    channel = network.devices.currents(bias.v[None])
+    for rail, supply in network.supplies.items():
         current = supply.at(bias.x, port_current)
         idle_current = idle_current + current
-        idle_power = idle_power + supply.volts * current
+        # a supply at its limit lowers its voltage
+        volts = supply.volts - channel.get(f"{rail}:limit", np.zeros((1, case.units)))[0]
+        idle_power = idle_power + volts * current
     figures |= {"idle_current": idle_current, "idle_dissipation": idle_power}
-    channel = network.devices.currents(bias.v[None])
     for ref in mosfets(case.design):
         current = channel[f"{ref}:forward"][0] + channel[f"{ref}:reverse"][0]
         figures[f"{ref}.idle_dissipation"] = current * bias.v[:, network.ports[f"{ref}:ds"]]
