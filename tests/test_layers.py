@@ -51,7 +51,7 @@ FLOORS = [
     # spread and chance
     {"spread.drift_reading", "spread.table"},
     {"spread.reading", "spread.sampling"},
-    {"spread.part_values", "spread.checks", "spread.words"},
+    {"spread.part_values", "spread.checks", "spread.words", "self_heating"},
     # the door for study files
     {"study.outline"},
     {"study.nets", "study.limits", "study.checks"},

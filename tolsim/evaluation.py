@@ -71,9 +71,9 @@ def evaluate_stored(plan_file: str, first: int, count: int, block: int) -> Chunk
 
 
 def solve_case(plan: Plan, name: CaseName, draws: Draws) -> tuple[Case, Solution]:
-    """Orbits of the drawn units in one case."""
-    values = part_values(plan.study, plan.tables, *name, draws)
-    case = case_of(plan.study, values)
+    """Orbits of the drawn units in one case, passive parts as warm as they run."""
+    rises = plan.cases[name].heat.rises
+    case = case_of(plan.study, part_values(plan.study, plan.tables, *name, draws, rises))
     compass, steps = plan.cases[name].compass, plan.study.run.steps_per_cycle
     choice = plan.choices.get(name)
     if choice is None:
@@ -81,20 +81,25 @@ def solve_case(plan: Plan, name: CaseName, draws: Draws) -> tuple[Case, Solution
     return case, choice.solve(case, compass, steps)
 
 
-def case_figures(plan: Plan, name: CaseName, case: Case, solution: Solution) -> dict[str, Floats]:
-    """Figures of solved units, start figures where the state is one to start in."""
+def case_figures(
+    plan: Plan, name: CaseName, draws: Draws, case: Case, solution: Solution
+) -> dict[str, Floats]:
+    """Figures of solved units, start figures (cold) where the state is one to start in."""
     prepared = plan.cases[name]
     figures = dict(measure_orbits(case, solution))
     starts = plan.study.states[name[1]].starts_here
     if starts and plan.study.kind == "self-oscillating":
-        figures |= measure_start(case, prepared.compass.nominal)
+        cold = case
+        if prepared.heat.rises:
+            cold = case_of(plan.study, part_values(plan.study, plan.tables, *name, draws))
+        figures |= measure_start(cold, prepared.start)
     return figures
 
 
 def case_rows(plan: Plan, name: CaseName, draws: Draws) -> pd.DataFrame:
     """Rows of the drawn units in one case."""
     case, solution = solve_case(plan, name, draws)
-    figures = case_figures(plan, name, case, solution)
+    figures = case_figures(plan, name, draws, case, solution)
     verdicts = judge(
         plan.study,
         *name,

@@ -118,7 +118,7 @@ _PARTS: Final = [
         ("saturation_use", "Saturation use", "1", None, "Peak over saturation current."),
         (*_BODY, "Surroundings plus self-heating."),
     ),
-    *_of("resistor", _DISSIPATION),
+    *_of("resistor", _DISSIPATION, (*_BODY, "Surroundings plus self-heating.")),
     *_of("potentiometer", _DISSIPATION),
     *_of(
         "load",

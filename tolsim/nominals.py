@@ -17,6 +17,7 @@ from tolsim.circuit.thermal import Case, mosfets
 from tolsim.design import Study
 from tolsim.errors import RunError
 from tolsim.figures import measure_orbits, measure_start
+from tolsim.self_heating import Heat, Rises, rises_of, settle, warmed_parts
 from tolsim.spread.part_values import Values, nominal_values
 from tolsim.spread.table import SpreadTable
 
@@ -25,11 +26,17 @@ CaseName = tuple[str, str]  # condition, state
 
 @dataclass(frozen=True)
 class PreparedCase:
-    """One condition and state, ready for its units."""
+    """One condition and state, ready for its units.
+
+    `nominal` runs with its passive parts as warm as `heat` says; `start` is what units that are
+    switched on cold are compared with.
+    """
 
     nominal: Nominal
     compass: Compass
     figures: Mapping[str, float]  # of the nominal unit
+    heat: Heat
+    start: Nominal
 
 
 def cases_of(study: Study) -> tuple[CaseName, ...]:
@@ -48,7 +55,7 @@ def case_of(study: Study, values: Values) -> Case:
 class _StateFound:
     """The nominal units of one load state under every condition, and the way from its orbit."""
 
-    nominals: Mapping[CaseName, Nominal]
+    nominals: Mapping[CaseName, Nominal]  # with cold passive parts
     leader: Compass | None  # None if no condition of this state has an orbit
 
 
@@ -84,7 +91,7 @@ def prepare(
     with parallel_config(backend="loky", inner_max_num_threads=1):
         work = Parallel(n_jobs=min(jobs or cpu_count(), len(states)))
         prepared = work(
-            delayed(_prepare_state)(study, by_state[state], stand_in) for state in states
+            delayed(_prepare_state)(study, tables, by_state[state], stand_in) for state in states
         )
     merged = {name: case for part in prepared for name, case in part.items()}
     return {name: merged[name] for name in names}
@@ -107,7 +114,7 @@ def _find_state(study: Study, tables: Mapping[str, SpreadTable], state: str) -> 
 
 
 def _prepare_state(
-    study: Study, found: _StateFound, stand_in: Compass
+    study: Study, tables: Mapping[str, SpreadTable], found: _StateFound, stand_in: Compass
 ) -> dict[CaseName, PreparedCase]:
     """Aim from every nominal orbit of a state; one that was not found is looked for once more."""
     steps = study.run.steps_per_cycle
@@ -115,8 +122,35 @@ def _prepare_state(
     prepared = {}
     for name, nominal in found.nominals.items():
         again = nominal if nominal.found else _follow(nominal.case, leader, steps)
-        prepared[name] = _prepared(study, again or nominal, leader, steps)
+        cold = again or nominal
+        warm, heat = _warmed(study, tables, name, cold, leader)
+        prepared[name] = _prepared(study, cold, warm, heat, leader)
     return prepared
+
+
+def _warmed(
+    study: Study,
+    tables: Mapping[str, SpreadTable],
+    name: CaseName,
+    cold: Nominal,
+    leader: Compass,
+) -> tuple[Nominal, Heat]:
+    """The nominal unit with its passive parts at their own temperature."""
+    refs = warmed_parts(study, tables)
+    if not refs or not cold.found:
+        return cold, Heat()
+
+    def found(nominal: Nominal) -> tuple[Rises, Nominal]:
+        figures = measure_orbits(nominal.case, nominal.solution)
+        return rises_of(study.design, refs, figures), nominal
+
+    def warmed(assumed: Rises) -> tuple[Rises, Nominal] | None:
+        case = case_of(study, nominal_values(study, tables, *name, assumed))
+        nominal = _follow(case, leader, study.run.steps_per_cycle)
+        return None if nominal is None else found(nominal)
+
+    heat, warm = settle(found(cold), warmed)
+    return warm, heat
 
 
 def _follow(case: Case, leader: Compass, steps: int) -> Nominal | None:
@@ -132,19 +166,21 @@ def _follow(case: Case, leader: Compass, steps: int) -> Nominal | None:
     return Nominal(case, bias, leading, reference.shift, solution, frame)
 
 
-def _prepared(study: Study, nominal: Nominal, leader: Compass, steps: int) -> PreparedCase:
+def _prepared(
+    study: Study, cold: Nominal, warm: Nominal, heat: Heat, leader: Compass
+) -> PreparedCase:
     """Aim from the case's own nominal orbit, or from the leader's if it has none."""
-    compass = leader
-    figures = {}
-    if nominal.found:
-        keys = tuple(key for key in nominal.case.values if not key.endswith("largest_share"))
-        compass = aim(nominal, keys, steps)
-        figures = measure_orbits(nominal.case, nominal.solution)
+    compass, figures = leader, {}
+    if warm.found:
+        keys = tuple(key for key in warm.case.values if not key.endswith("largest_share"))
+        compass = aim(warm, keys, study.run.steps_per_cycle)
+        figures = measure_orbits(warm.case, warm.solution)
+    start = cold if cold.found else leader.nominal
     if study.kind == "self-oscillating":
-        start_from = nominal if nominal.found else replace(leader.nominal, bias=nominal.bias)
-        figures = figures | measure_start(nominal.case, start_from)
+        start_from = cold if cold.found else replace(leader.nominal, bias=cold.bias)
+        figures = figures | measure_start(cold.case, start_from)
     plain = {name: float(value[0]) for name, value in figures.items()}
-    return PreparedCase(nominal, compass, plain)
+    return PreparedCase(warm, compass, plain, heat, start)
 
 
 def _no_orbit(found: Mapping[CaseName, Nominal]) -> str:

@@ -182,7 +182,7 @@ class Resistor(Part):
     """Resistor; `delivers_output` marks the one whose power is the useful output."""
 
     QUANTITIES: ClassVar = ("resistance",)
-    RATINGS: ClassVar = ("power", "voltage")
+    RATINGS: ClassVar = ("power", "voltage", "temperature")
 
     kind: Literal["resistor"]
     nets: tuple[Net, Net]

@@ -18,6 +18,7 @@ from tolsim.figures.waves import Waves
 from tolsim.parts import Inductor
 from tolsim.quantity import show
 from tolsim.report import InputRow, ReportInput, Waveform, report_input
+from tolsim.self_heating import heating_notes
 from tolsim.spread.sampling import draw, tables_of
 from tolsim.spread.table import ASPECTS, SpreadTable
 from tolsim.spread.winding import shape_of
@@ -61,7 +62,10 @@ def report_content(plan: Plan, opened: StudyFile, results: Results) -> ReportInp
         study,
         waveforms=tuple(_waveforms(plan)),
         inputs=tuple(input_rows(study, opened.tables)),
-        assumptions=assumptions(study, opened.tables),
+        assumptions=(
+            *assumptions(study, opened.tables),
+            *heating_notes(study, opened.tables),
+        ),
         not_modelled=NOT_MODELLED,
         cautions=CAUTIONS,
         lots=_lots_differ(study, opened.tables),

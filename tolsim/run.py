@@ -23,13 +23,21 @@ from threadpoolctl import threadpool_limits
 from tolsim.answers.provenance import provenance_of, used_tables
 from tolsim.answers.results import SUMMARY_FILE, TABLES_FOLDER, Results
 from tolsim.answers.summary import summarise
-from tolsim.answers.unit_files import Columns, FrameColumns, UnitFiles, damaged, write_text
+from tolsim.answers.unit_files import (
+    Columns,
+    FrameColumns,
+    UnitFiles,
+    UnitRows,
+    damaged,
+    write_text,
+)
 from tolsim.crosscheck import crosscheck
 from tolsim.design import Study
 from tolsim.errors import RequestError
 from tolsim.evaluation import Chunk, Plan, evaluate, evaluate_stored
 from tolsim.nominals import prepare
 from tolsim.recheck import recheck
+from tolsim.self_heating import heat_record
 from tolsim.solver_choice import choose_solvers, wants_bulk
 from tolsim.spread.sampling import factors
 from tolsim.study import StudyFile, open_study
@@ -242,6 +250,8 @@ def _quality(plan: Plan, units: Columns) -> dict[str, Any]:
         {"condition": condition, "state": state, **record}
         for (condition, state), record in choices.items()
     ]
+    heats = {name: prepared.heat for name, prepared in plan.cases.items()}
+    answer["self_heating"] = heat_record(plan.study, heats, UnitRows.of(units))
     answer["crosscheck"] = crosscheck(plan)
     return answer | recheck(plan)
 

@@ -73,7 +73,8 @@ def _choose_in_state(
     found: dict[CaseName, Choice] = {}
     first: Choice | None = None
     for name, prepared in cases.items():
-        pilots = case_of(study, part_values(study, tables, *name, draws))
+        values = part_values(study, tables, *name, draws, prepared.heat.rises)
+        pilots = case_of(study, values)
         if first is None:
             first = choose(prepared.nominal, prepared.compass, pilots, study.run.steps_per_cycle)
             found[name] = first

@@ -21,6 +21,7 @@ from tolsim.answers.wording import shown
 from tolsim.design import Study
 from tolsim.figure_names import FIGURES
 from tolsim.quantity import show
+from tolsim.self_heating import heating_notes
 from tolsim.spread.table import BASES, SpreadTable
 from tolsim.spread.words import assumptions, describe
 from tolsim.study import StudyFile
@@ -75,7 +76,8 @@ def show_study(opened: StudyFile) -> None:
     screen.print(Text(study.title, style="bold"))
     for line in _contents(study):
         screen.print(Text(line))
-    _paragraphs(screen, "Assumed:", assumptions(study, opened.tables))
+    said = [*assumptions(study, opened.tables), *heating_notes(study, opened.tables)]
+    _paragraphs(screen, "Assumed:", said)
     used = {name for name in _tables_of(study) if opened.tables[name].guesses}
     guesses = [f"{name}: {', '.join(opened.tables[name].guesses)}" for name in sorted(used)]
     _paragraphs(screen, "Guessed in spread tables:", guesses)

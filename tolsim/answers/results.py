@@ -46,7 +46,11 @@ not known (an interval that this many units cannot close).  Every `low`, `high` 
                 worst_judged (the same among figures the study judges), warning (of it)} (empty
                 without bulk solver),
                 rechecked {units, share, agreed, worst_difference, worst_frequency_difference},
-                steps {steps_per_cycle, recheck_steps_per_cycle, recheck_cycles}}
+                steps {steps_per_cycle, recheck_steps_per_cycle, recheck_cycles},
+                self_heating [{part, condition, state (where it runs hottest), rise (K, of the
+                nominal unit, taken for every unit), gap (K, within which the rises of 95 % of
+                the units' own losses lie from it), settled (in every case)}]; passive parts whose
+                values follow their own temperature}
 ``provenance``  {seed, versions {name: version}, study_sha256, tables {name: sha256}, ...}
 """
 

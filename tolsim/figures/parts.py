@@ -30,7 +30,9 @@ def capacitor(ref: str, part: Capacitor, waves: Waves, values: PartValues) -> Fi
         "reactive_power": alternating * through * share,
         "loss": loss,
     }
-    return figures | _warming(loss, part.thermal_resistance, values)
+    if part.thermal_resistance is not None:
+        figures["self_heating"] = loss * part.thermal_resistance
+    return figures | _body(loss, part.thermal_resistance, values)
 
 
 def inductor(ref: str, part: Inductor, waves: Waves, values: PartValues) -> Figures:
@@ -46,22 +48,20 @@ def inductor(ref: str, part: Inductor, waves: Waves, values: PartValues) -> Figu
     }
     if part.rating.saturation_current:
         figures["saturation_use"] = peak / part.rating.saturation_current
-    warming = _warming(loss, part.thermal_resistance, values)
-    warming.pop("self_heating", None)
-    return figures | warming
+    return figures | _body(loss, part.thermal_resistance, values)
 
 
-def _warming(loss: Floats, thermal_resistance: float | None, values: PartValues) -> Figures:
-    """Self-heating and body temperature, where a thermal resistance is given."""
+def _body(loss: Floats, thermal_resistance: float | None, values: PartValues) -> Figures:
+    """Body temperature, where a thermal resistance is given."""
     if thermal_resistance is None:
         return {}
-    rise = loss * thermal_resistance
-    return {"self_heating": rise, "body_temperature": values["ambient"] + rise}
+    return {"body_temperature": values["ambient"] + loss * thermal_resistance}
 
 
 def resistor(ref: str, part: Resistor, waves: Waves, values: PartValues) -> Figures:
     """Heat."""
-    return {"dissipation": mean(waves.across(*part.nets) ** 2) / values[f"{ref}.resistance"]}
+    dissipation = mean(waves.across(*part.nets) ** 2) / values[f"{ref}.resistance"]
+    return {"dissipation": dissipation} | _body(dissipation, part.thermal_resistance, values)
 
 
 def potentiometer(ref: str, part: Potentiometer, waves: Waves, values: PartValues) -> Figures:

@@ -116,6 +116,7 @@ def _quality(quality: dict[str, Any]) -> list[tuple[str, str]]:
         )
         words.append(("Solved again in the time domain", text))
     words += _solvers(known.pop("solvers", []), known.pop("crosscheck", {}))
+    words += [("Own temperature of parts", _warm(e)) for e in known.pop("self_heating", [])]
     ways = known.pop("solved_by", {})
     if ways:
         text = ", ".join(f"{count} {way}" for way, count in ways.items())
@@ -128,6 +129,16 @@ def _quality(quality: dict[str, Any]) -> list[tuple[str, str]]:
         )
         words.append(("Steps per cycle", text))
     return words + _lines(known)
+
+
+def _warm(entry: dict[str, Any]) -> str:
+    """How warm a passive part runs, and how far units may be from that."""
+    gap = "" if entry["gap"] is None else f"; 95 % of units within {entry['gap']:.2g} K of it"
+    unsettled = "" if entry["settled"] else "; its losses found no balance, values are uncertain"
+    return (
+        f"{entry['part']}: {entry['rise']:.3g} K above its surroundings by the loss of the nominal"
+        f" unit ({entry['condition']}, {entry['state']}), taken for every unit{gap}{unsettled}"
+    )
 
 
 def _solvers(solvers: list[dict[str, Any]], crosscheck: dict[str, Any]) -> list[tuple[str, str]]:

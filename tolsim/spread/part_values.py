@@ -4,7 +4,8 @@
 
 Keys are addresses: "C1.capacitance" (total of a bank), "Q1.threshold", "vdd.voltage",
 "ambient".  Every value is an array (N,), N the number of units.  MOSFET values are those
-at 25 degC junction temperature; all others belong to the ambient of the condition.
+at 25 degC junction temperature; all others belong to the ambient of the condition, or to the
+part's own temperature where its rise above that is given.
 """
 
 from __future__ import annotations
@@ -53,6 +54,7 @@ def part_values(
     condition: str,
     state: str,
     draws: Draws,
+    rises: Mapping[str, float] | None = None,
 ) -> Values:
     """Values of every part of the units in `draws`.
 
@@ -65,6 +67,8 @@ def part_values(
         Names in the study.
     draws : Draws
         N units.
+    rises : mapping, optional
+        K by which a part is warmer than ambient, in every unit; parts not named are as warm.
 
     Returns
     -------
@@ -78,11 +82,15 @@ def part_values(
             return draws.values[:, column]
         return law.ppf(draws.u[:, column])  # same rank, the law of this state or condition
 
-    return _Maker(study, tables, condition, state, draws.count, drawn).values()
+    return _Maker(study, tables, condition, state, draws.count, drawn, rises or {}).values()
 
 
 def nominal_values(
-    study: Study, tables: Mapping[str, SpreadTable], condition: str, state: str
+    study: Study,
+    tables: Mapping[str, SpreadTable],
+    condition: str,
+    state: str,
+    rises: Mapping[str, float] | None = None,
 ) -> Values:
     """Values of the nominal unit, arrays (1,): no deviation, laws of conditions at their median.
 
@@ -92,7 +100,7 @@ def nominal_values(
     def drawn(_: str, aspect: str, law: Law) -> Floats:
         return np.zeros(1) if aspect in ("tolerance", "lot") else law.ppf(np.full(1, 0.5))
 
-    return _Maker(study, tables, condition, state, 1, drawn).values()
+    return _Maker(study, tables, condition, state, 1, drawn, rises or {}).values()
 
 
 @dataclass
@@ -105,6 +113,7 @@ class _Maker:
     state_name: str
     count: int
     drawn: Drawn
+    rises: Mapping[str, float]
 
     def __post_init__(self) -> None:
         self.condition: Condition = self.study.conditions[self.condition_name]
@@ -266,6 +275,11 @@ class _Maker:
                 deviation = deviation + drawn
         return deviation
 
+    def _celsius(self, reference: str) -> Floats:
+        """Temperature of a part."""
+        rise = self.rises.get(reference)
+        return self.ambient if rise is None else self.ambient + rise
+
     def _drift(self, reference: str, quantity: str, reel: str | None) -> Floats:
         """Factor of temperature and age."""
         spread = self._laws(reference, quantity)
@@ -273,7 +287,7 @@ class _Maker:
         if spread is not None and spread.temperature is not None:
             drawn = self._draw(reference, quantity, "temperature", reel, None)
             factor = factor * spread.temperature.factor(
-                0.0 if drawn is None else drawn, self.ambient
+                0.0 if drawn is None else drawn, self._celsius(reference)
             )
         if spread is not None and spread.ageing is not None:
             drawn = self._draw(reference, quantity, "ageing", reel, None)
