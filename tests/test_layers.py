@@ -14,12 +14,15 @@ FLOORS = [
     {"errors", "figure_names", "stats.proportion"},
     {"answers.unit_files"},
     {"quantity", "library", "records", "answers.results", "laws.law"}
-    | {"spread.codes", "spread.coil", "spread.wire", "stats.percentiles", "stats.ranking"},
+    | {"spread.codes", "spread.coil", "spread.wire", "stats.percentiles", "stats.ranking"}
+    | {"stats.sample_shape"},
     {"laws.lognormal", "laws.sorted_out", "laws.triangular", "laws.truncated_normal"}
+    | {"laws.measured", "laws.mixture", "laws.student"}
     | {"laws.uniform", "stats", "mosfet_sheet", "winding", "study.plain_words", "answers.wording"},
     {"laws"},
     # the design: parts, then what is made of them
-    {"parts", "laws.reading"},
+    {"parts", "laws.reading"}
+    | {"laws.predictive", "spread.readings"},
     {"design", "spread.datasheet", "spread.temperature", "spread.ageing", "spread.winding"},
     {"answers.bounds"},
     # the circuit: it knows the design, but neither studies nor spread
@@ -49,7 +52,8 @@ FLOORS = [
     {"figures.stage", "figures.start"},
     {"figures", "verdicts"},
     # spread and chance
-    {"spread.drift_reading", "spread.table"},
+    {"spread.drift_reading", "spread.table", "spread.measured_reading"},
+    {"spread.entry"},
     {"spread.reading", "spread.sampling"},
     {"spread.part_values", "spread.checks", "spread.words", "self_heating"},
     # the door for study files

@@ -139,10 +139,11 @@ def run(
     """
     from tolsim.run import run_study
     from tolsim.study import open_study
-    from tolsim.terminal import progress, show_summary, tell
+    from tolsim.terminal import progress, show_summary, tell, warn_of
 
     path = find_study(study)
     opened = open_study(path, tables_dir)
+    warn_of(opened.warnings)
     folder = out or Path("results") / path.stem
     if folder.is_file():
         raise RequestError(f"'{folder}' is a file. Name another folder with --out.")
@@ -185,10 +186,12 @@ def tables(name: str | None, tables_dir: Path | None) -> None:
 
     NAME is a table of the list.
     """
-    from tolsim.spread.reading import load_tables
-    from tolsim.terminal import show_table, show_tables
+    from tolsim.spread.reading import read_shelf
+    from tolsim.terminal import show_table, show_tables, warn_of
 
-    known = load_tables(None, tables_dir)
+    shelf = read_shelf(None, tables_dir)
+    known = shelf.tables
+    warn_of([p.sentence() for p in shelf.problems() if name is None or name not in known])
     if name is None:
         show_tables(known)
     elif name in known:

@@ -257,11 +257,17 @@ def _quality(plan: Plan, units: Columns) -> dict[str, Any]:
 
 
 def _keep_tables(opened: StudyFile, folder: Path) -> None:
-    """Copies of the spread table files the study used, so that the folder stands alone."""
+    """Copies of the spread table files the study used, so that the folder stands alone.
+
+    With them go the files of readings they name.
+    """
     folder.mkdir(exist_ok=True)
     for name in used_tables(opened.study):
         table = opened.tables[name]
         write_text(folder / table.file, table.file_text)
+        for path, text in table.readings.items():
+            (folder / path).parent.mkdir(parents=True, exist_ok=True)
+            write_text(folder / path, text)
 
 
 def _write_report(plan: Plan, opened: StudyFile, results: Results) -> None:

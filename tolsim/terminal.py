@@ -48,6 +48,13 @@ def tell(news: str) -> None:
     console(stderr=True).print(Text(news))
 
 
+def warn_of(mistakes: Sequence[str]) -> None:
+    """Name mistakes that stop nothing: they stand in spread tables nobody asked for."""
+    if mistakes:
+        head = "Mistakes in spread tables that are not used here:"
+        _paragraphs(console(stderr=True), head, mistakes)
+
+
 @contextmanager
 def progress() -> Iterator[Step]:
     """Progress bar on stderr, with rate and time left; yields what to call with news."""
@@ -71,6 +78,7 @@ def progress() -> Iterator[Step]:
 
 def show_study(opened: StudyFile) -> None:
     """Show what a checked study consists of, and what it leaves open."""
+    warn_of(opened.warnings)
     screen = console()
     study = opened.study
     screen.print(Text(study.title, style="bold"))

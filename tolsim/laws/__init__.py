@@ -8,14 +8,26 @@ from typing import Final
 
 from tolsim.laws.law import Floats, Law
 from tolsim.laws.lognormal import LogNormal
+from tolsim.laws.measured import Measured
+from tolsim.laws.mixture import NormalMixture
 from tolsim.laws.sorted_out import SortedOut
+from tolsim.laws.student import StudentT
 from tolsim.laws.triangular import Asymmetric, Triangular
 from tolsim.laws.truncated_normal import TruncatedNormal
 from tolsim.laws.uniform import Fixed, Uniform
 
 LAWS: Final[Mapping[str, type[Law]]] = {
     law.NAME: law
-    for law in (Asymmetric, Fixed, LogNormal, SortedOut, Triangular, TruncatedNormal, Uniform)
+    for law in (
+        Asymmetric,
+        Fixed,
+        LogNormal,
+        SortedOut,
+        StudentT,
+        Triangular,
+        TruncatedNormal,
+        Uniform,
+    )
 }
 
 __all__ = [
@@ -25,7 +37,10 @@ __all__ = [
     "Floats",
     "Law",
     "LogNormal",
+    "Measured",
+    "NormalMixture",
     "SortedOut",
+    "StudentT",
     "Triangular",
     "TruncatedNormal",
     "Uniform",

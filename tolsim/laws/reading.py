@@ -5,7 +5,7 @@ Every mistake is reported, not only the first, so that one look at the file cure
 
 from __future__ import annotations
 
-from collections.abc import Callable, Mapping
+from collections.abc import Callable, Mapping, Sequence
 from dataclasses import MISSING, fields
 from typing import Any, Final
 
@@ -15,12 +15,14 @@ from tolsim.laws import LAWS, Fixed, Law, LogNormal, SortedOut
 
 Report = Callable[[Mistake], None]
 
-_WIDTHS: Final = frozenset({"sigma", "half_width", "removed"})
-_PURE: Final = frozenset({"below"})
+_WIDTHS: Final = frozenset({"sigma", "half_width", "removed", "scale"})
+_PURE: Final = frozenset({"below", "degrees_of_freedom"})
 _HALF_WIDTH_HELP: Final = 'Give low and high, or half_width: {law = "uniform", half_width = "5 %"}.'
 
 
-def read_law(given: object, unit: str, report: Report, *, relative: bool = False) -> Law | None:
+def read_law(
+    given: object, unit: str, report: Report, *, relative: bool = False, also: Sequence[str] = ()
+) -> Law | None:
     """Law that a table or study states.
 
     Parameters
@@ -34,6 +36,8 @@ def read_law(given: object, unit: str, report: Report, *, relative: bool = False
         Called with every `Mistake` found; its key names the parameter.
     relative : bool
         True for relative deviations: a lognormal law then describes the factor 1 + x.
+    also : sequence of str
+        Names of laws that would be right here too, but are read elsewhere.
 
     Returns
     -------
@@ -48,10 +52,10 @@ def read_law(given: object, unit: str, report: Report, *, relative: bool = False
     if kind is None:
         report(
             Mistake(
-                "one of " + ", ".join(LAWS),
+                "one of " + ", ".join((*LAWS, *also)),
                 key="law",
                 got=f'"{name}"' if name is not None else "nothing",
-                nearest=nearest_name(str(name), list(LAWS)),
+                nearest=nearest_name(str(name), [*LAWS, *also]),
             )
         )
         return None

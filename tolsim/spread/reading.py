@@ -1,9 +1,7 @@
 """Spread tables from TOML files: found, read, checked.
 
-A file holds any number of entries `[table.NAME]`, each with title, `for` (part kinds),
-basis, source, and one sub-table per quantity with the laws `tolerance`, `lot`,
-`temperature` and `ageing`.  A law may carry its own basis and source.  Every mistake of
-every file is reported at once.
+A file holds any number of entries `[table.NAME]` (see `tolsim.spread.entry`).  Every mistake of
+every entry is told at once; entries that nobody uses may have mistakes without harm.
 """
 
 from __future__ import annotations
@@ -11,66 +9,57 @@ from __future__ import annotations
 import hashlib
 import re
 import tomllib
-from collections.abc import Mapping
+from collections.abc import Collection, Iterator, Mapping
 from dataclasses import dataclass, field
 from pathlib import Path
-from typing import Any, Final, cast, get_args
+from typing import Final
 
-from tolsim.errors import Mistake, Problem, StudyError, nearest_name
-from tolsim.laws import Law
-from tolsim.laws.reading import read_law
+from tolsim.errors import Problem, StudyError
 from tolsim.library import distributions_folder
-from tolsim.parts import AnyPart
-from tolsim.spread.drift_reading import read_ageing, read_temperature
-from tolsim.spread.table import (
-    ASPECTS,
-    BASES,
-    DEVIATIONS,
-    Basis,
-    Deviation,
-    Origin,
-    QuantitySpread,
-    SpreadTable,
-)
+from tolsim.spread.entry import QUANTITIES, UNITS, Entry
+from tolsim.spread.table import SpreadTable
 
-QUANTITIES: Final[Mapping[str, tuple[str, ...]]] = {
-    **{
-        get_args(part.model_fields["kind"].annotation)[0]: part.QUANTITIES + part.SHAPE
-        for part in get_args(get_args(AnyPart)[0])
-    },
-    "rail": ("voltage",),
-}
-"""Quantities that may spread, by kind of part."""
+__all__ = ["QUANTITIES", "UNITS", "Shelf", "load_tables", "read_shelf", "read_tables"]
 
-UNITS: Final[Mapping[str, str]] = {
-    "capacitance": "F",
-    "esr": "ohm",
-    "inductance": "H",
-    "diameter": "m",
-    "length": "m",
-    "pitch": "m",
-    "wire": "m",
-    "al": "H",
-    "resistance": "ohm",
-    "voltage": "V",
-    "threshold": "V",
-    "gain": "A/V^2",
-    "drift_resistance": "ohm",
-    "high": "V",
-    "low": "V",
-}
-"""Units of measure of the quantities; those not named are pure numbers."""
-
-_ENTRY: Final = re.compile(rb"^\s*\[table\.", re.MULTILINE)
-_HEAD: Final = ("title", "for", "basis", "source")
-_SETTINGS: Final = ("deviation", "implied_half_window")
+_ENTRY: Final = re.compile(rb"^\s*\[\s*table\s*\.", re.MULTILINE)
+_NAME: Final = re.compile(rb"^\s*\[\s*table\s*\.\s*\"?([A-Za-z0-9_-]+)\"?\s*[.\]]", re.MULTILINE)
 
 
-def load_tables(study_path: Path | None, tables_dir: Path | None) -> dict[str, SpreadTable]:
+@dataclass
+class Shelf:
+    """All spread tables within reach, sound or not.
+
+    Attributes
+    ----------
+    tables : dict
+        Sound ones by name, in alphabetical order.
+    broken : dict
+        Mistakes of each entry that has some, by its name.
+    loose : list of Problem
+        Mistakes that belong to no entry: files that cannot be read, keys outside entries.
+    """
+
+    tables: dict[str, SpreadTable] = field(default_factory=dict)
+    broken: dict[str, list[Problem]] = field(default_factory=dict)
+    loose: list[Problem] = field(default_factory=list)
+
+    def problems(self, used: Collection[str] | None = None) -> list[Problem]:
+        """Mistakes of the entries `used`, each once; of everything if None."""
+        names = self.broken if used is None else [name for name in self.broken if name in used]
+        found = [problem for name in names for problem in self.broken[name]]
+        return list(dict.fromkeys([*found, *(self.loose if used is None else ())]))
+
+    def unused(self, used: Collection[str]) -> list[Problem]:
+        """Mistakes that harm nobody who uses only the entries `used`."""
+        harm = set(self.problems(used))
+        return [problem for problem in self.problems() if problem not in harm]
+
+
+def read_shelf(study_path: Path | None, tables_dir: Path | None) -> Shelf:
     """All spread tables a study can name.
 
     A name is looked up beside the study file, then in `tables_dir`, then among the shipped
-    tables; the first place that has it wins.
+    tables; the first place that has it wins, even if the entry there has mistakes.
 
     Parameters
     ----------
@@ -78,36 +67,36 @@ def load_tables(study_path: Path | None, tables_dir: Path | None) -> dict[str, S
         The study file; TOML files beside it that hold `[table.NAME]` entries are read.
     tables_dir : Path or None
         Folder given by the user.
-
-    Returns
-    -------
-    dict
-        Name to table, in alphabetical order.
-
-    Raises
-    ------
-    StudyError
-        With every mistake found in any of the files.
     """
     places = [distributions_folder()]
     if tables_dir is not None:
         places.append(tables_dir)
     if study_path is not None:
         places.append(study_path.resolve().parent)
-    found: dict[str, SpreadTable] = {}
-    problems: list[Problem] = []
+    shelf = Shelf()
     for place in places:
-        found |= _read_folder(place, problems, study_path)
-    if problems:
-        raise StudyError(problems)
-    return dict(sorted(found.items()))
+        _read_folder(place, shelf, study_path)
+    shelf.tables = dict(sorted(shelf.tables.items()))
+    return shelf
 
 
-def _read_folder(
-    folder: Path, problems: list[Problem], study: Path | None
-) -> dict[str, SpreadTable]:
-    """Tables of one folder; a name used twice in it is a mistake, and so is one in the study."""
-    tables: dict[str, SpreadTable] = {}
+def load_tables(study_path: Path | None, tables_dir: Path | None) -> dict[str, SpreadTable]:
+    """As `read_shelf`, but every table must be sound.
+
+    Raises
+    ------
+    StudyError
+        With every mistake found in any of the files.
+    """
+    shelf = read_shelf(study_path, tables_dir)
+    if shelf.problems():
+        raise StudyError(shelf.problems())
+    return shelf.tables
+
+
+def _read_folder(folder: Path, shelf: Shelf, study: Path | None) -> None:
+    """Put the tables of one folder on the shelf, in place of those of the same name."""
+    seen: dict[str, str] = {}
     for path in sorted(folder.glob("*.toml")):
         if not path.is_file():
             continue
@@ -116,256 +105,78 @@ def _read_folder(
         except OSError as error:
             got = error.strerror or str(error)
             cure = "Give yourself the right to read it, or move it away."
-            problems.append(Problem(path.name, "", "", got, "a file that can be read", cure=cure))
+            want = "a file that can be read"
+            shelf.loose.append(Problem(path.name, "", "", got, want, cure=cure))
             continue
         if not _ENTRY.search(data):  # a study, or anything else that happens to lie here
             continue
         if study is not None and path.resolve() == study.resolve():
             cure = "Move the entries [table.NAME] to another file beside the study."
             want = "spread tables in a file of their own"
-            problems.append(Problem(path.name, "table", "", "some in the study", want, "", cure))
+            own = Problem(path.name, "table", "", "some in the study", want, "", cure)
+            for name in _names(data):
+                shelf.broken[name] = [own]
+                shelf.tables.pop(name, None)
             continue
-        for name, table in read_tables(data, path.name, problems).items():
-            if name in tables:
-                problems.append(
-                    Problem(
-                        path.name,
-                        f"table.{name}",
-                        "",
-                        f"a second entry {name}",
-                        f"a name not used in {tables[name].file}",
-                        cure="Rename one of them.",
-                    )
+        file = _read_file(data, path)
+        for name in (*file.tables, *file.broken):
+            shelf.tables.pop(name, None)
+            earlier = shelf.broken.pop(name, [])
+            if name in seen:
+                want = f"a name not used in {seen[name]}"
+                got = f"a second entry {name}"
+                twice = Problem(
+                    path.name, f"table.{name}", "", got, want, "", "Rename one of them."
                 )
-            tables[name] = table
-    return tables
+                file.broken.setdefault(name, []).extend([*earlier, twice])
+            seen[name] = path.name
+        shelf.tables |= {n: table for n, table in file.tables.items() if n not in file.broken}
+        shelf.broken |= file.broken
+        shelf.loose += file.loose
 
 
-def read_tables(data: bytes, file: str, problems: list[Problem]) -> dict[str, SpreadTable]:
-    """Tables in the bytes of one file; mistakes are appended to `problems`."""
+def read_tables(
+    data: bytes, file: str, problems: list[Problem], folder: Path | None = None
+) -> dict[str, SpreadTable]:
+    """Sound tables in the bytes of one file; mistakes are appended to `problems`.
+
+    `folder` is where files of readings lie; without it none can be read.
+    """
+    shelf = _read_bytes(data, file, folder)
+    problems += shelf.problems()
+    return shelf.tables
+
+
+def _read_file(data: bytes, path: Path) -> Shelf:
+    return _read_bytes(data, path.name, path.parent)
+
+
+def _read_bytes(data: bytes, file: str, folder: Path | None) -> Shelf:
+    """The entries of one file, each with its own mistakes."""
     try:
         text = data.decode("utf-8-sig")  # some editors write a mark before the first letter
         content = tomllib.loads(text)
     except (tomllib.TOMLDecodeError, UnicodeDecodeError) as error:
-        problems.append(Problem(file, "", "", str(error), "a valid TOML file in UTF-8"))
-        return {}
-    problems.extend(
+        unread = Problem(file, "", "", str(error), "a valid TOML file in UTF-8")
+        return Shelf({}, {name: [unread] for name in _names(data)}, [unread])
+    shelf = Shelf()
+    shelf.loose += [
         Problem(file, "", key, f'"{key}"', "only entries [table.NAME] in a table file")
         for key in content
         if key != "table"
-    )
+    ]
     digest = hashlib.sha256(data).hexdigest()
     entries = content.get("table", {})
-    read = {
-        name: _Entry(file, f"table.{name}", problems, text).read(name, entry, digest)
-        for name, entry in entries.items()
-    }
-    return {name: table for name, table in read.items() if table is not None}
+    for name, entry in (entries if isinstance(entries, Mapping) else {}).items():
+        found: list[Problem] = []
+        table = Entry(file, f"table.{name}", found, text, folder).read(name, entry, digest)
+        if table is not None and not found:
+            shelf.tables[name] = table
+        else:
+            shelf.broken[name] = found
+    return shelf
 
 
-@dataclass
-class _Entry:
-    """Reader of one entry: knows where it stands, so that mistakes can say it."""
-
-    file: str
-    table: str
-    problems: list[Problem] = field(default_factory=list)
-    file_text: str = ""
-
-    def report(self, mistake: Mistake, table: str = "", prefix: str = "") -> None:
-        """Note a mistake with its place."""
-        inner = "" if prefix and mistake.key == "value" else mistake.key
-        key = ".".join(word for word in (prefix, inner) if word)
-        self.problems.append(
-            Problem(
-                self.file,
-                table or self.table,
-                key,
-                mistake.got,
-                mistake.expected,
-                mistake.nearest,
-                mistake.cure,
-            )
-        )
-
-    def read(self, name: str, entry: object, sha256: str) -> SpreadTable | None:
-        """The whole entry, or None if it has any mistake."""
-        before = len(self.problems)
-        if not isinstance(entry, Mapping):
-            self.report(Mistake("a table of keys", got=f"{entry!r}"))
-            return None
-        kinds = self._kinds(entry.get("for"))
-        origin = self._origin(entry, None, "")
-        title = self._text(entry, "title", "")
-        allowed = tuple(dict.fromkeys(q for kind in kinds for q in QUANTITIES[kind]))
-        quantities: dict[str, QuantitySpread] = {}
-        for key, value in entry.items():
-            if key in _HEAD:
-                continue
-            if key not in allowed:
-                self._unknown(key, (*_HEAD, *allowed), "")
-            elif not isinstance(value, Mapping):
-                self.report(Mistake("a table of laws", key=key, got=f"{value!r}"))
-            else:
-                quantities[key] = self._quantity(key, value, kinds, origin)
-        if not quantities and kinds and len(self.problems) == before:
-            self.report(Mistake("laws for at least one of " + ", ".join(allowed), got="none"))
-        if len(self.problems) > before:
-            return None
-        return SpreadTable(
-            name,
-            title,
-            kinds,
-            origin.basis,
-            origin.source,
-            quantities,
-            self.file,
-            sha256,
-            self.file_text,
-        )
-
-    def _unknown(self, key: str, valid: tuple[str, ...], table: str) -> None:
-        nearest = nearest_name(key, list(valid))
-        expected = "one of " + ", ".join(valid)
-        self.report(Mistake(expected, key=key, got=f'"{key}"', nearest=nearest), table)
-
-    def _choice(self, value: object, valid: tuple[str, ...], key: str, table: str) -> str:
-        """One of the words in `valid`."""
-        if value not in valid:
-            got = f'"{value}"' if value is not None else "nothing"
-            nearest = nearest_name(str(value), list(valid))
-            self.report(
-                Mistake("one of " + ", ".join(valid), key=key, got=got, nearest=nearest), table
-            )
-            return valid[0]
-        return str(value)
-
-    def _text(self, entry: Mapping[str, Any], key: str, table: str) -> str:
-        value = entry.get(key)
-        if not isinstance(value, str) or not value.strip():
-            got = "nothing" if value is None else f"{value!r}"
-            self.report(Mistake("a text", key=key, got=got), table)
-            return ""
-        return value.strip()
-
-    def _kinds(self, given: object) -> tuple[str, ...]:
-        """Kinds of part the entry is for."""
-        words = [given] if isinstance(given, str) or given is None else given
-        if not isinstance(words, list):
-            words = [str(given)]
-        before = len(self.problems)
-        kinds = tuple(self._choice(word, tuple(QUANTITIES), "for", "") for word in words)
-        return kinds if len(self.problems) == before else ()
-
-    def _origin(self, words: Mapping[str, Any], default: Origin | None, table: str) -> Origin:
-        """Basis and source of an entry, or of one law that has its own."""
-        if default is not None and not {"basis", "source"} & set(words):
-            return default
-        basis = self._choice(words.get("basis"), BASES, "basis", table)
-        return Origin(cast("Basis", basis), self._text(words, "source", table))
-
-    def _quantity(
-        self, name: str, given: Mapping[str, Any], kinds: tuple[str, ...], origin: Origin
-    ) -> QuantitySpread:
-        """Laws of one quantity."""
-        table = f"{self.table}.{name}"
-        for key in given:
-            if key not in (*_SETTINGS, *ASPECTS):
-                self._unknown(key, (*ASPECTS, *_SETTINGS), table)
-        ways = DEVIATIONS if name == "threshold" else DEVIATIONS[:2]
-        deviation = self._choice(given.get("deviation", "relative"), ways, "deviation", table)
-        laws: dict[str, Any] = {}
-        origins: dict[str, Origin] = {}
-        shared: set[str] = set()
-        for aspect in ASPECTS:
-            if aspect not in given:
-                continue
-            if aspect == "temperature" and "mosfet" in kinds:
-                self.report(
-                    Mistake(
-                        "no temperature law: a MOSFET follows its junction",
-                        "Set threshold_slope, gain_exponent or drift_exponent of the part.",
-                        key=aspect,
-                        got="one",
-                    ),
-                    table,
-                )
-                continue
-            words = given[aspect]
-            if isinstance(words, Mapping):
-                own = self._origin(words, origin, f"{table}.{aspect}")
-                if self._shared(words, aspect, table):
-                    shared.add(aspect)
-                words = {k: v for k, v in words.items() if k not in ("basis", "source", "shared")}
-            else:
-                own = origin
-            laws[aspect] = self._law(aspect, words, name, deviation, table)
-            if laws[aspect] is not None:
-                origins[aspect] = own
-        spread = QuantitySpread(
-            **laws,
-            deviation=cast("Deviation", deviation),
-            implied_half_window=self._half_window(given, table),
-            shared=frozenset(shared),
-            origins=origins,
-        )
-        self._check_reach(spread, table)
-        return spread
-
-    def _law(self, aspect: str, words: object, name: str, deviation: str, table: str) -> object:
-        """Law of one aspect, of the class that belongs to it."""
-
-        def report(mistake: Mistake) -> None:
-            self.report(mistake, table, aspect)
-
-        if aspect == "temperature":
-            return read_temperature(words, report)
-        if aspect == "ageing":
-            return read_ageing(words, report)
-        unit = UNITS.get(name, "1") if deviation == "absolute" else "1"
-        return read_law(words, unit, report, relative=deviation == "relative")
-
-    def _shared(self, words: Mapping[str, Any], aspect: str, table: str) -> bool:
-        """True if the law is drawn once for a whole reel."""
-        if "shared" not in words:
-            return False
-        if aspect in ("temperature", "ageing"):
-            return self._choice(words["shared"], ("reel", "part"), "shared", table) == "reel"
-        self.report(
-            Mistake("no key shared: lot is shared by a reel, tolerance never", key="shared"), table
-        )
-        return False
-
-    def _half_window(self, given: Mapping[str, Any], table: str) -> float:
-        """Half of the threshold window to assume, in V."""
-        if "implied_half_window" not in given:
-            return 1.0
-
-        def report(mistake: Mistake) -> None:
-            self.report(mistake, table, "implied_half_window")
-
-        law = read_law(given["implied_half_window"], "V", report)
-        if law is not None and not law.support[0] > 0.0:
-            report(Mistake("a voltage above 0", got=f"{law.support[0]:g} V"))
-        return law.mean if law is not None else 1.0
-
-    def _check_reach(self, spread: QuantitySpread, table: str) -> None:
-        """Lot shift and tolerance together must leave a part that can exist."""
-        laws: list[Law] = [law for law in (spread.tolerance, spread.lot) if law is not None]
-        low = sum(law.support[0] for law in laws)
-        high = sum(law.support[1] for law in laws)
-        if spread.deviation == "position" and (low < -1.0 - 1e-9 or high > 1.0 + 1e-9):
-            self.report(
-                Mistake(
-                    "tolerance and lot that stay together within -1 .. 1",
-                    "Parts outside the datasheet window are not delivered.",
-                    key="deviation",
-                    got=f"{low:g} .. {high:g}",
-                ),
-                table,
-            )
-        if spread.deviation == "relative" and laws and low < -1.0:
-            self.report(
-                Mistake("a smallest value above zero", key="tolerance", got=f"{low:.0%} together"),
-                table,
-            )
+def _names(data: bytes) -> Iterator[str]:
+    """Names of the entries a file seems to hold, though it cannot be read."""
+    yield from dict.fromkeys(name.decode() for name in _NAME.findall(data))

@@ -77,7 +77,8 @@ class SpreadTable:
     """One entry of `distributions/`: a part family and grade with its laws and their origin.
 
     `file`, `sha256` and `file_text` are the record of the file it was read from, so that a run
-    can store what it used.
+    can store what it used; `readings` holds the files of meter readings it names, text by path
+    relative to the table file.  Changed readings change `sha256`.
     """
 
     name: str
@@ -89,6 +90,7 @@ class SpreadTable:
     file: str = ""
     sha256: str = ""
     file_text: str = field(default="", repr=False, compare=False)
+    readings: Mapping[str, str] = field(default_factory=dict, repr=False, compare=False)
 
     @property
     def guesses(self) -> tuple[str, ...]:

@@ -27,12 +27,12 @@ from tolsim.errors import Mistake, Problem, StudyError
 from tolsim.quantity import Frequency, Leak
 from tolsim.records import Frozen
 from tolsim.spread.checks import check_spread
-from tolsim.spread.reading import load_tables
+from tolsim.spread.reading import QUANTITIES, read_shelf
 from tolsim.spread.table import SpreadTable
 from tolsim.study.checks import coupling_problems, study_problems
 from tolsim.study.limits import limit_problems
 from tolsim.study.nets import net_problems
-from tolsim.study.outline import Table
+from tolsim.study.outline import Table, named_tables
 from tolsim.study.reading import Reading
 
 _CONDITION_UNITS = {"ambient": "degC", "supply": "1", "age": "h"}
@@ -75,11 +75,14 @@ class StudyFile:
         The file as read.
     tables : mapping of str to SpreadTable
         Every spread table the study could name.
+    warnings : tuple of str
+        Mistakes in spread tables within reach that the study does not use.
     """
 
     study: Study
     text: str
     tables: Mapping[str, SpreadTable]
+    warnings: tuple[str, ...] = ()
 
 
 def load_study(path: Path | str, tables_dir: Path | str | None = None) -> Study:
@@ -105,7 +108,8 @@ def open_study(path: Path | str, tables_dir: Path | str | None = None) -> StudyF
     Raises
     ------
     StudyError
-        With every mistake in the file, or in the spread tables within reach.
+        With every mistake in the file and in the spread tables it uses.  Mistakes in other
+        tables within reach are warnings.
     """
     path = Path(path)
     try:
@@ -116,13 +120,23 @@ def open_study(path: Path | str, tables_dir: Path | str | None = None) -> StudyF
     except UnicodeDecodeError as error:
         got = f"byte {error.start} in another encoding"
         raise _only(path.name, got, "text in UTF-8", "Save the file as UTF-8.") from None
-    tables = load_tables(path, None if tables_dir is None else Path(tables_dir))
-    kinds = {name: table.kinds for name, table in tables.items()}
-    study = read_study(text, kinds, path.name)
-    problems = check_spread(study, tables, path.name)
+    shelf = read_shelf(path, None if tables_dir is None else Path(tables_dir))
+    # an entry with mistakes may be meant for any kind: its own mistakes are told instead
+    kinds: dict[str, Collection[str]] = dict.fromkeys(shelf.broken, QUANTITIES)
+    kinds |= {name: table.kinds for name, table in shelf.tables.items()}
+    used = named_tables(_parsed(text, path.name))
+    broken = shelf.problems(used)
+    if used - kinds.keys():  # it may be in a file that could not be read
+        broken += shelf.loose
+    try:
+        study = read_study(text, kinds, path.name)
+    except StudyError as error:
+        raise StudyError([*error.problems, *broken]) from None
+    problems = broken or check_spread(study, shelf.tables, path.name)
     if problems:
         raise StudyError(problems)
-    return StudyFile(study, text, tables)
+    warnings = tuple(problem.sentence() for problem in shelf.unused(used))
+    return StudyFile(study, text, shelf.tables, warnings)
 
 
 def read_study(text: str, tables: Mapping[str, Collection[str]], file: str = "study") -> Study:

@@ -75,3 +75,21 @@ def texts(table: Table, key: str) -> list[str]:
     """The texts in list `key` of a table; whatever else stands there is told elsewhere."""
     value = table.get(key, [])
     return [item for item in value if isinstance(item, str)] if isinstance(value, list) else []
+
+
+def named_tables(raw: Table) -> set[str]:
+    """Names of all spread tables a study names, right or wrong, at any place for one."""
+    names: set[str] = set()
+
+    def section(name: str) -> list[Table]:
+        found = raw.get(name)
+        tables = found.values() if isinstance(found, Mapping) else ()
+        return [table for table in tables if isinstance(table, Mapping)]
+
+    for owner in (*section("parts"), *section("rails")):
+        names |= {owner["spread"]} if isinstance(owner.get("spread"), str) else set()
+    for state in section("states"):
+        spread = state.get("spread")
+        given = spread.values() if isinstance(spread, Mapping) else ()
+        names |= {name for name in given if isinstance(name, str)}
+    return names
