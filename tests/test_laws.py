@@ -16,11 +16,15 @@ from tolsim.laws import (
     Asymmetric,
     Fixed,
     LogNormal,
+    Measured,
+    NormalMixture,
     SortedOut,
+    StudentT,
     Triangular,
     TruncatedNormal,
     Uniform,
 )
+from tolsim.laws.measured import Exponential, Sample
 from tolsim.laws.reading import read_law
 
 NORMAL = TruncatedNormal(-0.05, 0.05, 0.025)
@@ -43,12 +47,20 @@ CONTRACT = [
     SortedOut(NORMAL, -0.02, 0.02),
     SortedOut(Uniform(-0.05, 0.05), -0.02, 0.06),
     SortedOut(Uniform(-0.05, 0.05), 0.0, 0.02),
+    StudentT(-0.2, 0.2, 0.01, 0.02, 4.0),
+    StudentT(-0.05, 0.1, 0.0, 0.02, 1.0),
+    StudentT(0.03, 0.05, 0.0, 0.01, 9.0),  # the upper tail only
+    NormalMixture(-0.06, 0.05, (-0.03, -0.028, 0.0, 0.03), (0.004, 0.002, 0.01, 0.003)),
+    NormalMixture(3.0, 3.9, (3.4, 3.5), (0.1, 0.2)),
+    Exponential(StudentT(-1.0, 1.2, 0.1, 0.2, 9.0), origin=-1.0),
+    Measured(Uniform(-0.05, 0.05), Sample("reel.csv", 9, 0.0, 0.03, 0.0, "normal", 0.5)),
 ]
+BUILT = {NormalMixture, Exponential, Measured}  # from readings; tables do not name them
 every_law = pytest.mark.parametrize("law", CONTRACT, ids=str)
 
 
 def test_every_law_is_under_contract():
-    assert {type(law) for law in CONTRACT} | {Fixed} == set(LAWS.values())
+    assert {type(law) for law in CONTRACT} | {Fixed} == set(LAWS.values()) | BUILT
 
 
 @every_law
@@ -120,6 +132,7 @@ def test_pdf_is_the_slope_of_cdf_and_nothing_outside(law):
     [
         (Uniform(-0.05, 0.05), stats.uniform(-0.05, 0.1)),
         (TruncatedNormal(-0.05, 0.05, 0.02), stats.truncnorm(-2.5, 2.5, 0.0, 0.02)),
+        (StudentT(-1e5, 1e5, 0.5, 2.0, 5.0), stats.t(5.0, 0.5, 2.0)),
         (LogNormal(1000.0, 0.5), stats.lognorm(0.5, 0.0, 1000.0)),
         (Triangular(-1.0, 2.0, mode=0.5), stats.triang(0.5, -1.0, 3.0)),
     ],
@@ -197,6 +210,12 @@ def test_sorting_out_leaves_nothing_in_the_middle():
         (lambda: Triangular(0.0, 1.0, mode=2.0), "mode"),
         (lambda: Asymmetric(-0.2, 0.0, 0.8, below=1.0), "below"),
         (lambda: SortedOut(NORMAL, -0.06, 0.06), "removed_high"),
+        (lambda: StudentT(-1.0, 1.0, 0.0, -1.0, 5.0), "scale"),
+        (lambda: StudentT(-1.0, 1.0, 0.0, 1.0, 0.0), "degrees_of_freedom"),
+        (lambda: StudentT(1e6, 1e7, 0.0, 1.0, 5.0), "low"),
+        (lambda: NormalMixture(-1.0, 1.0, (0.0,), ()), "sigmas"),
+        (lambda: NormalMixture(-1.0, 1.0, (0.0,), (0.0,)), "sigmas"),
+        (lambda: NormalMixture(20.0, 21.0, (0.0,), (0.1,)), "low"),
         (lambda: SortedOut(NORMAL, 0.06, 0.07), "removed_low"),
     ],
 )

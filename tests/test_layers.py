@@ -21,8 +21,7 @@ FLOORS = [
     | {"laws.uniform", "stats", "mosfet_sheet", "winding", "study.plain_words", "answers.wording"},
     {"laws"},
     # the design: parts, then what is made of them
-    {"parts", "laws.reading"}
-    | {"laws.predictive", "spread.readings"},
+    {"parts", "laws.reading"} | {"laws.predictive", "spread.readings"},
     {"design", "spread.datasheet", "spread.temperature", "spread.ageing", "spread.winding"},
     {"answers.bounds"},
     # the circuit: it knows the design, but neither studies nor spread

@@ -12,7 +12,7 @@ from typing import Any
 import click
 
 from tolsim import __version__
-from tolsim.errors import RequestError, RunError, TolsimError, nearest_name
+from tolsim.errors import RequestError, RunError, StudyError, TolsimError, nearest_name
 from tolsim.library import find_study, shipped_studies
 
 _WRONG_PLACE = (PermissionError, NotADirectoryError, IsADirectoryError, FileNotFoundError)
@@ -191,9 +191,11 @@ def tables(name: str | None, tables_dir: Path | None) -> None:
 
     shelf = read_shelf(None, tables_dir)
     known = shelf.tables
-    warn_of([p.sentence() for p in shelf.problems() if name is None or name not in known])
     if name is None:
         show_tables(known)
+        warn_of([problem.sentence() for problem in shelf.problems()])
+    elif name in shelf.broken:
+        raise StudyError(shelf.problems([name]))
     elif name in known:
         show_table(known[name])
     else:

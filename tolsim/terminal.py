@@ -51,7 +51,7 @@ def tell(news: str) -> None:
 def warn_of(mistakes: Sequence[str]) -> None:
     """Name mistakes that stop nothing: they stand in spread tables nobody asked for."""
     if mistakes:
-        head = "Mistakes in spread tables that are not used here:"
+        head = "Mistakes in spread tables, which are left out:"
         _paragraphs(console(stderr=True), head, mistakes)
 
 

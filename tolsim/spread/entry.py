@@ -103,11 +103,11 @@ class Entry:
         for key, value in entry.items():
             if key in _HEAD:
                 continue
-            if key not in allowed:
+            if key not in allowed and kinds:
                 self._unknown(key, (*_HEAD, *allowed), "")
             elif not isinstance(value, Mapping):
                 self.report(Mistake("a table of laws", key=key, got=f"{value!r}"))
-            else:
+            elif kinds:
                 quantities[key] = self._quantity(key, value, kinds, origin)
         if not quantities and kinds and len(self.problems) == before:
             self.report(Mistake("laws for at least one of " + ", ".join(allowed), got="none"))

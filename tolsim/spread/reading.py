@@ -37,11 +37,14 @@ class Shelf:
         Mistakes of each entry that has some, by its name.
     loose : list of Problem
         Mistakes that belong to no entry: files that cannot be read, keys outside entries.
+    in_study : list of Problem
+        The mistake of writing entries into the study file.
     """
 
     tables: dict[str, SpreadTable] = field(default_factory=dict)
     broken: dict[str, list[Problem]] = field(default_factory=dict)
     loose: list[Problem] = field(default_factory=list)
+    in_study: list[Problem] = field(default_factory=list)
 
     def problems(self, used: Collection[str] | None = None) -> list[Problem]:
         """Mistakes of the entries `used`, each once; of everything if None."""
@@ -89,8 +92,8 @@ def load_tables(study_path: Path | None, tables_dir: Path | None) -> dict[str, S
         With every mistake found in any of the files.
     """
     shelf = read_shelf(study_path, tables_dir)
-    if shelf.problems():
-        raise StudyError(shelf.problems())
+    if shelf.problems() or shelf.in_study:
+        raise StudyError([*shelf.in_study, *shelf.problems()])
     return shelf.tables
 
 
@@ -113,10 +116,8 @@ def _read_folder(folder: Path, shelf: Shelf, study: Path | None) -> None:
         if study is not None and path.resolve() == study.resolve():
             cure = "Move the entries [table.NAME] to another file beside the study."
             want = "spread tables in a file of their own"
-            own = Problem(path.name, "table", "", "some in the study", want, "", cure)
-            for name in _names(data):
-                shelf.broken[name] = [own]
-                shelf.tables.pop(name, None)
+            got = "some in the study"
+            shelf.in_study.append(Problem(path.name, "table", "", got, want, "", cure))
             continue
         file = _read_file(data, path)
         for name in (*file.tables, *file.broken):

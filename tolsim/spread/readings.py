@@ -12,11 +12,11 @@ from __future__ import annotations
 
 import csv
 import hashlib
-import itertools
 import re
 import statistics
 from collections.abc import Callable, Iterator, Sequence
 from dataclasses import dataclass
+from itertools import pairwise
 from pathlib import Path
 from typing import Final
 
@@ -146,7 +146,7 @@ def parse_readings(
         note(0, Mistake("readings, one per line", got="none"))
     if unit != "1":  # deviations may lie on both sides of zero
         _check_sizes(values, lines, note)
-    for line, mistake in mistakes:
+    for line, mistake in sorted(mistakes, key=lambda pair: pair[0]):
         tell(line, mistake)
     if mistakes or found is None:
         return None
@@ -190,10 +190,16 @@ def _delimiter(lines: Sequence[str]) -> str:
     if len(commas) * 2 <= len(lines):
         return ""
     numbers = [line.strip() for line in commas if re.match(r"\s*[+-]?\d", line)]
-    single = all(re.fullmatch(r"[+-]?\d+,\d+(?:[eE][+-]?\d+)?\s*[^\d,;]*", n) for n in numbers)
-    whole = [int(n.split(",")[0]) for n in numbers] if single else []
-    counts = len(whole) > 1 and all(b == a + 1 for a, b in itertools.pairwise(whole))
-    return "" if single and not counts else ","
+    single = all(re.fullmatch(r"[+-]?[\d.]+,\d+(?:[eE][+-]?\d+)?\s*[^\d,;]*", n) for n in numbers)
+    return "" if single and not _counting([n.split(",")[0] for n in numbers]) else ","
+
+
+def _counting(texts: Sequence[str]) -> bool:
+    """True if the texts are 1, 2, 3, ... or 0, 1, 2, ...: numbers of pieces, no readings."""
+    if len(texts) <= 1 or not all(text.isdecimal() for text in texts):
+        return False
+    numbers = [int(text) for text in texts]
+    return numbers[0] in (0, 1) and all(b == a + 1 for a, b in pairwise(numbers))
 
 
 def _head(rows: Sequence[_Row]) -> tuple[tuple[str, ...], list[_Row]]:
@@ -280,11 +286,7 @@ def _filled(column: _Column, body: Sequence[_Row]) -> bool:
 
 def _counts(column: _Column, body: Sequence[_Row]) -> bool:
     """True if the column only numbers the pieces."""
-    cells = [row.cells[column.place] for row in body if column.place < len(row.cells)]
-    if len(cells) <= 1 or not all(re.fullmatch(r"\d+", cell) for cell in cells):
-        return False
-    numbers = [int(cell) for cell in cells]
-    return all(b == a + 1 for a, b in itertools.pairwise(numbers))
+    return _counting([r.cells[column.place] for r in body if column.place < len(r.cells)])
 
 
 def _value(cell: str, own: str, unit: str, line: int, note: Tell) -> float | None:

@@ -2,11 +2,12 @@
 
 from __future__ import annotations
 
-from collections.abc import Mapping
+import math
+from collections.abc import Iterator, Mapping
 from dataclasses import fields
 
 from tolsim.design import Study
-from tolsim.laws import Law
+from tolsim.laws import Law, Measured
 from tolsim.parts import Capacitor, Inductor, Mosfet
 from tolsim.quantity import show
 from tolsim.spread.ageing import AgeingLaw
@@ -23,6 +24,8 @@ _LABELS: Mapping[str, str] = {
     "temperature": "temperature",
     "ageing": "ageing",
 }
+
+FAR_FREQUENCY = 10.0  # a meter further from the frequency of use is worth a sentence
 
 
 def describe(table: SpreadTable) -> list[str]:
@@ -74,34 +77,59 @@ def assumptions(study: Study, tables: Mapping[str, SpreadTable]) -> tuple[str, .
     ]
     if unspread:
         said.append("No spread table, every unit has the nominal value: " + ", ".join(unspread))
-    lossless: list[str] = []
-    for reference, part in study.design.parts.items():
-        names = list(tables_of(study, reference))
-        if isinstance(part, Mosfet):
-            said += [f"{reference}: {words}" for words in device_parameters(part).assumptions]
-            for name in names:
-                spread = tables[name].quantities.get("threshold")
-                if spread is not None and spread.deviation == "position":
-                    said += [
-                        f"{reference}: {words}"
-                        for words in window_assumptions(part, spread.implied_half_window)
-                    ]
-        if isinstance(part, Capacitor) and part.esr is None and part.tan_delta is None:
-            lossless.append(reference)
-        if isinstance(part, Inductor):
-            said += [f"{reference}: {words}" for words in winding_notes(part)]
-        if len(names) > 1:
-            said.append(
-                f"{reference}: a unit keeps its rank in every load state; each state's table "
-                f"({', '.join(names)}) turns the rank into a value"
-            )
+    for reference in study.design.parts:
+        said += [f"{reference}: {words}" for words in _of_part(study, tables, reference)]
+    lossless = [
+        reference
+        for reference, part in study.design.parts.items()
+        if isinstance(part, Capacitor) and part.esr is None and part.tan_delta is None
+    ]
     if lossless:
         said.append("Neither esr nor tan_delta given, taken as lossless: " + ", ".join(lossless))
     return tuple(dict.fromkeys(said))
 
 
+def _of_part(study: Study, tables: Mapping[str, SpreadTable], reference: str) -> Iterator[str]:
+    """What one part leaves open."""
+    part = study.design.parts[reference]
+    names = list(tables_of(study, reference))
+    if isinstance(part, Mosfet):
+        yield from device_parameters(part).assumptions
+        for name in names:
+            spread = tables[name].quantities.get("threshold")
+            if spread is not None and spread.deviation == "position":
+                yield from window_assumptions(part, spread.implied_half_window)
+    for name in names:
+        yield from _measured_elsewhere(study, tables[name])
+    if isinstance(part, Inductor):
+        yield from winding_notes(part)
+    if len(names) > 1:
+        yield (
+            f"a unit keeps its rank in every load state; each state's table "
+            f"({', '.join(names)}) turns the rank into a value"
+        )
+
+
+def _measured_elsewhere(study: Study, table: SpreadTable) -> Iterator[str]:
+    """Readings taken at a frequency far from that of use."""
+    if study.expected_frequency is None:
+        return
+    low, high = study.expected_frequency
+    for quantity, spread in table.quantities.items():
+        for law in (spread.tolerance, spread.lot):
+            at = law.sample.test_frequency if isinstance(law, Measured) else None
+            if at is not None and not low / FAR_FREQUENCY <= at <= high * FAR_FREQUENCY:
+                use = f"{show(low, 'Hz')} to {show(high, 'Hz')}"
+                yield (
+                    f"{quantity} of {table.name} was measured at {show(at, 'Hz')}, used at {use}: "
+                    f"what changes with frequency is not in the readings"
+                )
+
+
 def law_words(law: Law | TemperatureLaw | AgeingLaw, unit: str) -> str:
     """A law in words: its name and every parameter that is set, with units of measure."""
+    if isinstance(law, Measured):
+        return _measured_words(law, unit)
     words = []
     for field in fields(law):
         value = getattr(law, field.name)
@@ -109,6 +137,28 @@ def law_words(law: Law | TemperatureLaw | AgeingLaw, unit: str) -> str:
             continue
         words.append(f"{field.name.replace('_', ' ')} {_value_words(law, field.name, value, unit)}")
     return f"{law.NAME} ({', '.join(words)})" if words else law.NAME
+
+
+def _measured_words(law: Measured, unit: str) -> str:
+    """What was measured, what it looked like, and what is expected of the next piece."""
+    sample = law.sample
+    low, high = law.support
+    words = [
+        f"measured ({sample.pieces} pieces in {sample.file}",
+        f"mean {_number(sample.mean, unit)}",
+        f"scatter {_number(sample.sd, unit)}",
+    ]
+    if sample.noise:
+        words.append(f"of which meter noise {_number(sample.noise, unit)}")
+    if sample.test_frequency is not None:
+        words.append(f"at {show(sample.test_frequency, 'Hz')}")
+    text = ", ".join(words) + f"; shape {sample.shape}"
+    if math.isfinite(sample.fit_p):
+        fitted = "normal" if sample.shape == "as measured" else sample.shape
+        text += f", fit to {fitted} p = {sample.fit_p:.2g}"
+    text += f"; next piece {_number(low, unit)} .. {_number(high, unit)}"
+    text += f", standard deviation {_number(law.sd, unit)}"
+    return "; ".join([text, *sample.remarks]) + ")"
 
 
 def _value_words(law: Law | TemperatureLaw | AgeingLaw, name: str, value: object, unit: str) -> str:

@@ -17,6 +17,7 @@ from scipy.stats import binom
 Floats = NDArray[np.float64]
 
 FEWEST = 8  # readings, below which neither a fit nor a cut can be judged
+_LOPSIDED: Final = 1.4  # ends that differ by less are taken as alike
 ALPHA = 0.01  # a hollow middle is told if chance makes one this rarely
 _FARTHEST_A2: Final = 13.0  # the fitted p formula turns up beyond; p is below 1e-23 there
 
@@ -79,7 +80,8 @@ def cut_ends(values: ArrayLike) -> tuple[str, ...]:
 
     A normal sample of n values reaches out at least so many standard deviations, but for one
     in two hundred: its whole range (David, Hartley, Pearson 1954), and each end from the
-    mean.  A short range means that both ends are cut, one short reach that this end is.
+    mean.  A range too short means that both ends are cut, unless one reaches much further
+    than the other; a reach too short means that this end is.
 
     Parameters
     ----------
@@ -92,11 +94,14 @@ def cut_ends(values: ArrayLike) -> tuple[str, ...]:
         return ()
     log_size = math.log(min(x.size, _SIZES[-1]))
     sizes = np.log(_SIZES)
-    if np.ptp(x) / spread < np.interp(log_size, sizes, _LEAST_RANGE):
-        return ("lower", "upper")
-    reach = np.interp(log_size, sizes, _LEAST_REACH)
     ends = {"lower": (x.mean() - x.min()) / spread, "upper": (x.max() - x.mean()) / spread}
-    return tuple(name for name, seen in ends.items() if seen < reach)
+    least = np.interp(log_size, sizes, _LEAST_REACH)
+    short = tuple(name for name, reach in ends.items() if reach < least)
+    if np.ptp(x) / spread < np.interp(log_size, sizes, _LEAST_RANGE):
+        shorter = min(ends, key=lambda name: ends[name])
+        alike = max(ends.values()) < _LOPSIDED * ends[shorter]
+        return ("lower", "upper") if alike else (shorter,)
+    return short
 
 
 def hollow_middle(values: ArrayLike) -> bool:

@@ -121,6 +121,8 @@ def open_study(path: Path | str, tables_dir: Path | str | None = None) -> StudyF
         got = f"byte {error.start} in another encoding"
         raise _only(path.name, got, "text in UTF-8", "Save the file as UTF-8.") from None
     shelf = read_shelf(path, None if tables_dir is None else Path(tables_dir))
+    if shelf.in_study:
+        raise StudyError(shelf.in_study)
     # an entry with mistakes may be meant for any kind: its own mistakes are told instead
     kinds: dict[str, Collection[str]] = dict.fromkeys(shelf.broken, QUANTITIES)
     kinds |= {name: table.kinds for name, table in shelf.tables.items()}
