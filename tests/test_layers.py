@@ -17,13 +17,13 @@ FLOORS = [
     | {"spread.codes", "spread.coil", "spread.wire", "stats.percentiles", "stats.ranking"}
     | {"stats.sample_shape"},
     {"laws.lognormal", "laws.sorted_out", "laws.triangular", "laws.truncated_normal"}
-    | {"laws.measured", "laws.mixture", "laws.student"}
+    | {"laws.measured", "laws.mixture", "laws.student", "stats.clusters"}
     | {"laws.uniform", "stats", "mosfet_sheet", "winding", "study.plain_words", "answers.wording"},
-    {"laws"},
+    {"laws", "answers.lot_words"},
     # the design: parts, then what is made of them
     {"parts", "laws.reading"} | {"laws.predictive", "spread.readings"},
     {"design", "spread.datasheet", "spread.temperature", "spread.ageing", "spread.winding"},
-    {"answers.bounds"},
+    {"answers.bounds", "answers.counting"},
     # the circuit: it knows the design, but neither studies nor spread
     {"circuit.devices"},
     {"circuit.supply_ramp"}
@@ -57,12 +57,13 @@ FLOORS = [
     {"spread.part_values", "spread.checks", "spread.words", "self_heating"},
     # the door for study files
     {"study.outline"},
-    {"study.nets", "study.limits", "study.checks"},
+    {"study.nets", "study.limits", "study.checks", "study.lots"},
     {"study.reading"},
     {"study.file"},
     {"study"},
     # answers
     {"nominals", "answers.provenance", "answers.ranking"},
+    {"answers.lots"},
     {"evaluation", "answers.summary", "answers.lines", "report.content", "report.tables"},
     {"report.charts"},
     {"report.page", "report.unit_picture"},

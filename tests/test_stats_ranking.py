@@ -177,3 +177,48 @@ def test_a_hundred_idle_factors_beside_a_strong_one_are_hardly_ever_seen():
         assert seen[0]
         idle += int(seen[1:].sum())
     assert idle <= 1
+
+
+class TestLots:
+    """Ten units share each draw of the first factors; only the first one matters to the target."""
+
+    def sample(self, seed, lots=60, size=10, shared=12):
+        rng = np.random.default_rng(seed)
+        of_lots = np.repeat(rng.standard_normal((lots, shared)), size, axis=0)
+        x = np.column_stack([of_lots, rng.standard_normal((lots * size, 3))])
+        y = 3.0 * x[:, 0] + x[:, shared] + 0.01 * rng.standard_normal(lots * size)
+        return x, y, np.repeat(np.arange(lots), size)
+
+    def test_shares_are_right_and_chance_in_lots_is_not_taken_for_effect(self):
+        alarms = {"lots": 0, "units": 0}
+        for seed in range(6):
+            x, y, lot = self.sample(seed)
+            by_lot = rank_factors(x, y, np.random.default_rng(1), lot=lot)
+            by_unit = rank_factors(x, y, np.random.default_rng(1))
+            assert by_lot.share[0] == pytest.approx(0.9, abs=0.05)
+            assert by_lot.share[12] == pytest.approx(0.1, abs=0.05)
+            assert by_lot.distinguishable[[0, 12]].all()
+            assert by_lot.share_low[0] <= 0.9 <= by_lot.share_high[0]
+            alarms["lots"] += by_lot.distinguishable[1:12].sum()
+            alarms["units"] += by_unit.distinguishable[1:12].sum()
+        assert alarms["lots"] <= 1
+        assert alarms["units"] > 20  # what would be said if lot-mates counted as independent
+
+    def test_intervals_of_what_lots_share_are_those_of_so_many_lots(self):
+        x, y, lot = self.sample(3)
+        found = rank_factors(x, y, np.random.default_rng(1), lot=lot)
+        _, low, high = rank_correlation(x[::10, 1:2], y[::10])
+        width = found.correlation_high[1] - found.correlation_low[1]
+        assert width == pytest.approx((high - low).item(), rel=0.2)
+
+    def test_a_lot_for_every_unit_is_no_lot_at_all(self):
+        x, y, _ = self.sample(5, lots=200, size=1)
+        plain = rank_factors(x, y, np.random.default_rng(1))
+        alone = rank_factors(x, y, np.random.default_rng(1), lot=np.arange(200))
+        np.testing.assert_array_equal(alone.share, plain.share)
+        np.testing.assert_array_equal(alone.share_low, plain.share_low)
+        np.testing.assert_array_equal(alone.correlation_high, plain.correlation_high)
+
+    def test_few_lots_are_not_ranked(self):
+        x, y, lot = self.sample(1, lots=5)
+        assert "5 independent lots" in rank_factors(x, y, np.random.default_rng(1), lot=lot).reason

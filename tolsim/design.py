@@ -6,6 +6,7 @@ checks that they make sense together; nothing after it needs to check again.
 
 from __future__ import annotations
 
+import math
 from collections.abc import Mapping
 from typing import Annotated, Any, Literal
 
@@ -136,6 +137,32 @@ class Run(Frozen):
     rank: tuple[str, ...] = ()  # figures to rank factors for, "Q1.drain_peak"
 
 
+class Lots(Frozen):
+    """How units share what they are built from.
+
+    Units 0 ... units_per_lot - 1 are lot 0, and so on: every reel is bought anew for each lot,
+    or for as many lots as `reels` says of it.
+    """
+
+    units_per_lot: Annotated[int, Field(ge=1, le=1_000_000)]
+    reels: Mapping[str, Annotated[int, Field(ge=1, le=1_000_000)]] = {}  # lots that one lasts
+    lost_when: Share = 0.1  # share of failing units that makes a lot a lost one
+
+    def units_of(self, reel: str) -> int:
+        """Units that are built from one reel (or from one purchase of a part without reel)."""
+        return self.units_per_lot * self.reels.get(reel, 1)
+
+    @property
+    def lots_together(self) -> int:
+        """Lots that may share reels: only groups of so many are independent of each other."""
+        return math.lcm(*self.reels.values())
+
+    @property
+    def block(self) -> int:
+        """Units in such a group."""
+        return self.units_per_lot * self.lots_together
+
+
 class Study(Frozen):
     """Everything a run needs, checked."""
 
@@ -146,5 +173,6 @@ class Study(Frozen):
     conditions: Mapping[str, Condition]
     limits: tuple[Limit, ...]
     run: Run
+    lots: Lots | None = None  # none: every unit from reels of its own
     expected_frequency: tuple[Frequency, Frequency] | None = None
     kind: Literal["self-oscillating", "driven"] = "self-oscillating"

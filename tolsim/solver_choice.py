@@ -69,7 +69,8 @@ def _choose_in_state(
     cases: Mapping[CaseName, PreparedCase],
 ) -> dict[CaseName, Choice]:
     """Choose in the first condition, follow in the others."""
-    draws = draw(factors, study.run.seed, 0, PILOTS)
+    alone = [replace(factor, every=1) for factor in factors]  # pilots show the spread of all lots
+    draws = draw(alone, study.run.seed, 0, PILOTS)
     found: dict[CaseName, Choice] = {}
     first: Choice | None = None
     for name, prepared in cases.items():

@@ -6,6 +6,7 @@ import textwrap
 from collections.abc import Iterator, Mapping
 from typing import Any
 
+from tolsim.answers.lot_words import lot_sentences
 from tolsim.answers.wording import (
     failures,
     hardest,
@@ -35,6 +36,7 @@ def summary_lines(summary: Summary) -> list[str]:
     lines = textwrap.wrap(verdict_sentence(summary), WIDTH)
     for heading, body in (
         ("Failing units (one unit may appear in several rows)", _failures(summary)),
+        ("By lot, with 95 % intervals", _wrapped(lot_sentences(summary))),
         ("Hardest driven: p99 over the limit, else over the rating", _stresses(summary)),
         ("What matters: share of variance, 95 % interval", _factors(summary)),
         ("Quality", _quality(summary["quality"])),
@@ -54,6 +56,11 @@ def _failures(summary: Summary) -> Iterator[str]:
         yield f"{failure.units:>6}  {name:<48}  {units}"
     if len(found) > MOST_FAILURES:
         yield f"{len(found) - MOST_FAILURES} more kinds of failure in the report"
+
+
+def _wrapped(sentences: Iterator[str]) -> Iterator[str]:
+    for sentence in sentences:
+        yield from textwrap.wrap(sentence, WIDTH - 2, subsequent_indent="  ")
 
 
 def _stresses(summary: Summary) -> Iterator[str]:

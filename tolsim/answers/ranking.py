@@ -33,7 +33,9 @@ def rankings(
     failed, undecided : ndarray (N,)
         Verdicts of the units in ascending order of their numbers.
     """
-    targets = [*_figures(study, rows), (VERDICT, "Pass or fail", "1", _verdict(failed, undecided))]
+    verdict = _verdict(failed, undecided)
+    targets = [*ranked_figures(study, rows), (VERDICT, "Pass or fail", "1", verdict)]
+    lot = None if study.lots is None else (rows.unit // study.lots.block)[:MOST_RANKED_UNITS]
     names = tuple(name for name in factors.names if name != "unit")
     used = slice(0, MOST_RANKED_UNITS)
     order = np.argsort(factors.column("unit").to_numpy(np.int64), kind="stable")[used]
@@ -44,7 +46,7 @@ def rankings(
     for number, (name, title, unit_of_measure, target) in enumerate(targets):
         # A stream of its own, so that intervals are the same in every run of a study.
         rng = np.random.default_rng([study.run.seed, number])
-        ranked = rank_factors(values, target[used], rng, study.run.confidence)
+        ranked = rank_factors(values, target[used], rng, study.run.confidence, lot=lot)
         entry = {"target": name, "title": title, "unit_of_measure": unit_of_measure}
         found.append({**entry, **_ranking(names, ranked)})
     return found
@@ -56,7 +58,8 @@ def worst_case(values: Floats, figure: FigureInfo) -> Floats:
     return np.asarray(pick.reduce(values, axis=1), np.float64)
 
 
-def _figures(study: Study, rows: UnitRows) -> list[tuple[str, str, str, Floats]]:
+def ranked_figures(study: Study, rows: UnitRows) -> list[tuple[str, str, str, Floats]]:
+    """Column, title, unit of measure and worst value (N,) of the figures that are ranked."""
     found = []
     for column in dict.fromkeys((START_MARGIN, *study.run.rank)):
         named = named_figure(study, column)

@@ -20,6 +20,17 @@ not known (an interval that this many units cannot close).  Every `low`, `high` 
 ``yield``       {estimate, low, high, confidence, units, passed, failed, undecided}.  A unit
                 fails if it fails in any case; else it is undecided if it is in any case.
                 estimate = passed / units; low takes undecided units as failed, high as passed
+                With lots the interval counts lots, not units, and two keys are added: counted_by
+                ("lots") and worth (number of independent units that would tell as much)
+``lots``        {} unless the study says how units share reels; else {units_per_lot, lots (number
+                of them), lots_together (lots that may share reels), reels {name: lots it lasts},
+                failures [{failed, lots}] (so many lots have so many failing units),
+                worst [{lot, first_unit, units, failed, undecided}], with_failure {lots, of (whole
+                lots), share, low, high, first_lots}, lost_when, lost {the same},
+                batches [{boards, share (chance that so many boards of one lot hold one that
+                fails), low, high, independent (the same for boards of many lots)}],
+                between [{target, title, share (of its variance that lies between lots), low,
+                high}], independent {low, high} (the yield interval if units shared nothing)}
 ``cases``       [{condition, state, and all keys of `yield` but for that case alone}]
 ``outcomes``    [{condition, state, outcome, units, share, low, high, first_units, failed,
                 no_limit_broken {units, first_units}}]; `failed` counts those of them that

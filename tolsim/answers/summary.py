@@ -13,12 +13,12 @@ import numpy as np
 from numpy.typing import NDArray
 
 from tolsim.answers.bounds import Bound, applies, bounds, named_figure, rating_of
+from tolsim.answers.counting import Counting
+from tolsim.answers.lots import lots_entry
 from tolsim.answers.ranking import rankings
 from tolsim.answers.unit_files import Columns, UnitRows
 from tolsim.design import Study
 from tolsim.figure_names import FigureInfo
-from tolsim.stats.percentiles import percentiles, tolerance_bound
-from tolsim.stats.proportion import share_interval, yield_estimate
 
 Floats = NDArray[np.float64]
 Flags = NDArray[np.bool_]  # (N,) or (N, cases)
@@ -57,7 +57,7 @@ def summarise(
         If there is no unit, or rows are missing.
     """
     rows = UnitRows.of(units)
-    confidence = study.run.confidence
+    counting = Counting.of(study.lots, rows.unit, study.run.confidence)
     verdict_codes, verdicts = rows.words("verdict")
     failed = _where(verdict_codes, verdicts, "fail")
     undecided = _where(verdict_codes, verdicts, "undecided")
@@ -66,18 +66,19 @@ def summarise(
         "format": FORMAT,
         "title": study.title,
         "kind": study.kind,
-        "yield": _yield(unit_failed, unit_undecided, confidence),
+        "yield": counting.yield_(unit_failed, unit_undecided),
         "cases": [
             {
                 "condition": condition,
                 "state": state,
-                **_yield(failed[:, c], undecided[:, c], confidence),
+                **counting.yield_(failed[:, c], undecided[:, c]),
             }
             for c, (condition, state) in enumerate(rows.cases)
         ],
-        "outcomes": _outcomes(rows, failed, confidence),
-        "limits": _limits(study, rows, confidence),
-        "figures": _figures(study, rows, nominal, confidence),
+        "outcomes": _outcomes(rows, failed, counting),
+        "limits": _limits(study, rows, counting),
+        "figures": _figures(study, rows, nominal, counting),
+        "lots": lots_entry(study, rows, unit_failed, unit_undecided),
         "ranking": rankings(study, rows, factors, unit_failed, unit_undecided),
         "quality": dict(quality),
         "provenance": dict(provenance),
@@ -94,25 +95,19 @@ def _in_any_case(hit: Flags) -> Flags:
     return np.asarray(hit.any(axis=1), bool)
 
 
-def _yield(failed: Flags, undecided: Flags, confidence: float) -> dict[str, Any]:
-    fails = int(failed.sum())
-    open_ = int((undecided & ~failed).sum())
-    return vars(yield_estimate(failed.size - fails - open_, fails, open_, confidence))
-
-
-def _counted(unit: NDArray[np.int64], hit: Flags, confidence: float) -> dict[str, Any]:
+def _counted(unit: NDArray[np.int64], hit: Flags, counting: Counting) -> dict[str, Any]:
     """Count units with an interval, and name the first of them."""
-    low, high = share_interval(int(hit.sum()), hit.size, confidence)
+    low, high = counting.interval(hit)
     return {
         "units": int(hit.sum()),
         "share": float(hit.mean()),
-        "low": float(low),
-        "high": float(high),
+        "low": low,
+        "high": high,
         "first_units": unit[hit][:FIRST_UNITS].tolist(),
     }
 
 
-def _outcomes(rows: UnitRows, failed: Flags, confidence: float) -> list[dict[str, Any]]:
+def _outcomes(rows: UnitRows, failed: Flags, counting: Counting) -> list[dict[str, Any]]:
     codes, words = rows.words("outcome")
     broken, which = rows.words("failed_limits")
     no_limit = failed & _where(broken, which, "")
@@ -126,7 +121,7 @@ def _outcomes(rows: UnitRows, failed: Flags, confidence: float) -> list[dict[str
                         "condition": condition,
                         "state": state,
                         "outcome": outcome,
-                        **_counted(rows.unit, here, confidence),
+                        **_counted(rows.unit, here, counting),
                         "failed": int((here & failed[:, c]).sum()),
                         "no_limit_broken": {
                             "units": int((here & no_limit[:, c]).sum()),
@@ -137,7 +132,7 @@ def _outcomes(rows: UnitRows, failed: Flags, confidence: float) -> list[dict[str
     return found
 
 
-def _limits(study: Study, rows: UnitRows, confidence: float) -> list[dict[str, Any]]:
+def _limits(study: Study, rows: UnitRows, counting: Counting) -> list[dict[str, Any]]:
     codes, words = rows.words("failed_limits")
     broken = [{int(number) for number in word.split(";") if number} for word in words]
     by_limit: dict[int, list[Bound]] = {}
@@ -162,7 +157,7 @@ def _limits(study: Study, rows: UnitRows, confidence: float) -> list[dict[str, A
                     "at_least": limit.at_least,
                     "share_of_rating": limit.share_of_rating,
                 },
-                **_counted(rows.unit, _in_any_case(here), confidence),
+                **_counted(rows.unit, _in_any_case(here), counting),
                 "by_case": [
                     {"condition": condition, "state": state, "units": int(here[:, c].sum())}
                     for c, (condition, state) in enumerate(rows.cases)
@@ -192,7 +187,7 @@ def _by_part(rows: UnitRows, own: list[Bound], here: Flags) -> list[dict[str, An
 
 
 def _figures(
-    study: Study, rows: UnitRows, nominal: Nominal, confidence: float
+    study: Study, rows: UnitRows, nominal: Nominal, counting: Counting
 ) -> list[dict[str, Any]]:
     limits: dict[str, list[Bound]] = {}
     for bound in bounds(study):
@@ -218,7 +213,7 @@ def _figures(
                     "unit_of_measure": figure.unit_of_measure,
                     "worse": figure.worse,
                     "nominal": nominal.get((condition, state), {}).get(column),
-                    **_spread(values[:, c], figure, confidence, rating),
+                    **_spread(values[:, c], figure, counting, rating),
                     **_limit_of(study, limits.get(column, []), figure, condition, state),
                 }
             )
@@ -226,9 +221,9 @@ def _figures(
 
 
 def _spread(
-    values: Floats, figure: FigureInfo, confidence: float, rating: float | None
+    values: Floats, figure: FigureInfo, counting: Counting, rating: float | None
 ) -> dict[str, Any]:
-    found = percentiles(values, list(SHARES.values()), confidence)
+    found = counting.percentiles(values, list(SHARES.values()))
     at = dict(zip(SHARES, found.value.tolist(), strict=True))
     worst = at["p99" if figure.worse == "high" else "p1"]
     return {
@@ -238,7 +233,7 @@ def _spread(
         "interval": {
             name: [low, high] for name, low, high in zip(SHARES, found.low, found.high, strict=True)
         },
-        "bound_95": tolerance_bound(values, 0.95, confidence, figure.worse),
+        "bound_95": counting.bound(values, 0.95, figure.worse),
         "lowest": float(np.nanmin(values)),
         "highest": float(np.nanmax(values)),
         "rating": rating,

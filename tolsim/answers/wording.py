@@ -172,9 +172,10 @@ def verdict_sentence(summary: Summary) -> str:
     """Say the verdict: how many units pass, how sure that is, and what fails most."""
     y = summary["yield"]
     verb = "passes" if y["passed"] == 1 else "pass"
+    lots = f" in {summary['lots']['lots']} lots" if summary.get("lots") else ""
     sentence = (
-        f"Of {y['units']} simulated units, {y['passed']} {verb} every limit in every state and "
-        f"condition: yield {percent(y['estimate'])} ({confidence_words(summary)} "
+        f"Of {y['units']} simulated units{lots}, {y['passed']} {verb} every limit in every state "
+        f"and condition: yield {percent(y['estimate'])} ({confidence_words(summary)} "
         f"{percents(y['low'], y['high'])}). {y['undecided']} undecided."
     )
     found = failures(summary)
@@ -211,5 +212,6 @@ def doubts(summary: Summary) -> list[str]:
 
 
 def confidence_words(summary: Summary) -> str:
-    """Name of the intervals: "95 % interval"."""
-    return f"{100 * summary['yield']['confidence']:.3g} % interval"
+    """Name of the intervals: "95 % interval", "95 % interval over lots"."""
+    over = " over lots" if summary.get("lots") else ""
+    return f"{100 * summary['yield']['confidence']:.3g} % interval{over}"

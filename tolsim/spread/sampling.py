@@ -4,6 +4,9 @@ Every factor has its own stream of random numbers, keyed by the seed and its nam
 k takes the k-th number of the stream.  So unit 1234 is the same unit whatever the number
 of units, the chunks, the workers, or the other factors of the study.  The streams come
 from the counter-based generator Philox (Salmon et al., SC'11), which can start anywhere.
+
+What a reel shares is drawn once per reel: with lots of m units, unit k takes number k // m
+of that stream, or a later reel's if one lasts several lots.
 """
 
 from __future__ import annotations
@@ -47,6 +50,8 @@ class Factor:
         "tolerance", "lot", "temperature", "ageing" or "condition".
     table : str
         Name of the spread table its law comes from; the condition, for conditions.
+    every : int
+        Successive units that share one draw: 1, or the units built from one reel.
     """
 
     name: str
@@ -55,6 +60,7 @@ class Factor:
     quantity: str
     aspect: Aspect
     table: str
+    every: int = 1
 
 
 @dataclass(frozen=True)
@@ -116,8 +122,12 @@ def aspect_words(table: SpreadTable, quantity: str, aspect: str) -> str:
 
 def reel_of(reel: str | None, table: SpreadTable, quantity: str, aspect: str) -> str | None:
     """Reel whose parts share the draw of this aspect, if any."""
-    shared = aspect == "lot" or aspect in table.quantities[quantity].shared
-    return reel if shared else None
+    return reel if is_shared(table, quantity, aspect) else None
+
+
+def is_shared(table: SpreadTable, quantity: str, aspect: str) -> bool:
+    """True if this aspect belongs to a reel, not to a single part."""
+    return aspect == "lot" or aspect in table.quantities[quantity].shared
 
 
 def factors(study: Study, tables: Mapping[str, SpreadTable]) -> tuple[Factor, ...]:
@@ -147,12 +157,15 @@ def _of_parts(study: Study, tables: Mapping[str, SpreadTable]) -> Iterator[Facto
     for reference, part in {**study.design.parts, **study.design.rails}.items():
         pieces = part.pieces if isinstance(part, Capacitor) else 1
         reel = getattr(part, "reel", None)
+        every = study.lots.units_of(reel or reference) if study.lots else 1
         for name in tables_of(study, reference):
-            yield from _of_table(tables[name], reference, reel, pieces)
+            yield from _of_table(tables[name], reference, reel, pieces, every)
 
 
-def _of_table(table: SpreadTable, part: str, reel: str | None, pieces: int) -> Iterator[Factor]:
-    """Factors one table makes for one part."""
+def _of_table(
+    table: SpreadTable, part: str, reel: str | None, pieces: int, every: int
+) -> Iterator[Factor]:
+    """Factors one table makes for one part, `every` units of which come from one reel."""
     for quantity, spread in table.quantities.items():
         for aspect in ASPECTS:
             law = spread.drawn(aspect)
@@ -170,6 +183,7 @@ def _of_table(table: SpreadTable, part: str, reel: str | None, pieces: int) -> I
                     quantity,
                     aspect,
                     table.name,
+                    every if is_shared(table, quantity, aspect) else 1,
                 )
 
 
@@ -209,7 +223,7 @@ def draw(factors: Sequence[Factor], seed: int, first: int, count: int) -> Draws:
     u = np.empty((len(factors), count)).T  # columns are contiguous
     values = np.empty((len(factors), count)).T
     for column, factor in enumerate(factors):
-        u[:, column] = _stream(seed, factor.name, first, count)
+        u[:, column] = _shares(factor, seed, first, count)
         values[:, column] = factor.law.ppf(u[:, column])
     return Draws(tuple(factors), first, u, values)
 
@@ -223,6 +237,14 @@ def draw_chosen(factors: Sequence[Factor], seed: int, numbers: NDArray[np.intp])
         np.concatenate([one.u for one in each]),
         np.concatenate([one.values for one in each]),
     )
+
+
+def _shares(factor: Factor, seed: int, first: int, count: int) -> NDArray[np.float64]:
+    """Shares of units `first` ... `first + count - 1`, in the open interval (0, 1)."""
+    turn = np.arange(first, first + count) // factor.every
+    if not count:
+        return np.empty(0)
+    return _stream(seed, factor.name, int(turn[0]), int(turn[-1] - turn[0]) + 1)[turn - turn[0]]
 
 
 def _stream(seed: int, name: str, first: int, count: int) -> NDArray[np.float64]:

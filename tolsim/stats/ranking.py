@@ -14,6 +14,10 @@ a factor is therefore called distinguishable if the interval of its share or tha
 correlation excludes 0, each widened for looking at k factors at once (Bonferroni; for shares
 by the spread of the replicates, which are too few for such far percentiles).
 
+Units in lots: whole lots are drawn for the bootstrap, and a factor that a lot shares is judged
+on the means over the units that share it, as so many readings as there are different draws of
+it; else the chance that 50 lots of 10 units line up would count as what 500 units show.
+
 SALib estimates shares from a given sample too (`rbd_fast`), with one pass over all factors
 per replicate: measured here, 200 replicates of 100 factors would take 3 s at 500 units and
 13 s at 10 000.  Batched over replicates the same takes 0.04 s and 1.3 s.
@@ -34,6 +38,7 @@ from tolsim.stats.proportion import check_confidence
 Floats = NDArray[np.float64]
 
 FEWEST_UNITS = 20  # below this a share is noise, whatever its interval says
+FEWEST_LOTS = 8  # below this nobody can tell what lots share from chance
 FEWEST_OF_EACH = 5  # failing (and passing) units needed to rank pass/fail
 REPLICATES = 200
 
@@ -70,6 +75,7 @@ def rank_factors(
     rng: np.random.Generator,
     confidence: float = 0.95,
     replicates: int = REPLICATES,
+    lot: ArrayLike | None = None,
 ) -> Ranking:
     """Rank independent factors by how much of a target's spread each explains alone.
 
@@ -85,6 +91,8 @@ def rank_factors(
         Two-sided confidence of every interval.
     replicates : int
         Bootstrap samples.
+    lot : array_like (n,), optional
+        Lot of each unit, where units of one lot share values of some factors.
 
     Raises
     ------
@@ -97,14 +105,16 @@ def rank_factors(
         raise ValueError(f"`factors` must be (n, k), `target` (n,) (got {x.shape}, {y.shape})")
     known = np.isfinite(y) & np.isfinite(x).all(axis=1)
     x, y = x[known], y[known]
+    group = None if lot is None else np.unique(np.asarray(lot)[known], return_inverse=True)[1]
     units, missing = y.size, int(np.sum(~known))
-    reason = _why_not(y)
+    reason = _why_not(y, group)
     if reason:
         return _not_ranked(x.shape[1], units, missing, reason)
-    correlation, c_low, c_high = rank_correlation(x, y, confidence)
+    readings = _readings(x) if group is not None else None
+    correlation, c_low, c_high = rank_correlation(x, y, confidence, readings)
     together = 1.0 - (1.0 - confidence) / max(x.shape[1], 1)
-    _, far_low, far_high = rank_correlation(x, y, together)
-    share, low, high = _shares(x, y, rng, confidence, replicates)
+    _, far_low, far_high = rank_correlation(x, y, together, readings)
+    share, low, high = _shares(x, y, rng, confidence, replicates, group)
     reach = ndtri(0.5 + 0.5 * together) * share[1:].std(axis=0)
     seen = ((low > 0.0) & (share[0] > reach)) | (far_low > 0.0) | (far_high < 0.0)
     remainder = _remainder(share, seen, confidence)
@@ -126,7 +136,10 @@ def rank_factors(
 
 
 def rank_correlation(
-    factors: ArrayLike, target: ArrayLike, confidence: float = 0.95
+    factors: ArrayLike,
+    target: ArrayLike,
+    confidence: float = 0.95,
+    readings: ArrayLike | None = None,
 ) -> tuple[Floats, Floats, Floats]:
     """Spearman's rank correlation of each factor with the target, and its interval.
 
@@ -137,6 +150,8 @@ def rank_correlation(
     ----------
     factors : array_like (n, k)
     target : array_like (n,)
+    readings : array_like (k,), optional
+        Independent readings of each factor, if fewer than n.
 
     Returns
     -------
@@ -152,12 +167,20 @@ def rank_correlation(
     with np.errstate(divide="ignore", invalid="ignore"):
         r = np.clip(np.where(scale > 0, dy @ dx / scale, np.nan), -1.0, 1.0)
         z = np.arctanh(r)
-    reach = ndtri(0.5 + 0.5 * confidence) * np.sqrt((1 + 0.5 * r**2) / max(n - 3, 1))
+    free = np.maximum(np.asarray(n if readings is None else readings) - 3, 1)
+    reach = ndtri(0.5 + 0.5 * confidence) * np.sqrt((1 + 0.5 * r**2) / free)
     return r, np.tanh(z - reach), np.tanh(z + reach)
 
 
-def _why_not(y: Floats) -> str:
+def _readings(x: Floats) -> Floats:
+    """Different draws of each factor."""
+    return np.array([float(np.unique(column).size) for column in x.T])
+
+
+def _why_not(y: Floats, group: NDArray[np.intp] | None) -> str:
     """Empty when the target can be ranked, else a sentence."""
+    if group is not None and y.size and group.max() + 1 < FEWEST_LOTS:
+        return f"only {group.max() + 1} independent lots; at least {FEWEST_LOTS} are needed"
     if y.size < FEWEST_UNITS:
         return f"only {y.size} units have this figure; at least {FEWEST_UNITS} are needed"
     _, counts = np.unique(y, return_counts=True)
@@ -192,17 +215,24 @@ def _not_ranked(k: int, units: int, missing: int, reason: str) -> Ranking:
 
 
 def _shares(
-    x: Floats, y: Floats, rng: np.random.Generator, confidence: float, replicates: int
+    x: Floats,
+    y: Floats,
+    rng: np.random.Generator,
+    confidence: float,
+    replicates: int,
+    group: NDArray[np.intp] | None,
 ) -> tuple[Floats, Floats, Floats]:
     """Shares (1 + replicates, k), row 0 being the sample itself, and interval ends (k,)."""
     n, k = x.shape
+    drawn = n if group is None else int(group.max()) + 1
     weights = np.ones((replicates + 1, n))
-    weights[1:] = rng.multinomial(n, np.full(n, 1.0 / n), size=replicates)
-    edges = np.linspace(0, n, _bins(n) + 1).astype(int)
+    copies = rng.multinomial(drawn, np.full(drawn, 1.0 / drawn), size=replicates)
+    weights[1:] = copies if group is None else copies[:, group]
     standard = (y - y.mean()) / y.std()
     shares = np.empty((replicates + 1, k))
     for j in range(k):
-        shares[:, j] = _share(x[:, j], standard, weights, edges)
+        one = _share if group is None else _shared_share
+        shares[:, j] = one(x[:, j], standard, weights, _edges(n))
     return shares, *_moved_to_estimate(shares, confidence)
 
 
@@ -223,6 +253,11 @@ def _moved_to_estimate(values: Floats, confidence: float) -> tuple[Floats, Float
     spread = values[1:] - values[1:].mean(axis=0)
     tails = np.quantile(spread, [0.5 - 0.5 * confidence, 0.5 + 0.5 * confidence], axis=0)
     return values[0] + tails[0], values[0] + tails[1]
+
+
+def _edges(n: int) -> NDArray[np.intp]:
+    """Where the bins of n readings begin and end."""
+    return np.linspace(0, n, _bins(n) + 1).astype(np.intp)
 
 
 def _bins(n: int) -> int:
@@ -257,3 +292,27 @@ def _share(x: Floats, y: Floats, weights: Floats, edges: NDArray[np.intp]) -> Fl
     varies = total > 1e-9 * n  # few failing units: a replicate may hold none, and explains nothing
     total = np.where(varies, total, 1.0)
     return np.where(varies, 1.0 - (left_over / (n - fitted)) / (total / (n - 1)), 0.0)
+
+
+def _shared_share(
+    x: Floats, y: Floats, weights: Floats, edges: NDArray[np.intp]
+) -> NDArray[np.float64]:
+    """As `_share`, for a factor of which several units may share one draw.
+
+    What it explains of the means over units with one draw, times their part of the variance.
+    """
+    draws, first, place = np.unique(x, return_index=True, return_inverse=True)
+    if draws.size == x.size:
+        return _share(x, y, weights, edges)
+    means = np.bincount(place, y) / np.bincount(place)
+    of_draws = weights[:, first]
+    total = _variances(y, weights)
+    part = np.where(total > 0.0, _variances(means, of_draws) / np.where(total > 0.0, total, 1.0), 0)
+    return _share(draws, means, of_draws, _edges(draws.size)) * part
+
+
+def _variances(y: Floats, weights: Floats) -> Floats:
+    """Variance of y (n,) for each row of weights (b, n) -> (b,)."""
+    count = np.maximum(weights.sum(axis=1), 1.0)
+    mean = weights @ y / count
+    return np.maximum(weights @ (y * y) / count - mean * mean, 0.0)

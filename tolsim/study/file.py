@@ -2,6 +2,7 @@
 
     title = "..."                    scenario, kind, expected_frequency, leak
     [run]                            units, seed, confidence, steps_per_cycle, rank
+    [lots]                           units_per_lot, reels, lost_when
     [rails.vdd]                      net, voltage, ...
     [parts.C1]                       kind, nets, values, ratings, spread table
     [states.full]                    title, starts_here, values, spread
@@ -22,7 +23,7 @@ from typing import Annotated, Any, Literal
 
 from pydantic import AfterValidator
 
-from tolsim.design import Design, Rail, Run, Study
+from tolsim.design import Design, Lots, Rail, Run, Study
 from tolsim.errors import Mistake, Problem, StudyError
 from tolsim.quantity import Frequency, Leak
 from tolsim.records import Frozen
@@ -31,6 +32,7 @@ from tolsim.spread.reading import QUANTITIES, read_shelf
 from tolsim.spread.table import SpreadTable
 from tolsim.study.checks import coupling_problems, study_problems
 from tolsim.study.limits import limit_problems
+from tolsim.study.lots import lot_problems
 from tolsim.study.nets import net_problems
 from tolsim.study.outline import Table, named_tables
 from tolsim.study.reading import Reading
@@ -56,6 +58,7 @@ class _Top(Frozen):
     )
     leak: Leak = 1e-8
     run: Run = Run()
+    lots: Lots | None = None
     rails: Mapping[str, Any] = {}
     parts: Mapping[str, Any] = {}
     states: Mapping[str, Any] = {}
@@ -176,6 +179,7 @@ def read_study(text: str, tables: Mapping[str, Collection[str]], file: str = "st
     reading.problems += net_problems(outline)
     reading.problems += coupling_problems(outline, parts, values)
     reading.problems += limit_problems(outline)
+    reading.problems += lot_problems(outline, raw.get("lots"))
     if reading.problems or top is None:
         raise StudyError(_in_file_order(reading.problems, raw))
     return Study(
@@ -186,6 +190,7 @@ def read_study(text: str, tables: Mapping[str, Collection[str]], file: str = "st
         conditions=conditions,
         limits=limits,
         run=top.run,
+        lots=top.lots,
         expected_frequency=top.expected_frequency,
         kind=top.kind,
     )
