@@ -119,6 +119,56 @@ def test_temperature_and_age_multiply():
     )
 
 
+def test_soldering_sets_one_clock_back():
+    """At 1 h a part reads 1 / 0.925 = 1.0811 of its marked (1000 h) value, at ten years 0.9475.
+
+    IEC 60384-9 annex, 2.5 % per decade.  A repair starts again at 1.0811.
+    """
+    rows = {
+        "new": Condition(),
+        "referee": Condition(age=1000.0),
+        "old": Condition(age=87600.0),
+        "repaired": Condition(age=87600.0, since_soldering=1.0),
+        "a month later": Condition(age=87600.0 + 720.0, since_soldering=720.0),
+    }
+    given = study({"C1": capacitor(spread="c-lot"), "C2": capacitor(spread="c-film")},
+                  conditions=rows)  # fmt: skip
+    laws = TABLES | tables(FILM)
+    found = {
+        name: {key: value[0] / 1e-9 for key, value in nominal_values(given, laws, name, "normal")
+               .items() if key.endswith("capacitance")}
+        for name in rows
+    }  # fmt: skip
+    ceramic = {name: values["C1.capacitance"] for name, values in found.items()}
+    assert ceramic["new"] == ceramic["repaired"] == pytest.approx(1.08108, abs=5e-6)
+    assert ceramic["referee"] == pytest.approx(1.0, abs=1e-12)
+    assert ceramic["old"] == pytest.approx(0.94750, abs=5e-6)
+    assert ceramic["a month later"] == pytest.approx(1.0 + 0.025 * 0.142668 / 0.925, abs=1e-5)
+    film = {name: values["C2.capacitance"] for name, values in found.items()}
+    assert film["new"] == 1.0
+    assert film["repaired"] == film["old"] == pytest.approx(1.02)  # rate at ten years
+
+
+FILM = b"""
+[table.c-film]
+title = "Capacitor that drifts with the root of time"
+for = "capacitor"
+basis = "guess"
+source = "made for a test"
+[table.c-film.capacitance]
+ageing = {law = "sqrt-time", rate = "2 %", reference = "87600 h"}
+"""
+
+
+def test_no_unit_was_soldered_before_it_was_built():
+    with pytest.raises(ValueError, match="no more than the age"):
+        Condition(age=10.0, since_soldering=11.0)
+    drawn = Condition(age={"law": "uniform", "low": "0 h", "high": "100 h"}, since_soldering=50.0)
+    given = study({"C1": capacitor(spread="c-lot")}, conditions={"room": drawn})
+    young = values_of(given, 400)["C1.capacitance"]  # some are younger than that themselves
+    assert np.all(np.isfinite(young))
+
+
 def test_parts_of_one_reel_share_the_lot_shift():
     """Correlation of two parts of one reel: var(lot) / (var(lot) + var(scatter))."""
     given = study({

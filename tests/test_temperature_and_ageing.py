@@ -6,6 +6,7 @@ import pytest
 from tolsim.errors import Mistake
 from tolsim.laws import Fixed, Uniform
 from tolsim.spread.ageing import LinearAgeing, LogTimeAgeing, PowerAgeing, SqrtTimeAgeing
+from tolsim.spread.drift_reading import read_ageing
 from tolsim.spread.temperature import (
     CopperTemperature,
     CurveTemperature,
@@ -90,6 +91,17 @@ def test_no_log_of_zero_hours():
     assert law.factor(0.0, [0.0, 1e5]) == pytest.approx([1.0, 1.0])  # class 1: rate 0
 
 
+def test_each_law_has_its_clock():
+    assert LogTimeAgeing(Fixed(-0.025)).clock == "soldering"
+    assert LogTimeAgeing(Fixed(-0.025), since="build").clock == "build"
+    assert SqrtTimeAgeing(Fixed(0.02), 87600.0).clock == "build"
+    mistakes = []
+    words = {"law": "log-time", "rate": "-2 %", "reference": "1000 h", "since": "build"}
+    assert read_ageing(words, mistakes.append).clock == "build"
+    assert read_ageing(words | {"since": "birth"}, mistakes.append) is None
+    assert [mistake.key for mistake in mistakes] == ["since"]
+
+
 def test_power_laws_of_time():
     """Root of time: half of the ten-year drift after 2.5 years."""
     assert SqrtTimeAgeing(Fixed(0.02), 87600.0).factor(0.02, 21900.0) == pytest.approx(1.01)
@@ -111,6 +123,7 @@ def test_power_laws_of_time():
         (lambda: CurveTemperature(((25.0, 0.0), (20.0, 0.1))), "points"),
         (lambda: CopperTemperature(25.0, 0.0), "exponent"),
         (lambda: LogTimeAgeing(Fixed(-0.02), reference=0.0), "reference"),
+        (lambda: LogTimeAgeing(Fixed(-0.02), since="delivery"), "since"),
         (lambda: PowerAgeing(Fixed(0.1), 100.0, 0.0), "exponent"),
         (lambda: LinearAgeing(Fixed(0.1), -1.0), "reference"),
     ],

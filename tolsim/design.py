@@ -8,10 +8,11 @@ from __future__ import annotations
 
 import math
 from collections.abc import Mapping
-from typing import Annotated, Any, Literal
+from typing import Annotated, Any, Literal, Self
 
-from pydantic import Field
+from pydantic import Field, model_validator
 
+from tolsim.errors import Mistake
 from tolsim.parts import AnyPart, Net
 from tolsim.quantity import (
     Age,
@@ -29,6 +30,7 @@ from tolsim.quantity import (
     Temperature,
     TemperatureDifference,
     Voltage,
+    show,
 )
 from tolsim.records import Frozen
 
@@ -104,13 +106,28 @@ class Condition(Frozen):
     """Ambient temperature, supply deviation and age at which every unit is judged.
 
     A chosen number, or a law (mapping with key "law") from which each unit draws its own.
+    Ages are hours since the unit was built; a unit repaired since then was last soldered
+    `since_soldering` hours ago.
     """
 
     title: str = ""
     ambient: Temperature | Mapping[str, Any] = 25.0
     supply: SignedShare | Mapping[str, Any] = 0.0
     age: Age | Mapping[str, Any] = 0.0  # hours
+    since_soldering: Age | None = None  # hours; as old as the unit if not given
     board_rise: TemperatureDifference = 0.0
+
+    @model_validator(mode="after")
+    def _soldered_after_it_was_built(self) -> Self:
+        since, age = self.since_soldering, self.age
+        if since is not None and not isinstance(age, Mapping) and since > age:
+            raise Mistake(
+                f"no more than the age ({show(age, 'h')})",
+                "A unit is soldered when it is built, or later.",
+                key="since_soldering",
+                got=show(since, "h"),
+            )
+        return self
 
 
 class Limit(Frozen):

@@ -1,20 +1,24 @@
 """How part values drift with age: laws for the factor on the value at the reference age.
 
-Ages are hours.  The rate is left to chance: `rate` is its law.  `factor(rate, hours)` is
-the multiplier on the part value.
+Ages are hours by one of two clocks: since the unit was built, or since it was last soldered.
+The heat of soldering sets class 2 ceramics back to their first hour; a repair does so again,
+while resistors and films beside them go on ageing.  The rate is left to chance: `rate` is its
+law.  `factor(rate, hours)` is the multiplier on the part value.
 """
 
 from __future__ import annotations
 
 from abc import ABC, abstractmethod
 from dataclasses import dataclass
-from typing import ClassVar
+from typing import ClassVar, Literal, get_args
 
 import numpy as np
 from numpy.typing import ArrayLike
 
 from tolsim.errors import Mistake
 from tolsim.laws import Floats, Law
+
+Clock = Literal["build", "soldering"]
 
 HIGHEST_EXPONENT = 3.0  # of a power of time; drift mechanisms stay below 1
 
@@ -27,6 +31,11 @@ class AgeingLaw(ABC):
     WHAT: ClassVar[str] = "ageing rate"
 
     rate: Law
+
+    @property
+    def clock(self) -> Clock:
+        """What its hours are counted from."""
+        return "build"
 
     @abstractmethod
     def factor(self, rate: ArrayLike, hours: ArrayLike) -> Floats:
@@ -44,6 +53,9 @@ class LogTimeAgeing(AgeingLaw):
     the part has its marked value, 1000 h by the referee rule.  Makers that state the rate
     as a share of the 1000 h value have origin = reference = 1000 h; the two differ.  Ages
     below `earliest` are taken as `earliest`, because the law has no value at zero.
+
+    Parts come with their marked value, but soldering lifts it to that of the first hour, from
+    which it falls again: hours count `since` the last soldering unless a table says "build".
     """
 
     NAME: ClassVar[str] = "log-time"
@@ -51,8 +63,16 @@ class LogTimeAgeing(AgeingLaw):
     reference: float = 1000.0
     origin: float = 1.0
     earliest: float = 1.0
+    since: Clock = "soldering"
+
+    @property
+    def clock(self) -> Clock:
+        """What its hours are counted from."""
+        return self.since
 
     def __post_init__(self) -> None:
+        if self.since not in get_args(Clock):
+            raise Mistake('"soldering" or "build"', key="since", got=f'"{self.since}"')
         for name in ("reference", "origin", "earliest"):
             if not getattr(self, name) > 0.0:
                 raise Mistake("an age above 0", key=name, got=f"{getattr(self, name):g}")

@@ -45,6 +45,13 @@ def _code(given: object, report: Report) -> str | None:
     return None
 
 
+def _word(given: object, report: Report) -> str | None:
+    if isinstance(given, str):
+        return given
+    report(Mistake("a text in quotes", got=f"{given!r}"))
+    return None
+
+
 def _points(columns: int) -> Parameter:
     """Rows of a temperature and `columns` relative changes."""
 
@@ -98,6 +105,7 @@ _AGEING: Final[Mapping[str, tuple[Callable[..., AgeingLaw], Mapping[str, Paramet
             "reference": _number("h"),
             "origin": _number("h"),
             "earliest": _number("h"),
+            "since": _word,
         },
     ),
     SqrtTimeAgeing.NAME: (SqrtTimeAgeing, {"rate": _law("1"), "reference": _number("h")}),
@@ -108,7 +116,7 @@ _AGEING: Final[Mapping[str, tuple[Callable[..., AgeingLaw], Mapping[str, Paramet
     ),
 }
 
-_OPTIONAL: Final = frozenset({"origin", "earliest", "position", "stretch"})
+_OPTIONAL: Final = frozenset({"origin", "earliest", "since", "position", "stretch"})
 _OPTIONAL_FOR_TEMPERATURE: Final = _OPTIONAL | {"reference", "exponent"}
 
 

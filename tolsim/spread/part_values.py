@@ -121,6 +121,8 @@ class _Maker:
         self.ambient = self._of_condition("ambient") + self.condition.board_rise
         self.supply = self._of_condition("supply")
         self.age = self._of_condition("age")
+        since = self.condition.since_soldering
+        self.since_soldering = self.age if since is None else np.minimum(since, self.age)
 
     def values(self) -> Values:
         """All part values."""
@@ -291,7 +293,8 @@ class _Maker:
             )
         if spread is not None and spread.ageing is not None:
             drawn = self._draw(reference, quantity, "ageing", reel, None)
-            factor = factor * spread.ageing.factor(0.0 if drawn is None else drawn, self.age)
+            hours = self.since_soldering if spread.ageing.clock == "soldering" else self.age
+            factor = factor * spread.ageing.factor(0.0 if drawn is None else drawn, hours)
         return factor
 
 

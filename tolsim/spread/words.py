@@ -165,6 +165,8 @@ def _value_words(law: Law | TemperatureLaw | AgeingLaw, name: str, value: object
     """One parameter in words."""
     if isinstance(value, Law):
         return law_words(value, {"slope": "1/K", "position": "1", "stretch": "1"}.get(name, unit))
+    if isinstance(value, str):
+        return value
     if isinstance(value, tuple):
         rows = (
             f"{row[0]:g} degC " + " .. ".join(_number(change, "share") for change in row[1:])
