@@ -228,7 +228,7 @@ TOLD = """\
 - bad.toml [states.dark.values] R9.resistance: expected a part or rail of this study, got "R9". Known here: L1, C1, C2, C3, R1, Q1, V1, K1, vdd, bias.
 - bad.toml [states.dark.values] R1.resistance: expected a resistance of 1 uohm to 1 Tohm, got "3 V". 'V' measures something else. For example "3.3 kohm".
 - bad.toml [conditions.hot] age: expected an age of 0 h to 1e+07 h, got 1000. Write the unit of measure too, like "10000 h".
-- bad.toml [conditions.hot.ambient] law: expected one of asymmetric, fixed, lognormal, sorted-out, student-t, triangular, truncated-normal, uniform, got "unifrm". Did you mean uniform?
+- bad.toml [conditions.hot.ambient] law: expected one of asymmetric, fixed, lognormal, sorted-out, student-t, triangular, truncated-normal, uniform, window, got "unifrm". Did you mean uniform?
 - bad.toml [limits #1] at_least: expected text with a unit of measure like dB, got 3. Write "3 dB" if it is that.
 - bad.toml [limits #2] states: expected a state of this study, got "drak". Did you mean dark?
 - bad.toml [limits #2] parts: expected a part or rail of this study, got "Q9". Known here: L1, C1, C2, C3, R1, Q1, V1, K1, vdd, bias.

@@ -7,13 +7,19 @@ from tolsim.spread.codes import (
     Class1,
     Class2,
     Tolerance,
-    capacitor_code,
     class1_code,
     class2_code,
-    e_series,
-    nearest_preferred,
+    slope_letter,
     tolerance_letter,
 )
+from tolsim.spread.preferred import (
+    e_series,
+    is_preferred,
+    nearest_preferred,
+    neighbours,
+    smallest_series,
+)
+from tolsim.spread.value_codes import capacitor_code, resistor_code
 
 # IEC 60062:2016, table of tolerance codes: per cent from 10 pF on.
 PER_CENT = {
@@ -77,6 +83,49 @@ def test_per_cent_letters_are_refused_below_10_pf(letter):
 )
 def test_value_codes(code, farads):
     assert capacitor_code(code)[0] == pytest.approx(farads)
+
+
+@pytest.mark.parametrize(
+    ("code", "ohms"),
+    [
+        ("472", 4700), ("4702", 47e3), ("4k7", 4.7e3), ("4K7", 4.7e3), ("R47", 0.47), ("47R", 47),
+        ("4R7", 4.7), ("1M0", 1e6), ("47K", 47e3), ("000", 0), ("1R00", 1), ("10R0", 10),
+    ],
+)  # fmt: skip
+def test_value_codes_of_resistors(code, ohms):
+    assert resistor_code(code) == (pytest.approx(ohms), None)
+
+
+def test_resistor_marks_with_letters():
+    assert resistor_code("472J") == (pytest.approx(4700), Tolerance(-0.05, 0.05))
+    assert resistor_code("4702F") == (pytest.approx(47e3), Tolerance(-0.01, 0.01))
+    assert resistor_code("4k7K") == (pytest.approx(4700), Tolerance(-0.1, 0.1))
+    assert resistor_code("R47J") == (pytest.approx(0.47), Tolerance(-0.05, 0.05))
+
+
+def test_marks_with_two_meanings_are_refused_with_both():
+    with pytest.raises(Mistake) as caught:
+        resistor_code("472K")
+    assert "472 kohm" in caught.value.cure
+    assert "4700 ohm of 10 %" in caught.value.cure
+    for letter, words in {"L": "0.01 %", "P": "-0/+100 %", "E": "0.25 %", "Y": "older"}.items():
+        with pytest.raises(Mistake) as caught:
+            tolerance_letter(letter, 1e-9)
+        assert words in caught.value.cure
+    for letter in ("Z", "M"):
+        with pytest.raises(Mistake) as caught:
+            slope_letter(letter)
+        assert "Lists differ" in caught.value.cure
+    for code in ("", "R", "K", "abc", "12", "47kk7"):
+        with pytest.raises(Mistake):
+            resistor_code(code)
+
+
+def test_slope_letters():
+    """IEC 60062 with the colours of the same slopes (black 250, brown 100, red 50 ppm/K)."""
+    assert [round(1e6 * slope_letter(letter)) for letter in "USRQP"] == [250, 100, 50, 25, 15]
+    with pytest.raises(Mistake):
+        slope_letter("J")
 
 
 def test_nonsense_codes_are_refused():
@@ -151,6 +200,21 @@ def test_fine_series_and_the_value_920():
 )
 def test_nearest_preferred(value, size, nearest):
     assert nearest_preferred(value, size) == pytest.approx(nearest, rel=1e-12)
+
+
+def test_neighbours_and_membership():
+    assert neighbours(4.7e-9, 12) == pytest.approx((3.9e-9, 5.6e-9))
+    assert neighbours(5e-9, 12) == pytest.approx((4.7e-9, 5.6e-9))
+    assert neighbours(1e3, 24) == pytest.approx((910, 1100))
+    assert neighbours(9.5, 6) == pytest.approx((6.8, 10))
+    assert is_preferred(4.7e-9, 3)
+    assert not is_preferred(5e-9, 24)
+    assert is_preferred(4.99e3, 96)
+    assert [smallest_series(v) for v in (4.7, 68, 820, 91, 9.2, 49.9, 5.0)] == [
+        3, 6, 12, 24, 192, 96, None
+    ]  # fmt: skip
+    with pytest.raises(Mistake):
+        neighbours(0.0, 12)
 
 
 # EIA-198-1: code, slope and its tolerance in ppm/K.

@@ -23,6 +23,7 @@ from tolsim.laws import (
     Triangular,
     TruncatedNormal,
     Uniform,
+    Window,
 )
 from tolsim.laws.measured import Exponential, Sample
 from tolsim.laws.reading import read_law
@@ -50,6 +51,9 @@ CONTRACT = [
     StudentT(-0.2, 0.2, 0.01, 0.02, 4.0),
     StudentT(-0.05, 0.1, 0.0, 0.02, 1.0),
     StudentT(0.03, 0.05, 0.0, 0.01, 9.0),  # the upper tail only
+    Window(-0.1, 0.0, 0.3),
+    Window(None, 0.0, None, implied_half_width=0.2),
+    Window(-0.02, None, 0.01),
     NormalMixture(-0.06, 0.05, (-0.03, -0.028, 0.0, 0.03), (0.004, 0.002, 0.01, 0.003)),
     NormalMixture(3.0, 3.9, (3.4, 3.5), (0.1, 0.2)),
     Exponential(StudentT(-1.0, 1.2, 0.1, 0.2, 9.0), origin=-1.0),
@@ -117,7 +121,8 @@ def test_pdf_is_the_slope_of_cdf_and_nothing_outside(law):
     for low, high in pairwise(ends):
         # where the density steps: at the edges of a bin that was sorted out, at a mode
         edges = (
-            getattr(law, name, None) or 0.0 for name in ("removed_low", "removed_high", "mode")
+            getattr(law, name, None) or 0.0
+            for name in ("removed_low", "removed_high", "mode", "typical")
         )
         inside = sorted({low, high, *(e for e in edges if low < e < high)})
         mass = sum(quad(law.pdf, a, b, epsabs=1e-13)[0] for a, b in pairwise(inside))

@@ -15,10 +15,12 @@ FLOORS = [
     {"answers.unit_files"},
     {"quantity", "library", "records", "answers.results", "laws.law"}
     | {"spread.codes", "spread.coil", "spread.wire", "stats.percentiles", "stats.ranking"}
-    | {"stats.sample_shape"},
+    | {"stats.sample_shape", "spread.preferred"},
     {"laws.lognormal", "laws.sorted_out", "laws.triangular", "laws.truncated_normal"}
+    | {"spread.value_codes"}
     | {"laws.measured", "laws.mixture", "laws.student", "stats.clusters"}
     | {"laws.uniform", "stats", "mosfet_sheet", "winding", "study.plain_words", "answers.wording"},
+    {"laws.window"},
     {"laws", "answers.lot_words"},
     # the design: parts, then what is made of them
     {"parts", "laws.reading"} | {"laws.predictive", "spread.readings"},
@@ -51,7 +53,7 @@ FLOORS = [
     {"figures.stage", "figures.start"},
     {"figures", "verdicts"},
     # spread and chance
-    {"spread.drift_reading", "spread.table", "spread.measured_reading"},
+    {"spread.drift_reading", "spread.table", "spread.measured_reading", "spread.shorthand"},
     {"spread.entry"},
     {"spread.reading", "spread.sampling"},
     {"spread.part_values", "spread.checks", "spread.words", "self_heating"},

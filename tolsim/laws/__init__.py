@@ -15,6 +15,7 @@ from tolsim.laws.student import StudentT
 from tolsim.laws.triangular import Asymmetric, Triangular
 from tolsim.laws.truncated_normal import TruncatedNormal
 from tolsim.laws.uniform import Fixed, Uniform
+from tolsim.laws.window import Window
 
 LAWS: Final[Mapping[str, type[Law]]] = {
     law.NAME: law
@@ -27,6 +28,7 @@ LAWS: Final[Mapping[str, type[Law]]] = {
         Triangular,
         TruncatedNormal,
         Uniform,
+        Window,
     )
 }
 
@@ -44,4 +46,5 @@ __all__ = [
     "Triangular",
     "TruncatedNormal",
     "Uniform",
+    "Window",
 ]

@@ -11,11 +11,14 @@ from typing import Any, Final
 
 from tolsim import quantity
 from tolsim.errors import Mistake, nearest_name
-from tolsim.laws import LAWS, Fixed, Law, LogNormal, SortedOut
+from tolsim.laws import LAWS, Fixed, Law, LogNormal, SortedOut, Window
+
+IMPLIED_HALF_WIDTH: Final = 0.3
+"""Of typical, where a sheet gives one value only: maxima often lie 30 % above typical ones."""
 
 Report = Callable[[Mistake], None]
 
-_WIDTHS: Final = frozenset({"sigma", "half_width", "removed", "scale"})
+_WIDTHS: Final = frozenset({"sigma", "half_width", "removed", "scale", "implied_half_width"})
 _PURE: Final = frozenset({"below", "degrees_of_freedom"})
 _HALF_WIDTH_HELP: Final = 'Give low and high, or half_width: {law = "uniform", half_width = "5 %"}.'
 
@@ -62,6 +65,10 @@ def read_law(
     words = {key: value for key, value in given.items() if key != "law"}
     if kind is LogNormal and relative:
         words = {"median": 0.0, "origin": -1.0, **words}
+    if kind is Window and relative:
+        words = {"implied_half_width": IMPLIED_HALF_WIDTH, **words}
+        if len({"minimum", "maximum"} & words.keys()) == 1:
+            words.setdefault("typical", 0.0)  # what the limit is a limit of: the nominal value
     return _build(kind, words, unit, report, relative=relative)
 
 

@@ -1,15 +1,13 @@
-"""Marking codes of the trade: tolerance letters, E series, ceramic class codes.
+"""Marking codes of the trade: tolerance letters, ceramic class codes, slopes of resistors.
 
-Sources: IEC 60062:2016 (tolerance letters, value codes), IEC 60063:2015 (E series),
+Sources: IEC 60062:2016 (letters of tolerances and slopes),
 EIA-198-1 / IEC 60384-21 (class 1) and EIA-198 (class 2).
 """
 
 from __future__ import annotations
 
-import math
 import re
 from dataclasses import dataclass
-from functools import cache
 from typing import Final
 
 from tolsim.errors import Mistake, nearest_name
@@ -23,6 +21,19 @@ _LOPSIDED: Final = {
 }  # fmt: skip
 _RESISTOR_ONLY: Final = {"W": 0.0005, "P": 0.0002, "L": 0.0001, "E": 0.00005}
 _BELOW_10_PF: Final = {"B": 0.1e-12, "C": 0.25e-12, "D": 0.5e-12, "F": 1e-12, "G": 2e-12}
+_ELSEWHERE: Final = {
+    "A": "no meaning in the standard, 0.05 % or 0.05 pF in older lists",
+    "E": "0.005 % of a resistor, but 0.25 % or 1 pF in older lists of capacitors",
+    "H": "3 % from 10 pF on, but 2.5 % in older lists, and nothing below 10 pF",
+    "L": "0.01 % of a resistor, but 15 % in older lists of capacitors",
+    "P": "0.02 % of a resistor, but -0/+100 % or -0/+80 % in older lists of capacitors",
+    "R": "no meaning in the standard, a decimal point in values, -20/+30 % in older lists",
+    "V": "no meaning in the standard, -10/+50 % or -25/+50 % in older lists",
+    "W": "0.05 % of a resistor, but -0/+200 % in older lists of capacitors",
+    "Y": "no meaning in the standard, -0/+50 % or -20/+50 % in older lists",
+}
+"""Letters that mean something else elsewhere (older lists: values from memory)."""
+
 _SWITCH: Final = 10e-12  # F; from here on the letters mean per cent (10 pF itself does)
 
 
@@ -71,63 +82,10 @@ def tolerance_letter(letter: str, capacitance: float | None = None) -> Tolerance
             return Tolerance(*_LOPSIDED[letter])
     if letter in valid:
         return Tolerance(-_SYMMETRIC[letter], _SYMMETRIC[letter])
-    raise Mistake(
-        "a tolerance letter of IEC 60062: " + " ".join(valid),
-        "Letters below 10 pF mean picofarads, from 10 pF on per cent.",
-        got=letter,
-    )
-
-
-def capacitor_code(code: str) -> tuple[float, Tolerance | None]:
-    """Capacitance in F and tolerance of a mark such as "104K", "4R7D" or "5p6".
-
-    Three digits are two figures and the number of zeros in pF; R, p or n stand for the
-    decimal point (pF, pF, nF).  IEC 60062:2016.
-    """
-    match = re.fullmatch(r"(?:(\d\d)(\d)|(\d+)([Rpn])(\d*))([A-Z])?", code.strip())
-    if match is None:
-        raise Mistake('a capacitor mark like "104K" or "4R7D"', got=code)
-    figures, zeros, whole, point, decimals, letter = match.groups()
-    if figures:
-        picofarads = int(figures) * 10.0 ** int(zeros)
-    else:
-        picofarads = float(f"{whole}.{decimals or 0}") * (1000.0 if point == "n" else 1.0)
-    capacitance = picofarads * 1e-12
-    return capacitance, tolerance_letter(letter, capacitance) if letter else None
-
-
-_E24_EXCEPTIONS: Final = {
-    26: 27, 29: 30, 32: 33, 35: 36, 38: 39, 42: 43, 46: 47, 83: 82,
-}  # fmt: skip
-_E192_EXCEPTIONS: Final = {919: 920}
-_TWO_FIGURES: Final = 24  # largest series with two figures
-_SERIES: Final = (3, 6, 12, 24, 48, 96, 192)
-
-
-@cache
-def e_series(size: int) -> tuple[float, ...]:
-    """Values of one decade, 1.0 up to below 10, of E3 ... E192 (IEC 60063:2015).
-
-    The i-th value is 10^(i/size), rounded to two figures up to E24 and to three above.
-    Eight values of E24 and one of E192 are written otherwise by the standard; the smaller
-    series are every second value of the next larger one of their family.
-    """
-    if size not in _SERIES:
-        raise Mistake("one of E" + ", E".join(map(str, _SERIES)), got=f"E{size}")
-    if size <= _TWO_FIGURES:
-        whole = [round(10.0 ** (1.0 + i / 24.0)) for i in range(24)]
-        return tuple(_E24_EXCEPTIONS.get(v, v) / 10.0 for v in whole)[:: 24 // size]
-    fine = [round(10.0 ** (2.0 + i / 192.0)) for i in range(192)]
-    return tuple(_E192_EXCEPTIONS.get(v, v) / 100.0 for v in fine)[:: 192 // size]
-
-
-def nearest_preferred(value: float, size: int) -> float:
-    """E-series value nearest to a positive `value`, by ratio."""
-    if not value > 0.0:
-        raise Mistake("a value above 0", got=f"{value:g}")
-    decade = 10.0 ** math.floor(math.log10(value))
-    candidates = [v * decade for v in (*e_series(size), 10.0)]
-    return min(candidates, key=lambda candidate: max(candidate / value, value / candidate))
+    cure = "Letters below 10 pF mean picofarads, from 10 pF on per cent."
+    if letter in _ELSEWHERE:
+        cure = f"{letter} is not taken: {_ELSEWHERE[letter]}. Write the limits instead."
+    raise Mistake("a tolerance letter of IEC 60062: " + " ".join(valid), cure, got=letter)
 
 
 _FIGURE: Final = {
@@ -189,3 +147,23 @@ def class2_code(code: str) -> Class2:
             'a class 2 code like "X7R" or "Y5V"', got=code, nearest=nearest_name(code, known)
         )
     return Class2(_LOWEST[match[1]], _HIGHEST[match[2]], *_CHANGE[match[3]])
+
+
+_SLOPES: Final = {"U": 250.0, "S": 100.0, "R": 50.0, "P": 15.0, "Q": 25.0, "K": 1.0}
+_UNSURE_SLOPES: Final = {"Z": "20 or 10 ppm/K", "M": "10 or 5 ppm/K"}
+
+
+def slope_letter(letter: str) -> float:
+    """Largest temperature slope of a resistor, 1/K, by its letter (IEC 60062; from memory).
+
+    Raises
+    ------
+    Mistake
+        For letters that are not in the list, or of which lists differ.
+    """
+    if letter in _SLOPES:
+        return _SLOPES[letter] * 1e-6
+    cure = ""
+    if letter in _UNSURE_SLOPES:
+        cure = f"Lists differ about {letter}: {_UNSURE_SLOPES[letter]}. Write the slope instead."
+    raise Mistake("a letter of a temperature slope: " + " ".join(_SLOPES), cure, got=letter)

@@ -14,6 +14,7 @@ from numpy.typing import ArrayLike, NDArray
 from scipy.optimize import brentq
 
 from tolsim.errors import Mistake
+from tolsim.laws.window import completed
 from tolsim.mosfet_sheet import OnResistanceRow, Sheet, TransferRow
 from tolsim.parts import Mosfet
 
@@ -101,21 +102,7 @@ def threshold_window(mosfet: Mosfet, implied_half_window: float) -> ThresholdWin
     A missing limit mirrors the other one about typical; typical, if missing, is the middle;
     with one value only, or with model parameters, `implied_half_window` (V) is taken.
     """
-    low, typical, high = _printed_threshold(mosfet)
-    if typical is None:
-        if low is not None:
-            typical = 0.5 * (low + high) if high is not None else low + implied_half_window
-        else:
-            typical = (high if high is not None else math.nan) - implied_half_window
-    below = typical - low if low is not None else None
-    above = high - typical if high is not None else None
-    mirror_below = above if above is not None else implied_half_window
-    mirror_above = below if below is not None else implied_half_window
-    return ThresholdWindow(
-        typical - (below if below is not None else mirror_below),
-        typical,
-        typical + (above if above is not None else mirror_above),
-    )
+    return ThresholdWindow(*completed(*_printed_threshold(mosfet), implied_half_window))
 
 
 def _printed_threshold(mosfet: Mosfet) -> tuple[float | None, float | None, float | None]:

@@ -7,8 +7,10 @@ from typing import Any, Final
 
 from tolsim import quantity
 from tolsim.errors import Mistake, nearest_name
+from tolsim.laws import Uniform
 from tolsim.laws.reading import Report, read_law, under
 from tolsim.spread.ageing import AgeingLaw, LinearAgeing, LogTimeAgeing, PowerAgeing, SqrtTimeAgeing
+from tolsim.spread.codes import slope_letter
 from tolsim.spread.temperature import (
     CopperTemperature,
     CurveTemperature,
@@ -79,6 +81,12 @@ def _points(columns: int) -> Parameter:
     return parameter
 
 
+def _lettered(letter: str) -> TemperatureLaw:
+    """Straight line of a resistor's slope letter, slope uniform over the band it allows."""
+    most = slope_letter(letter)
+    return LinearTemperature(Uniform(-most, most))
+
+
 _TEMPERATURE: Final[Mapping[str, tuple[Callable[..., TemperatureLaw], Mapping[str, Parameter]]]] = {
     LinearTemperature.NAME: (
         LinearTemperature,
@@ -95,6 +103,7 @@ _TEMPERATURE: Final[Mapping[str, tuple[Callable[..., TemperatureLaw], Mapping[st
     ),
     "class-1": (class1_temperature, {"code": _code}),
     "class-2": (class2_temperature, {"code": _code}),
+    "slope-letter": (_lettered, {"letter": _code}),
 }
 
 _AGEING: Final[Mapping[str, tuple[Callable[..., AgeingLaw], Mapping[str, Parameter]]]] = {

@@ -19,6 +19,7 @@ from tolsim.parts import AnyPart
 from tolsim.spread import measured_reading
 from tolsim.spread.drift_reading import read_ageing, read_temperature
 from tolsim.spread.readings import Readings
+from tolsim.spread.shorthand import as_deviations, without_letter
 from tolsim.spread.table import (
     ASPECTS,
     BASES,
@@ -58,6 +59,7 @@ UNITS: Final[Mapping[str, str]] = {
 }
 """Units of measure of the quantities; those not named are pure numbers."""
 
+_SHEET_UNITS: Final = {"capacitance_scale": "F"}  # of sheet rows for quantities that have none
 _HEAD: Final = ("title", "for", "basis", "source")
 _SETTINGS: Final = ("deviation", "implied_half_window")
 
@@ -208,7 +210,7 @@ class Entry:
                 words = {k: v for k, v in words.items() if k not in ("basis", "source", "shared")}
             else:
                 own = origin
-            laws[aspect] = self._law(aspect, words, name, deviation, table)
+            laws[aspect] = self._law(aspect, words, name, deviation, kinds, table)
             if laws[aspect] is not None:
                 origins[aspect] = own
         spread = QuantitySpread(
@@ -221,7 +223,15 @@ class Entry:
         self._check_reach(spread, table)
         return spread
 
-    def _law(self, aspect: str, words: object, name: str, deviation: str, table: str) -> object:
+    def _law(
+        self,
+        aspect: str,
+        words: object,
+        name: str,
+        deviation: str,
+        kinds: tuple[str, ...],
+        table: str,
+    ) -> object:
         """Law of one aspect, of the class that belongs to it."""
 
         def report(mistake: Mistake) -> None:
@@ -238,6 +248,11 @@ class Entry:
                 return None
             self.readings[reel.path] = reel.readings
             return reel.law
+        words = without_letter(words, kinds, name, deviation, report)
+        if isinstance(words, Mapping) and words.get("law") == "window" and deviation == "relative":
+            words = as_deviations(words, _SHEET_UNITS.get(name, own), report)
+        if words is None:
+            return None
         unit = own if deviation == "absolute" else "1"
         also = (measured_reading.NAME,)
         return read_law(words, unit, report, relative=deviation == "relative", also=also)

@@ -7,7 +7,7 @@ from collections.abc import Iterator, Mapping
 from dataclasses import fields
 
 from tolsim.design import Study
-from tolsim.laws import Law, Measured
+from tolsim.laws import Law, Measured, Uniform, Window
 from tolsim.parts import Capacitor, Inductor, Mosfet
 from tolsim.quantity import show
 from tolsim.spread.ageing import AgeingLaw
@@ -101,6 +101,7 @@ def _of_part(study: Study, tables: Mapping[str, SpreadTable], reference: str) ->
                 yield from window_assumptions(part, spread.implied_half_window)
     for name in names:
         yield from _measured_elsewhere(study, tables[name])
+        yield from _windows(tables[name])
     if isinstance(part, Inductor):
         yield from winding_notes(part)
     if len(names) > 1:
@@ -108,6 +109,17 @@ def _of_part(study: Study, tables: Mapping[str, SpreadTable], reference: str) ->
             f"a unit keeps its rank in every load state; each state's table "
             f"({', '.join(names)}) turns the rank into a value"
         )
+
+
+def _windows(table: SpreadTable) -> Iterator[str]:
+    """Laws taken for windows of sheets, which state limits and no law."""
+    for quantity, spread in table.quantities.items():
+        for aspect in ("tolerance", "lot"):
+            law = getattr(spread, aspect)
+            if isinstance(law, Window):
+                missing = f"{' and '.join(law.missing)} not on the sheet, " if law.missing else ""
+                words = _implied_words(law, _unit(quantity, aspect, spread))
+                yield f"{quantity} of {table.name}: {missing}window taken as {words}"
 
 
 def _measured_elsewhere(study: Study, table: SpreadTable) -> Iterator[str]:
@@ -130,6 +142,8 @@ def law_words(law: Law | TemperatureLaw | AgeingLaw, unit: str) -> str:
     """A law in words: its name and every parameter that is set, with units of measure."""
     if isinstance(law, Measured):
         return _measured_words(law, unit)
+    if isinstance(law, Window):
+        return _window_words(law, unit)
     words = []
     for field in fields(law):
         value = getattr(law, field.name)
@@ -137,6 +151,24 @@ def law_words(law: Law | TemperatureLaw | AgeingLaw, unit: str) -> str:
             continue
         words.append(f"{field.name.replace('_', ' ')} {_value_words(law, field.name, value, unit)}")
     return f"{law.NAME} ({', '.join(words)})" if words else law.NAME
+
+
+def _window_words(law: Window, unit: str) -> str:
+    """What the sheet says, and the law taken for it."""
+    given = ", ".join(
+        f"{name} {_number(value, unit)}"
+        for name in ("minimum", "typical", "maximum")
+        if (value := getattr(law, name)) is not None
+    )
+    return f"window of the sheet ({given}; taken as {_implied_words(law, unit)})"
+
+
+def _implied_words(law: Window, unit: str) -> str:
+    """The law taken for a window in words."""
+    low, _, high = (_number(value, unit) for value in law.whole)
+    if isinstance(law.implied, Uniform):
+        return f"{low} .. {high}, every value equally likely"
+    return f"{low} .. {high}, half of the parts on each side of typical"
 
 
 def _measured_words(law: Measured, unit: str) -> str:
