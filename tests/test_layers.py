@@ -58,13 +58,13 @@ FLOORS = [
     {"spread.reading", "spread.sampling"},
     {"spread.part_values", "spread.checks", "spread.words", "self_heating"},
     # the door for study files
-    {"study.outline"},
-    {"study.nets", "study.limits", "study.checks", "study.lots"},
+    {"study.outline", "study.recording"},
+    {"study.nets", "study.limits", "study.checks", "study.lots", "study.supplies"},
     {"study.reading"},
     {"study.file"},
     {"study"},
     # answers
-    {"nominals", "answers.provenance", "answers.ranking"},
+    {"nominals", "answers.provenance", "answers.supply_words", "answers.ranking"},
     {"answers.lots"},
     {"evaluation", "answers.summary", "answers.lines", "report.content", "report.tables"},
     {"report.charts"},

@@ -24,6 +24,7 @@ from tolsim.quantity import (
     Inductance,
     InnerShare,
     Leak,
+    Level,
     ResistanceOrZero,
     Share,
     SignedShare,
@@ -68,10 +69,10 @@ class Rail(Frozen):
     foldback: Share | None = None
     bulk_capacitance: Capacitance | None = None  # from the net to ground
     bulk_resistance: ResistanceOrZero = 0.0  # in series with it
-    ramp: Literal["step", "linear", "smooth", "exponential", "csv"] | None = None
+    ramp: Literal["step", "linear", "smooth", "exponential", "csv", "points"] | None = None
     ramp_time: Duration | None = None
-    ramp_file: str | None = None
-    ramp_points: tuple[tuple[float, float], ...] = ()  # s and share of the voltage, of the file
+    ramp_file: str | None = None  # recorded time and voltage, in the folder of the study
+    ramp_points: tuple[tuple[DurationOrZero, Level], ...] = ()  # also those of the file
     delay: DurationOrZero = 0.0
     dip: Dip | None = None
     bounce: Bounce | None = None

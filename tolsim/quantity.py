@@ -191,6 +191,7 @@ KINDS: Final[Mapping[str, Kind]] = {
 }
 _SHARE: Final = Kind("a share", "1", 0.0, 1.0, "80 %")
 _INNER_SHARE: Final = Kind("a share", "1", 0.01, 0.99, "50 %")
+_LEVEL: Final = Kind("a level", "1", -1.0, 10.0, "100 %")
 _SIGNED_SHARE: Final = Kind("a deviation", "1", -1.0, 1.0, "-10 %")
 _SIGNED_VOLTAGE: Final = Kind("a voltage", "V", -1e6, 1e6, "-5 V")
 _VOLTAGE_SLOPE: Final = Kind("a voltage slope", "V/K", -1.0, 1.0, "-6 mV/K")
@@ -247,5 +248,6 @@ VoltageSlope = Annotated[float, _field(_VOLTAGE_SLOPE)]
 Gain = Annotated[float, _field(KINDS["gain"])]
 Share = Annotated[float, _field(_SHARE)]
 InnerShare = Annotated[float, _field(_INNER_SHARE)]
+Level = Annotated[float, _field(_LEVEL)]
 SignedShare = Annotated[float, _field(_SIGNED_SHARE)]
 Age = Annotated[float, _field(KINDS["age"])]  # hours

@@ -48,6 +48,7 @@ _IDENTITY = {
     "study_sha256": "another study file",
     "seed": "another seed",
     "tables": "other spread tables",
+    "recordings": "other recorded ramps",
     "versions": "another version of tolsim or of a library",
     "solver": "another choice of solvers",
 }
@@ -135,6 +136,7 @@ def _solve_and_judge(
     results = Results(summary, opened.text, store.folder, unit_table, factor_table)
     results = results.save(store.folder)
     _keep_tables(opened, store.folder / TABLES_FOLDER)
+    _keep_recordings(opened, store.folder)
     _write_report(plan, opened, results)
     return results
 
@@ -152,6 +154,7 @@ def _open_folder(folder: Path, record: Mapping[str, Any], *, bulk: bool) -> Unit
     # more units of the same run are welcome: unit k is the same unit whatever their number
     identity = {key: record[key] for key in ("seed", "study_sha256", "tables", "versions")}
     identity["solver"] = "measured" if bulk else "shooting"
+    identity["recordings"] = record.get("recordings")
     if identity_file.exists():
         held = _identity_of(identity_file)
         other = [words for key, words in _IDENTITY.items() if held.get(key) != identity[key]]
@@ -268,6 +271,13 @@ def _keep_tables(opened: StudyFile, folder: Path) -> None:
         for path, text in table.readings.items():
             (folder / path).parent.mkdir(parents=True, exist_ok=True)
             write_text(folder / path, text)
+
+
+def _keep_recordings(opened: StudyFile, folder: Path) -> None:
+    """Copies of the recorded ramps, at the same place beside the copy of the study."""
+    for path, recording in opened.recordings.items():
+        (folder / path).parent.mkdir(parents=True, exist_ok=True)
+        write_text(folder / path, recording.text)
 
 
 def _write_report(plan: Plan, opened: StudyFile, results: Results) -> None:

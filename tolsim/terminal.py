@@ -17,10 +17,10 @@ from rich.text import Text
 
 from tolsim.answers.bounds import Bound, applies, bounds
 from tolsim.answers.lines import summary_lines
+from tolsim.answers.supply_words import supply_words
 from tolsim.answers.wording import shown
 from tolsim.design import Study
 from tolsim.figure_names import FIGURES
-from tolsim.quantity import show
 from tolsim.self_heating import heating_notes
 from tolsim.spread.table import BASES, SpreadTable
 from tolsim.spread.words import assumptions, describe
@@ -94,9 +94,8 @@ def show_study(opened: StudyFile) -> None:
 def _contents(study: Study) -> Iterator[str]:
     count = Counter(part.kind for part in study.design.parts.values())
     yield f"{study.kind}, " + ", ".join(f"{number} {kind}" for kind, number in count.items())
-    yield "rails: " + ", ".join(
-        f"{ref} {show(rail.voltage, 'V')}" for ref, rail in study.design.rails.items()
-    )
+    for ref, rail in study.design.rails.items():
+        yield f"rail {ref}: {supply_words(rail)}"
     yield "states: " + ", ".join(
         f"{name} (starts here)" if state.starts_here else name
         for name, state in study.states.items()

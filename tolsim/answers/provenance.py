@@ -23,13 +23,19 @@ def provenance_of(opened: StudyFile) -> dict[str, Any]:
             versions[name] = version(name)
         except PackageNotFoundError:  # run from a bundle without package records
             versions[name] = "unknown"
-    return {
+    record = {
         "seed": opened.study.run.seed,
         "units": opened.study.run.units,
         "study_sha256": hashlib.sha256(opened.text.encode()).hexdigest(),
         "tables": {name: opened.tables[name].sha256 for name in used_tables(opened.study)},
         "versions": versions,
     }
+    if opened.recordings:
+        record["recordings"] = {
+            path: hashlib.sha256(recording.text.encode()).hexdigest()
+            for path, recording in opened.recordings.items()
+        }
+    return record
 
 
 def used_tables(study: Study) -> tuple[str, ...]:

@@ -6,7 +6,7 @@ Folder
 ``units.parquet``    one row per unit, condition and state: verdict, outcome, every figure
 ``factors.parquet``  one row per unit: the value drawn for every factor
 ``report.html``      the report, one file
-``study.toml``       the study as it was run
+``study.toml``       the study as it was run; recorded ramps it names lie beside it
 ``chunks/``          finished chunks of units; what a killed run leaves
 
 Summary, format 1
@@ -17,6 +17,7 @@ not known (an interval that this many units cannot close).  Every `low`, `high` 
 
 ``format``      1; raised when a key changes its meaning
 ``title``, ``kind``   of the study
+``supplies``    [{rail, net, voltage (nominal), words (its series parts and its rise)}]
 ``yield``       {estimate, low, high, confidence, units, passed, failed, undecided}.  A unit
                 fails if it fails in any case; else it is undecided if it is in any case.
                 estimate = passed / units; low takes undecided units as failed, high as passed
@@ -62,7 +63,8 @@ not known (an interval that this many units cannot close).  Every `low`, `high` 
                 nominal unit, taken for every unit), gap (K, within which the rises of 95 % of
                 the units' own losses lie from it), settled (in every case)}]; passive parts whose
                 values follow their own temperature}
-``provenance``  {seed, versions {name: version}, study_sha256, tables {name: sha256}, ...}
+``provenance``  {seed, versions {name: version}, study_sha256, tables {name: sha256},
+                recordings {path: sha256} (only if supplies have recorded ramps), ...}
 """
 
 from __future__ import annotations

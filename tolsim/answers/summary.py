@@ -16,6 +16,7 @@ from tolsim.answers.bounds import Bound, applies, bounds, named_figure, rating_o
 from tolsim.answers.counting import Counting
 from tolsim.answers.lots import lots_entry
 from tolsim.answers.ranking import rankings
+from tolsim.answers.supply_words import supply_entries
 from tolsim.answers.unit_files import Columns, UnitRows
 from tolsim.design import Study
 from tolsim.figure_names import FigureInfo
@@ -66,6 +67,7 @@ def summarise(
         "format": FORMAT,
         "title": study.title,
         "kind": study.kind,
+        "supplies": supply_entries(study),
         "yield": counting.yield_(unit_failed, unit_undecided),
         "cases": [
             {

@@ -5,6 +5,7 @@
     smooth        half a cosine over the ramp time (a supply with soft start)
     exponential   1 - exp(-t/tau), complete at the ramp time, where 99 % would be reached
     csv           as recorded
+    points        as drawn
 
 Contact bounce and dips multiply what the ramp gives.  All of them are straight pieces between
 points, so an integrator can put its steps on the corners.
@@ -78,15 +79,17 @@ def ramp_kind(rail: Rail) -> str:
     """The kind of ramp, also where the study leaves it open."""
     if rail.ramp is not None:
         return rail.ramp
-    if rail.ramp_file is not None or rail.ramp_points:
+    if rail.ramp_file is not None:
         return "csv"
+    if rail.ramp_points:
+        return "points"
     return "step" if rail.ramp_time is None else "linear"
 
 
 def _ramp(rail: Rail) -> tuple[Floats, Floats]:
     """Times (K,) from the beginning of the rise, and levels (K,) from 0 to 1."""
     kind, ramp_time = ramp_kind(rail), rail.ramp_time or STEP_TIME
-    if kind == "csv":
+    if kind in ("csv", "points"):
         times, levels = np.array(rail.ramp_points, dtype=float).T
         return times - times[0], levels
     if kind in ("step", "linear"):

@@ -3,7 +3,7 @@
     title = "..."                    scenario, kind, expected_frequency, leak
     [run]                            units, seed, confidence, steps_per_cycle, rank
     [lots]                           units_per_lot, reels, lost_when
-    [rails.vdd]                      net, voltage, ...
+    [rails.vdd]                      net, voltage, resistance, current_limit, ramp, ...
     [parts.C1]                       kind, nets, values, ratings, spread table
     [states.full]                    title, starts_here, values, spread
     [conditions.hot]                 ambient, supply, age, board_rise
@@ -17,7 +17,7 @@ from __future__ import annotations
 import re
 import tomllib
 from collections.abc import Collection, Iterable, Mapping
-from dataclasses import dataclass
+from dataclasses import dataclass, field
 from pathlib import Path
 from typing import Annotated, Any, Literal
 
@@ -36,6 +36,8 @@ from tolsim.study.lots import lot_problems
 from tolsim.study.nets import net_problems
 from tolsim.study.outline import Table, named_tables
 from tolsim.study.reading import Reading
+from tolsim.study.recording import Recording
+from tolsim.study.supplies import Recordings, supply_problems
 
 _CONDITION_UNITS = {"ambient": "degC", "supply": "1", "age": "h"}
 _PLACE = re.compile(r" \(at (line \d+, column \d+|end of document)\)$")
@@ -80,12 +82,15 @@ class StudyFile:
         Every spread table the study could name.
     warnings : tuple of str
         Mistakes in spread tables within reach that the study does not use.
+    recordings : mapping of str to Recording
+        Recorded ramps of supplies, by path in the study's folder.
     """
 
     study: Study
     text: str
     tables: Mapping[str, SpreadTable]
     warnings: tuple[str, ...] = ()
+    recordings: Mapping[str, Recording] = field(default_factory=dict)
 
 
 def load_study(path: Path | str, tables_dir: Path | str | None = None) -> Study:
@@ -133,18 +138,24 @@ def open_study(path: Path | str, tables_dir: Path | str | None = None) -> StudyF
     broken = shelf.problems(used)
     if used - kinds.keys():  # it may be in a file that could not be read
         broken += shelf.loose
+    recordings = Recordings(path.parent)
     try:
-        study = read_study(text, kinds, path.name)
+        study = read_study(text, kinds, path.name, recordings)
     except StudyError as error:
         raise StudyError([*error.problems, *broken]) from None
     problems = broken or check_spread(study, shelf.tables, path.name)
     if problems:
         raise StudyError(problems)
     warnings = tuple(problem.sentence() for problem in shelf.unused(used))
-    return StudyFile(study, text, shelf.tables, warnings)
+    return StudyFile(study, text, shelf.tables, warnings, recordings.read)
 
 
-def read_study(text: str, tables: Mapping[str, Collection[str]], file: str = "study") -> Study:
+def read_study(
+    text: str,
+    tables: Mapping[str, Collection[str]],
+    file: str = "study",
+    recordings: Recordings | None = None,
+) -> Study:
     """Read and check the text of a study.
 
     Parameters
@@ -155,6 +166,8 @@ def read_study(text: str, tables: Mapping[str, Collection[str]], file: str = "st
         Known spread tables: name to the kinds of part each is for.
     file : str
         File name for messages.
+    recordings : Recordings, optional
+        Where files that the study names are read; the current folder if not given.
 
     Returns
     -------
@@ -169,13 +182,15 @@ def read_study(text: str, tables: Mapping[str, Collection[str]], file: str = "st
     reading = Reading(file, raw)
     top = reading.record(_Top, raw, "")
     outline = reading.outline(tables)
-    rails = reading.records(outline.rails, "rails", Rail)
+    found = reading.records(outline.rails, "rails", Rail)
+    rails = (recordings or Recordings(Path())).fill(found, outline, reading.problems)
     parts = reading.parts(outline)
     states = reading.states(outline)
     conditions = reading.conditions(outline)
     limits = reading.limits(outline)
     values = {name: state.values for name, state in states.items()}
     reading.problems += study_problems(outline)
+    reading.problems += supply_problems(outline)
     reading.problems += net_problems(outline)
     reading.problems += coupling_problems(outline, parts, values)
     reading.problems += limit_problems(outline)

@@ -183,7 +183,7 @@ def _unbiased(outline: Outline, parts: list[Wired], roots: Collection[str]) -> I
 
 def _lossless_loops(outline: Outline, parts: list[Wired]) -> Iterator[Problem]:
     """Loops of lossless inductors and rails: their direct current has no bound."""
-    ideal = [table["net"] for table in outline.rails.values() if not _number(table, "resistance")]
+    ideal = [table["net"] for table in outline.rails.values() if _is_ideal(table)]
     joined: list[Edge] = [(GROUND, net) for net in ideal]
     for part in parts:
         table = outline.parts[part.ref]
@@ -200,6 +200,12 @@ def _lossless_loops(outline: Outline, parts: list[Wired]) -> Iterator[Problem]:
                 "Give the winding its resistance, or the rail its own.",
             )
         joined.append((first, last))
+
+
+def _is_ideal(rail: Table) -> bool:
+    """True for a rail that holds its net whatever it delivers."""
+    own_current = "inductance" in rail or "current_limit" in rail
+    return not own_current and not _number(rail, "resistance")
 
 
 def _number(table: Table, key: str) -> float:
