@@ -84,7 +84,7 @@ ramp_file = "scope.csv"
         "delay: expected a duration of 0 or 1 ps to 1 Ms",
         "[rails.vdd.dip] depth: expected a share of 0 to 1",
         "[rails.vdd.bounce] count: expected a whole number",
-        "[rails.vdd.bounce] openshare: expected only keys known here, got openshare = 0.2. Did you mean",
+        "openshare: expected only keys known here, got openshare = 0.2. Did you mean open_share?",
         'ramp: expected ramp = "csv" beside ramp_file. Drop one of them.',
     ):
         assert any(part in sentence for sentence in told), (part, told)
