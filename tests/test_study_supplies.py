@@ -29,7 +29,7 @@ def opened(folder, keys):
     """The quick study with more keys for its first rail."""
     recordings = Recordings(folder)
     study = read_study(TEXT.replace(HEAD, f"{HEAD}{keys}\n"), {}, "stage.toml", recordings)
-    return StudyFile(study, TEXT, {}, recordings.read)
+    return StudyFile(study, TEXT, {}, recordings=recordings.read)
 
 
 def mistakes(folder, keys):
