@@ -42,6 +42,7 @@ FLOORS = [
     {"circuit.bulk.grid", "circuit.bulk.kernels"},
     {"circuit.bulk.unit_table", "circuit.bulk.multipliers"},
     {"circuit.bulk.residual"},
+    {"circuit.bulk.inverse"},
     {"circuit.bulk.reference", "circuit.bulk.chord"},
     {"circuit.bulk.prediction", "circuit.bulk.newton"},
     {"circuit.bulk.plan"},

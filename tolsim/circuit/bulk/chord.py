@@ -19,6 +19,7 @@ from dataclasses import dataclass
 import numpy as np
 from numpy.typing import NDArray
 
+from tolsim.circuit.bulk.inverse import Inverse
 from tolsim.circuit.bulk.residual import Residual
 from tolsim.circuit.devices import Floats, Ints
 
@@ -145,7 +146,7 @@ class _Pool:
 
 def iterate(
     residual: Residual,
-    inverse: Singles,
+    inverse: Inverse,
     start: Floats,
     iterations: int = ITERATIONS,
     tolerance: float = TOLERANCE,
@@ -154,20 +155,18 @@ def iterate(
 
     Parameters
     ----------
-    inverse : (unknowns, unknowns)
-        M, the inverse Jacobian of the nominal unit.
+    inverse : Inverse
+        M, the inverse Jacobian of the nominal unit, in single precision.
     start : (unknowns, N)
         Predicted unknowns.
     """
     pool = _Pool(residual, start)
     shape = pool.z.shape
     history = _History(*shape)
-    towards = -inverse
-    gap, g = np.empty(shape, np.float32), np.empty(shape, np.float32)
+    corrector = inverse.corrector(residual.units)
     while pool.refill():
         with np.errstate(all="ignore"):  # units that run away leave as not settled
-            np.copyto(gap, residual.evaluate(pool.z), casting="same_kind")
-            np.matmul(towards, gap, out=g)
+            g = corrector(residual.evaluate(pool.z))
             size = _largest(g)
             history.remember(g)
             move = history.mix(g, pool.age)

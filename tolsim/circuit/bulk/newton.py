@@ -12,7 +12,8 @@ from __future__ import annotations
 import numpy as np
 from numpy.typing import NDArray
 
-from tolsim.circuit.bulk.chord import TOLERANCE, Iterated, Singles
+from tolsim.circuit.bulk.chord import TOLERANCE, Iterated
+from tolsim.circuit.bulk.inverse import Corrector, Inverse
 from tolsim.circuit.bulk.residual import Residual
 from tolsim.circuit.devices import Floats
 
@@ -24,12 +25,12 @@ SHARES = (1.0, 0.5, 0.25, 0.1, 0.03)  # of the step, tried in turn
 FALL = 0.2  # |F| must fall by this part of the step's share
 
 
-def settle_stubborn(residual: Residual, inverse: Singles, start: Floats) -> Iterated:
+def settle_stubborn(residual: Residual, inverse: Inverse, start: Floats) -> Iterated:
     """Newton on every unit of the residual's table, a slotful at a time.
 
     Parameters
     ----------
-    inverse : (unknowns, unknowns)
+    inverse : Inverse
         M.
     start : (unknowns, N)
     """
@@ -37,10 +38,11 @@ def settle_stubborn(residual: Residual, inverse: Singles, start: Floats) -> Iter
     found = Iterated(
         start.copy(), np.full(units, np.inf), np.zeros(units, np.intp), np.zeros(units, bool)
     )
+    corrector = inverse.corrector(slots)
     for first in range(0, units, slots):
         here = np.minimum(np.arange(first, first + slots), units - 1)
         residual.load(np.arange(slots), here)
-        z, update, spent = _newton(residual, inverse, start[:, here])
+        z, update, spent = _newton(residual, corrector, start[:, here])
         kept = min(slots, units - first)
         block = slice(first, first + kept)
         found.z[:, block], found.update[block] = z[:, :kept], update[:kept]
@@ -50,22 +52,22 @@ def settle_stubborn(residual: Residual, inverse: Singles, start: Floats) -> Iter
 
 
 def _newton(
-    residual: Residual, inverse: Singles, z: Floats
+    residual: Residual, corrector: Corrector, z: Floats
 ) -> tuple[Floats, Floats, NDArray[np.intp]]:
     """End, last scaled update and residuals evaluated, for the units in the slots."""
     slots = z.shape[1]
     update, spent = np.full(slots, np.inf), np.zeros(slots, dtype=np.intp)
     with np.errstate(all="ignore"):
-        value = _weighed(inverse, residual.evaluate(z))
+        value = _weighed(corrector, residual.evaluate(z))
         size = np.linalg.norm(value, axis=0)
         for _ in range(ROUNDS):
             active = np.isfinite(size) & (update >= TOLERANCE)
             if not active.any():
                 break
-            step = _direction(residual, inverse, z, value)
+            step = _direction(residual, corrector, z, value)
             longest = np.abs(step).max(axis=0)
             step *= np.minimum(1.0, LONGEST_MOVE / np.maximum(longest, 1e-300))
-            z, value, size, moved = _shortened(residual, inverse, z, value, size, step, active)
+            z, value, size, moved = _shortened(residual, corrector, z, value, size, step, active)
             # a step that no share of makes |F| fall ends the search
             update = np.where(active, np.where(moved > 0, longest, np.nan), update)
             size = np.where(active & (moved == 0), np.nan, size)
@@ -73,14 +75,14 @@ def _newton(
     return z, np.where(np.isfinite(update), update, np.inf), spent
 
 
-def _weighed(inverse: Singles, gap: Floats) -> Floats:
+def _weighed(corrector: Corrector, gap: Floats) -> Floats:
     """M R: single precision does for M, it only has to be near the inverse."""
-    return (inverse @ gap.astype(np.float32)).astype(float)
+    return -corrector(gap).astype(float)
 
 
 def _shortened(
     residual: Residual,
-    inverse: Singles,
+    corrector: Corrector,
     z: Floats,
     value: Floats,
     size: Floats,
@@ -95,7 +97,7 @@ def _shortened(
         if not open_units.any():
             break
         trial = np.where(open_units, z + share * step, z)
-        new = _weighed(inverse, residual.evaluate(trial))
+        new = _weighed(corrector, residual.evaluate(trial))
         length = np.linalg.norm(new, axis=0)
         # at round-off |F| cannot fall any more
         falls = (length < begun * (1 - FALL * share)) | (length < TOLERANCE)
@@ -105,7 +107,7 @@ def _shortened(
     return z, value, size, moved
 
 
-def _direction(residual: Residual, inverse: Singles, z: Floats, value: Floats) -> Floats:
+def _direction(residual: Residual, corrector: Corrector, z: Floats, value: Floats) -> Floats:
     """Newton step of every slot: GMRES with `INNER` directions, none spared."""
     unknowns, slots = z.shape
     basis = np.empty((INNER + 1, unknowns, slots))
@@ -115,7 +117,7 @@ def _direction(residual: Residual, inverse: Singles, z: Floats, value: Floats) -
     basis[0] = -value / np.maximum(length, 1e-300)
     for k in range(INNER):
         probe = PROBE / np.maximum(np.abs(basis[k]).max(axis=0), 1e-300)
-        new = _weighed(inverse, (residual.evaluate(z + probe * basis[k]) - here) / probe)
+        new = _weighed(corrector, (residual.evaluate(z + probe * basis[k]) - here) / probe)
         for j in range(k + 1):  # modified Gram-Schmidt
             hessenberg[:, j, k] = np.sum(basis[j] * new, axis=0)
             new -= hessenberg[:, j, k] * basis[j]

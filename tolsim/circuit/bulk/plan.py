@@ -85,4 +85,4 @@ def _device_noise(plan: FastPlan, case: Case) -> float:
     slots = np.arange(residual.units)
     residual.load(slots, np.zeros(len(slots), dtype=np.intp))
     gap = residual.evaluate(np.repeat(plan.reference.z[:, None], len(slots), axis=1))
-    return float(np.abs(plan.reference.inverse @ gap[:, :1].astype(np.float32)).max())
+    return float(np.abs(plan.reference.inverse.corrector(1)(gap[:, :1])).max())

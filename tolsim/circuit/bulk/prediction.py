@@ -100,7 +100,8 @@ def first_order(
     residual = Residual(case.design, table, topology, grid, reference.anchor, 2 * moves)
     residual.load(np.arange(2 * moves), np.arange(2 * moves))
     gap = residual.evaluate(np.repeat(reference.z[:, None], 2 * moves, axis=1))
-    slopes = -reference.inverse.astype(float) @ ((gap[:, :moves] - gap[:, moves:]) / reach)
+    corrector = reference.inverse.corrector(moves)
+    slopes = corrector((gap[:, :moves] - gap[:, moves:]) / reach).astype(float)
     return Predictor(
         origin=reference.z,
         values=case.values,

@@ -1,7 +1,6 @@
 """The nominal orbit at the order of the bulk solver, and the inverse Jacobian for all units.
 
-Newton in double precision; the dense Jacobian is measured column by column, as many columns at a
-time as there are slots, which keeps one single set of equations (`residual`).
+Newton in double precision from the orbit that shooting found.
 """
 
 from __future__ import annotations
@@ -9,9 +8,9 @@ from __future__ import annotations
 from dataclasses import dataclass
 
 import numpy as np
-from numpy.typing import NDArray
 
 from tolsim.circuit.bulk.grid import Grid, analyse
+from tolsim.circuit.bulk.inverse import Inverse, SingularError, inverse_at
 from tolsim.circuit.bulk.residual import HEAT_SCALE, Anchor, Residual
 from tolsim.circuit.bulk.unit_table import Topology, UnitTable
 from tolsim.circuit.devices import Floats
@@ -19,7 +18,6 @@ from tolsim.circuit.orbit import Solution
 from tolsim.circuit.thermal import Case
 
 SLOTS = 64
-PROBE = 1e-6  # step of the measured derivatives, in scaled unknowns
 NEWTON_ROUNDS = 12
 TOLERANCE = 1e-8  # scaled update of the nominal orbit
 NEAR = 1e-3  # scaled update below which the last Jacobian still serves
@@ -36,7 +34,7 @@ class Reference:
 
     anchor: Anchor
     z: Floats  # (unknowns,)
-    inverse: NDArray[np.float32]  # (unknowns, unknowns)
+    inverse: Inverse  # in single precision
 
 
 def first_unknowns(solution: Solution, topology: Topology, grid: Grid) -> Floats:
@@ -73,12 +71,12 @@ def settle_reference(case: Case, solution: Solution, topology: Topology, grid: G
     residual = Residual(case.design, table, topology, grid, anchor, SLOTS)
     residual.load(np.arange(SLOTS), np.zeros(SLOTS, dtype=np.intp))
     z = start.copy()
-    inverse, last = np.empty((0, 0)), np.inf
+    inverse, last = None, np.inf
     for _ in range(NEWTON_ROUNDS):
-        gap = _residual_at(residual, z)
-        if not inverse.size or last > NEAR:
-            inverse = _inverse(residual, z)
-        move = -inverse @ gap
+        if inverse is None or last > NEAR:
+            inverse = _inverse(case, residual, z)
+            corrector = inverse.corrector(1)
+        move = corrector(_residual_at(residual, z)[:, None])[:, 0].copy()
         last = float(np.abs(move).max())
         z = z + move * min(1.0, LONGEST_MOVE / max(last, 1e-300))
         if last < TOLERANCE:
@@ -87,35 +85,18 @@ def settle_reference(case: Case, solution: Solution, topology: Topology, grid: G
         raise NoReferenceError(f"last update {last:.1e} at {grid.harmonics} harmonics")
     if np.abs(z - start).max() > LONGEST_MOVE:
         raise NoReferenceError("slipped to another orbit than shooting found")
+    assert inverse is not None
     # taken within `NEAR` of the orbit: spread units are much further away than that
-    return Reference(anchor, z, inverse.astype(np.float32))
+    return Reference(anchor, z, inverse.single())
+
+
+def _inverse(case: Case, residual: Residual, z: Floats) -> Inverse:
+    try:
+        return inverse_at(case, residual, z)
+    except SingularError as problem:
+        raise NoReferenceError(str(problem)) from problem
 
 
 def _residual_at(residual: Residual, z: Floats) -> Floats:
     copies = np.repeat(z[:, None], residual.units, axis=1)
     return residual.evaluate(copies)[:, 0].copy()
-
-
-def _inverse(residual: Residual, z: Floats) -> Floats:
-    """Inverse of the Jacobian at z."""
-    matrix = jacobian(residual, z)
-    if not np.isfinite(matrix).all():
-        raise NoReferenceError("the Jacobian has entries that are no numbers")
-    try:
-        return np.linalg.inv(matrix).astype(np.float64)
-    except np.linalg.LinAlgError as problem:
-        raise NoReferenceError("the Jacobian is singular") from problem
-
-
-def jacobian(residual: Residual, z: Floats) -> Floats:
-    """dR/dz (unknowns, unknowns) of the unit in all slots, by forward differences."""
-    size, slots = len(z), residual.units
-    base = _residual_at(residual, z)
-    matrix = np.empty((size, size))
-    for first in range(0, size, slots):
-        columns = np.arange(first, min(first + slots, size))
-        probes = np.repeat(z[:, None], slots, axis=1)
-        probes[columns, columns - first] += PROBE
-        change = residual.evaluate(probes)[:, : len(columns)] - base[:, None]
-        matrix[:, columns] = change / PROBE
-    return matrix

@@ -27,6 +27,7 @@ from tolsim.circuit.thermal import KELVIN, REFERENCE_C, mosfets
 from tolsim.design import Design
 
 HEAT_SCALE = 100.0  # K, unit of the temperature unknowns
+SMALL_VOLTS = 1e-5  # change that a loss is differentiated by
 LONGEST_LOG = 0.5  # ln of the frequency ratio, and
 HOTTEST = 1000.0  # degC: bounds that keep a unit that runs away computable
 
@@ -127,6 +128,68 @@ class Residual:
             rise = spot.thermal_resistance * (losses[k] + drifts[k])
             self._out[k - len(self._hot)] = (hot[k] - ambient - rise) / HEAT_SCALE
         return self._out
+
+    def border_rows(self, z: Floats) -> Floats:
+        """Derivatives (b, n K) of phase condition and heat balances by the states of one unit.
+
+        Parameters
+        ----------
+        z : (unknowns,)
+            Of the unit that sits in all slots.
+        """
+        n, K = self.topology.states, self.grid.size
+        x = z[: n * K].reshape(n, K)
+        hot = z[len(z) - len(self._hot) :] * HEAT_SCALE
+        rows = [] if self.topology.driven else [self.anchor.phase]
+        if self._hot:
+            device = self._heat_devices(np.repeat(hot[:, None], self.units, axis=1))[:, :1]
+            volts = self.table.network.D @ (x * self.topology.scale[:, None])
+            volts[:, 0] += self._rows("v0")[:, 0]
+            waves = volts @ self.grid.synthesis.T
+            for k, spot in enumerate(self._hot):
+                row = self.table.network.D.T @ self._loss_slopes(spot, waves, device)
+                row += self._drop_slopes(k, float(hot[k]), x)
+                row *= -spot.thermal_resistance / HEAT_SCALE * self.topology.scale[:, None]
+                rows.append(row.ravel())
+        return np.array(rows).reshape(len(rows), n * K)
+
+    def _loss_slopes(self, spot: HotSpot, waves: Floats, device: NDArray[np.floating]) -> Floats:
+        """Derivatives (p, K) of the loss in channel and body diode by the port coefficients.
+
+        The loss is a mean over time of something local in time, so that one small change per port
+        serves all coefficients.
+        """
+        ports, m = waves.shape
+        v = np.repeat(waves[:, :, None], 2 * ports, axis=2)
+        places = np.arange(ports)
+        v[places, :, places] += SMALL_VOLTS
+        v[places, :, ports + places] -= SMALL_VOLTS
+        scratch = Scratch.of(m, 2 * ports, np.float64)
+        loss = np.zeros((m, 2 * ports))
+        for place in spot.kernels:
+            kernel = self.table.kernels[place]
+            amount = kernel.evaluate(v, tuple(device[self.table.kernel_rows[place]]), scratch)
+            if amount is not None:
+                loss += amount * weighted(v, kernel.inject, scratch.sum)
+        slopes = (loss[:, :ports] - loss[:, ports:]).T / (2 * SMALL_VOLTS)
+        return slopes @ self.grid.synthesis / m
+
+    def _drop_slopes(self, k: int, celsius: float, x: Floats) -> Floats:
+        """Derivatives (n, K) of the losses in drift and gate resistances, by unscaled states."""
+        spot, slopes = self._hot[k], np.zeros_like(x)
+        warm = float(_ratio(np.array(celsius))) ** -spot.drift_exponent
+        for ends, name, factor in ((spot.drift, "drift", warm), (spot.gate, "gate", 1.0)):
+            if ends is None:
+                continue
+            known = self._rows("known drain" if name == "drift" else "known gate")[k]
+            copies = np.repeat(x[:, :, None], self.units, axis=2)
+            steep = factor * self._rows(name)[k, 0] * self._drop(copies, ends, known)[:, 0]
+            steep[0] *= 2.0  # the mean of a square counts a constant in full, a wave by half
+            outer, inner = ends
+            slopes[inner] -= steep
+            if outer >= 0:
+                slopes[outer] += steep
+        return slopes
 
     def _products(self, places: tuple[Place, ...], name: str, x: Floats, out: Floats) -> None:
         for (i, j), entry in zip(places, self._rows(name), strict=True):
