@@ -11,7 +11,7 @@ import quick_study
 from hypothesis import given, settings
 from hypothesis import strategies as st
 
-from tolsim import run as corridor
+from tolsim import building
 from tolsim.circuit.shooting import TOLERANCE
 from tolsim.evaluation import Plan, evaluate
 from tolsim.nominals import prepare
@@ -87,7 +87,7 @@ def test_surplus_units_are_dropped(plan):
 @pytest.mark.parametrize(("share", "expected"), [(0.9, 1.0), (0.4, 0.0)])
 def test_without_spread_the_yield_is_all_or_nothing(tmp_path, monkeypatch, share, expected):
     """A study whose parts do not spread passes with every unit or with none: all are nominal."""
-    monkeypatch.setattr(corridor, "CHUNK", 3)
+    monkeypatch.setattr(building, "BLOCK", 3)
     text = quick_study.text(units=6, drain_share=share)
     plain = [line for line in text.splitlines() if not line.startswith(("spread", "reel"))]
     path = written(tmp_path, "\n".join(plain))

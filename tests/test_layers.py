@@ -72,7 +72,7 @@ FLOORS = [
     {"report.page", "report.unit_picture"},
     {"report"},
     # the corridor, and the faces
-    {"crosscheck", "presentation", "recheck", "solver_choice"},
+    {"building", "crosscheck", "presentation", "recheck", "solver_choice"},
     {"run", "replay"},
     {"terminal"},
     {"cli"},

@@ -10,7 +10,7 @@ import pandas as pd
 import pytest
 import quick_study
 
-from tolsim import run as corridor
+from tolsim import building
 from tolsim.answers.results import Results
 from tolsim.circuit.shooting import TOLERANCE
 from tolsim.errors import RequestError, RunError
@@ -32,7 +32,7 @@ def finished(tmp_path_factory: pytest.TempPathFactory) -> Path:
     """Results folder of a finished run in chunks of 5."""
     place = tmp_path_factory.mktemp("run")
     patch = pytest.MonkeyPatch()
-    patch.setattr(corridor, "CHUNK", 5)
+    patch.setattr(building, "BLOCK", 5)
     run_study(write(place), jobs=1, out=place / "out")
     patch.undo()
     return place / "out"
@@ -70,7 +70,7 @@ def test_same_seed_same_answer_whatever_the_chunks_and_units(
     stored = pd.read_parquet(finished / "units.parquet").head(4)
     numbers = [name for name in stored.columns if stored[name].dtype == np.float64]
     with pytest.MonkeyPatch.context() as patch:
-        patch.setattr(corridor, "CHUNK", 5)
+        patch.setattr(building, "BLOCK", 5)
         shorter = run_study(write(tmp_path), units=4, jobs=2).units
     pd.testing.assert_frame_equal(shorter, stored, check_exact=True)
     other = run_study(write(tmp_path), units=4, jobs=1).units
@@ -84,9 +84,9 @@ def test_killed_run_leaves_finished_chunks_and_is_taken_up(
     tmp_path: Path, monkeypatch: pytest.MonkeyPatch
 ) -> None:
     """The chunks done before the kill are readable, and not solved again."""
-    monkeypatch.setattr(corridor, "CHUNK", 3)
+    monkeypatch.setattr(building, "BLOCK", 3)
     path = write(tmp_path, units=9)
-    evaluate, seen = corridor.evaluate, []
+    evaluate, seen = building.evaluate, []
 
     def dies_in_the_second(plan: object, first: int, count: int, block: int) -> object:
         seen.append(first)
@@ -94,7 +94,7 @@ def test_killed_run_leaves_finished_chunks_and_is_taken_up(
             raise KeyboardInterrupt
         return evaluate(plan, first, count, block)  # type: ignore[arg-type]
 
-    monkeypatch.setattr(corridor, "evaluate", dies_in_the_second)
+    monkeypatch.setattr(building, "evaluate", dies_in_the_second)
     with pytest.raises(KeyboardInterrupt):
         run_study(path, jobs=1, out=tmp_path / "out")
     left = Results.open(tmp_path / "out")
@@ -171,3 +171,39 @@ def test_the_bulk_solver_serves_and_is_checked(tmp_path: Path) -> None:
     assert set(results.units["way"]) == {"collocation"}
     longer = run_study(write(tmp_path, units=24, solver="auto"), jobs=2).units.head(20)
     pd.testing.assert_frame_equal(results.units, longer, check_exact=True)
+
+
+def test_blocks_in_one_pool_have_the_bits_of_blocks_alone(
+    tmp_path: Path, monkeypatch: pytest.MonkeyPatch
+) -> None:
+    """One job takes four blocks together, two jobs take them one by one."""
+    monkeypatch.setattr(building, "BLOCK", 8)
+    path = write(tmp_path, units=32, solver="auto")
+    together, alone = (run_study(path, jobs=jobs, out=tmp_path / str(jobs)) for jobs in (1, 2))
+    for table in ("units", "factors"):
+        mine, other = getattr(together, table), getattr(alone, table)
+        pd.testing.assert_frame_equal(mine, other, check_exact=True)
+    files = [len(list((tmp_path / str(jobs) / "chunks").glob("units-*"))) for jobs in (1, 2)]
+    assert files == [1, 4]
+
+
+def test_a_run_is_taken_up_with_another_layout(
+    tmp_path: Path, monkeypatch: pytest.MonkeyPatch
+) -> None:
+    """Chunks of a shorter or longer run count where they fit; no unit is left out or doubled."""
+    monkeypatch.setattr(building, "BLOCK", 2)
+    path, out = write(tmp_path), tmp_path / "out"
+    for units in (3, 7, 4):
+        results = run_study(path, units=units, jobs=1, out=out)
+        assert list(results.units["unit"]) == list(range(units))
+        assert list(results.factors["unit"]) == list(range(units))
+
+
+def test_the_last_tasks_are_short_and_gaps_stay_apart() -> None:
+    """Long tasks first, then single blocks, so that two jobs end together."""
+    assert building.share_out({}, 9 * 128 + 5, 1, 4) == [(0, 512), (512, 512), (1024, 133)]
+    sizes = [count for _, count in building.share_out({}, 4096, 2, 4)]
+    assert (max(sizes), sizes[-1], sum(sizes)) == (512, 128, 4096)
+    assert sizes == sorted(sizes, reverse=True)
+    gaps = building.share_out({128: 256}, 700, 1, 4)
+    assert gaps == [(0, 128), (384, 316)]

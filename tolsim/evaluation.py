@@ -2,15 +2,17 @@
 
 from __future__ import annotations
 
-from collections.abc import Mapping, Sequence
+from collections.abc import Iterator, Mapping, Sequence
 from dataclasses import dataclass, field
 from functools import lru_cache
+from pathlib import Path
 
 import joblib
 import numpy as np
 import pandas as pd
 
-from tolsim.circuit.bulk.choice import Choice
+from tolsim.answers.unit_files import UnitFiles
+from tolsim.circuit.bulk.choice import Choice, by_shooting
 from tolsim.circuit.continuation import solve_units
 from tolsim.circuit.devices import Floats
 from tolsim.circuit.orbit import Solution, Status
@@ -45,17 +47,20 @@ class Chunk:
 
 
 def evaluate(plan: Plan, first: int, count: int, block: int) -> Chunk:
-    """Units `first` ... `first + count - 1` in every case.
+    """Units `first` ... `first + count - 1` in every case, `block` of them after the other.
 
-    Always `block` units are solved side by side, the surplus is dropped: so the last bits of a
-    unit do not depend on how many units the run has.
+    Always whole blocks are solved, the surplus is dropped, and a unit is never touched by another
+    block than its own: so its last bits depend neither on how many units the run has nor on how
+    many blocks are evaluated together.
     """
-    draws = draw(plan.factors, plan.study.run.seed, first, block)
-    tables = [case_rows(plan, name, draws).head(count) for name in plan.cases]
-    rows = pd.concat(tables, ignore_index=True)
+    draws = draw(plan.factors, plan.study.run.seed, first, -(-count // block) * block)
+    cases = [case_rows(plan, name, draws, block) for name in plan.cases]
+    tables = []
+    for place, blocks in enumerate(zip(*cases, strict=True)):
+        tables += [table.head(count - place * block) for table in blocks]
     factors = pd.DataFrame(draws.values[:count], columns=list(draws.names))
     factors.insert(0, "unit", np.arange(first, first + count))
-    return Chunk(first, rows, factors)
+    return Chunk(first, pd.concat(tables, ignore_index=True), factors)
 
 
 @lru_cache(maxsize=1)
@@ -65,20 +70,37 @@ def _stored(plan_file: str) -> Plan:
     return plan
 
 
-def evaluate_stored(plan_file: str, first: int, count: int, block: int) -> Chunk:
-    """Evaluate for a worker: the plan comes from a file, not with every task."""
-    return evaluate(_stored(plan_file), first, count, block)
+def evaluate_stored(
+    plan_file: str, folder: Path | None, first: int, count: int, block: int
+) -> Chunk | int:
+    """Evaluate for a worker: the plan comes from a file, not with every task.
+
+    A chunk that goes into a results folder is written here, so that the parent, which has a core
+    to share, need not receive and write it.
+    """
+    chunk = evaluate(_stored(plan_file), first, count, block)
+    return chunk if folder is None else store_chunk(folder, chunk)
+
+
+def store_chunk(folder: Path, chunk: Chunk) -> int:
+    """Write a chunk into a results folder; the number of its units."""
+    UnitFiles(folder).write_chunk(chunk.first, chunk.rows, chunk.factors)
+    return len(chunk.factors)
 
 
 def solve_case(plan: Plan, name: CaseName, draws: Draws) -> tuple[Case, Solution]:
     """Orbits of the drawn units in one case, passive parts as warm as they run."""
-    rises = plan.cases[name].heat.rises
-    case = case_of(plan.study, part_values(plan.study, plan.tables, *name, draws, rises))
+    case = _drawn_case(plan, name, draws)
     compass, steps = plan.cases[name].compass, plan.study.run.steps_per_cycle
     choice = plan.choices.get(name)
     if choice is None:
         return case, solve_units(case, compass, steps)
     return case, choice.solve(case, compass, steps)
+
+
+def _drawn_case(plan: Plan, name: CaseName, draws: Draws) -> Case:
+    rises = plan.cases[name].heat.rises
+    return case_of(plan.study, part_values(plan.study, plan.tables, *name, draws, rises))
 
 
 def case_figures(
@@ -96,9 +118,23 @@ def case_figures(
     return figures
 
 
-def case_rows(plan: Plan, name: CaseName, draws: Draws) -> pd.DataFrame:
-    """Rows of the drawn units in one case."""
-    case, solution = solve_case(plan, name, draws)
+def case_rows(plan: Plan, name: CaseName, draws: Draws, block: int) -> Iterator[pd.DataFrame]:
+    """Rows of the drawn units in one case, one table per block."""
+    case = _drawn_case(plan, name, draws)
+    compass, steps = plan.cases[name].compass, plan.study.run.steps_per_cycle
+    choice = plan.choices.get(name)
+    if choice is None:
+        solutions = by_shooting(case, compass, steps, block)
+    else:
+        solutions = choice.solve_in_blocks(case, compass, steps, block)
+    for place, solution in enumerate(solutions):
+        own = draws.rows(place * block, block)
+        units = np.arange(place * block, place * block + own.count)
+        yield _rows(plan, name, own, case.take(units), solution)
+
+
+def _rows(plan: Plan, name: CaseName, draws: Draws, case: Case, solution: Solution) -> pd.DataFrame:
+    """Rows of solved units."""
     figures = case_figures(plan, name, draws, case, solution)
     verdicts = judge(
         plan.study,

@@ -8,16 +8,12 @@ first.
 from __future__ import annotations
 
 import json
-from collections.abc import Callable, Iterator, Mapping
+from collections.abc import Mapping
 from dataclasses import replace
 from pathlib import Path
-from tempfile import TemporaryDirectory
 from typing import Any
 
-import joblib
 import numpy as np
-import pandas as pd
-from joblib import Parallel, delayed, parallel_config
 from threadpoolctl import threadpool_limits
 
 from tolsim.answers.provenance import provenance_of, used_tables
@@ -31,10 +27,11 @@ from tolsim.answers.unit_files import (
     damaged,
     write_text,
 )
+from tolsim.building import Progress, build_units
 from tolsim.crosscheck import crosscheck
 from tolsim.design import Study
 from tolsim.errors import RequestError
-from tolsim.evaluation import Chunk, Plan, evaluate, evaluate_stored
+from tolsim.evaluation import Plan
 from tolsim.nominals import prepare
 from tolsim.recheck import recheck
 from tolsim.self_heating import heat_record
@@ -42,7 +39,6 @@ from tolsim.solver_choice import choose_solvers, wants_bulk
 from tolsim.spread.sampling import factors
 from tolsim.study import StudyFile, open_study
 
-CHUNK = 128  # units stored together; a killed run loses at most one chunk per job
 IDENTITY_FILE = "run.json"
 _IDENTITY = {
     "study_sha256": "another study file",
@@ -52,8 +48,6 @@ _IDENTITY = {
     "versions": "another version of tolsim or of a library",
     "solver": "another choice of solvers",
 }
-
-Progress = Callable[[int, int], None]
 
 
 def run_study(
@@ -120,7 +114,7 @@ def _solve_and_judge(
     bulk = wants_bulk(opened.study)
     choices = choose_solvers(opened.study, opened.tables, names, cases, jobs) if bulk else {}
     plan = Plan(opened.study, opened.tables, names, cases, choices)
-    unit_table, factor_table = _build(plan, jobs, store, progress)
+    unit_table, factor_table = build_units(plan, jobs, store, progress)
     summary = summarise(
         opened.study,
         unit_table,
@@ -183,56 +177,6 @@ def _identity_of(file: Path) -> Mapping[str, Any]:
     if not isinstance(identity, dict):
         raise damaged(file)
     return identity
-
-
-def _build(
-    plan: Plan, jobs: int | None, store: UnitFiles | None, progress: Progress | None
-) -> tuple[Columns, Columns]:
-    """Evaluate all chunks that are not there yet; give the two tables."""
-    units = plan.study.run.units
-    finished = store.finished() if store is not None else {}
-    wanted = [
-        (first, min(CHUNK, units - first))
-        for first in range(0, units, CHUNK)
-        if finished.get(first) != min(CHUNK, units - first)
-    ]
-    done = units - sum(count for _, count in wanted)
-    chunks: list[Chunk] = []
-    if progress is not None:
-        progress(done, units)
-    for chunk in _evaluated(plan, wanted, jobs):
-        if store is None:
-            chunks.append(chunk)
-        else:
-            store.write_chunk(chunk.first, chunk.rows, chunk.factors)
-        done += len(chunk.factors)
-        if progress is not None:
-            progress(done, units)
-    if store is not None:
-        store.merge()
-        return store.units(), store.factors()
-    chunks.sort(key=lambda chunk: chunk.first)
-    rows = pd.concat([chunk.rows for chunk in chunks], ignore_index=True)
-    table = pd.concat([chunk.factors for chunk in chunks], ignore_index=True)
-    return FrameColumns(rows), FrameColumns(table)
-
-
-def _evaluated(plan: Plan, wanted: list[tuple[int, int]], jobs: int | None) -> Iterator[Chunk]:
-    """Chunks as they finish, from worker processes if more than one is asked for."""
-    if jobs == 1 or len(wanted) <= 1:
-        yield from (evaluate(plan, first, count, CHUNK) for first, count in wanted)
-        return
-    with (
-        TemporaryDirectory(prefix="tolsim-", ignore_cleanup_errors=True) as folder,
-        # the arrays of a unit are small: threads inside a worker would only get in the way
-        parallel_config(backend="loky", inner_max_num_threads=1),
-    ):
-        plan_file = str(Path(folder) / "plan.joblib")
-        joblib.dump(plan, plan_file)
-        work = Parallel(n_jobs=jobs or -1, return_as="generator_unordered")
-        yield from work(
-            delayed(evaluate_stored)(plan_file, first, count, CHUNK) for first, count in wanted
-        )
 
 
 def _quality(plan: Plan, units: Columns) -> dict[str, Any]:

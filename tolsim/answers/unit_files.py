@@ -112,13 +112,17 @@ class UnitFiles:
         factors : DataFrame
             One row per unit: `unit` and the value of every factor.
         """
-        chunks = self.folder / "chunks"
-        chunks.mkdir(parents=True, exist_ok=True)
+        (self.folder / "chunks").mkdir(parents=True, exist_ok=True)
         # Factors first: a chunk counts as finished when its units file is there.
         for name, table in (("factors", factors), ("units", rows)):
-            path = chunks / f"{name}-{first:07d}.parquet"
-            with _Arriving(path) as part:
-                table.to_parquet(part, index=False)
+            with _Arriving(self._chunk(name, first)) as part:
+                columns = pa.Table.from_pandas(table, preserve_index=False)
+                pq.write_table(columns, part, use_dictionary=_repeated(columns.schema))
+
+    def remove_chunk(self, first: int) -> None:
+        """Remove a chunk, its units first: what is left of it counts as not finished."""
+        for name in ("units", "factors"):
+            self._chunk(name, first).unlink(missing_ok=True)
 
     def finished(self) -> dict[int, int]:
         """Finished chunks: first unit and number of units of each, in order."""
@@ -135,11 +139,11 @@ class UnitFiles:
     def merge(self) -> None:
         """Make `units.parquet` and `factors.parquet` from the finished chunks, one at a time."""
         for name in ("units", "factors"):
-            paths = self._chunks(name)
+            paths = [self._chunk(name, first) for first in self.finished()]
             schema = pq.read_schema(paths[0])
             with (
                 _Arriving(self.folder / f"{name}.parquet") as part,
-                pq.ParquetWriter(part, schema) as writer,
+                pq.ParquetWriter(part, schema, use_dictionary=_repeated(schema)) as writer,
             ):
                 for path in paths:
                     writer.write_table(pq.read_table(path).cast(schema))
@@ -157,12 +161,19 @@ class UnitFiles:
         if merged.exists():
             return FileColumns((merged,))
         finished = self.finished()
-        return FileColumns(
-            tuple(self.folder / "chunks" / f"{name}-{first:07d}.parquet" for first in finished)
-        )
+        return FileColumns(tuple(self._chunk(name, first) for first in finished))
+
+    def _chunk(self, name: str, first: int) -> Path:
+        return self.folder / "chunks" / f"{name}-{first:07d}.parquet"
 
     def _chunks(self, name: str) -> list[Path]:
         return sorted((self.folder / "chunks").glob(f"{name}-*.parquet"))
+
+
+def _repeated(schema: pa.Schema) -> list[str] | bool:
+    """Columns worth a dictionary: words; looking for repeated numbers costs half of the writing."""
+    words = [field.name for field in schema if not pa.types.is_floating(field.type)]
+    return words or False
 
 
 class _Arriving:

@@ -86,9 +86,13 @@ class Solution:
 def joined(parts: list[Solution]) -> Solution:
     """Solutions of several sets of units as one."""
     first = parts[0]
+    if len(parts) == 1:
+        return first
+    # memory in the order in which the bulk solver makes it: the wave of a state is one piece
+    waves = np.concatenate([part.samples.transpose(2, 0, 1) for part in parts], axis=2)
     return Solution(
         status=np.concatenate([part.status for part in parts]),
-        samples=np.concatenate([part.samples for part in parts], axis=1),
+        samples=waves.transpose(1, 2, 0),
         period=np.concatenate([part.period for part in parts]),
         residual=np.concatenate([part.residual for part in parts]),
         multipliers=np.concatenate([part.multipliers for part in parts]),

@@ -99,6 +99,11 @@ class Draws:
         """Column of each factor, by name."""
         return {factor.name: index for index, factor in enumerate(self.factors)}
 
+    def rows(self, begin: int, count: int) -> Draws:
+        """Draws of `count` of the units, from row `begin` on."""
+        chosen = slice(begin, begin + count)
+        return Draws(self.factors, self.first + begin, self.u[chosen], self.values[chosen])
+
 
 def factor_name(
     part: str, quantity: str, what: str, reel: str | None, piece: int | None = None

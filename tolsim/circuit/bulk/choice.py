@@ -10,6 +10,7 @@ clamp, sharp switching) or too few units settle, shooting does.
 
 from __future__ import annotations
 
+from collections.abc import Iterator
 from dataclasses import dataclass, field, fields
 
 import numpy as np
@@ -17,7 +18,7 @@ from numpy.typing import NDArray
 
 from tolsim.circuit.bulk.plan import FastPlan, prepare_fast
 from tolsim.circuit.bulk.reference import NoReferenceError
-from tolsim.circuit.bulk.solve import WAY, solve_units_fast
+from tolsim.circuit.bulk.solve import WAY, solve_in_blocks, solve_units_fast
 from tolsim.circuit.bulk.unit_table import TopologyError
 from tolsim.circuit.continuation import SHOOTING_ROUNDS, Compass, solve_units
 from tolsim.circuit.devices import Floats, Ints
@@ -84,6 +85,22 @@ class Choice:
         if self.plan is None:
             return solve_units(case, compass, steps)
         return solve_units_fast(case, self.plan)
+
+    def solve_in_blocks(
+        self, case: Case, compass: Compass, steps: int, block: int
+    ) -> Iterator[Solution]:
+        """The same, `block` units at a time; a unit's bits depend on its own block only."""
+        if self.plan is None:
+            yield from by_shooting(case, compass, steps, block)
+        else:
+            yield from solve_in_blocks(case, self.plan, block)
+
+
+def by_shooting(case: Case, compass: Compass, steps: int, block: int) -> Iterator[Solution]:
+    """Orbits of the units of a case by shooting, `block` units at a time."""
+    for first in range(0, case.units, block):
+        units = np.arange(first, min(first + block, case.units))
+        yield solve_units(case.take(units), compass, steps)
 
 
 @dataclass(frozen=True)

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from collections.abc import Iterator
 from dataclasses import replace
 
 import numpy as np
@@ -20,7 +21,7 @@ from tolsim.circuit.floquet import largest_beside_charge
 from tolsim.circuit.orbit import Solution, Status, joined
 from tolsim.circuit.thermal import HIGHEST_C, Case
 
-BLOCK = 1024  # units turned into samples together
+BLOCK = 128  # units turned into samples together
 SMALLEST_SWING = 0.02  # of the nominal orbit's: below, it is another solution than the oscillation
 NEAR = 0.02  # last update of a chord iteration that is worth going on from
 WAY = "collocation"
@@ -28,27 +29,49 @@ STUBBORN_WAY = "collocation, Newton"
 
 
 def solve_units_fast(case: Case, plan: FastPlan) -> Solution:
-    """Orbit of every unit of a case.
+    """Orbit of every unit of a case, as `solve_in_blocks` finds it."""
+    return joined(list(solve_in_blocks(case, plan, BLOCK)))
 
-    The chord iteration settles nearly all.  An orbit that does not settle, is unstable, or is not
-    the oscillation looked for is tried again by Newton-GMRES, then by shooting with its own
-    fall-backs (`continuation.solve_units`).
 
-    Returns
-    -------
+def solve_in_blocks(case: Case, plan: FastPlan, block: int) -> Iterator[Solution]:
+    """Orbits of the units of a case, `block` units at a time.
+
+    The chord iteration, which settles nearly all, has all units in one pool: the fewer pools, the
+    fewer slots stand idle while a last unit settles.  An orbit that does not settle, is unstable,
+    or is not the oscillation looked for is tried again by Newton-GMRES, then by shooting with its
+    own fall-backs (`continuation.solve_units`), beside those of its own block only.
+
+    Yields
+    ------
     Solution
         Samples on the plan's even grid; `way` tells which solver settled each unit.
     """
+    parts = [
+        np.arange(first, min(first + block, case.units)) for first in range(0, case.units, block)
+    ]
     try:
         start = plan.predictor.start(case)
         iterated = plan.iterate(case, start)
     except TopologyError:
-        return solve_units(case, plan.compass, plan.steps)
-    parts = []
-    for first in range(0, case.units, BLOCK):
-        units = np.arange(first, min(first + BLOCK, case.units))
-        parts.append(_finish(case.take(units), plan, _taken(iterated, units)))
-    solution = joined(parts)
+        # some unit is of another kind: what becomes of a block must not depend on other blocks
+        if len(parts) > 1:
+            for units in parts:
+                yield from solve_in_blocks(case.take(units), plan, block)
+        else:
+            yield solve_units(case, plan.compass, plan.steps)
+        return
+    for units in parts:
+        yield _settled(case.take(units), plan, start[:, units], _taken(iterated, units))
+
+
+def solve_directly(case: Case, plan: FastPlan) -> Solution:
+    """What the chord iteration alone settles, without any fall-back."""
+    return _finish(case, plan, plan.iterate(case, plan.predictor.start(case)))
+
+
+def _settled(case: Case, plan: FastPlan, start: Floats, iterated: Iterated) -> Solution:
+    """Orbits from where the chord iteration ended, with the fall-backs."""
+    solution = _finish(case, plan, iterated)
     left = np.flatnonzero(solution.status != Status.SETTLED)
     if left.size:
         near = np.isfinite(iterated.update) & (iterated.update < NEAR)
