@@ -19,13 +19,17 @@ FLOORS = [
     {"laws.lognormal", "laws.sorted_out", "laws.triangular", "laws.truncated_normal"}
     | {"spread.value_codes"}
     | {"laws.measured", "laws.mixture", "laws.student", "stats.clusters"}
-    | {"laws.uniform", "stats", "mosfet_sheet", "winding", "study.plain_words", "answers.wording"},
+    | {"laws.uniform", "stats", "mosfet_sheet", "winding", "mission"}
+    | {"study.plain_words", "answers.wording"},
     {"laws.window"},
     {"laws", "answers.lot_words"},
     # the design: parts, then what is made of them
     {"parts", "laws.reading"} | {"laws.predictive", "spread.readings"},
     {"design", "spread.datasheet", "spread.temperature", "spread.ageing", "spread.winding"},
     {"answers.bounds", "answers.counting"},
+    {"answers.mission"},
+    {"answers.mission_words"},
+    {"report.mission_section"},
     # the circuit: it knows the design, but neither studies nor spread
     {"circuit.devices"},
     {"circuit.supply_ramp"}
@@ -60,7 +64,8 @@ FLOORS = [
     {"spread.part_values", "spread.checks", "spread.words", "self_heating"},
     # the door for study files
     {"study.outline", "study.recording"},
-    {"study.nets", "study.limits", "study.checks", "study.lots", "study.supplies"},
+    {"study.nets", "study.limits", "study.checks", "study.lots", "study.supplies"}
+    | {"study.mission"},
     {"study.reading"},
     {"study.file"},
     {"study"},

@@ -13,6 +13,7 @@ from typing import Annotated, Any, Literal, Self
 from pydantic import Field, model_validator
 
 from tolsim.errors import Mistake
+from tolsim.mission import Mission
 from tolsim.parts import AnyPart, Net
 from tolsim.quantity import (
     Age,
@@ -192,5 +193,6 @@ class Study(Frozen):
     limits: tuple[Limit, ...]
     run: Run
     lots: Lots | None = None  # none: every unit from reels of its own
+    mission: Mission | None = None
     expected_frequency: tuple[Frequency, Frequency] | None = None
     kind: Literal["self-oscillating", "driven"] = "self-oscillating"

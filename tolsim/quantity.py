@@ -187,6 +187,7 @@ KINDS: Final[Mapping[str, Kind]] = {
         Kind("a thermal resistance", "K/W", 1e-4, 1e5, "1.2 K/W"),
         Kind("a gain", "A/V^2", 1e-6, 1e5, "11 A/V^2"),
         Kind("an age", "h", 0.0, 1e7, "10000 h"),
+        Kind("an activation energy", "eV", 0.05, 5.0, "0.7 eV"),
     )
 }
 _SHARE: Final = Kind("a share", "1", 0.0, 1.0, "80 %")
@@ -251,3 +252,4 @@ InnerShare = Annotated[float, _field(_INNER_SHARE)]
 Level = Annotated[float, _field(_LEVEL)]
 SignedShare = Annotated[float, _field(_SIGNED_SHARE)]
 Age = Annotated[float, _field(KINDS["age"])]  # hours
+ActivationEnergy = Annotated[float, _field(KINDS["activation energy"])]  # eV

@@ -7,6 +7,7 @@ from collections.abc import Iterator, Mapping
 from typing import Any
 
 from tolsim.answers.lot_words import lot_sentences
+from tolsim.answers.mission_words import mission_sentences
 from tolsim.answers.wording import (
     failures,
     hardest,
@@ -37,6 +38,7 @@ def summary_lines(summary: Summary) -> list[str]:
     for heading, body in (
         ("Failing units (one unit may appear in several rows)", _failures(summary)),
         ("By lot, with 95 % intervals", _wrapped(lot_sentences(summary))),
+        ("Over the mission, with 95 % intervals", _wrapped(mission_sentences(summary))),
         ("Hardest driven: p99 over the limit, else over the rating", _stresses(summary)),
         ("What matters: share of variance, 95 % interval", _factors(summary)),
         ("Quality", _quality(summary["quality"])),

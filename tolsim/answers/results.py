@@ -32,6 +32,16 @@ not known (an interval that this many units cannot close).  Every `low`, `high` 
                 fails), low, high, independent (the same for boards of many lots)}],
                 between [{target, title, share (of its variance that lies between lots), low,
                 high}], independent {low, high} (the yield interval if units shared nothing)}
+``mission``     {} unless the study states one; else {years, hours (of running), cases [{condition,
+                state, hours, share}], power [{figure (mean_input_power, mean_output_power,
+                energy_per_year), unit_of_measure, nominal, units, missing (without an orbit in
+                some case), p5, p50, p95, interval {p5: [low, high], ...}}], in_order {units (that
+                pass in every hour), of, share, low, high, of_life {mean, least} (share of the
+                hours), undecided (share of all hours)}, limits [{limit, rule, figure, units (ever
+                beyond it), share, low, high, first_units, of_life {mean, most}}], temperatures
+                [{part, figure, units, missing, mean {p50, p95} (over the hours), highest {p50,
+                p95}, equivalent_hours {p50, p95} (at `reference`, or null)}], reference (degC),
+                activation_energy (eV)}
 ``cases``       [{condition, state, and all keys of `yield` but for that case alone}]
 ``outcomes``    [{condition, state, outcome, units, share, low, high, first_units, failed,
                 no_limit_broken {units, first_units}}]; `failed` counts those of them that

@@ -15,6 +15,7 @@ from numpy.typing import NDArray
 from tolsim.answers.bounds import Bound, applies, bounds, named_figure, rating_of
 from tolsim.answers.counting import Counting
 from tolsim.answers.lots import lots_entry
+from tolsim.answers.mission import mission_entry
 from tolsim.answers.ranking import rankings
 from tolsim.answers.supply_words import supply_entries
 from tolsim.answers.unit_files import Columns, UnitRows
@@ -80,6 +81,7 @@ def summarise(
         "outcomes": _outcomes(rows, failed, counting),
         "limits": _limits(study, rows, counting),
         "figures": _figures(study, rows, nominal, counting),
+        "mission": mission_entry(study, rows, counting, nominal),
         "lots": lots_entry(study, rows, unit_failed, unit_undecided),
         "ranking": rankings(study, rows, factors, unit_failed, unit_undecided),
         "quality": dict(quality),

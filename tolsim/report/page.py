@@ -14,6 +14,7 @@ from tolsim.answers.unit_files import write_text
 from tolsim.answers.wording import DASH, confidence_words, percent, percents, verdict_sentence
 from tolsim.report.charts import start_margin_chart, waveform_chart
 from tolsim.report.content import FAIL, PASS, UNDECIDED, ReportInput
+from tolsim.report.mission_section import mission_section
 from tolsim.report.tables import (
     case_rows,
     limit_rows,
@@ -58,6 +59,7 @@ def render(content: ReportInput) -> str:
         cases=[case for case in cases if not (fold and case["clean"])],
         clean=[case for case in cases if fold and case["clean"]],
         stresses=stress_rows(summary),
+        mission=mission_section(summary),
         limited=limited_stage_rows(summary),
         stage=stage_rows(summary),
         others=other_rows(summary),

@@ -6,7 +6,8 @@
     [rails.vdd]                      net, voltage, resistance, current_limit, ramp, ...
     [parts.C1]                       kind, nets, values, ratings, spread table
     [states.full]                    title, starts_here, values, spread
-    [conditions.hot]                 ambient, supply, age, board_rise
+    [conditions.hot]                 ambient, supply, age, since_soldering, board_rise
+    [mission]                        years, conditions, states, activation_energy, reference
     [[limits]]                       figure, parts, at_most | at_least | share_of_rating, rule
 
 Quantities are texts with a unit of measure.  Every mistake of a file is told at once.
@@ -25,6 +26,7 @@ from pydantic import AfterValidator
 
 from tolsim.design import Design, Lots, Rail, Run, Study
 from tolsim.errors import Mistake, Problem, StudyError
+from tolsim.mission import Mission
 from tolsim.quantity import Frequency, Leak
 from tolsim.records import Frozen
 from tolsim.spread.checks import check_spread
@@ -33,6 +35,7 @@ from tolsim.spread.table import SpreadTable
 from tolsim.study.checks import coupling_problems, study_problems
 from tolsim.study.limits import limit_problems
 from tolsim.study.lots import lot_problems
+from tolsim.study.mission import mission_problems
 from tolsim.study.nets import net_problems
 from tolsim.study.outline import Table, named_tables
 from tolsim.study.reading import Reading
@@ -61,6 +64,7 @@ class _Top(Frozen):
     leak: Leak = 1e-8
     run: Run = Run()
     lots: Lots | None = None
+    mission: Mission | None = None
     rails: Mapping[str, Any] = {}
     parts: Mapping[str, Any] = {}
     states: Mapping[str, Any] = {}
@@ -195,6 +199,8 @@ def read_study(
     reading.problems += coupling_problems(outline, parts, values)
     reading.problems += limit_problems(outline)
     reading.problems += lot_problems(outline, raw.get("lots"))
+    ages = {name: c.age for name, c in conditions.items() if isinstance(c.age, float)}
+    reading.problems += mission_problems(outline, top.mission if top else None, ages)
     if reading.problems or top is None:
         raise StudyError(_in_file_order(reading.problems, raw))
     return Study(
@@ -206,6 +212,7 @@ def read_study(
         limits=limits,
         run=top.run,
         lots=top.lots,
+        mission=top.mission,
         expected_frequency=top.expected_frequency,
         kind=top.kind,
     )
