@@ -11,7 +11,7 @@ import tolsim
 
 FLOORS = [
     # words and numbers: they know nothing of circuits
-    {"errors", "figure_names", "stats.proportion"},
+    {"errors", "figure_names", "stats.proportion", "trim.operator"},
     {"answers.unit_files"},
     {"quantity", "library", "records", "answers.results", "laws.law"}
     | {"spread.codes", "spread.coil", "spread.wire", "stats.percentiles", "stats.ranking"}
@@ -57,21 +57,24 @@ FLOORS = [
     {"figures.parts", "figures.transistors"},
     {"figures.stage", "figures.start"},
     {"figures", "verdicts"},
+    {"trim.session"},
     # spread and chance
     {"spread.drift_reading", "spread.table", "spread.measured_reading", "spread.shorthand"},
     {"spread.entry"},
     {"spread.reading", "spread.sampling"},
     {"spread.part_values", "spread.checks", "spread.words", "self_heating"},
+    {"trim.nominal_unit"},
     # the door for study files
     {"study.outline", "study.recording"},
     {"study.nets", "study.limits", "study.checks", "study.lots", "study.supplies"}
     | {"study.mission"},
+    {"study.trims"},
     {"study.reading"},
     {"study.file"},
     {"study"},
     # answers
     {"nominals", "answers.provenance", "answers.supply_words", "answers.ranking"},
-    {"answers.lots"},
+    {"answers.lots", "answers.trims", "trim.drawn"},
     {"evaluation", "answers.summary", "answers.lines", "report.content", "report.tables"},
     {"report.charts"},
     {"report.page", "report.unit_picture"},

@@ -21,6 +21,11 @@ def blocks(language):
     return re.findall(rf"```{language}\n(.*?)```", README, flags=re.DOTALL)
 
 
+def indented():
+    """Examples that stand inside a list."""
+    return [re.sub(r"(?m)^ {6}", "", text) for text in re.findall(r"\n((?: {6}\S.*\n)+)", README)]
+
+
 @pytest.fixture
 def place(tmp_path, monkeypatch):
     """A folder with README's study, to work in."""
@@ -37,11 +42,19 @@ def test_the_study_is_short_and_without_mistakes(place):
 
 
 def test_the_spread_table_shown_can_be_used(place):
-    (table,) = re.findall(r"\n((?: {6}\S.*\n)+)", README)
-    (place / "ours.toml").write_text(re.sub(r"(?m)^ {6}", "", table), encoding="utf-8")
+    (table,) = (text for text in indented() if text.startswith("[table"))
+    (place / "ours.toml").write_text(table, encoding="utf-8")
     study = (place / "beacon.toml").read_text(encoding="utf-8")
     (place / "beacon.toml").write_text(study.replace("film-pp-5pct", "our-film"), encoding="utf-8")
     assert tolsim.load_study("beacon.toml")
+
+
+def test_the_trim_shown_can_be_used(place):
+    (trim,) = (text for text in indented() if text.startswith("[trim"))
+    study = shipped_studies()["plant-lamp"].read_text(encoding="utf-8")
+    study = re.sub(r"(?ms)^\[trim\..*?^$", "", study)
+    (place / "lamp.toml").write_text(study + trim, encoding="utf-8")
+    assert tolsim.load_study("lamp.toml").trims["idle"].target == pytest.approx(0.06)
 
 
 def test_the_study_runs_and_its_failures_are_those_told(place):

@@ -11,7 +11,7 @@ from numpy.typing import NDArray
 from tolsim.answers.bounds import bounds, named_figure, rating_of
 from tolsim.circuit.continuation import solve_units
 from tolsim.design import Study
-from tolsim.evaluation import Plan, solve_case
+from tolsim.evaluation import Plan, built, solve_case
 from tolsim.figure_names import figures_of
 from tolsim.figures import measure_orbits
 from tolsim.nominals import CaseName
@@ -45,7 +45,7 @@ def crosscheck(plan: Plan) -> dict[str, Any]:
     # any units will do, but the same ones every time the run is repeated
     rng = np.random.default_rng([plan.study.run.seed, units])
     numbers = np.sort(rng.choice(units, wanted, replace=False))
-    draws = draw_chosen(plan.factors, plan.study.run.seed, numbers)
+    draws = built(plan, draw_chosen(plan.factors, plan.study.run.seed, numbers))
     found = [entry for name in served for entry in _compare(plan, name, draws)]
     judged = {*ALWAYS, *(bound.column for bound in bounds(plan.study))}
     worst_judged = _largest([entry for entry in found if entry["figure"] in judged])

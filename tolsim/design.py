@@ -182,6 +182,52 @@ class Lots(Frozen):
         return self.units_per_lot * self.lots_together
 
 
+class Meter(Frozen):
+    """Laws of the errors of a meter: it shows (1 + gain) true + offset + noise.
+
+    Gain and offset belong to the meter and so to a whole lot of units; noise to each reading
+    taken when the operator stops.  Each is a law (mapping with key "law") or a number.
+    """
+
+    gain: Mapping[str, Any] | float = 0.0
+    offset: Mapping[str, Any] | float = 0.0
+    noise: Mapping[str, Any] | float = 0.0
+
+
+class Trim(Frozen):
+    """One adjuster that an operator turns per unit until a reading meets its target.
+
+    Position, range, resolution, coarse step and setting error are in `unit_of_measure`, that of
+    the quantity; target, tolerance, offset and noise in `reading_unit`, that of the figure read.
+    """
+
+    part: str  # or a rail
+    quantity: str
+    unit_of_measure: str
+    range: tuple[float, float]
+    reading: str  # figure: "frequency", "Q1.idle_dissipation"; "idle_voltage" at `net`
+    reading_unit: str
+    net: str | None = None
+    target: float
+    within: float
+    resolution: float
+    coarse_step: float
+    start: float | None = None  # None: where the part stands untrimmed
+    condition: str
+    state: str
+    most_turns: int = 40
+    meter: Meter = Meter()
+    setting_error: Mapping[str, Any] | float = 0.0
+    order: int = 0
+    source: str | None = None
+    confidence: Literal["measured", "sheet", "typical", "guess"] | None = None
+
+    @property
+    def address(self) -> str:
+        """What is adjusted: "P1.setting"."""
+        return f"{self.part}.{self.quantity}"
+
+
 class Study(Frozen):
     """Everything a run needs, checked."""
 
@@ -194,5 +240,6 @@ class Study(Frozen):
     run: Run
     lots: Lots | None = None  # none: every unit from reels of its own
     mission: Mission | None = None
+    trims: Mapping[str, Trim] = {}  # in the order in which they are done
     expected_frequency: tuple[Frequency, Frequency] | None = None
     kind: Literal["self-oscillating", "driven"] = "self-oscillating"

@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Iterator, Mapping, Sequence
-from dataclasses import dataclass, field
+from dataclasses import dataclass, field, replace
 from functools import lru_cache
 from pathlib import Path
 
@@ -23,7 +23,9 @@ from tolsim.nominals import CaseName, PreparedCase, case_of
 from tolsim.spread.part_values import part_values
 from tolsim.spread.sampling import Draws, Factor, draw
 from tolsim.spread.table import SpreadTable
-from tolsim.verdicts import judge
+from tolsim.trim.drawn import trim_draws
+from tolsim.trim.session import Trimmed, joined, trim_figures, trim_outcomes
+from tolsim.verdicts import judge, judged_at_bench
 
 
 @dataclass(frozen=True)
@@ -54,7 +56,9 @@ def evaluate(plan: Plan, first: int, count: int, block: int) -> Chunk:
     many blocks are evaluated together.
     """
     draws = draw(plan.factors, plan.study.run.seed, first, -(-count // block) * block)
-    cases = [case_rows(plan, name, draws, block) for name in plan.cases]
+    trims = [trim_drawn(plan, draws.rows(row, block)) for row in range(0, draws.count, block)]
+    draws = replace(draws, moved=joined(trims))
+    cases = [case_rows(plan, name, draws, trims) for name in plan.cases]
     tables = []
     for place, blocks in enumerate(zip(*cases, strict=True)):
         tables += [table.head(count - place * block) for table in blocks]
@@ -88,8 +92,18 @@ def store_chunk(folder: Path, chunk: Chunk) -> int:
     return len(chunk.factors)
 
 
+def trim_drawn(plan: Plan, draws: Draws) -> Trimmed:
+    """Trim the drawn units of a plan; `solve_case` wants the draws with what was moved."""
+    return trim_draws(plan.study, plan.tables, plan.cases, plan.choices, draws)
+
+
+def built(plan: Plan, draws: Draws) -> Draws:
+    """The drawn units as they leave the bench."""
+    return replace(draws, moved=trim_drawn(plan, draws).moved)
+
+
 def solve_case(plan: Plan, name: CaseName, draws: Draws) -> tuple[Case, Solution]:
-    """Orbits of the drawn units in one case, passive parts as warm as they run."""
+    """Orbits of units as `built` leaves them, in one case, passive parts as warm as they run."""
     case = _drawn_case(plan, name, draws)
     compass, steps = plan.cases[name].compass, plan.study.run.steps_per_cycle
     choice = plan.choices.get(name)
@@ -118,8 +132,11 @@ def case_figures(
     return figures
 
 
-def case_rows(plan: Plan, name: CaseName, draws: Draws, block: int) -> Iterator[pd.DataFrame]:
-    """Rows of the drawn units in one case, one table per block."""
+def case_rows(
+    plan: Plan, name: CaseName, draws: Draws, trims: Sequence[Trimmed]
+) -> Iterator[pd.DataFrame]:
+    """Rows of the drawn units in one case, one table per block; `trims` likewise."""
+    block = draws.count // len(trims)
     case = _drawn_case(plan, name, draws)
     compass, steps = plan.cases[name].compass, plan.study.run.steps_per_cycle
     choice = plan.choices.get(name)
@@ -130,12 +147,15 @@ def case_rows(plan: Plan, name: CaseName, draws: Draws, block: int) -> Iterator[
     for place, solution in enumerate(solutions):
         own = draws.rows(place * block, block)
         units = np.arange(place * block, place * block + own.count)
-        yield _rows(plan, name, own, case.take(units), solution)
+        yield _rows(plan, name, own, case.take(units), solution, trims[place])
 
 
-def _rows(plan: Plan, name: CaseName, draws: Draws, case: Case, solution: Solution) -> pd.DataFrame:
+def _rows(
+    plan: Plan, name: CaseName, draws: Draws, case: Case, solution: Solution, trimmed: Trimmed
+) -> pd.DataFrame:
     """Rows of solved units."""
     figures = case_figures(plan, name, draws, case, solution)
+    figures |= trim_figures(plan.study, name, trimmed)
     verdicts = judge(
         plan.study,
         *name,
@@ -143,6 +163,7 @@ def _rows(plan: Plan, name: CaseName, draws: Draws, case: Case, solution: Soluti
         figures,
         plan.cases[name].figures,
     )
+    verdicts = judged_at_bench(verdicts, trim_outcomes(plan.study, name, trimmed))
     figures.pop("mode_match", None)
     condition, state = name
     columns: dict[str, object] = {
@@ -166,7 +187,7 @@ def _status_word(code: int) -> str:
 
 def figure_columns(plan: Plan) -> Sequence[str]:
     """Every figure any case can have, in one order for all chunks."""
-    names: dict[str, None] = {}
+    names: dict[str, None] = {}  # those of trims among them: the nominal unit is trimmed too
     for prepared in plan.cases.values():
         names |= dict.fromkeys(name for name in prepared.figures if name != "mode_match")
     return tuple(names)

@@ -1,7 +1,7 @@
 """The figures tolsim computes: names, units of measure, ratings they are compared with.
 
-A figure belongs to the whole stage ("frequency"), to a rail, or to every part of a kind
-("capacitor.voltage_peak").  In the rows of results its column is the bare name for the
+A figure belongs to the whole stage ("frequency"), to a rail, to a trim, or to every part of a
+kind ("capacitor.voltage_peak").  In the rows of results its column is the bare name for the
 stage and "REF.name" for a part: "frequency", "C1.voltage_peak".
 """
 
@@ -13,6 +13,18 @@ from typing import Final, Literal
 
 STAGE: Final = "stage"
 RAIL: Final = "rail"
+TRIM: Final = "trim"
+IDLE_VOLTAGE: Final = "idle_voltage"
+"""What a trim may read beside figures: the voltage of a net at the bias point."""
+
+TRIM_STRAINS: Final[Mapping[str, str]] = {
+    "idle_dissipation": "trim_idle_dissipation",
+    "drain_peak": "trim_drain_peak",
+    "gate_peak": "trim_gate_peak",
+    "dissipation": "trim_dissipation",
+    "junction_temperature": "trim_junction_temperature",
+}
+"""Figures of a MOSFET whose largest value while an operator trims is a figure of its own."""
 
 
 @dataclass(frozen=True)
@@ -28,7 +40,7 @@ class FigureInfo:
     unit_of_measure : str
         Of the stored float; "1" for a pure number.
     owner : str
-        "stage", "rail" or a part kind.
+        "stage", "rail", "trim" or a part kind.
     rating : str or None
         Key of `tolsim.parts.Rating` the figure is compared with.
     worse : {"high", "low"}
@@ -92,6 +104,20 @@ _CURRENT_RMS = ("current_rms", "RMS current", "A")
 _DISSIPATION = ("dissipation", "Dissipation", "W", "power", "Mean power turned into heat.")
 _BODY = ("body_temperature", "Body temperature", "degC", "temperature")
 _LARGEST = "Largest magnitude within a cycle, DC included."
+
+
+def _strains() -> list[tuple[str, str, str, str | None, str]]:
+    """Largest values while trimming: name, title, unit of measure, rating, sentence."""
+    words = (
+        ("idle_dissipation", "Idle dissipation while trimmed", "W", None),
+        ("drain_peak", "Peak drain voltage while trimmed", "V", "drain_voltage"),
+        ("gate_peak", "Peak gate voltage while trimmed", "V", "gate_voltage"),
+        ("dissipation", "Dissipation while trimmed", "W", "power"),
+        ("junction_temperature", "Junction while trimmed", "degC", "junction_temperature"),
+    )
+    about = "Largest on the operator's way; running figures only if he reads on the orbit."
+    return [(TRIM_STRAINS[name], title, unit, rating, about) for name, title, unit, rating in words]
+
 
 _PARTS: Final = [
     *_of(
@@ -181,6 +207,15 @@ _PARTS: Final = [
             "At the heat balance, resistance and threshold following it.",
         ),
         ("idle_dissipation", "Idle dissipation", "W", None, "At the bias point."),
+        *_strains(),
+    ),
+    *_of(
+        TRIM,
+        ("trim_position", "Final position", "1", None, "Of the adjuster, as share of its range."),
+        ("trim_turns", "Turns", "1", None, "How often the operator turned the adjuster."),
+        ("trim_error", "Error after trim", "1", None, "True reading over target, less 1."),
+        ("trim_before", "Error before trim", "1", None, "The same of the untrimmed unit."),
+        ("trim_slope", "Slope", "1", None, "Reading over target per whole range of the adjuster."),
     ),
 ]
 
@@ -216,7 +251,7 @@ def targets(
     refs : sequence of str
         Parts or rails named; none named means the stage and every part that has the figure.
     kinds : mapping
-        Owner of every part and rail: {"C1": "capacitor", "vdd": "rail"}.
+        Owner of every part, rail and trim: {"C1": "capacitor", "vdd": "rail"}.
 
     Returns
     -------

@@ -10,16 +10,19 @@ from joblib import Parallel, cpu_count, delayed, parallel_config
 
 from tolsim.circuit.bias import bias_point
 from tolsim.circuit.continuation import Compass, aim, solve_units
+from tolsim.circuit.devices import Floats
 from tolsim.circuit.nominal import Nominal, find_nominal, frame_of
 from tolsim.circuit.orbit import Status
 from tolsim.circuit.startup import modes
-from tolsim.circuit.thermal import Case, mosfets
+from tolsim.circuit.thermal import Case, heats
 from tolsim.design import Study
 from tolsim.errors import RunError
 from tolsim.figures import measure_orbits, measure_start
 from tolsim.self_heating import Heat, Rises, rises_of, settle, warmed_parts
 from tolsim.spread.part_values import Values, nominal_values
 from tolsim.spread.table import SpreadTable
+from tolsim.trim.nominal_unit import trim_nominal
+from tolsim.trim.session import Trimmed, trim_figures
 
 CaseName = tuple[str, str]  # condition, state
 
@@ -47,8 +50,7 @@ def cases_of(study: Study) -> tuple[CaseName, ...]:
 
 def case_of(study: Study, values: Values) -> Case:
     """Units of a study as the circuit core takes them."""
-    heated = any(part.thermal_resistance for part in mosfets(study.design).values())
-    return Case(study.design, values, heated)
+    return Case(study.design, values, heats(study.design))
 
 
 @dataclass(frozen=True)
@@ -78,26 +80,38 @@ def prepare(
     RunError
         If the nominal unit has no periodic orbit in any case.
     """
+    trimmed = trim_nominal(study, tables)
     names = cases_of(study)
     states = tuple(dict.fromkeys(state for _, state in names))
     with parallel_config(backend="loky", inner_max_num_threads=1):
         work = Parallel(n_jobs=min(jobs or cpu_count(), len(states)))
-        by_state = dict(
-            zip(states, work(delayed(_find_state)(study, tables, s) for s in states), strict=True)
-        )
+        looked_for = work(delayed(_find_state)(study, tables, s, trimmed.moved) for s in states)
+        by_state = dict(zip(states, looked_for, strict=True))
     if all(found.leader is None for found in by_state.values()):
         raise RunError(_no_orbit({k: v for f in by_state.values() for k, v in f.nominals.items()}))
     stand_in = next(found.leader for found in by_state.values() if found.leader is not None)
     with parallel_config(backend="loky", inner_max_num_threads=1):
         work = Parallel(n_jobs=min(jobs or cpu_count(), len(states)))
         prepared = work(
-            delayed(_prepare_state)(study, tables, by_state[state], stand_in) for state in states
+            delayed(_prepare_state)(study, tables, by_state[state], stand_in, trimmed.moved)
+            for state in states
         )
     merged = {name: case for part in prepared for name, case in part.items()}
-    return {name: merged[name] for name in names}
+    return {name: _with_trims(study, name, merged[name], trimmed) for name in names}
 
 
-def _find_state(study: Study, tables: Mapping[str, SpreadTable], state: str) -> _StateFound:
+def _with_trims(
+    study: Study, name: CaseName, prepared: PreparedCase, trimmed: Trimmed
+) -> PreparedCase:
+    """Add what was read while the nominal unit was trimmed in this case."""
+    figures = trim_figures(study, name, trimmed)
+    plain = {column: float(value[0]) for column, value in figures.items()}
+    return replace(prepared, figures={**prepared.figures, **plain})
+
+
+def _find_state(
+    study: Study, tables: Mapping[str, SpreadTable], state: str, moved: Mapping[str, Floats]
+) -> _StateFound:
     """Nominal units of one load state."""
     steps = study.run.steps_per_cycle
     found: dict[CaseName, Nominal] = {}
@@ -105,7 +119,7 @@ def _find_state(study: Study, tables: Mapping[str, SpreadTable], state: str) -> 
     for name in cases_of(study):
         if name[1] != state:
             continue
-        case = case_of(study, nominal_values(study, tables, *name))
+        case = case_of(study, nominal_values(study, tables, *name, moved=moved))
         nominal = None if leader is None else _follow(case, leader, steps)
         found[name] = nominal or find_nominal(case, steps)
         if leader is None and found[name].found:
@@ -114,7 +128,11 @@ def _find_state(study: Study, tables: Mapping[str, SpreadTable], state: str) -> 
 
 
 def _prepare_state(
-    study: Study, tables: Mapping[str, SpreadTable], found: _StateFound, stand_in: Compass
+    study: Study,
+    tables: Mapping[str, SpreadTable],
+    found: _StateFound,
+    stand_in: Compass,
+    moved: Mapping[str, Floats],
 ) -> dict[CaseName, PreparedCase]:
     """Aim from every nominal orbit of a state; one that was not found is looked for once more."""
     steps = study.run.steps_per_cycle
@@ -123,7 +141,7 @@ def _prepare_state(
     for name, nominal in found.nominals.items():
         again = nominal if nominal.found else _follow(nominal.case, leader, steps)
         cold = again or nominal
-        warm, heat = _warmed(study, tables, name, cold, leader)
+        warm, heat = _warmed(study, tables, name, cold, leader, moved)
         prepared[name] = _prepared(study, cold, warm, heat, leader)
     return prepared
 
@@ -134,6 +152,7 @@ def _warmed(
     name: CaseName,
     cold: Nominal,
     leader: Compass,
+    moved: Mapping[str, Floats],
 ) -> tuple[Nominal, Heat]:
     """The nominal unit with its passive parts at their own temperature."""
     refs = warmed_parts(study, tables)
@@ -145,7 +164,7 @@ def _warmed(
         return rises_of(study.design, refs, figures), nominal
 
     def warmed(assumed: Rises) -> tuple[Rises, Nominal] | None:
-        case = case_of(study, nominal_values(study, tables, *name, assumed))
+        case = case_of(study, nominal_values(study, tables, *name, assumed, moved))
         nominal = _follow(case, leader, study.run.steps_per_cycle)
         return None if nominal is None else found(nominal)
 

@@ -13,7 +13,7 @@ from tolsim.circuit.nominal import Nominal
 from tolsim.circuit.orbit import Solution
 from tolsim.circuit.thermal import Case, mosfets
 from tolsim.design import Study
-from tolsim.evaluation import Plan, solve_case
+from tolsim.evaluation import Plan, built, solve_case
 from tolsim.figures.waves import Waves
 from tolsim.parts import Inductor
 from tolsim.quantity import show
@@ -109,6 +109,7 @@ def _waveforms(plan: Plan) -> Iterator[Waveform]:
     """Drain and gate of the first transistor and the hardest-worked coil, in every state."""
     condition = reference_condition(plan.study)
     draws = draw(plan.factors, plan.study.run.seed, 0, min(WAVE_UNITS, plan.study.run.units))
+    draws = built(plan, draws)
     for state in plan.study.states:
         nominal = plan.cases[(condition, state)].nominal
         if not nominal.found:

@@ -18,7 +18,7 @@ from tolsim.circuit.devices import Floats
 from tolsim.circuit.orbit import Solution, Status, joined
 from tolsim.circuit.thermal import Case
 from tolsim.circuit.transient import march
-from tolsim.evaluation import Plan, solve_case
+from tolsim.evaluation import Plan, built, solve_case
 from tolsim.spread.sampling import draw_chosen
 
 LEAST_UNITS = 4  # per case
@@ -81,7 +81,7 @@ def _sample(plan: Plan) -> _Sample | None:
     units = plan.study.run.units
     count = min(units, MOST_UNITS, max(LEAST_UNITS, round(SHARE * units)))
     numbers = np.unique(np.linspace(0, units - 1, count).astype(int))
-    draws = draw_chosen(plan.factors, plan.study.run.seed, numbers)
+    draws = built(plan, draw_chosen(plan.factors, plan.study.run.seed, numbers))
     cases, solutions, scales, lead = [], [], [], 0
     for name, prepared in plan.cases.items():
         frame = prepared.compass.nominal.frame

@@ -17,10 +17,11 @@ from numpy.typing import NDArray
 from tolsim import __version__
 from tolsim.answers.bounds import Bound, bounds
 from tolsim.answers.results import STUDY_FILE, TABLES_FOLDER, Results
+from tolsim.answers.trims import trim_sentence
 from tolsim.answers.wording import shown
 from tolsim.circuit.orbit import Status
 from tolsim.errors import RequestError
-from tolsim.evaluation import Plan, solve_case
+from tolsim.evaluation import Plan, built, solve_case
 from tolsim.nominals import CaseName, prepare
 from tolsim.presentation import Signal, signals
 from tolsim.quantity import show
@@ -75,6 +76,7 @@ def replay_unit(folder: Path | str, number: int) -> Replay:
     draws = draw(names, seed, number, 1)
     _compare_with_stored(results, draws, number)
     plan = Plan(study, opened.tables, names, prepare(study, opened.tables, jobs=None))
+    draws = built(plan, draws)
     found = {}
     for name, prepared in plan.cases.items():
         case, solution = solve_case(plan, name, draws)
@@ -168,6 +170,11 @@ def _outcome_story(opened: StudyFile, rows: pd.DataFrame, broken: list[_Broken])
     story = []
     for row in rows.to_dict("records"):
         where = f"{row['condition']} / {row['state']}"
+        story += [
+            trim_sentence(opened.study, name, row)
+            for name, trim in opened.study.trims.items()
+            if (trim.condition, trim.state) == (row["condition"], row["state"])
+        ]
         if row["verdict"] == "pass":
             story.append(f"{where}: {row['outcome']}, within every limit.")
             continue

@@ -16,12 +16,15 @@ from tolsim.circuit.bulk.choice import Choice, choose
 from tolsim.circuit.bulk.plan import prepare_fast
 from tolsim.circuit.bulk.reference import NoReferenceError
 from tolsim.circuit.bulk.unit_table import TopologyError
+from tolsim.circuit.devices import Floats
 from tolsim.circuit.thermal import Case
 from tolsim.design import Study
 from tolsim.nominals import CaseName, PreparedCase, case_of
 from tolsim.spread.part_values import part_values
-from tolsim.spread.sampling import Factor, draw
+from tolsim.spread.sampling import Draws, Factor, draw
 from tolsim.spread.table import SpreadTable
+from tolsim.trim.drawn import trim_draws
+from tolsim.trim.session import is_idle
 
 PILOTS = 256
 
@@ -56,21 +59,44 @@ def choose_solvers(
         }
         for state in states
     }
+    alone = [replace(factor, every=1) for factor in factors]  # pilots show the spread of all lots
+    draws = draw(alone, study.run.seed, 0, PILOTS)
+    draws = replace(draws, moved=_moved(study, tables, cases, own, draws))
     with parallel_config(backend="loky", inner_max_num_threads=1):
         work = Parallel(n_jobs=min(jobs or cpu_count(), len(states)))
-        found = work(delayed(_choose_in_state)(study, tables, factors, own[s]) for s in states)
+        found = work(delayed(_choose_in_state)(study, tables, draws, own[s]) for s in states)
     return {name: choice for part in found for name, choice in part.items()}
+
+
+def _moved(
+    study: Study,
+    tables: Mapping[str, SpreadTable],
+    cases: Mapping[CaseName, PreparedCase],
+    own: Mapping[str, Mapping[CaseName, PreparedCase]],
+    draws: Draws,
+) -> Mapping[str, Floats]:
+    """What the operator moves in the pilot units.
+
+    Where he reads on the orbit, the solver of the bench case is chosen on pilots that are not
+    trimmed yet: their spread is the wider one, so it serves all that he may pass through.
+    """
+    benches = [
+        (trim.condition, trim.state) for trim in study.trims.values() if not is_idle(trim.reading)
+    ]
+    choices: dict[CaseName, Choice] = {}
+    for name in dict.fromkeys(benches):
+        if name in own[name[1]]:
+            choices |= _choose_in_state(study, tables, draws, {name: own[name[1]][name]})
+    return trim_draws(study, tables, cases, choices, draws).moved
 
 
 def _choose_in_state(
     study: Study,
     tables: Mapping[str, SpreadTable],
-    factors: Sequence[Factor],
+    draws: Draws,
     cases: Mapping[CaseName, PreparedCase],
 ) -> dict[CaseName, Choice]:
     """Choose in the first condition, follow in the others."""
-    alone = [replace(factor, every=1) for factor in factors]  # pilots show the spread of all lots
-    draws = draw(alone, study.run.seed, 0, PILOTS)
     found: dict[CaseName, Choice] = {}
     first: Choice | None = None
     for name, prepared in cases.items():

@@ -15,7 +15,7 @@ from numpy.typing import NDArray
 from tolsim.answers.bounds import Bound, applies, bounds
 from tolsim.circuit.orbit import Status
 from tolsim.design import Study
-from tolsim.figure_names import STAGE
+from tolsim.figure_names import STAGE, TRIM
 
 Floats = NDArray[np.float64]
 Words = NDArray[np.str_]
@@ -69,6 +69,19 @@ def judge(
     failed |= np.any([hit for _, hit in broken], axis=0) if broken else False
     verdict = np.where(failed, "fail", np.where(outcome == "undecided", "undecided", "pass"))
     return CaseVerdicts(outcome, verdict.astype(WORD_LENGTH), _numbers(broken, len(status)))
+
+
+def judged_at_bench(verdicts: CaseVerdicts, said: Mapping[str, Flags]) -> CaseVerdicts:
+    """Verdicts after what the operator who trimmed the units says: outcome to flags (N,).
+
+    What he puts aside fails, whatever it does else; what he leaves open may have failed already.
+    """
+    outcome, verdict = verdicts.outcome.copy(), verdicts.verdict.copy()
+    for word, flags in said.items():
+        hits = flags & (verdict == "pass") if word == "undecided" else flags
+        outcome[hits] = word
+        verdict[hits] = word if word == "undecided" else "fail"
+    return CaseVerdicts(outcome, verdict, verdicts.failed_limits)
 
 
 def _orbit_outcomes(status: NDArray[np.intp], *, starts_here: bool) -> Words:
@@ -161,7 +174,7 @@ def _limit_outcomes(outcome: Words, broken: list[tuple[Bound, Flags]]) -> Words:
     kinds: tuple[tuple[str, Callable[[Bound], bool]], ...] = (
         ("starts late", lambda bound: bound.figure.name == "start_time"),
         ("out of band", lambda bound: bound.figure.name == "frequency"),
-        ("over stress", lambda bound: bound.figure.owner != STAGE),
+        ("over stress", lambda bound: bound.figure.owner not in (STAGE, TRIM)),
     )
     for word, belongs in kinds:
         hits = [hit for bound, hit in broken if belongs(bound)]

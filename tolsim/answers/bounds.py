@@ -5,7 +5,7 @@ from __future__ import annotations
 from dataclasses import dataclass
 
 from tolsim.design import Limit, Study
-from tolsim.figure_names import RAIL, STAGE, FigureInfo, figure_of
+from tolsim.figure_names import RAIL, STAGE, TRIM, FigureInfo, figure_of
 
 
 @dataclass(frozen=True)
@@ -33,9 +33,11 @@ class Bound:
 
 
 def owner_of(study: Study, part: str) -> str:
-    """Owner of the figures of `part`: "stage" (empty name), "rail" or the kind of part."""
+    """Owner of the figures of `part`: "stage" (empty name), "rail", "trim" or the kind of part."""
     if not part:
         return STAGE
+    if part in study.trims:
+        return TRIM
     if part in study.design.rails:
         return RAIL
     return study.design.parts[part].kind
@@ -63,7 +65,7 @@ def bounds(study: Study) -> tuple[Bound, ...]:
     the study check has already refused it for parts it does name.
     """
     found: list[Bound] = []
-    everyone = ["", *study.design.rails, *study.design.parts]
+    everyone = ["", *study.design.rails, *study.design.parts, *study.trims]
     for index, limit in enumerate(study.limits):
         for part in limit.parts or everyone:
             figure = figure_of(owner_of(study, part), limit.figure)
@@ -84,7 +86,8 @@ def bounds(study: Study) -> tuple[Bound, ...]:
 def named_figure(study: Study, column: str) -> tuple[str, FigureInfo] | None:
     """Part and figure of a column; None for a column that is no known figure."""
     part, _, name = column.rpartition(".")
-    if part and part not in study.design.parts and part not in study.design.rails:
+    known = (study.design.parts, study.design.rails, study.trims)
+    if part and not any(part in names for names in known):
         return None
     figure = figure_of(owner_of(study, part), name)
     return None if figure is None else (part, figure)

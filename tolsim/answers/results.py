@@ -60,6 +60,19 @@ not known (an interval that this many units cannot close).  Every `low`, `high` 
                 ranked, else ""), remainder {share, low, high}, factors [{factor, share, low,
                 high, distinguishable, rank_correlation, rank_low, rank_high}], largest share
                 first}]
+``trim``        one entry per trim, in the order in which they are done (empty without):
+                [{trim, part, quantity, unit_of_measure, range, resolution, reading,
+                reading_title, reading_unit, target, within, condition, state (the bench),
+                endings {set, too_coarse, exhausted, no_reading, unsettled} (units),
+                exhausted_share {share, low, high}, at_low_end (units exhausted there),
+                first_not_set, nominal (position of the nominal unit), position, turns,
+                error (true reading over target, less 1, of units that were set), before (the
+                same of untrimmed units), needed_range [from, to] (99 % of the units set end
+                there), needed_resolution (largest step with which 99 % can be set),
+                strains [{part, figure, title, unit_of_measure, rating, p50, p99, highest}] (on
+                the operator's way), drift [{condition, state, and the keys of a spread}] (reading
+                over target, less 1)}]; position, turns, error and before are spreads {low, p5,
+                p50, p95, high, width}, 99 % of units between low and high
 ``quality``     {energy_balance {worst, median}, orbit_residual {worst, median},
                 solved_by {way: rows}, solvers [{condition, state, solver, harmonics (0 for
                 shooting), frequency_error, peak_error, rms_error (largest on the pilot units),

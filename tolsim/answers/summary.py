@@ -18,6 +18,7 @@ from tolsim.answers.lots import lots_entry
 from tolsim.answers.mission import mission_entry
 from tolsim.answers.ranking import rankings
 from tolsim.answers.supply_words import supply_entries
+from tolsim.answers.trims import trim_record
 from tolsim.answers.unit_files import Columns, UnitRows
 from tolsim.design import Study
 from tolsim.figure_names import FigureInfo
@@ -81,6 +82,7 @@ def summarise(
         "outcomes": _outcomes(rows, failed, counting),
         "limits": _limits(study, rows, counting),
         "figures": _figures(study, rows, nominal, counting),
+        "trim": trim_record(study, rows, nominal, counting.interval),
         "mission": mission_entry(study, rows, counting, nominal),
         "lots": lots_entry(study, rows, unit_failed, unit_undecided),
         "ranking": rankings(study, rows, factors, unit_failed, unit_undecided),

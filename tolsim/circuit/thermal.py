@@ -28,6 +28,11 @@ def mosfets(design: Design) -> dict[str, Mosfet]:
     return {ref: part for ref, part in design.parts.items() if isinstance(part, Mosfet)}
 
 
+def heats(design: Design) -> bool:
+    """Whether any junction follows the losses of its transistor."""
+    return any(part.thermal_resistance for part in mosfets(design).values())
+
+
 def hot_values(design: Design, values: PartValues, junctions: Mapping[str, Floats]) -> PartValues:
     """Part values with the MOSFET parameters moved from 25 degC to their junction temperature."""
     hot = dict(values)

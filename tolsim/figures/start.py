@@ -4,9 +4,10 @@ from __future__ import annotations
 
 import numpy as np
 
-from tolsim.circuit.bias import bias_point
+from tolsim.circuit.bias import Bias, bias_point
 from tolsim.circuit.critical import Critical
 from tolsim.circuit.devices import Floats
+from tolsim.circuit.network import Network
 from tolsim.circuit.nominal import Nominal
 from tolsim.circuit.startup import critical_point, modes, noise_amplitude, resemblance, start_margin
 from tolsim.circuit.thermal import Case, mosfets
@@ -40,6 +41,12 @@ def measure_start(case: Case, nominal: Nominal) -> dict[str, Floats]:
         "start_time": np.where(np.isfinite(time), time, np.nan),
         "mode_match": resemblance(network, lead.vector, nominal.modes.vector[0]),
     }
+    figures |= measure_idle(case, network, bias)
+    return {name: values * unsettled for name, values in figures.items()}
+
+
+def measure_idle(case: Case, network: Network, bias: Bias) -> dict[str, Floats]:
+    """Idle currents and losses of every unit at a bias point, each (N,)."""
     port_current, *_ = network.devices.evaluate(bias.v)
     idle_current = np.zeros(case.units)
     idle_power = np.zeros(case.units)
@@ -50,11 +57,11 @@ def measure_start(case: Case, nominal: Nominal) -> dict[str, Floats]:
         # a supply at its limit lowers its voltage
         volts = supply.volts - channel.get(f"{rail}:limit", np.zeros((1, case.units)))[0]
         idle_power = idle_power + volts * current
-    figures |= {"idle_current": idle_current, "idle_dissipation": idle_power}
+    figures = {"idle_current": idle_current, "idle_dissipation": idle_power}
     for ref in mosfets(case.design):
         current = channel[f"{ref}:forward"][0] + channel[f"{ref}:reverse"][0]
         figures[f"{ref}.idle_dissipation"] = current * bias.v[:, network.ports[f"{ref}:ds"]]
-    return {name: values * unsettled for name, values in figures.items()}
+    return figures
 
 
 def _nominal_critical(nominal: Nominal) -> Critical | None:

@@ -13,6 +13,7 @@ from __future__ import annotations
 import math
 from collections.abc import Callable, Mapping
 from dataclasses import dataclass
+from types import MappingProxyType
 
 import numpy as np
 from numpy.typing import NDArray
@@ -82,7 +83,8 @@ def part_values(
             return draws.values[:, column]
         return law.ppf(draws.u[:, column])  # same rank, the law of this state or condition
 
-    return _Maker(study, tables, condition, state, draws.count, drawn, rises or {}).values()
+    values = _Maker(study, tables, condition, state, draws.count, drawn, rises or {}).values()
+    return adjusted(study, values, draws.moved)
 
 
 def nominal_values(
@@ -91,16 +93,43 @@ def nominal_values(
     condition: str,
     state: str,
     rises: Mapping[str, float] | None = None,
+    moved: Mapping[str, Floats] = MappingProxyType({}),
 ) -> Values:
     """Values of the nominal unit, arrays (1,): no deviation, laws of conditions at their median.
 
-    Slopes, positions and ageing rates are at their median too.
+    Slopes, positions and ageing rates are at their median too.  `moved` is as in `Draws`.
     """
 
     def drawn(_: str, aspect: str, law: Law) -> Floats:
         return np.zeros(1) if aspect in ("tolerance", "lot") else law.ppf(np.full(1, 0.5))
 
-    return _Maker(study, tables, condition, state, 1, drawn, rises or {}).values()
+    values = _Maker(study, tables, condition, state, 1, drawn, rises or {}).values()
+    return adjusted(study, values, moved)
+
+
+def adjusted(study: Study, values: Values, moved: Mapping[str, Floats]) -> Values:
+    """Values after trimming: every trimmed quantity times the factor the operator moved it by.
+
+    So it goes on following its temperature and ageing laws from where he left it.
+    """
+    changed = values | {key: values[key] * factor for key, factor in moved.items()}
+    for address in moved:
+        reference = address.partition(".")[0]
+        part = study.design.parts.get(reference)
+        if part is not None:
+            changed = within_reach(reference, part, changed)
+    return changed
+
+
+def within_reach(reference: str, part: AnyPart, values: Values) -> Values:
+    """The same values, no coupling beyond full and no wiper in the end zones."""
+    if isinstance(part, Coupling | Load):
+        key = f"{reference}.coupling"
+        values[key] = np.clip(values[key], -HIGHEST_COUPLING, HIGHEST_COUPLING)
+    if isinstance(part, Potentiometer):
+        key = f"{reference}.setting"
+        values[key] = np.clip(values[key], part.end_zone, 1.0 - part.end_zone)
+    return values
 
 
 @dataclass
@@ -153,13 +182,7 @@ class _Maker:
             f"{reference}.{quantity}": self.spread(reference, quantity, value, part.reel)
             for quantity, value in nominal.items()
         }
-        if isinstance(part, Coupling | Load):
-            key = f"{reference}.coupling"
-            values[key] = np.clip(values[key], -HIGHEST_COUPLING, HIGHEST_COUPLING)
-        if isinstance(part, Potentiometer):
-            key = f"{reference}.setting"
-            values[key] = np.clip(values[key], part.end_zone, 1.0 - part.end_zone)
-        return values
+        return within_reach(reference, part, values)
 
     def _of_rail(self, reference: str, rail: Rail) -> Values:
         voltage = self.spread(reference, "voltage", rail.voltage, None)

@@ -13,14 +13,15 @@ from __future__ import annotations
 
 import hashlib
 from collections.abc import Iterator, Mapping, Sequence
-from dataclasses import dataclass
+from dataclasses import dataclass, field
 from functools import cached_property
+from typing import Any
 
 import numpy as np
 from numpy.random import Philox
 from numpy.typing import NDArray
 
-from tolsim.design import Study
+from tolsim.design import Study, Trim
 from tolsim.errors import Mistake
 from tolsim.laws import Law
 from tolsim.laws.reading import read_law
@@ -29,6 +30,14 @@ from tolsim.spread.table import ASPECTS, Aspect, SpreadTable
 
 CONDITION_UNITS: Mapping[str, str] = {"ambient": "degC", "supply": "1", "age": "h"}
 """What a condition may leave to chance, with its unit of measure."""
+
+TRIM_ERRORS: Mapping[str, Aspect] = {
+    "meter gain": "lot",
+    "meter offset": "lot",
+    "meter noise": "tolerance",
+    "setting error": "tolerance",
+}
+"""What a trim may leave to chance; a meter's gain and offset are shared by a lot of units."""
 
 _OUTPUTS_PER_STEP = 4  # numbers Philox makes per step of its counter
 
@@ -49,7 +58,8 @@ class Factor:
     aspect : str
         "tolerance", "lot", "temperature", "ageing" or "condition".
     table : str
-        Name of the spread table its law comes from; the condition, for conditions.
+        Name of the spread table its law comes from; the condition, for conditions; empty for
+        trims.
     every : int
         Successive units that share one draw: 1, or the units built from one reel.
     """
@@ -77,12 +87,15 @@ class Draws:
         Shares in the open interval (0, 1), uniform and independent.
     values : ndarray (count, k)
         The same draws as values: law.ppf(u).
+    moved : mapping of str to ndarray (count,)
+        Address of every trimmed quantity to the factor by which the operator moved it.
     """
 
     factors: tuple[Factor, ...]
     first: int
     u: NDArray[np.float64]
     values: NDArray[np.float64]
+    moved: Mapping[str, NDArray[np.float64]] = field(default_factory=dict)
 
     @property
     def names(self) -> tuple[str, ...]:
@@ -102,7 +115,8 @@ class Draws:
     def rows(self, begin: int, count: int) -> Draws:
         """Draws of `count` of the units, from row `begin` on."""
         chosen = slice(begin, begin + count)
-        return Draws(self.factors, self.first + begin, self.u[chosen], self.values[chosen])
+        moved = {address: factor[chosen] for address, factor in self.moved.items()}
+        return Draws(self.factors, self.first + begin, self.u[chosen], self.values[chosen], moved)
 
 
 def factor_name(
@@ -143,7 +157,7 @@ def factors(study: Study, tables: Mapping[str, SpreadTable]) -> tuple[Factor, ..
     one factor per quantity in the same way.
     """
     found: dict[str, Factor] = {}
-    for factor in (*_of_parts(study, tables), *_of_conditions(study)):
+    for factor in (*_of_parts(study, tables), *_of_conditions(study), *_of_trims(study)):
         found.setdefault(factor.name, factor)
     return tuple(found.values())
 
@@ -198,6 +212,42 @@ def _of_conditions(study: Study) -> Iterator[Factor]:
             given = getattr(condition, quantity)
             if isinstance(given, Mapping):
                 yield Factor(quantity, condition_law(given, unit), "", quantity, "condition", name)
+
+
+def trim_factor(trim: str, error: str) -> str:
+    """Name of a factor of a trim; errors are those of `TRIM_ERRORS`."""
+    return f"trim {trim}: {error}"
+
+
+def _of_trims(study: Study) -> Iterator[Factor]:
+    for name, trim in study.trims.items():
+        for error, aspect in TRIM_ERRORS.items():
+            given = _stated(trim, error)
+            if isinstance(given, Mapping):
+                law = condition_law(given, trim_unit(trim, error))
+                every = study.lots.units_per_lot if study.lots and aspect == "lot" else 1
+                yield Factor(trim_factor(name, error), law, name, error, aspect, "", every)
+
+
+def _stated(trim: Trim, error: str) -> Any:  # noqa: ANN401 - a law or a number
+    """What the study says of an error of a trim."""
+    owner = trim.meter if error.startswith("meter") else trim
+    return getattr(owner, error.removeprefix("meter ").replace(" ", "_"))
+
+
+def trim_unit(trim: Trim, error: str) -> str:
+    """Unit of measure of an error of a trim."""
+    if error == "setting error":
+        return trim.unit_of_measure
+    return "1" if error == "meter gain" else trim.reading_unit
+
+
+def trim_error(study: Study, draws: Draws, trim: str, error: str) -> NDArray[np.float64]:
+    """One error of a trim in every drawn unit, (count,): a draw, or the number the study gives."""
+    column = draws.column.get(trim_factor(trim, error))
+    if column is not None:
+        return draws.values[:, column]
+    return np.full(draws.count, float(_stated(study.trims[trim], error)))
 
 
 def condition_law(given: Mapping[str, object], unit: str) -> Law:

@@ -8,6 +8,7 @@
     [states.full]                    title, starts_here, values, spread
     [conditions.hot]                 ambient, supply, age, since_soldering, board_rise
     [mission]                        years, conditions, states, activation_energy, reference
+    [trim.NAME]                      a part turned per unit until a reading meets its target
     [[limits]]                       figure, parts, at_most | at_least | share_of_rating, rule
 
 Quantities are texts with a unit of measure.  Every mistake of a file is told at once.
@@ -41,6 +42,7 @@ from tolsim.study.outline import Table, named_tables
 from tolsim.study.reading import Reading
 from tolsim.study.recording import Recording
 from tolsim.study.supplies import Recordings, supply_problems
+from tolsim.study.trims import read_trims
 
 _CONDITION_UNITS = {"ambient": "degC", "supply": "1", "age": "h"}
 _PLACE = re.compile(r" \(at (line \d+, column \d+|end of document)\)$")
@@ -69,6 +71,7 @@ class _Top(Frozen):
     parts: Mapping[str, Any] = {}
     states: Mapping[str, Any] = {}
     conditions: Mapping[str, Any] = {}
+    trim: Mapping[str, Any] = {}
     limits: tuple[Any, ...] = ()
 
 
@@ -192,6 +195,7 @@ def read_study(
     states = reading.states(outline)
     conditions = reading.conditions(outline)
     limits = reading.limits(outline)
+    trims = read_trims(outline, reading.problems)
     values = {name: state.values for name, state in states.items()}
     reading.problems += study_problems(outline)
     reading.problems += supply_problems(outline)
@@ -213,6 +217,7 @@ def read_study(
         run=top.run,
         lots=top.lots,
         mission=top.mission,
+        trims=trims,
         expected_frequency=top.expected_frequency,
         kind=top.kind,
     )

@@ -121,12 +121,12 @@ def _names(outline: Outline, limit: Table, place: str) -> Iterator[Problem]:
             if name not in valid:
                 yield outline.unknown(place, key, name, word, valid)
     for ref in texts(limit, "parts"):
-        if ref not in outline.parts and ref not in outline.rails:
+        if not any(ref in tables for tables in (outline.parts, outline.rails, outline.trims)):
             yield _unknown_part(outline, place, "parts", ref)
 
 
 def _unknown_part(outline: Outline, place: str, key: str, ref: str) -> Problem:
-    valid = [*outline.parts, *outline.rails]
+    valid = [*outline.parts, *outline.rails, *outline.trims]
     return outline.unknown(place, key, ref, "a part or rail of this study", valid)
 
 

@@ -7,7 +7,7 @@ file is told at once.  So they look at this outline of raw tables, not at the re
 from __future__ import annotations
 
 from collections.abc import Collection, Mapping, Sequence
-from dataclasses import dataclass
+from dataclasses import dataclass, field
 from typing import Any
 
 from tolsim.errors import Problem, nearest_name
@@ -32,9 +32,11 @@ class Outline:
     limits, rank : sequence
         Tables of limits, texts of rankings.
     kinds : mapping of str to str
-        Kind of every part whose kind is known, "rail" for rails.
+        Kind of every part whose kind is known, "rail" for rails, "trim" for trims.
     tables : mapping of str to collection of str
         Kinds that each known spread table is for.
+    trims : mapping of str to table
+        By name.
     """
 
     file: str
@@ -47,6 +49,7 @@ class Outline:
     rank: Sequence[str]
     kinds: Mapping[str, str]
     tables: Mapping[str, Collection[str]]
+    trims: Mapping[str, Table] = field(default_factory=dict)
 
     def problem(self, table: str, key: str, got: str, expected: str, cure: str = "") -> Problem:
         """A mistake of this file."""

@@ -10,6 +10,7 @@ from pydantic import BaseModel, ValidationError, create_model
 
 from tolsim.design import Condition, Limit, Rail, State
 from tolsim.errors import Mistake, Problem, nearest_name
+from tolsim.figure_names import TRIM
 from tolsim.laws.reading import read_law
 from tolsim.mosfet_sheet import DeviceModel
 from tolsim.parts import PART_KINDS, Mosfet, Part
@@ -54,6 +55,7 @@ class Reading:
     def outline(self, tables: Mapping[str, Collection[str]]) -> Outline:
         """The file as written, for checks between tables."""
         parts, rails = self.tables("parts"), self.tables("rails")
+        trims = self.tables("trim")
         limits = self.raw.get("limits", [])
         run = self.raw.get("run", {})
         driven = self.raw.get("kind") == "driven"
@@ -69,8 +71,9 @@ class Reading:
                 for limit in (limits if isinstance(limits, list) else [])
             ],
             rank=texts(run, "rank") if isinstance(run, dict) else [],
-            kinds=kinds_of(parts, rails, PART_KINDS),
+            kinds=dict.fromkeys(trims, TRIM) | kinds_of(parts, rails, PART_KINDS),
             tables=tables,
+            trims=trims,
         )
 
     def records(

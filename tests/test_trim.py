@@ -1,0 +1,384 @@
+"""Trims of whole units: closed forms at the bias point, an independent orbit, counted endings."""
+
+from dataclasses import dataclass, replace
+
+import numpy as np
+import pytest
+import quick_study
+import small_study
+from circuits import circuit_a
+from references import circuit_a as reference
+from references.orbit import transient
+from scipy.optimize import brentq
+
+from tolsim.design import Condition, Design, Rail, Run, State, Study, Trim
+from tolsim.errors import RunError, StudyError
+from tolsim.laws import LAWS
+from tolsim.nominals import prepare
+from tolsim.parts import Inductor, Mosfet, Potentiometer, Resistor
+from tolsim.replay import replay_unit
+from tolsim.run import run_study
+from tolsim.spread.part_values import part_values
+from tolsim.spread.sampling import draw, draw_chosen, factors, trim_error
+from tolsim.study import open_study
+from tolsim.trim.operator import TrimStatus
+from tolsim.trim.session import do_trims
+
+TABLES = small_study.tables(b"""
+[table.pot]
+title = "Potentiometer whose track drifts"
+for = "potentiometer"
+basis = "guess"
+source = "made for a test"
+[table.pot.resistance]
+tolerance = {law = "uniform", half_width = "20 %"}
+temperature = {law = "linear", slope = {law = "uniform", low = "-500 ppm/K", high = "500 ppm/K"}}
+[table.pot.setting]
+deviation = "absolute"
+tolerance = {law = "uniform", half_width = "10 %"}
+[table.r]
+title = "Resistor"
+for = "resistor"
+basis = "guess"
+source = "made for a test"
+[table.r.resistance]
+tolerance = {law = "uniform", half_width = "10 %"}
+temperature = {law = "linear", slope = "1000 ppm/K"}
+""")
+
+
+def trim(**changes: object):
+    keys = {
+        "part": "P1",
+        "quantity": "setting",
+        "unit_of_measure": "1",
+        "range": (0.01, 0.99),
+        "reading": "idle_voltage",
+        "reading_unit": "V",
+        "net": "w",
+        "target": 3.0,
+        "within": 0.01,
+        "resolution": 0.0005,
+        "coarse_step": 0.1,
+        "condition": "room",
+        "state": "normal",
+    }
+    return Trim(**{**keys, **changes})
+
+
+def divider(**changes: object):
+    """A potentiometer across 5 V, its wiper loaded by 10 kohm and a gate that takes no current."""
+    parts = {
+        "P1": Potentiometer(
+            kind="potentiometer",
+            nets=("gnd", "w", "v5"),
+            resistance=5e3,
+            setting=0.5,
+            spread="pot",
+        ),
+        "R1": Resistor(kind="resistor", nets=("w", "gnd"), resistance=10e3, spread="r"),
+        "L1": Inductor(kind="inductor", nets=("v5", "d"), inductance=1e-5, resistance=1.0),
+        "Q1": Mosfet(
+            kind="mosfet", drain="d", gate="w", model={"threshold": 4.0, "gain": 0.01, "cgs": 1e-9}
+        ),
+    }
+    return Study(
+        title="divider",
+        design=Design(parts=parts, rails={"v5": Rail(net="v5", voltage=5.0)}, leak=1e-14),
+        states={"normal": State(starts_here=True)},
+        conditions={"room": Condition(), "hot": Condition(ambient=85.0)},
+        limits=(),
+        run=Run(),
+        trims={"bias": trim(**changes)},
+    )
+
+
+@dataclass
+class Bench:
+    """Drawn units of a study that is read at the bias point only."""
+
+    study: Study
+    draws: object
+
+    def values(self, case, moved, *, runs):
+        assert not runs
+        return part_values(self.study, TABLES, *case, replace(self.draws, moved=moved))
+
+    def error(self, name, error):
+        return trim_error(self.study, self.draws, name, error)
+
+    def orbits(self, name, case):
+        raise AssertionError(name, case)
+
+    def bias_guess(self, _):
+        return None
+
+    def usual_slope(self, _):
+        return np.nan
+
+
+def session(study, numbers=range(40)):
+    draws = draw_chosen(factors(study, TABLES), 3, np.array(numbers))
+    return do_trims(study, Bench(study, draws)), draws
+
+
+def wiper(setting, track, load):
+    """Closed form: two resistances and a load."""
+    low = 1.0 / (1.0 / (setting * track) + 1.0 / load)
+    return 5.0 * low / (low + (1.0 - setting) * track)
+
+
+def test_a_loaded_divider_ends_where_the_closed_form_says():
+    study = divider()
+    done, draws = session(study)
+    log = done.logs["bias"]
+    values = part_values(study, TABLES, "room", "normal", draws)
+    track, load = values["P1.resistance"], values["R1.resistance"]
+    assert (log.status == TrimStatus.SET).all()
+    np.testing.assert_allclose(log.reading, wiper(log.position, track, load), rtol=1e-6)
+    np.testing.assert_allclose(log.before, wiper(values["P1.setting"], track, load), rtol=1e-6)
+    assert np.abs(log.reading - 3.0).max() <= 0.01
+    for unit in range(40):
+        one = track[unit], load[unit]
+        ideal = brentq(lambda s, one=one: wiper(s, *one) - 3.0, 0.01, 0.99)
+        assert abs(log.position[unit] - ideal) < 0.01 / 3.0
+
+
+def test_the_part_stays_where_it_was_left_and_drifts_from_there():
+    study = divider()
+    done, draws = session(study)
+    trimmed = replace(draws, moved=done.moved)
+    for condition in ("room", "hot"):
+        before = part_values(study, TABLES, condition, "normal", draws)
+        after = part_values(study, TABLES, condition, "normal", trimmed)
+        np.testing.assert_allclose(after["P1.setting"], done.logs["bias"].position, rtol=1e-14)
+        for key in before:
+            if key != "P1.setting":
+                np.testing.assert_array_equal(before[key], after[key])
+
+
+def test_a_selected_resistor_keeps_its_temperature_law():
+    changes = {"part": "R1", "quantity": "resistance", "unit_of_measure": "ohm", "target": 1.5}
+    study = divider(range=(1e3, 60e3), resolution=10.0, coarse_step=3e3, **changes)
+    done, draws = session(study)
+    log = done.logs["bias"]
+    assert (log.status == TrimStatus.SET).all()
+    hot = part_values(study, TABLES, "hot", "normal", replace(draws, moved=done.moved))
+    np.testing.assert_allclose(hot["R1.resistance"], log.position * 1.06, rtol=1e-12)
+
+
+def test_errors_of_the_meter_pass_through_exactly():
+    gain = {"law": "uniform", "half_width": "3 %"}
+    offset = {"law": "uniform", "half_width": "20 mV"}
+    study = divider(
+        meter={"gain": gain, "offset": offset, "noise": offset}, within=1e-4, resolution=1e-6
+    )
+    done, draws = session(study)
+    column = draws.column
+    errors = [f"trim bias: meter {error}" for error in ("gain", "offset", "noise")]
+    g, b, n = (draws.values[:, column[name]] for name in errors)
+    assert np.std(g) > 0.01
+    np.testing.assert_allclose(done.logs["bias"].reading, (3.0 - b - n) / (1.0 + g), atol=1.2e-4)
+
+
+def test_the_hand_moves_the_part_by_its_setting_error():
+    error = {"law": "uniform", "half_width": "0.4 %"}
+    still, _ = session(divider())
+    moved, draws = session(divider(setting_error=error))
+    hand = draws.values[:, draws.column["trim bias: setting error"]]
+    gap = moved.logs["bias"].position - still.logs["bias"].position
+    np.testing.assert_allclose(gap, hand, atol=1e-12)
+
+
+@pytest.mark.parametrize("start", [0.01, None])
+def test_units_do_not_depend_on_their_neighbours(start):
+    study = divider(start=start)
+    together, _ = session(study, range(12))
+    for number in (0, 7, 11):
+        alone, _ = session(study, [number])
+        one, many = alone.logs["bias"], together.logs["bias"]
+        for name in ("status", "position", "turns"):
+            assert getattr(one, name)[0] == getattr(many, name)[number]
+        np.testing.assert_allclose(one.reading[0], many.reading[number], rtol=1e-12)
+
+
+def test_a_tighter_tolerance_never_leaves_a_larger_error_than_it_allows():
+    for within in (0.1, 0.03, 0.01, 0.003):
+        done, _ = session(divider(within=within, resolution=1e-5))
+        assert np.abs(done.logs["bias"].reading - 3.0).max() <= within
+
+
+def test_strain_is_the_largest_on_the_way():
+    """From the low end upwards idle loss only rises; from the high end it was larger before."""
+    keys = {"reading": "Q1.idle_dissipation", "net": None, "reading_unit": "W", "target": 1e-3}
+    ends = []
+    for start in (0.01, 0.99):
+        done, _ = session(divider(start=start, within=1e-5, **keys), range(8))
+        log = done.logs["bias"]
+        assert (log.status == TrimStatus.SET).all()
+        np.testing.assert_allclose(log.reading, 1e-3, atol=1e-5)
+        ends.append(log.strains["Q1.trim_idle_dissipation"])
+    assert (ends[1] > 2.0 * ends[0]).all()
+
+
+def test_frequency_of_circuit_a_after_its_coil_was_squeezed():
+    """The trimmed coil, put into the equations written by hand, gives the target."""
+    state = {"part": "L", "quantity": "inductance", "unit_of_measure": "H", "net": None}
+    study = Study(
+        title="circuit A",
+        design=circuit_a(),
+        states={"normal": State(starts_here=True)},
+        conditions={"room": Condition()},
+        limits=(),
+        run=Run(steps_per_cycle=160),
+        trims={
+            "coil": trim(
+                range=(1.8e-6, 2.6e-6),
+                resolution=2e-9,
+                coarse_step=80e-9,
+                reading="frequency",
+                reading_unit="Hz",
+                target=6.7e6,
+                within=3e3,
+                **state,
+            )
+        },
+    )
+    case = prepare(study, {})["room", "normal"]
+    coil = float(case.nominal.case.values["L.inductance"][0])
+    assert coil < 2.2e-6
+    assert case.figures["frequency"] == pytest.approx(6.7e6, abs=3e3)
+    values = reference.Values(coil=coil)
+    slope, ringing = reference.slope_of(values), 2.0 * np.pi / reference.start_mode(values).imag
+    _, period = transient(slope, reference.kicked(values), 40 * ringing, reference.PIN)
+    # before it was trimmed the stage ran 1.4 % lower
+    assert 1.0 / period == pytest.approx(6.7e6, rel=1e-3)
+
+
+TRIM = """
+[trim.bias]
+part = "vb"
+range = ["3.7 V", "{highest} V"]
+resolution = "5 mV"
+reading = "idle_current"
+target = "3 A"
+within = "3 %"
+from = "low end"
+meter = {{gain = {{law = "uniform", half_width = "1 %"}}}}
+"""
+
+
+@pytest.fixture(scope="module")
+def trimmed_run(tmp_path_factory):
+    """Six push-pull stages; the range ends below what the weakest of them need."""
+    folder = tmp_path_factory.mktemp("trim")
+    (folder / "study.toml").write_text(
+        quick_study.text(units=6).replace("cycle = 128", "cycle = 64") + TRIM.format(highest=4.1)
+    )
+    return run_study(folder / "study.toml", jobs=1, out=folder / "out")
+
+
+def test_units_are_set_or_counted_as_exhausted(trimmed_run):
+    rows = trimmed_run.units
+    set_, out = (rows["bias.trim_status"] == code for code in (0, 2))
+    assert (set_ | out).all()
+    assert set_.any()
+    assert out.any()
+    assert (rows["outcome"][out] == "trim range exhausted").all()
+    assert (rows["verdict"][out] == "fail").all()
+    assert set(rows["bias.trim_position"][out]) <= {0.0, 1.0}
+    np.testing.assert_allclose(rows["idle_current"], 3.0 * (1.0 + rows["bias.trim_error"]))
+    assert rows["bias.trim_error"][set_].abs().max() < 0.041
+    assert rows["bias.trim_before"].abs().max() > 0.3
+    counted = trimmed_run.outcomes.set_index("outcome")["units"]
+    assert counted["trim range exhausted"] == out.sum()
+
+
+def test_fewer_units_are_the_same_units(trimmed_run, tmp_path):
+    (tmp_path / "study.toml").write_text(trimmed_run.study_text)
+    fewer = run_study(tmp_path / "study.toml", units=2, jobs=1).units
+    same = trimmed_run.units.head(2).reset_index(drop=True)
+    assert fewer.equals(same)
+
+
+def test_a_trimmed_unit_is_replayed_as_trimmed(trimmed_run):
+    replay = replay_unit(trimmed_run.folder, 0)
+    stored = trimmed_run.units.iloc[0]
+    assert any("trim bias" in sentence.lower() for sentence in replay.story)
+    wave = next(iter(replay.signals.values()))[0]
+    assert wave.units.max() == pytest.approx(stored["QA.drain_peak"], rel=0.01)
+
+
+def test_a_unit_without_spread_ends_where_the_nominal_one_does(tmp_path):
+    plain = [line for line in quick_study.text(units=1).splitlines() if "spread" not in line]
+    text = "\n".join(plain) + TRIM.format(highest=4.6).replace("1 %", "0 %")
+    text = text.replace('{law = "uniform", half_width = "0 %"}', "0")
+    (tmp_path / "study.toml").write_text(text)
+    found = run_study(tmp_path / "study.toml", jobs=1)
+    entries = {entry["figure"]: entry for entry in found.summary["figures"]}
+    for figure in ("trim_position", "trim_turns", "trim_error", "idle_current"):
+        assert entries[figure]["nominal"] == pytest.approx(entries[figure]["p50"], rel=1e-9), figure
+
+
+def test_a_target_out_of_reach_of_the_nominal_unit_is_told():
+    with pytest.raises(RunError, match=r"trim bias: idle_voltage of 4.99 V is not reached"):
+        prepare(divider(target=4.99, range=(0.01, 0.9)), TABLES)
+
+
+WRONG = """
+[trim.QA]
+part = "vb"
+range = ["4.8 V", "3.7 V"]
+resolution = "5 mohm"
+reading = "idle_curent"
+target = "3 A"
+within = "3 %"
+from = "bottom"
+meter = {gain = {law = "unifrom"}, ofset = 1}
+
+[trim.second]
+part = "C9"
+reading = "start_margin"
+target = "3 dB"
+condition = "roof"
+"""
+
+
+def test_every_mistake_is_told_with_its_cure(tmp_path):
+    path = tmp_path / "study.toml"
+    path.write_text(quick_study.text() + WRONG)
+    with pytest.raises(StudyError) as caught:
+        open_study(path)
+    told = [problem.sentence().removeprefix("study.toml ") for problem in caught.value.problems]
+    assert " ".join(told) == " ".join(TOLD.replace("LAWS", ", ".join(LAWS)).split())
+
+
+TOLD = """
+[trim.QA]: expected a name of its own, got the name "QA" of a part or rail.
+[trim.QA] reading: expected a figure that a meter shows, got "idle_curent". Did you mean
+  idle_current?
+[trim.QA] range: expected two values above 0, the lower end first, got ["4.8 V", "3.7 V"].
+[trim.QA] resolution: expected a number with a unit of measure like V, got "5 mohm". 'mohm'
+  measures something else.
+[trim.QA] from: expected "low end", "high end" or a place within the range, got "bottom".
+[trim.QA] meter.gain.law: expected one of LAWS, got "unifrom". Did you mean uniform?
+[trim.QA] meter.ofset: expected an error of a meter, got "ofset". Did you mean offset?
+[trim.second] within: expected a value, got nothing. A trim needs part, reading, target,
+  within, resolution.
+[trim.second] resolution: expected a value, got nothing. A trim needs part, reading, target,
+  within, resolution.
+[trim.second] part: expected a part or rail that can be turned, got "C9". Known here: L, LA,
+  CA, CSA, CFA, CGA, RBA, LB, CB, CSB, CFB, CGB, RBB, vdd, vb.
+[trim.second] reading: expected a figure that a meter shows, got "start_margin". Known here:
+  frequency, supply_current, input_power, output_power, efficiency, idle_current,
+  idle_dissipation, idle_voltage.
+[trim.second] condition: expected the condition in which it is done: room, got "roof".
+"""
+
+
+def test_draws_of_a_trim_are_factors(trimmed_run):
+    assert "trim bias: meter gain" in trimmed_run.factors.columns
+    study = divider(setting_error={"law": "uniform", "half_width": "1 %"})
+    names = [factor.name for factor in factors(study, TABLES)]
+    assert names[-1] == "trim bias: setting error"
+    assert draw(factors(study, TABLES), 1, 0, 4).values[:, -1].std() > 0.0
