@@ -65,7 +65,7 @@ FLOORS = [
     {"spread.part_values", "spread.checks", "spread.words", "self_heating"},
     {"trim.nominal_unit"},
     # the door for study files
-    {"study.outline", "study.recording"},
+    {"study.outline", "study.recording", "study.markings"},
     {"study.nets", "study.limits", "study.checks", "study.lots", "study.supplies"}
     | {"study.mission"},
     {"study.trims"},

@@ -36,6 +36,7 @@ from tolsim.spread.table import SpreadTable
 from tolsim.study.checks import coupling_problems, study_problems
 from tolsim.study.limits import limit_problems
 from tolsim.study.lots import lot_problems
+from tolsim.study.markings import expanded
 from tolsim.study.mission import mission_problems
 from tolsim.study.nets import net_problems
 from tolsim.study.outline import Table, named_tables
@@ -141,7 +142,8 @@ def open_study(path: Path | str, tables_dir: Path | str | None = None) -> StudyF
     # an entry with mistakes may be meant for any kind: its own mistakes are told instead
     kinds: dict[str, Collection[str]] = dict.fromkeys(shelf.broken, QUANTITIES)
     kinds |= {name: table.kinds for name, table in shelf.tables.items()}
-    used = named_tables(_parsed(text, path.name))
+    raw = _parsed(text, path.name)
+    used = named_tables(raw)
     broken = shelf.problems(used)
     if used - kinds.keys():  # it may be in a file that could not be read
         broken += shelf.loose
@@ -150,11 +152,12 @@ def open_study(path: Path | str, tables_dir: Path | str | None = None) -> StudyF
         study = read_study(text, kinds, path.name, recordings)
     except StudyError as error:
         raise StudyError([*error.problems, *broken]) from None
-    problems = broken or check_spread(study, shelf.tables, path.name)
+    tables = shelf.tables | expanded(raw, path.name).tables
+    problems = broken or check_spread(study, tables, path.name)
     if problems:
         raise StudyError(problems)
     warnings = tuple(problem.sentence() for problem in shelf.unused(used))
-    return StudyFile(study, text, shelf.tables, warnings, recordings.read)
+    return StudyFile(study, text, tables, warnings, recordings.read)
 
 
 def read_study(
@@ -185,10 +188,11 @@ def read_study(
     StudyError
         With every mistake.
     """
-    raw = _parsed(text, file)
-    reading = Reading(file, raw)
+    marked = expanded(_parsed(text, file), file)
+    raw = marked.raw
+    reading = Reading(file, raw, list(marked.problems))
     top = reading.record(_Top, raw, "")
-    outline = reading.outline(tables)
+    outline = reading.outline({**tables, **{n: t.kinds for n, t in marked.tables.items()}})
     found = reading.records(outline.rails, "rails", Rail)
     rails = (recordings or Recordings(Path())).fill(found, outline, reading.problems)
     parts = reading.parts(outline)
