@@ -14,8 +14,8 @@ TABLES = load_tables(None, None)
 every_table = pytest.mark.parametrize("table", TABLES.values(), ids=list(TABLES))
 
 FAMILIES = {  # what a stage needs, by kind of part
-    "capacitor": 12, "inductor": 6, "coupling": 2, "resistor": 4, "potentiometer": 2,
-    "diode": 1, "clamp": 1, "mosfet": 3, "drive": 1, "load": 3, "rail": 2,
+    "capacitor": 34, "inductor": 16, "coupling": 2, "resistor": 8, "potentiometer": 4,
+    "diode": 2, "clamp": 3, "mosfet": 5, "drive": 1, "load": 6, "rail": 5,
 }  # fmt: skip
 
 
@@ -81,8 +81,84 @@ def test_lot_and_scatter_fill_the_marked_tolerance():
         "film-pp-5pct": 0.05,
         "resistor-thick-1pct": 0.01,
         "clamp-zener-5pct": 0.05,
+        "clamp-zener-2pct": 0.02,
+        "clamp-varistor-10pct": 0.10,
+        "class1-ceramic-p100-5pct": 0.05,
+        "class1-ceramic-n330-5pct": 0.05,
+        "class1-ceramic-n1500-10pct": 0.10,
+        "rf-porcelain-p90-5pct": 0.05,
+        "rf-power-ceramic-n750-10pct": 0.10,
+        "class2-ceramic-x7r-20pct": 0.20,
+        "class2-ceramic-z5u-20pct": 0.20,
+        "film-pp-1pct": 0.01,
+        "film-pp-10pct": 0.10,
+        "film-ps-2pct": 0.02,
+        "film-pps-5pct": 0.05,
+        "mica-1pct": 0.01,
+        "electrolytic-20pct": 0.20,
+        "choke-drum-10pct": 0.10,
+        "choke-drum-20pct": 0.20,
+        "resistor-thin-1pct": 0.01,
+        "resistor-carbon-film-5pct": 0.05,
+        "resistor-shunt-1pct": 0.01,
     }.items():
         spreads = TABLES[name].quantities
         spread = next(iter(spreads.values()))
         reach = sum(law.support[1] for law in (spread.lot, spread.tolerance) if law is not None)
         assert reach == pytest.approx(limit), name
+
+
+# EIA-198-1 and EIA-198: change at 85 degC from 25 degC in per cent, lowest and highest.
+@pytest.mark.parametrize(
+    ("name", "low", "high"),
+    [
+        ("class1-ceramic-5pct", -0.18, 0.18),
+        ("class1-ceramic-p100-5pct", 0.42, 0.78),
+        ("class1-ceramic-n330-5pct", -2.34, -1.62),
+        ("class1-ceramic-n750-5pct", -5.22, -3.78),
+        ("class1-ceramic-n1500-10pct", -10.5, -7.5),
+        ("class2-ceramic-x5r-20pct", -15.0, 15.0),
+        ("class2-ceramic-y5v", -82.0, 22.0),
+        ("class2-ceramic-z5u-20pct", -56.0, 22.0),
+    ],
+)
+def test_temperature_of_the_classes(name, low, high):
+    law = TABLES[name].quantities["capacitance"].temperature
+    change = 100.0 * (law.factor(law.drawn.ppf([1e-12, 1.0 - 1e-12]), 85.0) - 1.0)
+    assert change == pytest.approx([low, high], abs=0.01)
+
+
+# Rates per decade of hours: X7R and X5R 2.5 within 2 to 3 %, Y5V up to 7 %, Z5U 3 to 7 %.
+@pytest.mark.parametrize(
+    ("name", "rates"),
+    [
+        ("class2-ceramic-x7r-10pct", (-3, -2)),
+        ("class2-ceramic-x7r-20pct", (-3, -2)),
+        ("class2-ceramic-y5v", (-7, -5)),
+        ("class2-ceramic-z5u-20pct", (-7, -3)),
+    ],
+)
+def test_ageing_of_the_classes(name, rates):
+    law = TABLES[name].quantities["capacitance"].ageing
+    assert law.rate.support == pytest.approx(tuple(rate / 100 for rate in rates))
+    middle = law.rate.mean
+    decades = law.factor(middle, 10_000.0) / law.factor(middle, 1000.0)
+    # relative to one hour: 1 + k log10 t (EIA-521), so 10 000 h over 1000 h:
+    assert float(decades) == pytest.approx((1 + 4 * middle) / (1 + 3 * middle), rel=1e-12)
+    for nothing in ("class1-ceramic-5pct", "mica-1pct"):
+        assert TABLES[nothing].quantities["capacitance"].ageing is None
+
+
+def test_guesses_are_marked_where_a_standard_gives_limits_only():
+    """A letter or code never tells how parts lie between the limits."""
+    for name, table in TABLES.items():
+        for quantity, spread in table.quantities.items():
+            for aspect in ("tolerance", "lot"):
+                if getattr(spread, aspect) is not None:
+                    assert spread.origins[aspect].basis != "standard" or (
+                        type(getattr(spread, aspect)).__name__ == "Uniform"
+                    ), (name, quantity, aspect)
+
+
+def test_there_are_enough_of_them():
+    assert len(TABLES) >= 80
