@@ -74,9 +74,10 @@ FLOORS = [
     {"study"},
     # answers
     {"nominals", "answers.provenance", "answers.supply_words", "answers.ranking"},
-    {"answers.lots", "answers.trims", "trim.drawn"},
+    {"answers.lots", "answers.trims", "trim.drawn"} | {"report.lots"},
     {"evaluation", "answers.summary", "answers.lines", "report.content", "report.tables"},
     {"report.charts"},
+    {"report.lot_chart"},
     {"report.page", "report.unit_picture"},
     {"report"},
     # the corridor, and the faces

@@ -34,6 +34,27 @@ def lot_sentences(summary: Summary) -> Iterator[str]:
     yield from _between(summary)
 
 
+def lot_tables(summary: Summary) -> dict[str, Any]:
+    """Rows of the chances in one batch, and how many lots have how many failures."""
+    lots = summary.get("lots")
+    if not lots:
+        return {"batches": [], "lot_failures": ""}
+    return {
+        "batches": [
+            {
+                "boards": entry["boards"],
+                "chance": f"{percent(entry['share'])} ({percents(entry['low'], entry['high'])})",
+                "independent": percent(entry["independent"]),
+            }
+            for entry in lots["batches"]
+        ],
+        "lot_failures": ", ".join(
+            f"{entry['failed'] or 'none'} in {entry['lots']} lot{'s' * (entry['lots'] != 1)}"
+            for entry in lots["failures"]
+        ),
+    }
+
+
 def lots_built(lots: Mapping[str, Any]) -> str:
     """How units share what they are built from."""
     text = f"{lots['lots']} lots of {lots['units_per_lot']} units, each from reels of its own"

@@ -54,7 +54,7 @@ def start_margin_chart(margins: Floats, limit: float | None) -> Markup:
     known = margins[np.isfinite(margins)]
     if known.size == 0:
         return Markup()
-    with _style():
+    with chart_style():
         figure, axes = _canvas()
         borders = [0.0] if limit is None else [0.0, limit]
         low, high = min(known.min(), *borders), max(known.max(), *borders)
@@ -75,12 +75,12 @@ def start_margin_chart(margins: Floats, limit: float | None) -> Markup:
         axes.set_xlabel("Start margin of each unit, worst condition (dB)")
         axes.set_ylabel("Units")
         axes.yaxis.set_major_locator(MaxNLocator(integer=True, nbins=5))
-        return _svg(figure, "margin", "Histogram of the start margin of all units")
+        return svg(figure, "margin", "Histogram of the start margin of all units")
 
 
 def waveform_chart(wave: Waveform, number: int) -> Markup:
     """One cycle: the nominal unit as a line in the band of all units."""
-    with _style():
+    with chart_style():
         figure, axes = _canvas()
         time_scale, time_prefix = scale_of(float(np.ptp(wave.time)))
         peak = float(np.nanmax(np.abs([wave.nominal, wave.low, wave.high])))
@@ -100,10 +100,11 @@ def waveform_chart(wave: Waveform, number: int) -> Markup:
         axes.set_xlabel(f"Time ({time_prefix}s)")
         axes.set_ylabel(f"{wave.label} ({prefix}{wave.unit_of_measure})")
         axes.yaxis.set_major_locator(MaxNLocator(nbins=5))
-        return _svg(figure, f"wave{number}", f"{wave.title}, state {wave.state}")
+        return svg(figure, f"wave{number}", f"{wave.title}, state {wave.state}")
 
 
-def _style() -> Any:  # noqa: ANN401 - matplotlib's context has no public type
+def chart_style() -> Any:  # noqa: ANN401 - matplotlib's context has no public type
+    """Context in which every chart is drawn."""
     return mpl.rc_context(STYLE)
 
 
@@ -133,7 +134,7 @@ def scale_of(size: float) -> tuple[float, str]:
     return fitting[-1] if fitting else (1.0, "")
 
 
-def _svg(figure: Figure, name: str, title: str) -> Markup:
+def svg(figure: Figure, name: str, title: str) -> Markup:
     """SVG element without header, outside names or scripts; ids begin with `name`."""
     raw = io.StringIO()
     figure.savefig(raw, format="svg", transparent=True, metadata={"Date": None})

@@ -14,6 +14,7 @@ from tolsim.answers.results import Results
 from tolsim.answers.unit_files import UnitRows
 from tolsim.design import Study
 from tolsim.figure_names import FIGURES
+from tolsim.report.lots import LotStrips, lot_strips
 
 Floats = NDArray[np.float64]
 
@@ -103,6 +104,8 @@ class ReportInput:
     study_text : str
     lots : bool
         True if units differ by what a whole lot of parts shares.
+    strips : LotStrips or None
+        A figure lot by lot, if the study says how units share reels.
     """
 
     title: str
@@ -120,6 +123,7 @@ class ReportInput:
     repeat_command: str
     study_text: str
     lots: bool
+    strips: LotStrips | None
 
 
 def report_input(
@@ -168,6 +172,7 @@ def report_input(
         repeat_command=repeat_command,
         study_text=results.study_text,
         lots=lots,
+        strips=lot_strips(study, rows, results.summary),
     )
 
 

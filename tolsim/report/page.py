@@ -10,10 +10,12 @@ import numpy as np
 from jinja2 import Environment, PackageLoader, StrictUndefined
 from numpy.typing import NDArray
 
+from tolsim.answers.lot_words import lot_sentences, lot_tables
 from tolsim.answers.unit_files import write_text
 from tolsim.answers.wording import DASH, confidence_words, percent, percents, verdict_sentence
 from tolsim.report.charts import start_margin_chart, waveform_chart
 from tolsim.report.content import FAIL, PASS, UNDECIDED, ReportInput
+from tolsim.report.lot_chart import lot_chart
 from tolsim.report.mission_section import mission_section
 from tolsim.report.tables import (
     case_rows,
@@ -55,6 +57,9 @@ def render(content: ReportInput) -> str:
         tray=_tray(content.verdicts),
         starts=start_sentences(summary, content.start_states),
         start_chart=start_margin_chart(content.start_margins, content.start_margin_limit),
+        lot_sentences=list(lot_sentences(summary)),
+        lot_chart=lot_chart(content.strips, content.verdicts),
+        **lot_tables(summary),
         limits=limit_rows(summary),
         cases=[case for case in cases if not (fold and case["clean"])],
         clean=[case for case in cases if fold and case["clean"]],
