@@ -10,11 +10,13 @@ from small_study import capacitor, everything, study, tables
 from study_texts import GOOD, TABLES
 
 from tolsim.answers.lines import summary_lines
+from tolsim.answers.lot_words import lot_tables
 from tolsim.answers.results import Results
 from tolsim.answers.summary import summarise
 from tolsim.answers.unit_files import FrameColumns
 from tolsim.design import Condition, Lots
 from tolsim.errors import StudyError
+from tolsim.report import render, report_input
 from tolsim.spread.part_values import part_values
 from tolsim.spread.sampling import draw, factors
 from tolsim.stats.clusters import share_of_lots
@@ -248,3 +250,29 @@ def test_mistakes_in_lots_are_told(text, words):
     with pytest.raises(StudyError) as caught:
         read_study(text, TABLES)
     assert words in str(caught.value)
+
+
+def test_the_report_shows_lots_side_by_side(run):
+    rows, results = run
+    checked = in_lots(fake_run.study(units=300), units_per_lot=10)
+    content = report_input(results, checked)
+    page = render(content)
+    assert "Lot by lot" in page
+    assert "Lot, worst first" in page
+    assert "Lots with a failing unit" in page
+    strips = content.strips
+    most = max(results.summary["limits"], key=lambda entry: entry["units"])
+    assert strips.title.lower().endswith(most["title"].lower())
+    np.testing.assert_array_equal(strips.lot, np.arange(300) // 10)
+    worst = rows.groupby("unit")[["Q1.drain_peak", "Q2.drain_peak"]].max().to_numpy()
+    assert any(np.array_equal(strips.values, column, equal_nan=True) for column in worst.T)
+    assert "Lot by lot" not in render(fake_run.report())
+
+
+def test_chances_in_a_batch_grow_with_its_boards(run):
+    _, results = run
+    shares = [entry["share"] for entry in results.summary["lots"]["batches"]]
+    assert shares == sorted(shares)
+    rows = lot_tables(results.summary)
+    assert [row["boards"] for row in rows["batches"]] == [1, 5, 10]
+    assert "none in" in rows["lot_failures"]

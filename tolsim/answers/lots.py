@@ -70,7 +70,6 @@ def lots_entry(study: Study, rows: UnitRows, failed: Flags, undecided: Flags) ->
     every = LotCounts.of(lots, rows.unit, failed, undecided)
     whole = every.whole(lots.units_per_lot)
     counts, frequency = np.unique(every.failed, return_counts=True)
-    group = rows.unit // lots.block
     sure = int((~failed & ~undecided).sum())
     least = float(share_interval(sure, failed.size, confidence)[0])
     most = float(share_interval(int((~failed).sum()), failed.size, confidence)[1])
@@ -87,7 +86,7 @@ def lots_entry(study: Study, rows: UnitRows, failed: Flags, undecided: Flags) ->
         "lost_when": lots.lost_when,
         "lost": _share(whole, lots.lost_when, confidence),
         "batches": _batches(whole, failed, confidence),
-        "between": _between(study, rows, failed, undecided, group),
+        "between": _between(study, rows, failed, undecided, rows.unit // lots.units_per_lot),
         "independent": {"low": least, "high": most},
     }
 
@@ -148,7 +147,7 @@ def _batches(lots: LotCounts, failed: Flags, confidence: float) -> list[dict[str
 
 
 def _between(
-    study: Study, rows: UnitRows, failed: Flags, undecided: Flags, group: Counts
+    study: Study, rows: UnitRows, failed: Flags, undecided: Flags, lot: Counts
 ) -> list[dict[str, Any]]:
     """Share of the variance between lots: of pass or fail, and of the figures that are ranked."""
     verdict = np.where(failed, 1.0, np.where(undecided, np.nan, 0.0))
@@ -158,7 +157,7 @@ def _between(
     ]
     found = []
     for name, title, values in targets:
-        between = between_lots(values, group, study.run.confidence)
+        between = between_lots(values, lot, study.run.confidence)
         found.append(
             {
                 "target": name,

@@ -63,7 +63,7 @@ def between(ends: Sequence[float | None], unit_of_measure: str) -> str:
 def decimals(share: float) -> int:
     """Decimals of a percentage that keep its distance from 0 and from 100 % visible."""
     above, below = 100.0 * abs(share), 100.0 * abs(1.0 - share)
-    if min(above, below) == 0.0:
+    if min(above, below) < 10.0**-MOST_DECIMALS:
         return 1
     wanted = 1 - math.floor(math.log10(above)), -math.floor(math.log10(below))
     return min(max(1, *wanted), MOST_DECIMALS)
