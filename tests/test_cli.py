@@ -148,6 +148,7 @@ def test_run_hands_over_what_was_asked(place, monkeypatch):
         "units": 4,
         "seed": 0,
         "jobs": 2,
+        "law_check": None,
         "out": place.__class__("o"),
     }
     assert "488 pass every limit" in answer.output

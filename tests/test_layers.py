@@ -16,6 +16,7 @@ FLOORS = [
     {"quantity", "library", "records", "answers.results", "laws.law"}
     | {"spread.codes", "spread.coil", "spread.wire", "stats.percentiles", "stats.ranking"}
     | {"stats.sample_shape", "spread.preferred"},
+    {"stats.response", "stats.reweighting"},
     {"laws.lognormal", "laws.sorted_out", "laws.triangular", "laws.truncated_normal"}
     | {"spread.value_codes"}
     | {"laws.measured", "laws.mixture", "laws.student", "stats.clusters"}
@@ -62,8 +63,10 @@ FLOORS = [
     {"spread.drift_reading", "spread.table", "spread.measured_reading", "spread.shorthand"},
     {"spread.entry"},
     {"spread.reading", "spread.sampling"},
+    {"spread.alternatives"},
     {"spread.part_values", "spread.checks", "spread.words", "self_heating"},
     {"trim.nominal_unit"},
+    {"families", "answers.law_words"},
     # the door for study files
     {"study.outline", "study.recording", "study.markings"},
     {"study.nets", "study.limits", "study.checks", "study.lots", "study.supplies"}
@@ -76,12 +79,15 @@ FLOORS = [
     {"nominals", "answers.provenance", "answers.supply_words", "answers.ranking"},
     {"answers.lots", "answers.trims", "trim.drawn"} | {"report.lots"},
     {"evaluation", "answers.summary", "answers.lines", "report.content", "report.tables"},
+    {"report.laws"},
     {"report.charts"},
     {"report.lot_chart"},
     {"report.page", "report.unit_picture"},
     {"report"},
     # the corridor, and the faces
-    {"building", "crosscheck", "presentation", "recheck", "solver_choice"},
+    {"crosscheck", "presentation", "recheck", "solver_choice"},
+    {"workers"},
+    {"building", "lawcheck"},
     {"run", "replay"},
     {"terminal"},
     {"cli"},

@@ -4,14 +4,13 @@ from __future__ import annotations
 
 from collections.abc import Callable, Iterator
 from pathlib import Path
-from tempfile import TemporaryDirectory
 
-import joblib
 import pandas as pd
-from joblib import Parallel, cpu_count, delayed, parallel_config
+from joblib import Parallel, cpu_count, delayed
 
 from tolsim.answers.unit_files import Columns, FrameColumns, UnitFiles
 from tolsim.evaluation import Chunk, Plan, evaluate, evaluate_stored, store_chunk
+from tolsim.workers import on_disk
 
 BLOCK = 128  # units solved and measured side by side
 TOGETHER = 4  # blocks in one task and one file, at most: a killed run loses no more per job
@@ -109,13 +108,7 @@ def _evaluated(
             chunk = evaluate(plan, first, count, BLOCK)
             yield chunk if folder is None else store_chunk(folder, chunk)
         return
-    with (
-        TemporaryDirectory(prefix="tolsim-", ignore_cleanup_errors=True) as place,
-        # the arrays of a unit are small: threads inside a worker would only get in the way
-        parallel_config(backend="loky", inner_max_num_threads=1),
-    ):
-        plan_file = str(Path(place) / "plan.joblib")
-        joblib.dump(plan, plan_file)
+    with on_disk(plan) as plan_file:
         work = Parallel(n_jobs=jobs or -1, return_as="generator_unordered")
         yield from work(
             delayed(evaluate_stored)(plan_file, folder, first, count, BLOCK)

@@ -125,6 +125,11 @@ def check(study: str, tables_dir: Path | None, *, files_only: bool) -> None:
     help="Results folder; else results/NAME for NAME.toml.",
 )
 @_tables_option
+@click.option(
+    "--law-check/--no-law-check",
+    default=None,
+    help="Estimate the yield under other laws; else if tolerances rest on guesses.",
+)
 def run(
     study: str,
     units: int | None,
@@ -132,6 +137,8 @@ def run(
     jobs: int | None,
     out: Path | None,
     tables_dir: Path | None,
+    *,
+    law_check: bool | None,
 ) -> None:
     """Build and judge the units of STUDY; write results and report.
 
@@ -153,7 +160,13 @@ def run(
     try:
         with progress() as step:
             results = run_study(
-                opened, units=units, seed=seed, jobs=jobs, out=folder, progress=step
+                opened,
+                units=units,
+                seed=seed,
+                jobs=jobs,
+                out=folder,
+                progress=step,
+                law_check=law_check,
             )
     except KeyboardInterrupt:
         told = f"stopped. '{folder}' keeps what is finished; the same command goes on from there."

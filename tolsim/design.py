@@ -153,6 +153,7 @@ class Run(Frozen):
     confidence: Annotated[float, Field(gt=0.5, lt=1)] = 0.95
     steps_per_cycle: Annotated[int, Field(ge=32, le=4096)] = 192
     solver: Literal["auto", "shooting"] = "auto"
+    law_check: bool | None = None  # None: if any tolerance or lot law is a guess
     rank: tuple[str, ...] = ()  # figures to rank factors for, "Q1.drain_peak"
 
 

@@ -10,8 +10,9 @@ from pathlib import Path
 import joblib
 import numpy as np
 import pandas as pd
+from numpy.typing import NDArray
 
-from tolsim.answers.unit_files import UnitFiles
+from tolsim.answers.unit_files import UnitFiles, UnitRows
 from tolsim.circuit.bulk.choice import Choice, by_shooting
 from tolsim.circuit.continuation import solve_units
 from tolsim.circuit.devices import Floats
@@ -56,19 +57,25 @@ def evaluate(plan: Plan, first: int, count: int, block: int) -> Chunk:
     many blocks are evaluated together.
     """
     draws = draw(plan.factors, plan.study.run.seed, first, -(-count // block) * block)
+    rows = rows_of(plan, draws, count, block)
+    factors = pd.DataFrame(draws.values[:count], columns=list(draws.names))
+    factors.insert(0, "unit", np.arange(first, first + count))
+    return Chunk(first, rows, factors)
+
+
+def rows_of(plan: Plan, draws: Draws, count: int, block: int) -> pd.DataFrame:
+    """Rows of the first `count` drawn units in every case, `block` of them after the other."""
     trims = [trim_drawn(plan, draws.rows(row, block)) for row in range(0, draws.count, block)]
     draws = replace(draws, moved=joined(trims))
     cases = [case_rows(plan, name, draws, trims) for name in plan.cases]
     tables = []
     for place, blocks in enumerate(zip(*cases, strict=True)):
         tables += [table.head(count - place * block) for table in blocks]
-    factors = pd.DataFrame(draws.values[:count], columns=list(draws.names))
-    factors.insert(0, "unit", np.arange(first, first + count))
-    return Chunk(first, pd.concat(tables, ignore_index=True), factors)
+    return pd.concat(tables, ignore_index=True)
 
 
 @lru_cache(maxsize=1)
-def _stored(plan_file: str) -> Plan:
+def stored_plan(plan_file: str) -> Plan:
     """Read a plan once per worker, its large arrays shared between workers through the file."""
     plan: Plan = joblib.load(plan_file, mmap_mode="r")
     return plan
@@ -82,7 +89,7 @@ def evaluate_stored(
     A chunk that goes into a results folder is written here, so that the parent, which has a core
     to share, need not receive and write it.
     """
-    chunk = evaluate(_stored(plan_file), first, count, block)
+    chunk = evaluate(stored_plan(plan_file), first, count, block)
     return chunk if folder is None else store_chunk(folder, chunk)
 
 
@@ -179,6 +186,12 @@ def _rows(
     missing = np.full(draws.count, np.nan)
     ordered = {column: figures.get(column, missing) for column in figure_columns(plan)}
     return pd.DataFrame(columns | ordered)
+
+
+def passes(rows: UnitRows) -> NDArray[np.bool_]:
+    """Units (N,) that pass in every case."""
+    codes, words = rows.words("verdict")
+    return np.asarray((codes == (words.index("pass") if "pass" in words else -2)).all(axis=1))
 
 
 def _status_word(code: int) -> str:

@@ -32,6 +32,7 @@ from tolsim.crosscheck import crosscheck
 from tolsim.design import Study
 from tolsim.errors import RequestError
 from tolsim.evaluation import Plan
+from tolsim.lawcheck import law_check as check_laws
 from tolsim.nominals import prepare
 from tolsim.recheck import recheck
 from tolsim.self_heating import heat_record
@@ -58,6 +59,7 @@ def run_study(
     jobs: int | None = None,
     out: Path | str | None = None,
     progress: Progress | None = None,
+    law_check: bool | None = None,
 ) -> Results:
     """Build, solve and judge the units of a study.
 
@@ -74,6 +76,8 @@ def run_study(
         taken up where it ended.
     progress : callable, optional
         Called with (finished units, all units).
+    law_check : bool, optional
+        Whether to estimate the yield under other laws; in place of what the study says.
 
     Returns
     -------
@@ -89,7 +93,8 @@ def run_study(
         If the nominal unit has no orbit at all.
     """
     opened = study if isinstance(study, StudyFile) else open_study(study)
-    opened = replace(opened, study=_with_request(opened.study, units, seed))
+    asked = _with_request(opened.study, units=units, seed=seed, law_check=law_check)
+    opened = replace(opened, study=asked)
     record = provenance_of(opened)
     store = None
     if out is not None:
@@ -123,6 +128,7 @@ def _solve_and_judge(
         _quality(plan, unit_table),
         record,
     )
+    summary["law_check"] = check_laws(plan, unit_table, jobs)
     if store is None:
         assert isinstance(unit_table, FrameColumns)
         assert isinstance(factor_table, FrameColumns)
@@ -135,9 +141,8 @@ def _solve_and_judge(
     return results
 
 
-def _with_request(study: Study, units: int | None, seed: int | None) -> Study:
-    """The study with the units and seed asked for."""
-    asked = {"units": units, "seed": seed}
+def _with_request(study: Study, **asked: int | None) -> Study:
+    """The study with what was asked for (units, seed, law_check) in place of what it says."""
     changes = {name: value for name, value in asked.items() if value is not None}
     return study.model_copy(update={"run": study.run.model_copy(update=changes)})
 

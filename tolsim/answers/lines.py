@@ -41,6 +41,7 @@ def summary_lines(summary: Summary) -> list[str]:
         ("Over the mission, with 95 % intervals", _wrapped(mission_sentences(summary))),
         ("Hardest driven: p99 over the limit, else over the rating", _stresses(summary)),
         ("What matters: share of variance, 95 % interval", _factors(summary)),
+        ("Guessed laws", _laws(summary.get("law_check") or {})),
         ("Quality", _quality(summary["quality"])),
     ):
         rows = list(body)
@@ -89,6 +90,10 @@ def _factors(summary: Summary) -> Iterator[str]:
             yield f"  {name:<46} {max(factor['share'], 0.0):>4.0%}  ({low:.0%} to {high:.0%})"
         if not seen:
             yield "  no factor can be told from one without effect"
+
+
+def _laws(law_check: Mapping[str, Any]) -> Iterator[str]:
+    yield from textwrap.wrap(law_check.get("sentence", ""), WIDTH - 2)
 
 
 def _quality(quality: Mapping[str, Any]) -> Iterator[str]:

@@ -86,6 +86,16 @@ not known (an interval that this many units cannot close).  Every `low`, `high` 
                 nominal unit, taken for every unit), gap (K, within which the rises of 95 % of
                 the units' own losses lie from it), settled (in every case)}]; passive parts whose
                 values follow their own temperature}
+``law_check``   {done, reason (why not done), laws (tolerance and lot laws), guesses and
+                common_practice (so many of them), alternatives [{law, words}],
+                together [{law, method, estimate, low, high, change (of the yield),
+                effective_units (what weights leave; null: not covered), direct {units, passed,
+                as_expected} (units drawn anew) or null}] (all tables at once), families
+                [{tables, parts, bases, guesses, lots, entries [as in together]}] (one family of
+                tables at a time, largest change first), direct_units, depends ("no", "perhaps",
+                "yes"), next {tables, parts, law, estimate, change, lots, pieces} (the guess worth
+                measuring next) or null, sentence}; method is "weights", "response" (fitted)
+                or "response, drawn anew" (and corrected)
 ``provenance``  {seed, versions {name: version}, study_sha256, tables {name: sha256},
                 recordings {path: sha256} (only if supplies have recorded ramps), ...}
 """

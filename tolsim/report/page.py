@@ -15,6 +15,7 @@ from tolsim.answers.unit_files import write_text
 from tolsim.answers.wording import DASH, confidence_words, percent, percents, verdict_sentence
 from tolsim.report.charts import start_margin_chart, waveform_chart
 from tolsim.report.content import FAIL, PASS, UNDECIDED, ReportInput
+from tolsim.report.laws import law_section
 from tolsim.report.lot_chart import lot_chart
 from tolsim.report.mission_section import mission_section
 from tolsim.report.tables import (
@@ -69,6 +70,7 @@ def render(content: ReportInput) -> str:
         stage=stage_rows(summary),
         others=other_rows(summary),
         rankings=ranking_columns(summary),
+        laws=law_section(summary),
         waves=[
             {"wave": wave, "svg": waveform_chart(wave, number)}
             for number, wave in enumerate(content.waveforms)
