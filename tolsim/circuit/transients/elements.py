@@ -40,7 +40,9 @@ class FlatElements(NamedTuple):
     entry_seen: Integers  # (m,) port it is a slope against,
     entry_element: Integers  # (m,) element it comes from,
     entry_weight: Floats  # (m,) weight of that element's slope
-    numbers: Floats  # (e, 4) of one unit or (N, e, 4): offset, knee, linear, square | c0, phi, grading | c0, half, floor | L0
+    # (e, 4) of one unit or (N, e, 4), by kind: offset, knee, linear, square; c0, phi, grading;
+    # c0, half, floor; L0
+    numbers: Floats
     core_breaks: Floats  # (cores, b) A, the last one repeated to fill
     core_share: Floats  # (cores, 4, b - 1) cubic pieces of the share of L0, highest power first
     core_area: Floats  # (cores, 5, b - 1) their integral

@@ -35,6 +35,7 @@ from tolsim.circuit.transients.stepping import (
 
 RUNNING, SETTLED, QUIET, TIME_UP, LOST = 0, 1, 2, 3, 4
 EASY = 1.0 / 16.0  # of the allowed error: a step twice as long makes 8 times as much
+EASY_STEPS = 2  # in a row before a longer step is tried
 MEMORY = 8  # windows a steady swing is compared over
 FIRST_LOOK = 10  # windows before any end is considered
 
@@ -317,7 +318,7 @@ def _run_unit(
             break
         _accept(now, inner, end, past)
         easy = easy + 1 if error < EASY else 0
-        if easy >= 2 and k > 0:
+        if easy >= EASY_STEPS and k > 0:
             k, easy = k - 1, 0
             charge_state(rung_of(ladder, k), now)
         time = past.times[2]

@@ -11,7 +11,7 @@ from typing import NamedTuple
 import numpy as np
 from numba import njit
 
-from tolsim.circuit.devices import Floats
+from tolsim.circuit.devices import SQUARE_ROOT, Floats
 from tolsim.circuit.transients.elements import FlatElements
 
 # sums may be regrouped, so that they vectorise; NaN and infinity keep their meaning
@@ -39,7 +39,15 @@ def new_point(n: int, p: int, e: int) -> Point:
     """All zero."""
     g, c = np.zeros((p, p)), np.zeros((p, p))
     return Point(
-        np.zeros(n), np.zeros(n), np.zeros(p), np.zeros(p), np.zeros(p), g, c, np.zeros(e), np.zeros(e)
+        np.zeros(n),
+        np.zeros(n),
+        np.zeros(p),
+        np.zeros(p),
+        np.zeros(p),
+        g,
+        c,
+        np.zeros(e),
+        np.zeros(e),
     )
 
 
@@ -115,7 +123,7 @@ def respond(e: FlatElements, at: Point) -> None:
             slope[row] = c0
             continue
         stretch = 1.0 + u / phi
-        power = math.sqrt(stretch) if m == 0.5 else stretch**m
+        power = math.sqrt(stretch) if m == SQUARE_ROOT else stretch**m
         value[row] = c0 * phi / (1.0 - m) * (stretch / power - 1.0)
         slope[row] = c0 / power
     for row in range(e.ends[1], e.ends[2]):
@@ -153,20 +161,28 @@ def evaluate(e: FlatElements, at: Point) -> None:
 
 
 @hot
+def _bring_pivot(matrix: Floats, side: Floats, k: int) -> bool:
+    """Exchange rows so that the largest entry left in column k leads; False if all are zero."""
+    pivot = k
+    for row in range(k + 1, len(side)):
+        if abs(matrix[row, k]) > abs(matrix[pivot, k]):
+            pivot = row
+    if not abs(matrix[pivot, k]) > 0.0:
+        return False
+    if pivot != k:
+        for column in range(k, len(side)):
+            matrix[k, column], matrix[pivot, column] = matrix[pivot, column], matrix[k, column]
+        side[k], side[pivot] = side[pivot], side[k]
+    return True
+
+
+@hot
 def solve_small(matrix: Floats, side: Floats) -> bool:
     """Solve A y = b in place by elimination with row exchange; False if A is singular."""
     p = len(side)
     for k in range(p):
-        pivot = k
-        for row in range(k + 1, p):
-            if abs(matrix[row, k]) > abs(matrix[pivot, k]):
-                pivot = row
-        if not abs(matrix[pivot, k]) > 0.0:
+        if not _bring_pivot(matrix, side, k):
             return False
-        if pivot != k:
-            for column in range(k, p):
-                matrix[k, column], matrix[pivot, column] = matrix[pivot, column], matrix[k, column]
-            side[k], side[pivot] = side[pivot], side[k]
         inverse = 1.0 / matrix[k, k]
         for row in range(k + 1, p):
             factor = matrix[row, k] * inverse

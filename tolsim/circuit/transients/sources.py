@@ -62,7 +62,7 @@ def sources_of(network: Network, times: Floats, levels: Floats) -> SourceTable:
     low, high = np.zeros((units, total)), np.ones((units, total))
     duty, edge = np.full(total, 0.5), np.full(total, 0.02)
     matrix = np.zeros((units, network.states, total))
-    if getattr(network, "rail_matrix", None) is not None:
+    if network.rail_matrix is not None:
         matrix[:, :, :rails] = network.rail_matrix
     if shape is not None and network.drive_matrix is not None:
         kind[rails:] = np.where(shape.sine, SINE, SQUARE)

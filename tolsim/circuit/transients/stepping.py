@@ -152,7 +152,7 @@ def _newton(rung: Rung, c: float, e: FlatElements, place: Place, at: Point, tria
 def _shorten(
     rung: Rung, c: float, e: FlatElements, place: Place, at: Point, trial: Point, size: float
 ) -> None:
-    """Halve the move until it leaves a smaller one (natural monotonicity, see `circuit.stepper`)."""
+    """Halve the move until it leaves a smaller one, as `circuit.stepper` does."""
     whole, p = place.whole, len(at.v)
     whole[:] = place.move
     share = 1.0
