@@ -11,7 +11,9 @@ from tolsim.answers.wording import measured, percent, percents, shown
 Summary = Mapping[str, Any]
 
 MOST_CASES = 4
+MOST_LIMITS = 2
 MOST_PARTS = 3
+LEAST_SHARE = 0.005  # of the hours, to be named among the cases
 KILOWATT_HOUR = 3.6e6  # J
 
 
@@ -37,11 +39,8 @@ def mission_sentences(summary: Summary, *, limits: bool = True) -> Iterator[str]
     yield mission_head(mission)
     yield from _power(mission)
     yield in_order_words(mission)
-    for limit in mission["limits"] if limits else ():
-        if limit["units"]:
-            who = "1 unit" if limit["units"] == 1 else f"{limit['units']} units, one of them"
-            hours = f"for {percent(limit['of_life']['most'], 0)} of its hours"
-            yield f"beyond a limit ({limit['rule']}): {who} {hours}"
+    if limits:
+        yield from _limits(mission)
     parts = hottest(mission["temperatures"])[:MOST_PARTS]
     if parts and parts[0]["equivalent_hours"]:
         told = "; ".join(
@@ -60,14 +59,27 @@ def mission_sentences(summary: Summary, *, limits: bool = True) -> Iterator[str]
         yield f"warmest over all hours, on average: {told}"
 
 
+def _limits(mission: Mapping[str, Any]) -> Iterator[str]:
+    """The limits that units are beyond for longest."""
+    broken = [limit for limit in mission["limits"] if limit["units"]]
+    broken.sort(key=lambda limit: -float(limit["of_life"]["mean"]))
+    for limit in broken[:MOST_LIMITS]:
+        who = "1 unit" if limit["units"] == 1 else f"{limit['units']} units, one of them"
+        hours = hours_words(limit["of_life"]["most"] * mission["hours"])
+        yield f"beyond a limit ({limit['rule']}): {who} for {hours}"
+    if len(broken) > MOST_LIMITS:
+        yield f"{len(broken) - MOST_LIMITS} more limits for fewer hours, in the report"
+
+
 def mission_head(mission: Mapping[str, Any]) -> str:
     """How long it runs, and where it spends most of its hours."""
     cases = sorted(mission["cases"], key=lambda case: -float(case["share"]))
     told = ", ".join(
         f"{case['condition']} / {case['state']} {percent(case['share'], 0)}"
         for case in cases[:MOST_CASES]
+        if case["share"] >= LEAST_SHARE
     )
-    more = ", ..." if len(cases) > MOST_CASES else ""
+    more = ", ..." if sum(case["share"] >= LEAST_SHARE for case in cases) > MOST_CASES else ""
     return f"{mission['years']:g} years, {hours_words(mission['hours'])} of running: {told}{more}"
 
 
@@ -98,5 +110,5 @@ def in_order_words(mission: Mapping[str, Any]) -> str:
         f" ({percent(entry['share'])}, interval {percents(entry['low'], entry['high'])})"
     )
     if entry["of_life"]["least"] < 1.0:
-        text += f"; the worst unit for {percent(entry['of_life']['least'], 0)} of its hours"
+        text += f"; the worst unit for {hours_words(entry['of_life']['least'] * mission['hours'])}"
     return text

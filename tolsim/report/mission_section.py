@@ -41,7 +41,7 @@ def mission_section(summary: Summary) -> dict[str, Any]:
                 "units": limit["units"],
                 "share": share_with_interval(limit),
                 "mean": percent(limit["of_life"]["mean"]),
-                "most": percent(limit["of_life"]["most"], 0),
+                "most": hours_words(limit["of_life"]["most"] * mission["hours"]),
                 "first": list_of_units(limit["first_units"], limit["units"]),
             }
             for limit in mission["limits"]
