@@ -7,7 +7,11 @@ import pytest
 from circuits import CIRCUIT_A_SPREAD, circuit_a, scattered, typical_values
 
 from tolsim.circuit.bulk import choice as chosen
-from tolsim.circuit.bulk.choice import Choice, Errors, choose
+from tolsim.circuit.bulk.choice import Choice, choose
+from tolsim.circuit.bulk.judges import Errors, Marks, at_twice_the_order, by_shooting
+from tolsim.circuit.bulk.plan import untaught
+from tolsim.circuit.bulk.reference import NoReferenceError
+from tolsim.circuit.bulk.solve import solve_directly
 from tolsim.circuit.continuation import aim
 from tolsim.circuit.nominal import find_nominal
 from tolsim.circuit.thermal import Case
@@ -39,9 +43,17 @@ def test_circuit_a_is_served_by_collocation_within_the_accuracy(made):
     assert made.settled_share == 1.0
 
 
+def test_both_judges_say_about_the_same(made):
+    """Nothing but the circuit is common to them, so an error in either would set them apart."""
+    for name in ("frequency", "peak", "rms"):
+        shot, twice = getattr(made.errors, name), getattr(made.order_errors, name)
+        assert twice == pytest.approx(shot, rel=0.3), name
+
+
 def test_the_record_is_plain_and_complete(made):
     record = made.record()
     assert {"solver", "harmonics", "frequency_error", "peak_error", "rms_error"} <= record.keys()
+    assert 0 < record["order_peak_error"] < 1e-3
     assert all(isinstance(value, str | int | float) for value in record.values())
 
 
@@ -51,6 +63,57 @@ def test_too_few_harmonics_are_noticed_and_left_to_shooting(stage, monkeypatch):
     assert made.solver == "shooting"
     assert made.plan is None
     assert "16 harmonics" in made.reason
+    assert made.record()["order_peak_error"] is None
+
+
+def test_an_order_that_only_shooting_approves_of_is_refused(stage, monkeypatch):
+    """Twice the order has to agree as well."""
+    monkeypatch.setattr(chosen, "at_twice_the_order", lambda *_: chosen.Truth(*_wrong(stage[2])))
+    assert choose(*stage, STEPS).solver == "shooting"
+
+
+def _wrong(units):
+    marks = Marks(*(np.full((*rows, units.units), 7.0) for rows in ((), (18,), (9,))))
+    return marks, np.ones(units.units, dtype=bool)
+
+
+def test_an_order_out_of_reach_is_refused_after_one_trial(stage, monkeypatch):
+    """Neither shooting nor further orders are spent on probes before the reach is known."""
+    monkeypatch.setattr(chosen, "TAIL", 1.0)
+    asked = []
+
+    def counted(nominal, compass, pilots, steps, order):
+        asked.append(order)
+        return untaught(nominal, compass, pilots, steps, order)
+
+    monkeypatch.setattr(chosen, "untaught", counted)
+    assert choose(*stage, STEPS, orders=(16, 24)).solver == "shooting"
+    assert asked == [16]
+
+
+def test_an_order_without_nominal_orbit_gives_its_reason(stage, monkeypatch):
+    def failing(*_):
+        raise NoReferenceError("slipped")
+
+    monkeypatch.setattr(chosen, "untaught", failing)
+    made = choose(*stage, STEPS)
+    assert made.solver == "shooting"
+    assert made.reason.endswith("harmonics: slipped")
+
+
+def test_twice_the_order_is_as_near_to_the_truth_as_shooting(stage):
+    """At 24 harmonics errors are large; both judges must see the same ones, unit by unit."""
+    nominal, compass, pilots = stage
+    plan = untaught(nominal, compass, pilots, STEPS, 24)
+    iterated, solution = solve_directly(pilots, plan)
+    twice = at_twice_the_order(nominal, plan, pilots, iterated.z)
+    shot, _ = by_shooting(pilots, compass, STEPS, solution)
+    assert twice.sound.all()
+    assert shot.sound.all()
+    np.testing.assert_allclose(twice.marks.frequency, shot.marks.frequency, rtol=3e-5)
+    mine = Marks.of(solution)
+    away = np.abs(mine.rms - shot.marks.rms).max()
+    assert np.abs(twice.marks.rms - shot.marks.rms).max() < 0.3 * away
 
 
 def test_edges_that_no_order_carries_are_left_to_shooting(stage):

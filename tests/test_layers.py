@@ -56,7 +56,7 @@ FLOORS = [
     {"circuit.bulk.reference", "circuit.bulk.chord"},
     {"circuit.bulk.prediction", "circuit.bulk.newton"},
     {"circuit.bulk.plan"},
-    {"circuit.bulk.solve"},
+    {"circuit.bulk.solve", "circuit.bulk.judges"},
     # figures of an orbit and what they are worth
     {"figures.waves"},
     {"circuit.bulk.choice"},

@@ -13,7 +13,7 @@ import pandas as pd
 from numpy.typing import NDArray
 
 from tolsim.answers.unit_files import UnitFiles, UnitRows
-from tolsim.circuit.bulk.choice import Choice, by_shooting
+from tolsim.circuit.bulk.choice import Choice, shot_in_blocks
 from tolsim.circuit.continuation import solve_units
 from tolsim.circuit.devices import Floats
 from tolsim.circuit.orbit import Solution, Status
@@ -148,7 +148,7 @@ def case_rows(
     compass, steps = plan.cases[name].compass, plan.study.run.steps_per_cycle
     choice = plan.choices.get(name)
     if choice is None:
-        solutions = by_shooting(case, compass, steps, block)
+        solutions = shot_in_blocks(case, compass, steps, block)
     else:
         solutions = choice.solve_in_blocks(case, compass, steps, block)
     for place, solution in enumerate(solutions):

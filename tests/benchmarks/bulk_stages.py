@@ -14,7 +14,8 @@ from collections.abc import Iterator
 import numpy as np
 from circuits import CIRCUIT_A_SPREAD, circuit_a, scattered, typical_values
 
-from tolsim.circuit.bulk.choice import Choice, _Marks, choose
+from tolsim.circuit.bulk.choice import Choice, choose
+from tolsim.circuit.bulk.judges import Marks
 from tolsim.circuit.continuation import Compass, aim, solve_units
 from tolsim.circuit.nominal import Nominal, find_nominal
 from tolsim.circuit.orbit import Status
@@ -84,7 +85,7 @@ def _accuracy(choice: Choice, units: Case, compass: Compass, steps: int) -> str:
     answers = [choice.solve(units, compass, steps)]
     answers += [solve_units(units, compass, k * steps) for k in (2, 4)]
     known = np.all([answer.status == Status.SETTLED for answer in answers], axis=0)
-    mine, coarse, fine = (_Marks.of(answer.take(np.flatnonzero(known))) for answer in answers)
+    mine, coarse, fine = (Marks.of(answer.take(np.flatnonzero(known))) for answer in answers)
     errors = mine.errors(coarse.beyond(fine), np.ones(int(known.sum()), dtype=bool))
     return (
         f"largest errors of {known.sum()} units: frequency {errors.frequency:.1e},"

@@ -75,8 +75,11 @@ not known (an interval that this many units cannot close).  Every `low`, `high` 
                 p50, p95, high, width}, 99 % of units between low and high
 ``quality``     {energy_balance {worst, median}, orbit_residual {worst, median},
                 solved_by {way: rows}, solvers [{condition, state, solver, harmonics (0 for
-                shooting), frequency_error, peak_error, rms_error (largest on the pilot units),
-                shooting_frequency_error ..., settled_share, reason}] (empty: shooting served all
+                shooting), frequency_error, peak_error, rms_error (largest on the pilot units,
+                against shooting extrapolated in its steps), order_frequency_error, ... (the same
+                against twice the harmonics; null for shooting), shooting_frequency_error, ...
+                (of shooting at the study's steps), settled_share, reason}; measured in the first
+                condition of a state, valid for all of them] (empty: shooting served all
                 cases), crosscheck {units, share, worst {figure, condition, state, difference},
                 worst_judged (the same among figures the study judges), warning (of it)} (empty
                 without bulk solver),

@@ -155,11 +155,10 @@ def _solvers(solvers: list[dict[str, Any]], crosscheck: dict[str, Any]) -> list[
     words = []
     for entry in solvers:
         order = f", {entry['harmonics']} harmonics" if entry["harmonics"] else ""
-        errors = ", ".join(
-            f"{name} {_ratio(entry[f'{name}_error'])}" for name in ("frequency", "peak", "rms")
-        )
-        name = f"Solver, {entry['condition']}, {entry['state']}"
-        words.append((name, f"{entry['solver']}{order}; largest errors on pilot units: {errors}"))
+        text = f"{entry['solver']}{order}; largest errors on pilot units: {_errors(entry, '')}"
+        if entry["harmonics"]:
+            text += f"; against twice the harmonics: {_errors(entry, 'order_')}"
+        words.append((f"Solver, {entry['condition']}, {entry['state']}", text))
     if crosscheck:
         worst = crosscheck["worst"]
         text = (
@@ -168,6 +167,14 @@ def _solvers(solvers: list[dict[str, Any]], crosscheck: dict[str, Any]) -> list[
         )
         words.append(("Units solved by both solvers", text))
     return words
+
+
+def _errors(entry: dict[str, Any], judge: str) -> str:
+    """Errors of frequency, peak and rms before a judge."""
+    return ", ".join(
+        f"{name} {_ratio(entry.get(f'{judge}{name}_error'))}"
+        for name in ("frequency", "peak", "rms")
+    )
 
 
 def _ratio(value: float | None) -> str:

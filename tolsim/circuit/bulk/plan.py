@@ -48,13 +48,7 @@ class FastPlan:
 def prepare_fast(
     nominal: Nominal, compass: Compass, pilots: Case, steps: int, harmonics: int
 ) -> FastPlan:
-    """Prepare a case.
-
-    Parameters
-    ----------
-    pilots : Case
-        The first units of the study, always the same number of them: every unit starts from what
-        they teach, so another set would move the last bits of all answers.
+    """Prepare a case: the untaught plan, taught.
 
     Raises
     ------
@@ -63,6 +57,13 @@ def prepare_fast(
     TopologyError
         If units couple what others do not.
     """
+    return taught(untaught(nominal, compass, pilots, steps, harmonics), pilots)
+
+
+def untaught(
+    nominal: Nominal, compass: Compass, pilots: Case, steps: int, harmonics: int
+) -> FastPlan:
+    """A plan whose starts are right to first order; raises like `prepare_fast`."""
     frame, case = nominal.frame, nominal.case
     assert frame is not None
     grid = Grid(harmonics)
@@ -73,10 +74,21 @@ def prepare_fast(
     keys = tuple(compass.slopes)
     predictor = first_order(case, reference, topology, grid, keys)
     plan = FastPlan(compass, grid, topology, reference, predictor, single=True, steps=steps)
-    plan = replace(plan, single=_device_noise(plan, case) < NOISE)
-    solved = plan.iterate(pilots, predictor.start(pilots))
+    return replace(plan, single=_device_noise(plan, case) < NOISE)
+
+
+def taught(plan: FastPlan, pilots: Case) -> FastPlan:
+    """The plan with what pilots tell of higher orders.
+
+    Parameters
+    ----------
+    pilots : Case
+        The first units of the study, always the same number of them: every unit starts from what
+        they teach, so another set would move the last bits of all answers.
+    """
+    solved = plan.iterate(pilots, plan.predictor.start(pilots))
     good = np.flatnonzero(solved.settled)
-    return replace(plan, predictor=learn(predictor, pilots.take(good), solved.z[:, good]))
+    return replace(plan, predictor=learn(plan.predictor, pilots.take(good), solved.z[:, good]))
 
 
 def _device_noise(plan: FastPlan, case: Case) -> float:

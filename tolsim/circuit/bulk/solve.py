@@ -64,9 +64,10 @@ def solve_in_blocks(case: Case, plan: FastPlan, block: int) -> Iterator[Solution
         yield _settled(case.take(units), plan, start[:, units], _taken(iterated, units))
 
 
-def solve_directly(case: Case, plan: FastPlan) -> Solution:
+def solve_directly(case: Case, plan: FastPlan) -> tuple[Iterated, Solution]:
     """What the chord iteration alone settles, without any fall-back."""
-    return _finish(case, plan, plan.iterate(case, plan.predictor.start(case)))
+    iterated = plan.iterate(case, plan.predictor.start(case))
+    return iterated, _finish(case, plan, iterated)
 
 
 def _settled(case: Case, plan: FastPlan, start: Floats, iterated: Iterated) -> Solution:
