@@ -82,11 +82,12 @@ FLOORS = [
     {"study"},
     # answers
     {"nominals", "answers.provenance", "answers.supply_words", "answers.ranking"},
-    {"answers.lots", "answers.trims", "trim.drawn"} | {"report.lots"},
+    {"answers.lots", "answers.trims", "answers.trim_words", "trim.drawn"} | {"report.lots"},
     {"evaluation", "answers.summary", "answers.lines", "report.content", "report.tables"},
     {"report.laws"},
     {"report.charts"},
-    {"report.lot_chart"},
+    {"report.lot_chart", "report.trim_chart"},
+    {"report.trim_section"},
     {"report.page", "report.unit_picture"},
     {"report"},
     # the corridor, and the faces

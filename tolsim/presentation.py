@@ -19,10 +19,10 @@ from tolsim.parts import Inductor
 from tolsim.quantity import show
 from tolsim.report import InputRow, ReportInput, Waveform, report_input
 from tolsim.self_heating import heating_notes
-from tolsim.spread.sampling import draw, tables_of
+from tolsim.spread.sampling import draw, tables_of, trim_laws, trim_unit
 from tolsim.spread.table import ASPECTS, SpreadTable
 from tolsim.spread.winding import shape_of
-from tolsim.spread.words import assumptions, spread_words
+from tolsim.spread.words import assumptions, law_words, spread_words
 from tolsim.study import StudyFile
 
 Floats = NDArray[np.float64]
@@ -187,7 +187,7 @@ UNIT_OF_MEASURE = {
 def input_rows(study: Study, tables: Mapping[str, SpreadTable]) -> Iterator[InputRow]:
     """One row per law (or one for all parts without spread): its parts, basis and source."""
     alike: dict[tuple[str, ...], dict[str, list[str]]] = {}
-    for row in _single_rows(study, tables):
+    for row in (*_single_rows(study, tables), *_trim_rows(study)):
         key = (row.quantity, row.law, row.table, row.basis, row.source)
         alike.setdefault(key, {}).setdefault(row.nominal, []).append(row.part)
     for (quantity, law, table, basis, source), nominals in alike.items():
@@ -222,3 +222,16 @@ def _single_rows(study: Study, tables: Mapping[str, SpreadTable]) -> Iterator[In
                     origin = spread.origins[aspect]
                     words = spread_words(table, quantity, aspect)
                     yield InputRow(ref, quantity, nominal, words, name, origin.basis, origin.source)
+
+
+def _trim_rows(study: Study) -> Iterator[InputRow]:
+    """Laws of what goes wrong when parts are trimmed."""
+    for name, trim in study.trims.items():
+        laws = trim_laws(trim)
+        target = show(trim.target, trim.reading_unit)
+        basis, source = trim.confidence or "", trim.source or ""
+        if not laws:
+            yield InputRow(f"trim {name}", "operator", target, "no error", "", basis, source)
+        for error, law in laws.items():
+            words = law_words(law, trim_unit(trim, error))
+            yield InputRow(f"trim {name}", error, target, words, "", basis, source)

@@ -8,6 +8,7 @@ from typing import Any
 
 from tolsim.answers.lot_words import lot_sentences
 from tolsim.answers.mission_words import mission_sentences
+from tolsim.answers.trim_words import trim_sentences
 from tolsim.answers.wording import (
     failures,
     hardest,
@@ -37,6 +38,7 @@ def summary_lines(summary: Summary) -> list[str]:
     lines = textwrap.wrap(verdict_sentence(summary), WIDTH)
     for heading, body in (
         ("Failing units (one unit may appear in several rows)", _failures(summary)),
+        ("Trimmed at the bench", _wrapped(trim_sentences(summary))),
         ("By lot, with 95 % intervals", _wrapped(lot_sentences(summary))),
         ("Over the mission, with 95 % intervals", _wrapped(mission_sentences(summary))),
         ("Hardest driven: p99 over the limit, else over the rating", _stresses(summary)),

@@ -65,7 +65,8 @@ not known (an interval that this many units cannot close).  Every `low`, `high` 
                 reading_title, reading_unit, target, within, condition, state (the bench),
                 endings {set, too_coarse, exhausted, no_reading, unsettled} (units),
                 exhausted_share {share, low, high}, at_low_end (units exhausted there),
-                first_not_set, nominal (position of the nominal unit), position, turns,
+                first_not_set, nominal (position of the nominal unit), position_counts (units in
+                equal parts of the range, from its low end), position, turns,
                 error (true reading over target, less 1, of units that were set), before (the
                 same of untrimmed units), needed_range [from, to] (99 % of the units set end
                 there), needed_resolution (largest step with which 99 % can be set),

@@ -21,6 +21,7 @@ Floats = NDArray[np.float64]
 Nominal = Mapping[tuple[str, str], Mapping[str, float]]
 Interval = Callable[[NDArray[np.bool_]], tuple[float, float]]
 
+BINS = 24  # equal parts of the range that positions are counted in
 FIRST_UNITS = 5  # named of those that were not set
 INNER = (0.005, 0.995)  # the shares between which 99 % of units lie
 WORDS = {
@@ -99,6 +100,7 @@ def _entry(
         "at_low_end": int((hit & (position < 0.5)).sum()),  # noqa: PLR2004 - the nearer end
         "first_not_set": rows.unit[~was_set][:FIRST_UNITS],
         "nominal": None if where is None else low + where * (high - low),
+        "position_counts": np.histogram(position, BINS, (0.0, 1.0))[0],
         "position": _spread(low + position * (high - low)),
         "turns": _spread(column("trim_turns")),
         "error": _spread(np.where(was_set, after, np.nan)),

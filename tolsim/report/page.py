@@ -28,6 +28,7 @@ from tolsim.report.tables import (
     start_sentences,
     stress_rows,
 )
+from tolsim.report.trim_section import trim_section
 
 MOST_TILES = 2000
 TILES_IN_A_ROW = 50
@@ -66,6 +67,7 @@ def render(content: ReportInput) -> str:
         clean=[case for case in cases if fold and case["clean"]],
         stresses=stress_rows(summary),
         mission=mission_section(summary),
+        trims=trim_section(summary),
         limited=limited_stage_rows(summary),
         stage=stage_rows(summary),
         others=other_rows(summary),

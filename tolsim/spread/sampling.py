@@ -221,12 +221,20 @@ def trim_factor(trim: str, error: str) -> str:
 
 def _of_trims(study: Study) -> Iterator[Factor]:
     for name, trim in study.trims.items():
-        for error, aspect in TRIM_ERRORS.items():
-            given = _stated(trim, error)
-            if isinstance(given, Mapping):
-                law = condition_law(given, trim_unit(trim, error))
-                every = study.lots.units_per_lot if study.lots and aspect == "lot" else 1
-                yield Factor(trim_factor(name, error), law, name, error, aspect, "", every)
+        for error, law in trim_laws(trim).items():
+            aspect = TRIM_ERRORS[error]
+            every = study.lots.units_per_lot if study.lots and aspect == "lot" else 1
+            yield Factor(trim_factor(name, error), law, name, error, aspect, "", every)
+
+
+def trim_laws(trim: Trim) -> dict[str, Law]:
+    """Laws of the errors of a trim that are left to chance."""
+    stated = {error: _stated(trim, error) for error in TRIM_ERRORS}
+    return {
+        error: condition_law(given, trim_unit(trim, error))
+        for error, given in stated.items()
+        if isinstance(given, Mapping)
+    }
 
 
 def _stated(trim: Trim, error: str) -> Any:  # noqa: ANN401 - a law or a number
