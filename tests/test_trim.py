@@ -11,6 +11,8 @@ from references import circuit_a as reference
 from references.orbit import transient
 from scipy.optimize import brentq
 
+from tolsim.answers.lines import summary_lines
+from tolsim.answers.trim_words import trim_sentences
 from tolsim.design import Condition, Design, Rail, Run, State, Study, Trim
 from tolsim.errors import RunError, StudyError
 from tolsim.laws import LAWS
@@ -292,6 +294,52 @@ def test_units_are_set_or_counted_as_exhausted(trimmed_run):
     assert rows["bias.trim_before"].abs().max() > 0.3
     counted = trimmed_run.outcomes.set_index("outcome")["units"]
     assert counted["trim range exhausted"] == out.sum()
+
+
+def test_the_summary_counts_and_measures_what_the_rows_hold(trimmed_run):
+    rows = trimmed_run.units
+    (entry,) = trimmed_run.summary["trim"]
+    set_ = rows["bias.trim_status"] == 0
+    assert entry["endings"] == {
+        "set": set_.sum(),
+        "too_coarse": 0,
+        "exhausted": (~set_).sum(),
+        "no_reading": 0,
+        "unsettled": 0,
+    }
+    assert entry["first_not_set"] == rows["unit"][~set_].tolist()
+    assert sum(entry["position_counts"]) == 6
+    assert entry["at_low_end"] == (rows["bias.trim_position"][~set_] < 0.5).sum()
+    volts = 3.7 + 0.4 * rows["bias.trim_position"]
+    low, high = entry["needed_range"]
+    assert volts[set_].min() <= low < high <= volts[set_].max()
+    assert entry["error"]["p50"] == pytest.approx(rows["bias.trim_error"][set_].median())
+    assert entry["before"]["width"] > 5.0 * entry["error"]["width"]
+    (drift,) = entry["drift"]
+    assert drift["p50"] == pytest.approx((rows["idle_current"] / 3.0 - 1.0).median())
+    steep = 3.0 * rows["bias.trim_slope"].abs().quantile(0.99) / 0.4
+    assert entry["needed_resolution"] == pytest.approx(2.0 * 0.09 / steep)
+    assert {strain["part"] for strain in entry["strains"]} == {"QA", "QB"}
+
+
+def test_the_words_name_the_ones_that_were_not_set(trimmed_run):
+    text = " ".join(trim_sentences(trimmed_run.summary))
+    out = trimmed_run.units["bias.trim_status"] == 2
+    assert f"{6 - out.sum()} of 6 units set within 90 mA" in text
+    assert f"Not set: {out.sum()} at an end of the range" in text
+    assert "99 % of units, idle current against target: untrimmed" in text
+    lines = summary_lines(trimmed_run.summary)
+    assert "Trimmed at the bench" in lines
+    assert max(map(len, lines)) <= 80
+    assert list(trim_sentences({"trim": []})) == []
+
+
+def test_the_report_shows_the_trim_and_its_laws(trimmed_run):
+    page = (trimmed_run.folder / "report.html").read_text(encoding="utf-8")
+    assert "What trimming does" in page
+    assert "vb voltage after trim, whole range (V)" in page
+    assert "Off the target (%)" in page
+    assert "trim bias meter gain" in page
 
 
 def test_fewer_units_are_the_same_units(trimmed_run, tmp_path):

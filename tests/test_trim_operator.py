@@ -181,3 +181,13 @@ def test_no_move_exceeds_a_coarse_step(start):
 
     operate(meter, np.array([start]), adjuster(coarse=0.05))
     assert np.abs(np.diff(visited)).max() <= 0.05 + 1e-9
+
+
+@pytest.mark.parametrize(("share", "all_set"), [(0.99, True), (2.0, False)])
+def test_steps_of_twice_the_tolerance_over_the_slope_are_the_largest_that_do(share, all_set):
+    """Closed form: two neighbouring steps on either side of the band are 2 within / slope apart."""
+    start = np.linspace(0.3, 0.31, 200)
+    wanted = adjuster(within=0.01, resolution=share * 2.0 * 0.01 / 5.0)
+    found = operate(divider(np.full(200, 5.0)), start, wanted)
+    assert (found.status == TrimStatus.SET).all() == all_set
+    assert set(found.status) <= {TrimStatus.SET, TrimStatus.TOO_COARSE}
