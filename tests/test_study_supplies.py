@@ -80,6 +80,7 @@ ramp_file = "scope.csv"
     for part in (
         'ramp_time: expected no ramp_time with this ramp, got ramp = "step". Drop it',
         "current_limit: expected current_limit beside foldback",
+        "bulk_capacitance: expected bulk_capacitance beside foldback",
         "bulk_resistance: expected bulk_capacitance beside it",
         "delay: expected a duration of 0 or 1 ps to 1 Ms",
         "[rails.vdd.dip] depth: expected a share of 0 to 1",

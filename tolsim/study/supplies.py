@@ -47,10 +47,17 @@ def _ramp(table: Table) -> Iterator[Mistake]:
 
 
 def _series(table: Table) -> Iterator[Mistake]:
-    """Limit, foldback and bulk capacitor."""
+    """Limit, foldback and bulk capacitor.
+
+    A limit that falls with the output voltage is no function of the current: driven by a choke the
+    voltage could jump between three values, if no capacitor held it.
+    """
     if "foldback" in table and "current_limit" not in table:
         cure = "foldback is the share of the limit that is left at short circuit."
         yield Mistake("current_limit beside foldback", cure, key="current_limit", got="none")
+    if "foldback" in table and "bulk_capacitance" not in table:
+        cure = "Give the supply's output capacitor: without it such a limit has no steady state."
+        yield Mistake("bulk_capacitance beside foldback", cure, key="bulk_capacitance", got="none")
     if "bulk_resistance" in table and "bulk_capacitance" not in table:
         cure = "Give the capacitor it is in series with."
         yield Mistake("bulk_capacitance beside it", cure, key="bulk_resistance", got="none")
