@@ -182,9 +182,33 @@ def test_tables_are_listed_and_shown():
     one = call("tables", "class1-ceramic-5pct")
     assert one.exit_code == 0
     assert "capacitance" in one.output
+    assert max(map(len, one.output.splitlines())) <= 80
     wrong = call("tables", "class1-ceramic-5pc")
     assert wrong.exit_code == 2
     assert "Did you mean class1-ceramic-5pct?" in wrong.output
+
+
+def test_tables_are_drawn(place):
+    drawn = call("tables", "film-pet-10pct", "--picture", "film.svg")
+    assert drawn.exit_code == 0
+    assert "Polyester" in (place / "film.svg").read_text(encoding="utf-8")
+    call("tables", "film-pet-10pct", "--picture", "again.svg")
+    assert (place / "again.svg").read_bytes() == (place / "film.svg").read_bytes()
+    call("tables", "mosfet-window-wide", "--picture", "q.png")
+    assert (place / "q.png").read_bytes().startswith(b"\x89PNG")
+    for arguments in (("film-pet-10pct", "--picture", "x.gif"), ("--picture", "x.svg")):
+        assert call("tables", *arguments).exit_code == 2
+
+
+def test_tables_with_mistakes_are_left_out_or_told(place):
+    written(place, "[table.torn]\ntitle = 1\n", "mine.toml")
+    answer = call("tables", "--tables", ".")
+    assert answer.exit_code == 0
+    assert "mine.toml [table.torn]" in answer.output
+    assert call("tables", "class1-ceramic-5pct", "--tables", ".").exit_code == 0
+    wrong = call("tables", "torn", "--tables", ".")
+    assert wrong.exit_code == 2
+    assert "[table.torn] title" in wrong.output
 
 
 @pytest.mark.parametrize("name", shipped_studies())

@@ -15,7 +15,7 @@ FLOORS = [
     {"answers.unit_files"},
     {"quantity", "library", "records", "answers.results", "laws.law"}
     | {"spread.codes", "spread.coil", "spread.wire", "stats.percentiles", "stats.ranking"}
-    | {"stats.sample_shape", "spread.preferred"},
+    | {"stats.sample_shape", "spread.preferred", "spread.quantity_words", "text_picture"},
     {"stats.response", "stats.reweighting"},
     {"laws.lognormal", "laws.sorted_out", "laws.triangular", "laws.truncated_normal"}
     | {"spread.value_codes"}
@@ -69,7 +69,7 @@ FLOORS = [
     {"spread.entry"},
     {"spread.reading", "spread.sampling"},
     {"spread.alternatives"},
-    {"spread.part_values", "spread.checks", "spread.words", "self_heating"},
+    {"spread.portrait", "spread.part_values", "spread.checks", "spread.words", "self_heating"},
     {"trim.nominal_unit"},
     {"families", "answers.law_words"},
     # the door for study files
@@ -88,14 +88,16 @@ FLOORS = [
     {"report.charts"},
     {"report.lot_chart", "report.trim_chart"},
     {"report.trim_section"},
-    {"report.page", "report.unit_picture"},
+    {"report.page", "report.unit_picture", "report.table_picture"},
     {"report"},
+    {"inputs"},
     # the corridor, and the faces
     {"crosscheck", "presentation", "recheck", "solver_choice"},
     {"workers"},
     {"building", "lawcheck"},
     {"run", "replay"},
     {"terminal"},
+    {"table_screen"},
     {"cli"},
 ]
 FLOOR = {module: height for height, modules in enumerate(FLOORS, 1) for module in modules}

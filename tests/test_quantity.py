@@ -19,6 +19,7 @@ from tolsim.quantity import (
     Temperature,
     read,
     show,
+    typeset,
 )
 
 
@@ -147,3 +148,18 @@ def test_a_bare_number_is_for_python_only():
     with pytest.raises(ValidationError, match="a temperature"):
         adapter.validate_python(True)
     assert TypeAdapter(Share).validate_python(0.8, context=in_file) == 0.8
+
+
+@pytest.mark.parametrize(
+    ("typed", "printed"),
+    [
+        ("2.2 uH", "2.2 µH"),
+        ("3.3 kohm", "3.3 kΩ"),
+        ("60 mohm, 5 ohm", "60 mΩ, 5 Ω"),
+        ("11 A/V^2", "11 A/V²"),
+        ("at 85 degC", "at 85 °C"),
+        ("a kohm-meter of unusual make", "a kohm-meter of unusual make"),
+    ],
+)
+def test_typeset(typed, printed):
+    assert typeset(typed) == printed

@@ -9,8 +9,8 @@ import numpy as np
 import pytest
 
 from tolsim.answers.wording import verdict_sentence
+from tolsim.inputs import input_rows
 from tolsim.library import find_study
-from tolsim.presentation import input_rows
 from tolsim.report import render, write_report
 from tolsim.study import open_study
 
@@ -99,10 +99,13 @@ def test_parts_of_the_same_law_share_a_row():
     rows = list(input_rows(opened.study, opened.tables))
     laws = [(row.quantity, row.law, row.table, row.basis, row.source) for row in rows]
     assert len(laws) == len(set(laws))
-    (row,) = [row for row in rows if row.quantity == "esr"]
+    (row,) = [row for row in rows if row.quantity == "series resistance"]
     assert row.part.startswith("C1, C2, C3, C4")
     (row,) = [r for r in rows if r.part.startswith("C1,") and "lot shift" in r.law]
     assert row.nominal.startswith("C1, C2: 680 pF; C3, C4: 470 pF")
+    words = {word for row in rows for word in (row.quantity, row.law, row.nominal)}
+    assert not any("_" in word or "ohm" in word or "degC" in word for word in words)
+    assert any("µH" in word for word in words)
 
 
 def test_no_rate_without_interval(page):

@@ -194,25 +194,36 @@ def unit(results: Path, number: int) -> None:
 @main.command()
 @click.argument("name", required=False)
 @_tables_option
-def tables(name: str | None, tables_dir: Path | None) -> None:
+@click.option(
+    "--picture",
+    metavar="FILE",
+    type=click.Path(dir_okay=False, path_type=Path),
+    help="Draw the table NAME to an SVG or PNG file too.",
+)
+def tables(name: str | None, tables_dir: Path | None, picture: Path | None) -> None:
     """List the spread tables, or show all about one.
 
     NAME is a table of the list.
     """
     from tolsim.spread.reading import read_shelf
-    from tolsim.terminal import show_table, show_tables, warn_of
+    from tolsim.table_screen import draw, show_table, show_tables
+    from tolsim.terminal import warn_of
 
     shelf = read_shelf(None, tables_dir)
-    known = shelf.tables
     if name is None:
-        show_tables(known)
+        if picture is not None:
+            raise RequestError("Name the table to draw: tolsim tables NAME --picture FILE.")
+        show_tables(shelf.tables)
         warn_of([problem.sentence() for problem in shelf.problems()])
     elif name in shelf.broken:
         raise StudyError(shelf.problems([name]))
-    elif name in known:
-        show_table(known[name])
+    elif name in shelf.tables:
+        show_table(shelf.tables[name])
+        if picture is not None:
+            draw(shelf.tables[name], picture)
+            click.echo(f"Picture: {picture}")
     else:
-        raise _unknown("spread table", name, list(known))
+        raise _unknown("spread table", name, list(shelf.tables))
 
 
 @main.command()

@@ -15,14 +15,13 @@ from tolsim.circuit.thermal import Case, mosfets
 from tolsim.design import Study
 from tolsim.evaluation import Plan, built, solve_case
 from tolsim.figures.waves import Waves
+from tolsim.inputs import input_rows
 from tolsim.parts import Inductor
-from tolsim.quantity import show
-from tolsim.report import InputRow, ReportInput, Waveform, report_input
+from tolsim.report import ReportInput, Waveform, report_input
 from tolsim.self_heating import heating_notes
-from tolsim.spread.sampling import draw, tables_of, trim_laws, trim_unit
-from tolsim.spread.table import ASPECTS, SpreadTable
-from tolsim.spread.winding import shape_of
-from tolsim.spread.words import assumptions, law_words, spread_words
+from tolsim.spread.sampling import draw, tables_of
+from tolsim.spread.table import SpreadTable
+from tolsim.spread.words import assumptions
 from tolsim.study import StudyFile
 
 Floats = NDArray[np.float64]
@@ -163,75 +162,3 @@ def _pairs(
     if coils:
         hardest = max(coils, key=lambda ref: float(np.ptp(ideal.branch(ref))))
         yield f"{hardest} current", hardest, "A", ideal.branch(hardest), units.branch(hardest)
-
-
-UNIT_OF_MEASURE = {
-    "capacitance": "F",
-    "inductance": "H",
-    "diameter": "m",
-    "length": "m",
-    "pitch": "m",
-    "wire": "m",
-    "al": "H",
-    "resistance": "ohm",
-    "esr": "ohm",
-    "voltage": "V",
-    "threshold": "V",
-    "high": "V",
-    "low": "V",
-    "drift_resistance": "ohm",
-    "gain": "A/V**2",
-}
-
-
-def input_rows(study: Study, tables: Mapping[str, SpreadTable]) -> Iterator[InputRow]:
-    """One row per law (or one for all parts without spread): its parts, basis and source."""
-    alike: dict[tuple[str, ...], dict[str, list[str]]] = {}
-    for row in (*_single_rows(study, tables), *_trim_rows(study)):
-        key = (row.quantity, row.law, row.table, row.basis, row.source)
-        alike.setdefault(key, {}).setdefault(row.nominal, []).append(row.part)
-    for (quantity, law, table, basis, source), nominals in alike.items():
-        parts = ", ".join(ref for refs in nominals.values() for ref in refs)
-        nominal = next(iter(nominals))
-        if len(nominals) > 1:
-            given = {value: refs for value, refs in nominals.items() if value}
-            nominal = "; ".join(f"{', '.join(refs)}: {value}" for value, refs in given.items())
-        yield InputRow(parts, quantity, nominal, law, table, basis, source)
-
-
-def _single_rows(study: Study, tables: Mapping[str, SpreadTable]) -> Iterator[InputRow]:
-    for ref, part in {**study.design.parts, **study.design.rails}.items():
-        names = list(tables_of(study, ref))
-        if not names:
-            source = part.source or ""
-            basis = getattr(part, "confidence", None) or ""
-            yield InputRow(ref, "all values", "", "no spread", "", basis, source)
-        for name in names:
-            table = tables[name]
-            for quantity, spread in table.quantities.items():
-                shape = shape_of(part) if isinstance(part, Inductor) else {}
-                value = shape.get(quantity, getattr(part, quantity, None))
-                nominal = (
-                    show(value, UNIT_OF_MEASURE.get(quantity, "1"))
-                    if isinstance(value, float)
-                    else ""
-                )
-                for aspect in ASPECTS:
-                    if getattr(spread, aspect) is None:
-                        continue
-                    origin = spread.origins[aspect]
-                    words = spread_words(table, quantity, aspect)
-                    yield InputRow(ref, quantity, nominal, words, name, origin.basis, origin.source)
-
-
-def _trim_rows(study: Study) -> Iterator[InputRow]:
-    """Laws of what goes wrong when parts are trimmed."""
-    for name, trim in study.trims.items():
-        laws = trim_laws(trim)
-        target = show(trim.target, trim.reading_unit)
-        basis, source = trim.confidence or "", trim.source or ""
-        if not laws:
-            yield InputRow(f"trim {name}", "operator", target, "no error", "", basis, source)
-        for error, law in laws.items():
-            words = law_words(law, trim_unit(trim, error))
-            yield InputRow(f"trim {name}", error, target, words, "", basis, source)

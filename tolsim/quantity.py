@@ -167,6 +167,19 @@ def show(value: float, unit: str, digits: int = 4) -> str:
     return f"{value / 10.0**exponent:.{digits}g} {_PREFIXES[exponent]}{unit}"
 
 
+def typeset(text: str) -> str:
+    """`text` with the signs of print instead of those of keyboards: µH, kΩ, °C, A/V²."""
+    for typed, printed in _PRINTED:
+        text = typed.sub(printed, text)
+    return text
+
+
+_PRINTED: Final = (
+    (re.compile(r"(?<=\d )u(?=(?:F|H|ohm|S|A|V|Hz|W|var|s|m)\b)"), "µ"),
+    (re.compile(r"(?<=\d )([fpnµmkMGT]?)ohm\b"), r"\1Ω"),
+    (re.compile(r"(?<=\d )degC\b"), "°C"),
+    (re.compile(r"\^2\b|\*\*2\b"), "²"),
+)
 KINDS: Final[Mapping[str, Kind]] = {
     kind.name.split(" ", 1)[1]: kind
     for kind in (

@@ -22,12 +22,10 @@ from tolsim.answers.wording import shown
 from tolsim.design import Study
 from tolsim.figure_names import FIGURES
 from tolsim.self_heating import heating_notes
-from tolsim.spread.table import BASES, SpreadTable
-from tolsim.spread.words import assumptions, describe
+from tolsim.spread.words import assumptions
 from tolsim.study import StudyFile
 
 _WIDTH = 80
-_BASIS = max(map(len, BASES))
 _MOST_ROWS = 8  # of the list of limits that are near
 _POINT = ("frequency", "start_margin", "input_power", "output_power")
 
@@ -120,33 +118,6 @@ def _paragraphs(screen: Console, head: str, texts: Sequence[str]) -> None:
         screen.print(
             Text(textwrap.fill(text, screen.width, initial_indent="- ", subsequent_indent="  "))
         )
-
-
-def show_tables(tables: Mapping[str, SpreadTable]) -> None:
-    """List spread tables by the kinds of part they are for: name, basis, title."""
-    screen = console()
-    by_kind: dict[str, list[tuple[str, SpreadTable]]] = {}
-    for name, table in tables.items():
-        by_kind.setdefault(", ".join(table.kinds), []).append((name, table))
-    width = max(map(len, tables), default=0)
-    for kinds in sorted(by_kind):
-        screen.print(Text(f"{kinds}:", style="bold"))
-        grid = Table(box=None, show_header=False, pad_edge=False, padding=(0, 2, 0, 0))
-        grid.add_column(min_width=width, no_wrap=True)  # a name that is cut cannot be used
-        grid.add_column(min_width=_BASIS, no_wrap=True)
-        grid.add_column()
-        for name, table in by_kind[kinds]:
-            grid.add_row(name, table.basis, table.title)
-        screen.print(grid)
-        screen.print()
-    screen.print(Text("All about one of them: tolsim tables NAME"))
-
-
-def show_table(table: SpreadTable) -> None:
-    """Show all that is known about one spread table."""
-    screen = console()
-    for line in describe(table):
-        screen.print(Text(line))
 
 
 def _nominal(figures: Mapping[str, float], name: str) -> str:

@@ -7,11 +7,12 @@ from collections.abc import Iterator, Mapping
 from dataclasses import fields
 
 from tolsim.design import Study
-from tolsim.laws import Law, Measured, Uniform, Window
+from tolsim.laws import Law, LogNormal, Measured, Uniform, Window
 from tolsim.parts import Capacitor, Inductor, Mosfet
 from tolsim.quantity import show
 from tolsim.spread.ageing import AgeingLaw
 from tolsim.spread.datasheet import device_parameters, window_assumptions
+from tolsim.spread.quantity_words import plain
 from tolsim.spread.reading import UNITS
 from tolsim.spread.sampling import tables_of
 from tolsim.spread.table import ASPECTS, QuantitySpread, SpreadTable
@@ -48,7 +49,7 @@ def describe(table: SpreadTable) -> list[str]:
             if law is None:
                 continue
             origin = spread.origins[aspect]
-            words = f"{quantity}, {spread_words(table, quantity, aspect)}"
+            words = f"{plain(quantity)}, {spread_words(table, quantity, aspect)}"
             if (origin.basis, origin.source) != (table.basis, table.source):
                 words += f" ({origin.source})"
             said.append(words + ("  [guess]" if origin.basis == "guess" else f"  [{origin.basis}]"))
@@ -119,7 +120,8 @@ def _windows(table: SpreadTable) -> Iterator[str]:
             if isinstance(law, Window):
                 missing = f"{' and '.join(law.missing)} not on the sheet, " if law.missing else ""
                 words = _implied_words(law, _unit(quantity, aspect, spread))
-                yield f"{quantity} of {table.name}: {missing}window taken as {words}"
+                name = f"{plain(quantity)} of {table.name}"
+                yield f"{name}: {missing}window taken as {words}"
 
 
 def _measured_elsewhere(study: Study, table: SpreadTable) -> Iterator[str]:
@@ -133,7 +135,7 @@ def _measured_elsewhere(study: Study, table: SpreadTable) -> Iterator[str]:
             if at is not None and not low / FAR_FREQUENCY <= at <= high * FAR_FREQUENCY:
                 use = f"{show(low, 'Hz')} to {show(high, 'Hz')}"
                 yield (
-                    f"{quantity} of {table.name} was measured at {show(at, 'Hz')}, used at {use}: "
+                    f"{plain(quantity)} of {table.name} was measured at {show(at, 'Hz')}, used at {use}: "
                     f"what changes with frequency is not in the readings"
                 )
 
@@ -147,7 +149,7 @@ def law_words(law: Law | TemperatureLaw | AgeingLaw, unit: str) -> str:
     words = []
     for field in fields(law):
         value = getattr(law, field.name)
-        if value is None:
+        if value is None or (isinstance(law, LogNormal) and field.name == "origin"):
             continue
         words.append(f"{field.name.replace('_', ' ')} {_value_words(law, field.name, value, unit)}")
     return f"{law.NAME} ({', '.join(words)})" if words else law.NAME
@@ -223,6 +225,6 @@ def _unit(quantity: str, aspect: str, spread: QuantitySpread) -> str:
     """Unit of measure in which the numbers of a law are shown."""
     if aspect in ("temperature", "ageing") or spread.deviation == "relative":
         return "share"
-    if spread.deviation == "position":
+    if spread.deviation == "position" or quantity == "turns":
         return "1"
     return UNITS.get(quantity, "share")
