@@ -135,8 +135,8 @@ def _measured_elsewhere(study: Study, table: SpreadTable) -> Iterator[str]:
             if at is not None and not low / FAR_FREQUENCY <= at <= high * FAR_FREQUENCY:
                 use = f"{show(low, 'Hz')} to {show(high, 'Hz')}"
                 yield (
-                    f"{plain(quantity)} of {table.name} was measured at {show(at, 'Hz')}, used at {use}: "
-                    f"what changes with frequency is not in the readings"
+                    f"{plain(quantity)} of {table.name} was measured at {show(at, 'Hz')}, used at "
+                    f"{use}: what changes with frequency is not in the readings"
                 )
 
 
