@@ -66,7 +66,10 @@ FLOORS = [
     {"trim.session"},
     # spread and chance
     {"spread.drift_reading", "spread.table", "spread.measured_reading", "spread.shorthand"},
+    {"spread.dependence", "spread.streams"},
+    {"spread.dependence_reading"},
     {"spread.entry"},
+    {"spread.matching"},
     {"spread.reading", "spread.sampling"},
     {"spread.alternatives"},
     {"spread.portrait", "spread.part_values", "spread.checks", "spread.words", "self_heating"},

@@ -276,3 +276,17 @@ def test_chances_in_a_batch_grow_with_its_boards(run):
     rows = lot_tables(results.summary)
     assert [row["boards"] for row in rows["batches"]] == [1, 5, 10]
     assert "none in" in rows["lot_failures"]
+
+
+def test_another_sampling_is_told_beside_the_quality():
+    checked = fake_run.study(units=60)
+    run = checked.run.model_copy(update={"sampling": "latin-hypercube"})
+    checked = checked.model_copy(update={"run": run})
+    table = fake_run.factors(60)
+    rows = FrameColumns(fake_run.rows(table, checked))
+    nominal = fake_run.nominal(checked)
+    summary = summarise(
+        checked, rows, FrameColumns(table), nominal, fake_run.QUALITY, fake_run.PROVENANCE
+    )
+    assert summary["quality"]["sampling"].startswith("latin-hypercube; intervals as for random")
+    assert any("latin-hypercube" in line for line in summary_lines(summary))

@@ -154,6 +154,7 @@ class Run(Frozen):
     steps_per_cycle: Annotated[int, Field(ge=32, le=4096)] = 192
     solver: Literal["auto", "shooting"] = "auto"
     law_check: bool | None = None  # None: if any tolerance or lot law is a guess
+    sampling: Literal["random", "latin-hypercube", "sobol"] = "random"
     rank: tuple[str, ...] = ()  # figures to rank factors for, "Q1.drain_peak"
 
 

@@ -10,6 +10,7 @@ from tolsim.quantity import show, typeset
 from tolsim.report import InputRow
 from tolsim.spread.datasheet import device_parameters
 from tolsim.spread.entry import UNITS
+from tolsim.spread.matching import pair_words
 from tolsim.spread.quantity_words import plain
 from tolsim.spread.sampling import tables_of, trim_laws, trim_unit
 from tolsim.spread.table import ASPECTS, SpreadTable
@@ -43,8 +44,8 @@ def _single_rows(study: Study, tables: Mapping[str, SpreadTable]) -> Iterator[In
             table = tables[name]
             for quantity, spread in table.quantities.items():
                 nominal = _nominal(part, quantity)
-                for aspect in ASPECTS:
-                    if getattr(spread, aspect) is None:
+                for aspect in (*ASPECTS, "follows"):
+                    if not getattr(spread, aspect):
                         continue
                     origin = spread.origins[aspect]
                     words = spread_words(table, quantity, aspect)
@@ -57,6 +58,9 @@ def _single_rows(study: Study, tables: Mapping[str, SpreadTable]) -> Iterator[In
                         origin.basis,
                         origin.source,
                     )
+        for quantity, words in pair_words(part):
+            basis = getattr(part, "confidence", None) or ""
+            yield InputRow(ref, plain(quantity), "", words, "", basis, part.source or "")
 
 
 def _nominal(part: AnyPart | Rail, quantity: str) -> str:

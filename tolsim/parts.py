@@ -12,7 +12,7 @@ in study files, factors, part values and reports.
 from __future__ import annotations
 
 from collections.abc import Collection, Iterator, Mapping
-from typing import Annotated, ClassVar, Literal, Self, get_args
+from typing import Annotated, Any, ClassVar, Literal, Self, get_args
 
 from pydantic import Field, model_validator
 
@@ -67,6 +67,8 @@ class Part(Frozen):
 
     spread: str | None = None
     reel: str | None = None
+    matched_with: str | None = None
+    match: Mapping[str, Any] | None = None  # quantity to width of the bin both lie in
     rating: Rating = Rating()
     source: str | None = None
     confidence: Literal["measured", "sheet", "typical", "guess"] | None = None

@@ -18,6 +18,13 @@ Floats = NDArray[np.float64]
 Flags = NDArray[np.bool_]  # (N,)
 
 
+def sampling_note(method: str) -> dict[str, str]:
+    """Entry `sampling` of the quality: how units were drawn, if not at random."""
+    if method == "random":
+        return {}
+    return {"sampling": f"{method}; intervals as for random units, so rather too wide"}
+
+
 @dataclass(frozen=True)
 class Counting:
     """Intervals of shares and percentiles over the N units of a run.

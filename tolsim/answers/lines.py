@@ -99,6 +99,8 @@ def _laws(law_check: Mapping[str, Any]) -> Iterator[str]:
 
 
 def _quality(quality: Mapping[str, Any]) -> Iterator[str]:
+    if quality.get("sampling"):
+        yield f"sampling: {quality['sampling']}"
     balance, again = quality.get("energy_balance"), quality.get("rechecked")
     if balance and balance.get("worst") is not None:
         yield f"energy balance: worst unit off by {percent(balance['worst'])}"

@@ -90,6 +90,7 @@ not known (an interval that this many units cannot close).  Every `low`, `high` 
                 nominal unit, taken for every unit), gap (K, within which the rises of 95 % of
                 the units' own losses lie from it), settled (in every case)}]; passive parts whose
                 values follow their own temperature}
+                With other than random sampling also sampling (how, and what intervals mean then)
 ``law_check``   {done, reason (why not done), laws (tolerance and lot laws), guesses and
                 common_practice (so many of them), alternatives [{law, words}],
                 together [{law, method, estimate, low, high, change (of the yield),

@@ -13,7 +13,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from tolsim.answers.bounds import Bound, applies, bounds, named_figure, rating_of
-from tolsim.answers.counting import Counting
+from tolsim.answers.counting import Counting, sampling_note
 from tolsim.answers.lots import lots_entry
 from tolsim.answers.mission import mission_entry
 from tolsim.answers.ranking import rankings
@@ -86,7 +86,7 @@ def summarise(
         "mission": mission_entry(study, rows, counting, nominal),
         "lots": lots_entry(study, rows, unit_failed, unit_undecided),
         "ranking": rankings(study, rows, factors, unit_failed, unit_undecided),
-        "quality": dict(quality),
+        "quality": dict(quality) | sampling_note(study.run.sampling),
         "provenance": dict(provenance),
     }
     plain: dict[str, Any] = _plain(summary)

@@ -11,6 +11,7 @@ from tolsim.design import Study
 from tolsim.errors import Mistake, Problem
 from tolsim.parts import Inductor, Mosfet
 from tolsim.spread.datasheet import device_parameters
+from tolsim.spread.matching import matching_problems
 from tolsim.spread.reading import UNITS
 from tolsim.spread.sampling import CONDITION_UNITS, condition_law, tables_of
 from tolsim.spread.table import QuantitySpread, SpreadTable
@@ -40,6 +41,7 @@ def check_spread(study: Study, tables: Mapping[str, SpreadTable], file: str) -> 
         *_reels(study, file),
         *_reach(study, tables, file),
         *_shapes(study, tables, file),
+        *matching_problems(study, tables, file),
     ]
 
 

@@ -17,6 +17,7 @@ from tolsim.laws import Law
 from tolsim.laws.reading import read_law
 from tolsim.parts import AnyPart
 from tolsim.spread import measured_reading
+from tolsim.spread.dependence_reading import dependence_mistakes, read_follows, read_tracking
 from tolsim.spread.drift_reading import read_ageing, read_temperature
 from tolsim.spread.readings import Readings
 from tolsim.spread.shorthand import as_deviations, without_letter
@@ -60,8 +61,9 @@ UNITS: Final[Mapping[str, str]] = {
 """Units of measure of the quantities; those not named are pure numbers."""
 
 _SHEET_UNITS: Final = {"capacitance_scale": "F"}  # of sheet rows for quantities that have none
+_BESIDE_LAWS: Final = ("basis", "source", "shared", "tracking")
 _HEAD: Final = ("title", "for", "basis", "source")
-_SETTINGS: Final = ("deviation", "implied_half_window")
+_SETTINGS: Final = ("deviation", "implied_half_window", "follows")
 
 
 @dataclass
@@ -111,6 +113,8 @@ class Entry:
                 self.report(Mistake("a table of laws", key=key, got=f"{value!r}"))
             elif kinds:
                 quantities[key] = self._quantity(key, value, kinds, origin)
+        for mistake in dependence_mistakes(quantities):
+            self.report(mistake)
         if not quantities and kinds and len(self.problems) == before:
             self.report(Mistake("laws for at least one of " + ", ".join(allowed), got="none"))
         if len(self.problems) > before:
@@ -188,6 +192,7 @@ class Entry:
         laws: dict[str, Any] = {}
         origins: dict[str, Origin] = {}
         shared: set[str] = set()
+        tracking: dict[str, float] = {}
         for aspect in ASPECTS:
             if aspect not in given:
                 continue
@@ -207,7 +212,9 @@ class Entry:
                 own = self._origin(words, origin, f"{table}.{aspect}")
                 if self._shared(words, aspect, table):
                     shared.add(aspect)
-                words = {k: v for k, v in words.items() if k not in ("basis", "source", "shared")}
+                alike = read_tracking(words, aspect, lambda mistake: self.report(mistake, table))
+                tracking |= {} if alike is None else {aspect: alike}
+                words = {k: v for k, v in words.items() if k not in _BESIDE_LAWS}
             else:
                 own = origin
             laws[aspect] = self._law(aspect, words, name, deviation, kinds, table)
@@ -218,10 +225,23 @@ class Entry:
             deviation=cast("Deviation", deviation),
             implied_half_window=self._half_window(given, table),
             shared=frozenset(shared),
+            tracking=tracking,
+            follows=self._follows(given, origin, origins, table),
             origins=origins,
         )
         self._check_reach(spread, table)
         return spread
+
+    def _follows(
+        self, given: Mapping[str, Any], origin: Origin, origins: dict[str, Origin], table: str
+    ) -> dict[str, float]:
+        """Other quantities this one follows; their origin joins the others."""
+        if "follows" not in given:
+            return {}
+        words = given["follows"]
+        if isinstance(words, Mapping):
+            origins["follows"] = self._origin(words, origin, f"{table}.follows")
+        return read_follows(words, lambda mistake: self.report(mistake, table))
 
     def _law(
         self,

@@ -78,10 +78,7 @@ def part_values(
     """
 
     def drawn(name: str, _: str, law: Law) -> Floats:
-        column = draws.column[name]
-        if draws.factors[column].law == law:
-            return draws.values[:, column]
-        return law.ppf(draws.u[:, column])  # same rank, the law of this state or condition
+        return draws.of(name, law)  # same rank, the law of this state or condition
 
     values = _Maker(study, tables, condition, state, draws.count, drawn, rises or {}).values()
     return adjusted(study, values, draws.moved)

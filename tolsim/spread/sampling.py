@@ -2,31 +2,36 @@
 
 Every factor has its own stream of random numbers, keyed by the seed and its name, and unit
 k takes the k-th number of the stream.  So unit 1234 is the same unit whatever the number
-of units, the chunks, the workers, or the other factors of the study.  The streams come
-from the counter-based generator Philox (Salmon et al., SC'11), which can start anywhere.
+of units, the chunks, the workers, or the other factors of the study.  The streams stand in
+`tolsim.spread.streams`; with Sobol's sequence the axis a factor takes depends on the others.
 
 What a reel shares is drawn once per reel: with lots of m units, unit k takes number k // m
 of that stream, or a later reel's if one lasts several lots.
+
+Factors are independent.  Where parts are not (parts of a reel track each other, a gain follows a
+threshold, a pair is matched), their shares are tied together by `Draws.rank` when they become
+part values, so that rankings can still take every factor for itself.
 """
 
 from __future__ import annotations
 
-import hashlib
 from collections.abc import Iterator, Mapping, Sequence
-from dataclasses import dataclass, field
+from dataclasses import dataclass, field, replace
 from functools import cached_property
 from typing import Any
 
 import numpy as np
-from numpy.random import Philox
 from numpy.typing import NDArray
 
 from tolsim.design import Study, Trim
 from tolsim.errors import Mistake
 from tolsim.laws import Law
 from tolsim.laws.reading import read_law
-from tolsim.parts import Capacitor
-from tolsim.spread.table import ASPECTS, Aspect, SpreadTable
+from tolsim.parts import Capacitor, Part
+from tolsim.spread.dependence import Match, Tie, correlation_matrix
+from tolsim.spread.matching import bin_widths
+from tolsim.spread.streams import RANDOM, Scheme, shares
+from tolsim.spread.table import ASPECTS, FOLLOWING, Aspect, SpreadTable, correlations
 
 CONDITION_UNITS: Mapping[str, str] = {"ambient": "degC", "supply": "1", "age": "h"}
 """What a condition may leave to chance, with its unit of measure."""
@@ -38,8 +43,6 @@ TRIM_ERRORS: Mapping[str, Aspect] = {
     "setting error": "tolerance",
 }
 """What a trim may leave to chance; a meter's gain and offset are shared by a lot of units."""
-
-_OUTPUTS_PER_STEP = 4  # numbers Philox makes per step of its counter
 
 
 @dataclass(frozen=True)
@@ -62,6 +65,12 @@ class Factor:
         trims.
     every : int
         Successive units that share one draw: 1, or the units built from one reel.
+    tie : Tie or None
+        Other factors its part follows besides.
+    match : Match or None
+        The factor in whose bin its part lies.
+    scheme : Scheme
+        How its shares are drawn.
     """
 
     name: str
@@ -71,6 +80,9 @@ class Factor:
     aspect: Aspect
     table: str
     every: int = 1
+    tie: Tie | None = None
+    match: Match | None = None
+    scheme: Scheme = RANDOM
 
 
 @dataclass(frozen=True)
@@ -111,6 +123,31 @@ class Draws:
     def column(self) -> Mapping[str, int]:
         """Column of each factor, by name."""
         return {factor.name: index for index, factor in enumerate(self.factors)}
+
+    @cached_property
+    def _ranks(self) -> dict[str, NDArray[np.float64]]:
+        """Shares after ties and matches, of the factors asked for so far."""
+        return {}
+
+    def rank(self, name: str) -> NDArray[np.float64]:
+        """Share of the law below what a part has, (count,): its own draw, tied and matched."""
+        factor, own = self.factors[self.column[name]], self.u[:, self.column[name]]
+        if factor.tie is None and factor.match is None:
+            return own
+        if name not in self._ranks:
+            if factor.tie is not None:
+                own = factor.tie.rank(own, [self.rank(leader) for leader, _ in factor.tie.leaders])
+            if factor.match is not None:
+                own = factor.match.rank(own, self.rank(factor.match.mate), factor.law)
+            self._ranks[name] = own
+        return self._ranks[name]
+
+    def of(self, name: str, law: Law) -> NDArray[np.float64]:
+        """Value of a factor in every unit, (count,), under the law of a state or condition."""
+        factor = self.factors[self.column[name]]
+        if factor.law == law and factor.tie is None and factor.match is None:
+            return self.values[:, self.column[name]]
+        return law.ppf(self.rank(name))
 
     def rows(self, begin: int, count: int) -> Draws:
         """Draws of `count` of the units, from row `begin` on."""
@@ -159,7 +196,14 @@ def factors(study: Study, tables: Mapping[str, SpreadTable]) -> tuple[Factor, ..
     found: dict[str, Factor] = {}
     for factor in (*_of_parts(study, tables), *_of_conditions(study), *_of_trims(study)):
         found.setdefault(factor.name, factor)
-    return tuple(found.values())
+    method = study.run.sampling
+    if method == "random":
+        return tuple(found.values())
+    axes = len(found)
+    return tuple(
+        replace(factor, scheme=Scheme(method, axis, axes))
+        for axis, factor in enumerate(found.values())
+    )
 
 
 def tables_of(study: Study, reference: str) -> Iterator[str]:
@@ -178,7 +222,11 @@ def _of_parts(study: Study, tables: Mapping[str, SpreadTable]) -> Iterator[Facto
         reel = getattr(part, "reel", None)
         every = study.lots.units_of(reel or reference) if study.lots else 1
         for name in tables_of(study, reference):
-            yield from _of_table(tables[name], reference, reel, pieces, every)
+            found = _of_table(tables[name], reference, reel, pieces, every)
+            if isinstance(part, Part) and part.match:
+                yield from _matched(part, tables[name], found, reference)
+            else:
+                yield from found
 
 
 def _of_table(
@@ -192,6 +240,12 @@ def _of_table(
                 continue
             words = aspect_words(table, quantity, aspect)
             shared_by = reel_of(reel, table, quantity, aspect)
+            tracking = spread.tracking.get(aspect)
+            tie = quantities_tie(table, part, quantity, aspect, shared_by)
+            if reel is not None and tracking is not None:
+                whole = factor_name(part, quantity, words, reel)
+                yield Factor(whole, law, reel, quantity, aspect, table.name, every)
+                tie = Tie.to_reel(whole, tracking)
             scattered = aspect == "tolerance" and quantity == "capacitance" and pieces > 1
             for piece in range(1, pieces + 1) if scattered else (None,):
                 owner = part if piece is None else f"{part}#{piece}"
@@ -203,7 +257,38 @@ def _of_table(
                     aspect,
                     table.name,
                     every if is_shared(table, quantity, aspect) else 1,
+                    tie,
                 )
+
+
+def quantities_tie(
+    table: SpreadTable, part: str, quantity: str, aspect: str, reel: str | None
+) -> Tie | None:
+    """Tie of one aspect to those quantities of the same part that stand before it in the table."""
+    pairs = correlations(table.quantities)
+    drawn = [q for q, s in table.quantities.items() if s.drawn(aspect) is not None]
+    before = drawn[: drawn.index(quantity)]
+    if aspect not in FOLLOWING or not pairs or not before:
+        return None
+    matrix = correlation_matrix([*before, quantity], pairs)
+    wanted = matrix[-1, :-1]
+    if not wanted.any():
+        return None
+    names = [factor_name(part, q, aspect_words(table, q, aspect), reel) for q in before]
+    return Tie.to_quantities(names, matrix[:-1, :-1], wanted)
+
+
+def _matched(
+    part: Part, table: SpreadTable, factors: Iterator[Factor], reference: str
+) -> Iterator[Factor]:
+    """The factors of a part, those of matched quantities with their bins."""
+    widths = bin_widths(part, table)
+    for factor in factors:
+        if factor.aspect != "tolerance" or factor.quantity not in widths:
+            yield factor
+            continue
+        mate = f"{part.matched_with}{factor.name.removeprefix(reference)}"
+        yield replace(factor, match=Match(mate, widths[factor.quantity]))
 
 
 def _of_conditions(study: Study) -> Iterator[Factor]:
@@ -307,17 +392,5 @@ def _shares(factor: Factor, seed: int, first: int, count: int) -> NDArray[np.flo
     turn = np.arange(first, first + count) // factor.every
     if not count:
         return np.empty(0)
-    return _stream(seed, factor.name, int(turn[0]), int(turn[-1] - turn[0]) + 1)[turn - turn[0]]
-
-
-def _stream(seed: int, name: str, first: int, count: int) -> NDArray[np.float64]:
-    """Numbers `first` ... `first + count - 1` of the stream of a factor, in (0, 1).
-
-    The top 52 bits, moved to the middle of their cell: neither 0 nor 1 can occur.
-    """
-    digest = hashlib.blake2b(f"{seed}\n{name}".encode(), digest_size=16).digest()
-    generator = Philox(key=int.from_bytes(digest, "little"))
-    steps, skipped = divmod(first, _OUTPUTS_PER_STEP)
-    generator.advance(steps)
-    raw = generator.random_raw(skipped + count)[skipped:]
-    return ((raw >> np.uint64(12)).astype(np.float64) + 0.5) * 2.0**-52
+    low, high = int(turn[0]), int(turn[-1])
+    return shares(factor.scheme, seed, factor.name, low, high - low + 1)[turn - low]

@@ -24,6 +24,8 @@ Aspect = Literal["tolerance", "lot", "temperature", "ageing", "condition"]
 BASES: Final = ("standard", "datasheet", "measured", "common practice", "guess")
 DEVIATIONS: Final = ("relative", "absolute", "position")
 ASPECTS: Final = ("tolerance", "lot", "temperature", "ageing")
+FOLLOWING: Final = ("tolerance", "lot")
+"""Aspects in which one quantity of a part may follow another."""
 
 
 @dataclass(frozen=True)
@@ -48,8 +50,12 @@ class QuantitySpread:
         V; half of the threshold window where neither sheet nor model gives one.
     shared : frozenset of str
         Of "temperature" and "ageing", those drawn once per reel instead of once per part.
+    tracking : mapping
+        Correlation between parts of one reel, by the aspect it holds for (Gaussian copula).
+    follows : mapping
+        Correlation with other quantities of the same part, in lot shift and in tolerance.
     origins : mapping
-        Origin of each law, by aspect.
+        Origin of each law, by aspect; of `follows` too.
     """
 
     tolerance: Law | None = None
@@ -59,6 +65,8 @@ class QuantitySpread:
     deviation: Deviation = "relative"
     implied_half_window: float = 1.0
     shared: frozenset[str] = frozenset()
+    tracking: Mapping[str, float] = field(default_factory=dict)
+    follows: Mapping[str, float] = field(default_factory=dict)
     origins: Mapping[str, Origin] = field(default_factory=dict)
 
     def drawn(self, aspect: str) -> Law | None:
@@ -101,3 +109,12 @@ class SpreadTable:
             for aspect, origin in spread.origins.items()
             if origin.basis == "guess"
         )
+
+
+def correlations(quantities: Mapping[str, QuantitySpread]) -> dict[tuple[str, str], float]:
+    """Pairs of quantities of one part that depend on each other, with their correlation."""
+    return {
+        (name, leader): rho
+        for name, spread in quantities.items()
+        for leader, rho in spread.follows.items()
+    }

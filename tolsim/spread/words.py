@@ -44,9 +44,8 @@ def describe(table: SpreadTable) -> list[str]:
     kinds = ", ".join(table.kinds)
     said = [f"{table.title} (for {kinds}; {table.basis}: {table.source})."]
     for quantity, spread in table.quantities.items():
-        for aspect in ASPECTS:
-            law = getattr(spread, aspect)
-            if law is None:
+        for aspect in (*ASPECTS, "follows"):
+            if not getattr(spread, aspect):
                 continue
             origin = spread.origins[aspect]
             words = f"{plain(quantity)}, {spread_words(table, quantity, aspect)}"
@@ -57,10 +56,15 @@ def describe(table: SpreadTable) -> list[str]:
 
 
 def spread_words(table: SpreadTable, quantity: str, aspect: str) -> str:
-    """One law of a table in words: "tolerance: truncated normal (...)"."""
+    """One law of a table, or what a quantity follows, in words: "tolerance: normal (...)"."""
     spread = table.quantities[quantity]
+    if aspect == "follows":
+        others = (f"{other} with correlation {rho:g}" for other, rho in spread.follows.items())
+        return f"follows {', '.join(others)}"
     words = law_words(getattr(spread, aspect), _unit(quantity, aspect, spread))
     shared = ", shared by a reel" if aspect in spread.shared or aspect == "lot" else ""
+    if aspect in spread.tracking:
+        shared = f", tracking {spread.tracking[aspect]:g} in a reel"
     return f"{_LABELS[aspect]}: {words}{shared}"
 
 
