@@ -16,7 +16,7 @@ FLOORS = [
     {"quantity", "library", "records", "answers.results", "laws.law"}
     | {"spread.codes", "spread.coil", "spread.wire", "stats.percentiles", "stats.ranking"}
     | {"stats.sample_shape", "spread.preferred", "spread.quantity_words", "text_picture"},
-    {"stats.response", "stats.reweighting"},
+    {"stats.response", "stats.reweighting", "stats.plausibility"},
     {"laws.lognormal", "laws.sorted_out", "laws.triangular", "laws.truncated_normal"}
     | {"spread.value_codes"}
     | {"laws.measured", "laws.mixture", "laws.student", "stats.clusters"}
@@ -26,6 +26,7 @@ FLOORS = [
     {"laws", "answers.lot_words"},
     # the design: parts, then what is made of them
     {"parts", "laws.reading"} | {"laws.predictive", "spread.readings"},
+    {"prototype", "answers.prototype_words"},
     {"design", "spread.datasheet", "spread.temperature", "spread.ageing", "spread.winding"},
     {"answers.bounds", "answers.counting"},
     {"answers.mission"},
@@ -81,13 +82,14 @@ FLOORS = [
     | {"study.mission"},
     {"study.trims"},
     {"study.reading"},
+    {"study.prototypes"},
     {"study.file"},
     {"study"},
     # answers
     {"nominals", "answers.provenance", "answers.supply_words", "answers.ranking"},
     {"answers.lots", "answers.trims", "answers.trim_words", "trim.drawn"} | {"report.lots"},
     {"evaluation", "answers.summary", "answers.lines", "report.content", "report.tables"},
-    {"report.laws"},
+    {"report.laws", "report.bench"},
     {"report.charts"},
     {"report.lot_chart", "report.trim_chart"},
     {"report.trim_section"},
@@ -97,7 +99,7 @@ FLOORS = [
     # the corridor, and the faces
     {"crosscheck", "presentation", "recheck", "solver_choice"},
     {"workers"},
-    {"building", "lawcheck"},
+    {"building", "lawcheck", "modelcheck"},
     {"run", "replay"},
     {"terminal"},
     {"table_screen"},

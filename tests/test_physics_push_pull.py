@@ -19,14 +19,15 @@ from stages import CHOKE, PAIR_FREQUENCY, PAIR_LOAD, crossed_pair, units_of
 
 from tolsim.circuit.orbit import Status
 from tolsim.circuit.shooting import Frame, Start, shoot
+from tolsim.design import Design
 from tolsim.figures import measure_orbits
 
 STEPS = 1024
 
 
-def settle(q: float):
-    """Case, orbit and figures of the pair, started from the relay's own currents."""
-    case = units_of(crossed_pair(q))
+def settle(q: float, design: Design | None = None):
+    """Figures and waves of the pair (or what was made of it), started from the relay's currents."""
+    case = units_of(design or crossed_pair(q))
     network = case.network(case.cold_junctions())
     ideal = relay(q)
     feed = ideal.power * 100.0 / PAIR_LOAD / 2  # of each choke

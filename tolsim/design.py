@@ -15,6 +15,7 @@ from pydantic import Field, model_validator
 from tolsim.errors import Mistake
 from tolsim.mission import Mission
 from tolsim.parts import AnyPart, Net
+from tolsim.prototype import Prototype
 from tolsim.quantity import (
     Age,
     Capacitance,
@@ -242,6 +243,7 @@ class Study(Frozen):
     run: Run
     lots: Lots | None = None  # none: every unit from reels of its own
     mission: Mission | None = None
+    prototypes: Mapping[str, Prototype] = {}
     trims: Mapping[str, Trim] = {}  # in the order in which they are done
     expected_frequency: tuple[Frequency, Frequency] | None = None
     kind: Literal["self-oscillating", "driven"] = "self-oscillating"

@@ -33,6 +33,7 @@ from tolsim.design import Study
 from tolsim.errors import RequestError
 from tolsim.evaluation import Plan
 from tolsim.lawcheck import law_check as check_laws
+from tolsim.modelcheck import model_check
 from tolsim.nominals import prepare
 from tolsim.recheck import recheck
 from tolsim.self_heating import heat_record
@@ -129,6 +130,7 @@ def _solve_and_judge(
         record,
     )
     summary["law_check"] = check_laws(plan, unit_table, jobs)
+    summary["prototype"] = model_check(plan, unit_table, factor_table, jobs)
     if store is None:
         assert isinstance(unit_table, FrameColumns)
         assert isinstance(factor_table, FrameColumns)

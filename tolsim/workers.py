@@ -14,11 +14,13 @@ from joblib import Parallel, delayed, parallel_config
 from numpy.typing import NDArray
 
 from tolsim.answers.unit_files import FrameColumns, UnitRows
-from tolsim.evaluation import Plan, passes, rows_of, stored_plan
-from tolsim.spread.sampling import Factor, draw_chosen
+from tolsim.evaluation import Plan, case_figures, passes, rows_of, solve_case, stored_plan
+from tolsim.nominals import CaseName
+from tolsim.spread.sampling import Draws, Factor, draw_chosen
 from tolsim.spread.table import SpreadTable
 
 Flags = NDArray[np.bool_]
+Floats = NDArray[np.float64]
 Numbers = NDArray[np.intp]
 
 BLOCK = 128  # units solved side by side, at most
@@ -66,6 +68,36 @@ def evaluate_variations(
         np.concatenate([part for part, (owner, _) in zip(parts, tasks, strict=True) if owner == v])
         for v in range(len(variations))
     ]
+
+
+def figures_of_units(
+    plan: Plan, names: Sequence[CaseName], draws: Draws, jobs: int | None
+) -> dict[CaseName, dict[str, Floats]]:
+    """Figures (N,) of drawn units in some cases of a plan, NaN where a unit has none."""
+    block = min(draws.count, BLOCK)
+    tasks = [(name, first) for name in names for first in range(0, draws.count, block)]
+    if jobs == 1 or len(tasks) <= 1:
+        parts = [_figures(plan, name, draws.rows(first, block)) for name, first in tasks]
+    else:
+        with on_disk(plan) as plan_file:
+            work = Parallel(n_jobs=jobs or -1)
+            parts = work(
+                delayed(_figures_stored)(plan_file, name, draws.rows(first, block))
+                for name, first in tasks
+            )
+    return {
+        name: {column: np.concatenate([part[column] for part in own]) for column in own[0]}
+        for name in names
+        for own in [[part for part, (case, _) in zip(parts, tasks, strict=True) if case == name]]
+    }
+
+
+def _figures(plan: Plan, name: CaseName, draws: Draws) -> dict[str, Floats]:
+    return case_figures(plan, name, draws, *solve_case(plan, name, draws))
+
+
+def _figures_stored(plan_file: str, name: CaseName, draws: Draws) -> dict[str, Floats]:
+    return _figures(stored_plan(plan_file), name, draws)
 
 
 def _varied(plan: Plan, variation: Variation) -> Plan:

@@ -44,7 +44,7 @@ def summary_lines(summary: Summary) -> list[str]:
         ("Hardest driven: p99 over the limit, else over the rating", _stresses(summary)),
         ("What matters: share of variance, 95 % interval", _factors(summary)),
         ("Guessed laws", _laws(summary.get("law_check") or {})),
-        ("Quality", _quality(summary["quality"])),
+        ("Quality", _quality(summary["quality"], summary.get("prototype"))),
     ):
         rows = list(body)
         if rows:
@@ -98,7 +98,9 @@ def _laws(law_check: Mapping[str, Any]) -> Iterator[str]:
     yield from textwrap.wrap(law_check.get("sentence", ""), WIDTH - 2)
 
 
-def _quality(quality: Mapping[str, Any]) -> Iterator[str]:
+def _quality(quality: Mapping[str, Any], bench: Mapping[str, Any] | None) -> Iterator[str]:
+    if bench is not None and not bench["measured"]:
+        yield "no prototype was measured: the model is unchecked"
     if quality.get("sampling"):
         yield f"sampling: {quality['sampling']}"
     balance, again = quality.get("energy_balance"), quality.get("rechecked")

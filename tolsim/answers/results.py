@@ -101,6 +101,14 @@ not known (an interval that this many units cannot close).  Every `low`, `high` 
                 "yes"), next {tables, parts, law, estimate, change, lots, pieces} (the guess worth
                 measuring next) or null, sentence}; method is "weights", "response" (fitted)
                 or "response, drawn anew" (and corrected)
+``prototype``   {measured, threshold (of joint_p), sentence, boards [{name, title, verdict ("pass",
+                "fail", "no answer"), reason (why no answer), solved_again, probes, fixed {address:
+                value}, units (that run), without (those that do not), joint_p, distance
+                (Mahalanobis), chi_square_p, readings [{figure, title, part, condition, state,
+                unit_of_measure, worse, judged (by a limit), value, uncertainty (k = 2), p5, p50,
+                p95, deviation (of the units), bare_p50 (without probe), percentile, p, z, outside
+                (farther from every unit than the uncertainty), share (of the squared distance)}],
+                suspect {reading, factor, correlation}, sentence}]}
 ``provenance``  {seed, versions {name: version}, study_sha256, tables {name: sha256},
                 recordings {path: sha256} (only if supplies have recorded ramps), ...}
 """

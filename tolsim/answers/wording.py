@@ -187,7 +187,9 @@ def verdict_sentence(summary: Summary) -> str:
     elif not y["failed"]:
         unseen = percent(1.0 - y["low"])
         sentence = f"{sentence} No failure was seen; up to {unseen} of units may still fail."
-    return " ".join([sentence, *doubts(summary)])
+    bench = summary.get("prototype") or {}
+    checked = [bench["sentence"]] if bench.get("measured") else []
+    return " ".join([sentence, *checked, *doubts(summary)])
 
 
 def doubts(summary: Summary) -> list[str]:

@@ -56,11 +56,9 @@ def _how(entry: Entry) -> str:
         words.append(
             f"{direct['units']} units drawn anew, {direct['as_expected']} of them as expected"
         )
-    if entry["effective_units"] is None:
-        words.append("weights do not apply")
-    elif entry["method"] == "weights":
+    if entry["method"] == "weights":
         words.append(f"all units weighted, worth {entry['effective_units']:.0f} plain ones")
-    else:
+    elif entry["effective_units"] is not None:
         words.append(f"weights would leave only {entry['effective_units']:.3g} units")
     return "; ".join(words)
 

@@ -13,6 +13,7 @@ from numpy.typing import NDArray
 from tolsim.answers.lot_words import lot_sentences, lot_tables
 from tolsim.answers.unit_files import write_text
 from tolsim.answers.wording import DASH, confidence_words, percent, percents, verdict_sentence
+from tolsim.report.bench import bench_section
 from tolsim.report.charts import start_margin_chart, waveform_chart
 from tolsim.report.content import FAIL, PASS, UNDECIDED, ReportInput
 from tolsim.report.laws import law_section
@@ -73,6 +74,7 @@ def render(content: ReportInput) -> str:
         others=other_rows(summary),
         rankings=ranking_columns(summary),
         laws=law_section(summary),
+        bench=bench_section(summary),
         waves=[
             {"wave": wave, "svg": waveform_chart(wave, number)}
             for number, wave in enumerate(content.waveforms)

@@ -8,6 +8,7 @@
     [states.full]                    title, starts_here, values, spread
     [conditions.hot]                 ambient, supply, age, since_soldering, board_rise
     [mission]                        years, conditions, states, activation_energy, reference
+    [prototype.NAME]                 readings of a built board, probe, its measured parts
     [trim.NAME]                      a part turned per unit until a reading meets its target
     [[limits]]                       figure, parts, at_most | at_least | share_of_rating, rule
 
@@ -40,6 +41,7 @@ from tolsim.study.markings import expanded
 from tolsim.study.mission import mission_problems
 from tolsim.study.nets import net_problems
 from tolsim.study.outline import Table, named_tables
+from tolsim.study.prototypes import read_prototypes
 from tolsim.study.reading import Reading
 from tolsim.study.recording import Recording
 from tolsim.study.supplies import Recordings, supply_problems
@@ -73,6 +75,7 @@ class _Top(Frozen):
     states: Mapping[str, Any] = {}
     conditions: Mapping[str, Any] = {}
     trim: Mapping[str, Any] = {}
+    prototype: Mapping[str, Any] = {}
     limits: tuple[Any, ...] = ()
 
 
@@ -200,6 +203,7 @@ def read_study(
     conditions = reading.conditions(outline)
     limits = reading.limits(outline)
     trims = read_trims(outline, reading.problems)
+    prototypes = read_prototypes(outline, reading)
     values = {name: state.values for name, state in states.items()}
     reading.problems += study_problems(outline)
     reading.problems += supply_problems(outline)
@@ -222,6 +226,7 @@ def read_study(
         lots=top.lots,
         mission=top.mission,
         trims=trims,
+        prototypes=prototypes,
         expected_frequency=top.expected_frequency,
         kind=top.kind,
     )

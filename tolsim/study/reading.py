@@ -115,7 +115,7 @@ class Reading:
             values = table.get("values", {})
             numbers = {}
             for address, value in values.items() if isinstance(values, dict) else ():
-                number = self._override(outline, f"{place}.values", address, value)
+                number = self.override(outline, f"{place}.values", address, value)
                 if number is not None:
                     numbers[address] = number
             read = {**table, "values": numbers} if isinstance(values, dict) else table
@@ -124,7 +124,7 @@ class Reading:
                 found[name] = state
         return found
 
-    def _override(self, outline: Outline, place: str, address: str, value: object) -> float | None:
+    def override(self, outline: Outline, place: str, address: str, value: object) -> float | None:
         """Value of "REF.quantity", read as that quantity of that part."""
         ref, _, quantity = address.partition(".")
         kind = outline.kinds.get(ref)

@@ -1,0 +1,57 @@
+"""What the bench says about the model, in sentences."""
+
+from __future__ import annotations
+
+from collections.abc import Mapping
+from typing import Any
+
+from tolsim.answers.wording import measured, percent
+
+Entry = Mapping[str, Any]
+
+MIDDLE = 0.5
+FAR = 0.90  # percentile (or 1 minus it) worth telling
+STARTS_BETTER = ("start_margin", "start_time", "growth_rate")
+
+
+def board_sentence(board: Entry, *, single: bool) -> str:
+    """Verdict on one board: passes or fails, how unlikely it is, what stands out."""
+    who = "the prototype" if single else f'prototype "{board["name"]}"'
+    if board["verdict"] == "no answer":
+        return f"Model check: no answer for {who}, {board['reason']}."
+    number = len(board["readings"])
+    joint = f"{number} readings together" if number > 1 else "its reading"
+    p = f"p = {board['joint_p']:.2g}"
+    if board["verdict"] == "pass":
+        return f"Model check: pass, {who} could be one of the units ({joint}: {p}){_luck(board)}."
+    suspect = board["suspect"]
+    worst = next(one for one in board["readings"] if name_of(one) == suspect["reading"])
+    unit = worst["unit_of_measure"]
+    follows = f"; it follows {suspect['factor']} most" if suspect["factor"] else ""
+    return (
+        f"Model check: FAIL, {who} is none of the units this model builds ({joint}: {p}). Suspect"
+        f" {worst['part']} {worst['title'].lower()} first: {measured(worst['value'], unit)} read,"
+        f" {measured(worst['p5'], unit)} to {measured(worst['p95'], unit)} predicted{follows}."
+    ).replace("  ", " ")
+
+
+def name_of(reading: Entry) -> str:
+    """Column of a reading: "Q1.drain_peak"."""
+    return f"{reading['part']}.{reading['figure']}" if reading["part"] else str(reading["figure"])
+
+
+def _luck(board: Entry) -> str:
+    """The reading farthest in the tails, if that is worth telling, and what it means."""
+    far = max(board["readings"], key=lambda one: abs(one["percentile"] - MIDDLE))
+    share = far["percentile"]
+    if max(share, 1.0 - share) < FAR:
+        return ""
+    what = f"{far['part']} {far['title'].lower()}".strip()
+    said = f"; its {what} is higher than in {percent(share, 0)} of the units"
+    if share < MIDDLE:
+        said = f"; its {what} is lower than in {percent(1.0 - share, 0)} of the units"
+    if far["figure"] not in STARTS_BETTER and not far["judged"]:
+        return said
+    good = share if far["worse"] == "low" else 1.0 - share
+    kind = "starter" if far["figure"] in STARTS_BETTER else "board"
+    return f"{said}: a{' lucky' if good > MIDDLE else 'n unlucky'} {kind}"
