@@ -108,7 +108,7 @@ def shoot(
         Units not settled carry `Status.NOT_CONVERGED` and NaN samples.
     """
     units, n = start.x.shape
-    found = _unsolved(case, units, n, steps, way)
+    found = unsolved(case, units, n, steps, way)
     members: Floats | None = None
     active = np.arange(units)
     here = start.take(np.arange(units))
@@ -150,7 +150,8 @@ def shoot(
     return found
 
 
-def _unsolved(case: Case, units: int, n: int, steps: int, way: str) -> Solution:
+def unsolved(case: Case, units: int, n: int, steps: int, way: str) -> Solution:
+    """A solution still to be found."""
     return Solution(
         status=np.full(units, Status.NOT_CONVERGED, dtype=np.intp),
         samples=np.full((steps + 1, units, n), np.nan),
