@@ -290,3 +290,14 @@ def test_another_sampling_is_told_beside_the_quality():
     )
     assert summary["quality"]["sampling"].startswith("latin-hypercube; intervals as for random")
     assert any("latin-hypercube" in line for line in summary_lines(summary))
+
+
+def test_lots_are_a_table_in_python(run):
+    rows, results = run
+    found = results.lots
+    assert list(found.columns) == ["lot", "units", "failed", "undecided"]
+    assert found["units"].tolist() == [10] * 30
+    by_lot = pd.Series(failing(rows)).groupby(np.arange(300) // 10).sum()
+    assert found["failed"].tolist() == by_lot.tolist()
+    assert found["undecided"].sum() == results.summary["yield"]["undecided"]
+    assert fake_run.results().lots.empty

@@ -256,9 +256,11 @@ class _Check:
         """Density ratios (N,); None where they do not tell the share under the other law.
 
         That is where some parts of it were never drawn, where one rank stands for values under
-        several tables, and where units share what they are built from.
+        several tables, where units share what they are built from, and where parts depend on
+        each other.
         """
-        if self.study.lots or any(len(family.tables) > 1 for family in scope.families):
+        tied = any(factor.tie or factor.match for factor in self._factors_of(scope.families))
+        if self.study.lots or tied or any(len(f.tables) > 1 for f in scope.families):
             return None
         weights = np.ones(self.count)
         own = self._factors_of(scope.families)

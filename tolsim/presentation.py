@@ -19,7 +19,7 @@ from tolsim.inputs import input_rows
 from tolsim.parts import Inductor
 from tolsim.report import ReportInput, Waveform, report_input
 from tolsim.self_heating import heating_notes
-from tolsim.spread.sampling import draw, tables_of
+from tolsim.spread.sampling import Draws, draw, draw_chosen, tables_of
 from tolsim.spread.table import SpreadTable
 from tolsim.spread.words import assumptions
 from tolsim.study import StudyFile
@@ -104,11 +104,19 @@ class Signal:
     units: Floats
 
 
+def _shown_units(plan: Plan) -> Draws:
+    """Units that make the bands of waveforms: the first ones, or from as many lots as can be."""
+    study = plan.study
+    count = min(WAVE_UNITS, study.run.units)
+    if study.lots is None:
+        return draw(plan.factors, study.run.seed, 0, count)
+    return draw_chosen(plan.factors, study.run.seed, np.arange(count) * study.run.units // count)
+
+
 def _waveforms(plan: Plan) -> Iterator[Waveform]:
     """Drain and gate of the first transistor and the hardest-worked coil, in every state."""
     condition = reference_condition(plan.study)
-    draws = draw(plan.factors, plan.study.run.seed, 0, min(WAVE_UNITS, plan.study.run.units))
-    draws = built(plan, draws)
+    draws = built(plan, _shown_units(plan))
     for state in plan.study.states:
         nominal = plan.cases[(condition, state)].nominal
         if not nominal.found:

@@ -20,13 +20,14 @@ from tolsim.answers.results import STUDY_FILE, TABLES_FOLDER, Results
 from tolsim.answers.trims import trim_sentence
 from tolsim.answers.wording import shown
 from tolsim.circuit.orbit import Status
+from tolsim.design import Study
 from tolsim.errors import RequestError
 from tolsim.evaluation import Plan, built, solve_case
 from tolsim.nominals import CaseName, prepare
 from tolsim.presentation import Signal, signals
 from tolsim.quantity import show
 from tolsim.spread.sampling import Draws, draw, factors
-from tolsim.stats.ranking import rank_correlation
+from tolsim.stats.ranking import rank_correlation, readings_of
 from tolsim.study import StudyFile, open_study
 
 UNUSUAL = 6  # factors named in the story
@@ -86,6 +87,7 @@ def replay_unit(folder: Path | str, number: int) -> Replay:
     influence = _influence(results, draws.names, broken)
     story = (
         *_version_story(results),
+        *_lot_story(results, study, number),
         *_outcome_story(opened, rows, broken),
         *_draw_story(draws, influence),
         *_neighbour(results, draws, influence),
@@ -101,6 +103,16 @@ def _version_story(results: Results) -> list[str]:
     return [
         f"Made by tolsim {made_by}, solved again by {__version__}: figures may differ a little."
     ]
+
+
+def _lot_story(results: Results, study: Study, number: int) -> list[str]:
+    """How the other units of its lot do, if units are built in lots."""
+    if study.lots is None:
+        return []
+    lots = results.lots
+    own = lots[lots["lot"] == number // study.lots.units_per_lot].iloc[0]
+    of_all = f"of all {lots['units'].sum()} units {lots['failed'].sum()} do"
+    return [f"Lot {own['lot']}: {own['failed']} of its {own['units']} units fail; {of_all}."]
 
 
 def _rows_of(results: Results, number: int) -> pd.DataFrame:
@@ -225,7 +237,8 @@ def _influence(results: Results, names: tuple[str, ...], broken: list[_Broken]) 
     known = np.isfinite(target)
     if known.sum() < FEWEST_UNITS:
         return _Influence(title, names, numbers, table, np.zeros(len(names)))
-    r, low, high = rank_correlation(table[known], target[known], CONFIDENCE)
+    readings = readings_of(table[known]) if results.summary.get("lots") else None
+    r, low, high = rank_correlation(table[known], target[known], CONFIDENCE, readings)
     return _Influence(title, names, numbers, table, np.where((low > 0) | (high < 0), r, 0.0))
 
 

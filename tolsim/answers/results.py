@@ -248,6 +248,19 @@ class Results:
         )
 
     @property
+    def lots(self) -> pd.DataFrame:
+        """Units, failed and undecided of every lot; empty if units are not built in lots."""
+        per_lot = self.summary.get("lots", {}).get("units_per_lot")
+        if per_lot is None:
+            return pd.DataFrame(columns=["lot", "units", "failed", "undecided"])
+        rows = pd.DataFrame({name: self.unit_columns.column(name) for name in ("unit", "verdict")})
+        failed = (rows["verdict"] == "fail").groupby(rows["unit"]).any()
+        undecided = (rows["verdict"] == "undecided").groupby(rows["unit"]).any() & ~failed
+        units = pd.DataFrame({"units": 1, "failed": failed, "undecided": undecided}).astype(int)
+        found = units.groupby(units.index // per_lot).sum()
+        return found.rename_axis("lot").reset_index()
+
+    @property
     def quality(self) -> Mapping[str, Any]:
         """How good the solutions are."""
         quality: Mapping[str, Any] = self.summary.get("quality", {})

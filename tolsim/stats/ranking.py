@@ -110,7 +110,7 @@ def rank_factors(
     reason = _why_not(y, group)
     if reason:
         return _not_ranked(x.shape[1], units, missing, reason)
-    readings = _readings(x) if group is not None else None
+    readings = readings_of(x) if group is not None else None
     correlation, c_low, c_high = rank_correlation(x, y, confidence, readings)
     together = 1.0 - (1.0 - confidence) / max(x.shape[1], 1)
     _, far_low, far_high = rank_correlation(x, y, together, readings)
@@ -172,8 +172,8 @@ def rank_correlation(
     return r, np.tanh(z - reach), np.tanh(z + reach)
 
 
-def _readings(x: Floats) -> Floats:
-    """Different draws of each factor."""
+def readings_of(x: Floats) -> Floats:
+    """Different draws of each factor (n, k) -> (k,): units of a lot may share one."""
     return np.array([float(np.unique(column).size) for column in x.T])
 
 
