@@ -10,7 +10,9 @@ from scipy import stats
 
 from tolsim.errors import RequestError, StudyError
 from tolsim.run import run_study
+from tolsim.spread.part_values import part_values
 from tolsim.spread.reading import read_shelf
+from tolsim.spread.sampling import draw, factors
 from tolsim.spread.words import assumptions, describe
 from tolsim.study import open_study
 
@@ -149,3 +151,49 @@ def test_an_unknown_table_may_lie_in_a_file_that_cannot_be_read(tmp_path):
         open_study(tmp_path / "study.toml")
     files = {problem.file for problem in caught.value.problems}
     assert files == {"study.toml", "torn.toml"}
+
+
+def test_the_bias_of_a_meter_is_one_unknown_number_for_all_parts(tmp_path):
+    law = LAW.replace("}", ', meter_bias = "1 %"}')
+    table = write(tmp_path, law).tables["reel"]
+    assert table.quantities["capacitance"].meter.support == pytest.approx((-0.01, 0.01))
+    assert "error of the meter, the same for all parts" in " ".join(describe(table))
+    (tmp_path / "study.toml").write_text(study_text())
+    opened = open_study(tmp_path / "study.toml")
+    names = factors(opened.study, opened.tables)
+    meters = [factor for factor in names if factor.aspect == "meter"]
+    assert [factor.name for factor in meters] == ["readings of reel.capacitance meter error"]
+    with_meter = values_of(opened, names)
+    without = values_of(opened, names, meter=0.5)
+    error = with_meter["CA.capacitance"] / 3e-9 - without["CA.capacitance"] / 3e-9
+    same = with_meter["CSA.capacitance"] / 510e-12 - without["CSA.capacitance"] / 510e-12
+    assert np.ptp(error) > 0.01  # unknown: every unit of the sample is another possibility
+    np.testing.assert_allclose(error, same, atol=1e-12)  # but all parts of a unit share it
+
+
+def values_of(opened, names, meter=None):
+    draws = draw(names, 3, 0, 50)
+    if meter is not None:
+        column = draws.column["readings of reel.capacitance meter error"]
+        draws.values[:, column] = names[column].law.ppf(np.full(50, meter))
+    condition, state = next(iter(opened.study.conditions)), next(iter(opened.study.states))
+    return part_values(opened.study, opened.tables, condition, state, draws)
+
+
+def test_a_meter_has_one_law_only(tmp_path):
+    law = (
+        LAW.replace("}", ', meter_bias = "1 %"}') + '\nmeter = {law = "uniform", half_width = 0.1}'
+    )
+    found = write(tmp_path, law).broken["reel"]
+    assert [problem.key for problem in found] == ["tolerance.meter_bias"]
+
+
+def test_readings_are_called_measured_whatever_the_rest_of_the_table_is(tmp_path):
+    table = write(tmp_path, LAW).tables["reel"]
+    assert table.quantities["capacitance"].origins["tolerance"].source == "our meter"
+    text = (tmp_path / "tables.toml").read_text().replace('basis = "measured"', 'basis = "guess"')
+    (tmp_path / "tables.toml").write_text(text)
+    origin = (
+        read_shelf(None, tmp_path).tables["reel"].quantities["capacitance"].origins["tolerance"]
+    )
+    assert (origin.basis, origin.source) == ("measured", "12 pieces in reel.csv")

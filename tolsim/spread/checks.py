@@ -143,7 +143,7 @@ def _nominals(study: Study, reference: str, quantity: str) -> Iterator[float]:
 
 def _ends(spread: QuantitySpread, nominal: float) -> tuple[float, float]:
     """Lowest and highest value that lot shift and tolerance allow."""
-    laws = [law for law in (spread.lot, spread.tolerance) if law is not None]
+    laws = [law for law in (spread.lot, spread.tolerance, spread.meter) if law is not None]
     low = sum(law.support[0] for law in laws)
     high = sum(law.support[1] for law in laws)
     if spread.deviation == "absolute":

@@ -13,7 +13,7 @@ from pathlib import Path
 from typing import Any, Final, cast, get_args
 
 from tolsim.errors import Mistake, Problem, nearest_name
-from tolsim.laws import Law
+from tolsim.laws import Law, Measured
 from tolsim.laws.reading import read_law
 from tolsim.parts import AnyPart
 from tolsim.spread import measured_reading
@@ -184,6 +184,7 @@ class Entry:
     ) -> QuantitySpread:
         """Laws of one quantity."""
         table = f"{self.table}.{name}"
+        given = self._with_meter(given, table)
         for key in given:
             if key not in (*_SETTINGS, *ASPECTS):
                 self._unknown(key, (*ASPECTS, *_SETTINGS), table)
@@ -218,6 +219,9 @@ class Entry:
             else:
                 own = origin
             laws[aspect] = self._law(aspect, words, name, deviation, kinds, table)
+            if isinstance(laws[aspect], Measured) and own is origin and own.basis != "measured":
+                sample = laws[aspect].sample
+                own = Origin("measured", f"{sample.pieces} pieces in {sample.file}")
             if laws[aspect] is not None:
                 origins[aspect] = own
         spread = QuantitySpread(
@@ -242,6 +246,20 @@ class Entry:
         if isinstance(words, Mapping):
             origins["follows"] = self._origin(words, origin, f"{table}.follows")
         return read_follows(words, lambda mistake: self.report(mistake, table))
+
+    def _with_meter(self, given: Mapping[str, Any], table: str) -> Mapping[str, Any]:
+        """The `meter_bias` of a measured law as a law of its own: the same for all parts."""
+        tolerance = given.get("tolerance")
+        if not isinstance(tolerance, Mapping) or "meter_bias" not in tolerance:
+            return given
+        if tolerance.get("law") != measured_reading.NAME or "meter" in given:
+            expected = "meter_bias in a measured law, and no law meter beside it"
+            self.report(Mistake(expected, key="tolerance.meter_bias"), table)
+            return given
+        rest = {key: value for key, value in tolerance.items() if key != "meter_bias"}
+        meter = {"law": "uniform", "half_width": tolerance["meter_bias"]}
+        own = {key: tolerance[key] for key in ("basis", "source") if key in tolerance}
+        return {**given, "tolerance": rest, "meter": {**meter, **own}}
 
     def _law(
         self,
@@ -284,7 +302,7 @@ class Entry:
         if aspect in ("temperature", "ageing"):
             return self._choice(words["shared"], ("reel", "part"), "shared", table) == "reel"
         self.report(
-            Mistake("no key shared: lot is shared by a reel, tolerance never", key="shared"), table
+            Mistake("no key shared: a reel shares lot, a table its meter", key="shared"), table
         )
         return False
 
@@ -303,7 +321,8 @@ class Entry:
 
     def _check_reach(self, spread: QuantitySpread, table: str) -> None:
         """Lot shift and tolerance together must leave a part that can exist."""
-        laws: list[Law] = [law for law in (spread.tolerance, spread.lot) if law is not None]
+        every = (spread.tolerance, spread.lot, spread.meter)
+        laws: list[Law] = [law for law in every if law is not None]
         low = sum(law.support[0] for law in laws)
         high = sum(law.support[1] for law in laws)
         if spread.deviation == "position" and (low < -1.0 - 1e-9 or high > 1.0 + 1e-9):

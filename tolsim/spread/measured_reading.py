@@ -27,6 +27,7 @@ _KEYS: Final = (
     "low",
     "high",
     "meter_noise",
+    "meter_bias",
     "test_frequency",
 )
 

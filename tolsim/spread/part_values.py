@@ -36,6 +36,7 @@ from tolsim.spread.sampling import (
     aspect_words,
     condition_law,
     factor_name,
+    owner_of,
     reel_of,
 )
 from tolsim.spread.table import QuantitySpread, SpreadTable
@@ -98,7 +99,7 @@ def nominal_values(
     """
 
     def drawn(_: str, aspect: str, law: Law) -> Floats:
-        return np.zeros(1) if aspect in ("tolerance", "lot") else law.ppf(np.full(1, 0.5))
+        return np.zeros(1) if aspect in ("tolerance", "lot", "meter") else law.ppf(np.full(1, 0.5))
 
     values = _Maker(study, tables, condition, state, 1, drawn, rises or {}).values()
     return adjusted(study, values, moved)
@@ -284,14 +285,15 @@ class _Maker:
             return None
         words = aspect_words(table, quantity, aspect)
         shared_by = reel_of(reel, table, quantity, aspect)
-        return self.drawn(factor_name(reference, quantity, words, shared_by, piece), aspect, law)
+        owner = owner_of(reference, table, aspect)
+        return self.drawn(factor_name(owner, quantity, words, shared_by, piece), aspect, law)
 
     def _deviation(
         self, reference: str, quantity: str, reel: str | None, piece: int | None
     ) -> Floats:
-        """Lot shift plus tolerance."""
+        """Lot shift plus tolerance, plus the error of the meter they were read from."""
         deviation = np.zeros(self.count)
-        for aspect, number in (("lot", None), ("tolerance", piece)):
+        for aspect, number in (("lot", None), ("tolerance", piece), ("meter", None)):
             drawn = self._draw(reference, quantity, aspect, reel, number)
             if drawn is not None:
                 deviation = deviation + drawn

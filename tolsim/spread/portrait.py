@@ -62,7 +62,7 @@ def _portrait(name: str, spread: QuantitySpread) -> Portrait:
         scale, unit = 100.0, "%"
     elif spread.deviation == "position":
         unit = ""
-    laws = [law for law in (spread.lot, spread.tolerance) if law is not None]
+    laws = [law for law in (spread.lot, spread.tolerance, spread.meter) if law is not None]
     ends = (
         scale * sum(law.support[0] for law in laws),
         scale * sum(law.support[1] for law in laws),

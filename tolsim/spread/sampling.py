@@ -59,7 +59,7 @@ class Factor:
         Part (piece "C1#2" of a bank, or the reel of a shared factor) and quantity it acts
         on; empty for conditions.
     aspect : str
-        "tolerance", "lot", "temperature", "ageing" or "condition".
+        "tolerance", "lot", "temperature", "ageing", "meter" or "condition".
     table : str
         Name of the spread table its law comes from; the condition, for conditions; empty for
         trims.
@@ -173,17 +173,22 @@ def aspect_words(table: SpreadTable, quantity: str, aspect: str) -> str:
         return spread.temperature.WHAT
     if aspect == "ageing" and spread.ageing:
         return spread.ageing.WHAT
-    return {"tolerance": "tolerance", "lot": "lot shift"}[aspect]
+    return {"tolerance": "tolerance", "lot": "lot shift", "meter": "meter error"}[aspect]
+
+
+def owner_of(part: str, table: SpreadTable, aspect: str) -> str:
+    """Whose draw it is: the part's own, or that of the meter all its table's readings come from."""
+    return f"readings of {table.name}" if aspect == "meter" else part
 
 
 def reel_of(reel: str | None, table: SpreadTable, quantity: str, aspect: str) -> str | None:
     """Reel whose parts share the draw of this aspect, if any."""
-    return reel if is_shared(table, quantity, aspect) else None
+    return reel if is_shared(table, quantity, aspect) and aspect != "meter" else None
 
 
 def is_shared(table: SpreadTable, quantity: str, aspect: str) -> bool:
-    """True if this aspect belongs to a reel, not to a single part."""
-    return aspect == "lot" or aspect in table.quantities[quantity].shared
+    """True if this aspect belongs to a reel or a meter, not to a single part."""
+    return aspect in ("lot", "meter") or aspect in table.quantities[quantity].shared
 
 
 def factors(study: Study, tables: Mapping[str, SpreadTable]) -> tuple[Factor, ...]:
@@ -248,9 +253,10 @@ def _of_table(
                 tie = Tie.to_reel(whole, tracking)
             scattered = aspect == "tolerance" and quantity == "capacitance" and pieces > 1
             for piece in range(1, pieces + 1) if scattered else (None,):
-                owner = part if piece is None else f"{part}#{piece}"
+                own = owner_of(part, table, aspect)
+                owner = own if piece is None else f"{part}#{piece}"
                 yield Factor(
-                    factor_name(part, quantity, words, shared_by, piece),
+                    factor_name(own, quantity, words, shared_by, piece),
                     law,
                     shared_by or owner,
                     quantity,

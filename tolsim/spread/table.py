@@ -19,11 +19,11 @@ from tolsim.spread.temperature import TemperatureLaw
 
 Basis = Literal["standard", "datasheet", "measured", "common practice", "guess"]
 Deviation = Literal["relative", "absolute", "position"]
-Aspect = Literal["tolerance", "lot", "temperature", "ageing", "condition"]
+Aspect = Literal["tolerance", "lot", "temperature", "ageing", "meter", "condition"]
 
 BASES: Final = ("standard", "datasheet", "measured", "common practice", "guess")
 DEVIATIONS: Final = ("relative", "absolute", "position")
-ASPECTS: Final = ("tolerance", "lot", "temperature", "ageing")
+ASPECTS: Final = ("tolerance", "lot", "temperature", "ageing", "meter")
 FOLLOWING: Final = ("tolerance", "lot")
 """Aspects in which one quantity of a part may follow another."""
 
@@ -42,9 +42,12 @@ class QuantitySpread:
 
     Attributes
     ----------
+    meter : Law or None
+        Error of the meter whose readings the other laws come from: unknown, and the same for
+        all parts that follow the table.
     deviation : str
-        How `tolerance` and `lot` are meant: "relative" to nominal, "absolute" in the unit of
-        measure of the quantity, or for thresholds a "position" in the datasheet window,
+        How `tolerance`, `lot` and `meter` are meant: "relative" to nominal, "absolute" in the
+        unit of measure of the quantity, or for thresholds a "position" in the datasheet window,
         -1 at minimum, 0 at typical, +1 at maximum.
     implied_half_window : float
         V; half of the threshold window where neither sheet nor model gives one.
@@ -62,6 +65,7 @@ class QuantitySpread:
     lot: Law | None = None
     temperature: TemperatureLaw | None = None
     ageing: AgeingLaw | None = None
+    meter: Law | None = None
     deviation: Deviation = "relative"
     implied_half_window: float = 1.0
     shared: frozenset[str] = frozenset()
@@ -75,6 +79,8 @@ class QuantitySpread:
             return self.tolerance
         if aspect == "lot":
             return self.lot
+        if aspect == "meter":
+            return self.meter
         if aspect == "temperature":
             return self.temperature.drawn if self.temperature else None
         return self.ageing.rate if self.ageing else None

@@ -24,6 +24,7 @@ _LABELS: Mapping[str, str] = {
     "lot": "lot shift",
     "temperature": "temperature",
     "ageing": "ageing",
+    "meter": "error of the meter, the same for all parts",
 }
 
 FAR_FREQUENCY = 10.0  # a meter further from the frequency of use is worth a sentence
