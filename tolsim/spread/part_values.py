@@ -36,7 +36,6 @@ from tolsim.spread.sampling import (
     aspect_words,
     condition_law,
     factor_name,
-    owner_of,
     reel_of,
 )
 from tolsim.spread.table import QuantitySpread, SpreadTable
@@ -285,7 +284,7 @@ class _Maker:
             return None
         words = aspect_words(table, quantity, aspect)
         shared_by = reel_of(reel, table, quantity, aspect)
-        owner = owner_of(reference, table, aspect)
+        owner = table.owner(reference, aspect)
         return self.drawn(factor_name(owner, quantity, words, shared_by, piece), aspect, law)
 
     def _deviation(

@@ -176,11 +176,6 @@ def aspect_words(table: SpreadTable, quantity: str, aspect: str) -> str:
     return {"tolerance": "tolerance", "lot": "lot shift", "meter": "meter error"}[aspect]
 
 
-def owner_of(part: str, table: SpreadTable, aspect: str) -> str:
-    """Whose draw it is: the part's own, or that of the meter all its table's readings come from."""
-    return f"readings of {table.name}" if aspect == "meter" else part
-
-
 def reel_of(reel: str | None, table: SpreadTable, quantity: str, aspect: str) -> str | None:
     """Reel whose parts share the draw of this aspect, if any."""
     return reel if is_shared(table, quantity, aspect) and aspect != "meter" else None
@@ -253,7 +248,7 @@ def _of_table(
                 tie = Tie.to_reel(whole, tracking)
             scattered = aspect == "tolerance" and quantity == "capacitance" and pieces > 1
             for piece in range(1, pieces + 1) if scattered else (None,):
-                own = owner_of(part, table, aspect)
+                own = table.owner(part, aspect)
                 owner = own if piece is None else f"{part}#{piece}"
                 yield Factor(
                     factor_name(own, quantity, words, shared_by, piece),

@@ -106,6 +106,10 @@ class SpreadTable:
     file_text: str = field(default="", repr=False, compare=False)
     readings: Mapping[str, str] = field(default_factory=dict, repr=False, compare=False)
 
+    def owner(self, part: str, aspect: str) -> str:
+        """Whose draw an aspect is: the part's own, or the meter's that all readings come from."""
+        return f"readings of {self.name}" if aspect == "meter" else part
+
     @property
     def guesses(self) -> tuple[str, ...]:
         """Addresses like "capacitance lot" of the laws that are guesses."""
