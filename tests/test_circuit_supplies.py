@@ -10,9 +10,12 @@ from tests.circuits import circuit_a, typical_values
 from tolsim.circuit.assembly import assemble
 from tolsim.circuit.bias import bias_point
 from tolsim.circuit.network import Network
+from tolsim.circuit.nominal import find_nominal
 from tolsim.circuit.supply_ramp import profile_of
+from tolsim.circuit.thermal import Case
 from tolsim.circuit.transient import march
 from tolsim.design import Design, Rail
+from tolsim.figures import measure_orbits
 from tolsim.parts import Capacitor, Resistor
 
 Floats = NDArray[np.float64]
@@ -146,3 +149,42 @@ def test_units_picked_from_a_live_network_keep_their_rails():
     picked = assemble(design, values, live_rails=True).take(np.array([2, 0]))
     bias = bias_point(picked.raised(np.array([0.5, 1.0])))
     assert picked.potential("vdd", bias.x) == pytest.approx([14.0, 10.0], rel=1e-5)
+
+
+@pytest.mark.parametrize(
+    ("supply", "current"),
+    [
+        ({"inductance": 2e-6, "bulk_capacitance": 10e-6, "bulk_resistance": 0.02}, None),
+        ({"current_limit": 3.9}, 3.9),
+    ],
+)
+def test_energy_of_a_running_stage_closes(supply: dict[str, float], current: float | None) -> None:
+    """Power from the source is all heat and output, also with the stage held at the limit."""
+    plain = circuit_a()
+    rail = Rail(net="vdd", voltage=24.0, resistance=0.05, **supply)  # type: ignore[arg-type]
+    design = plain.model_copy(update={"rails": {**plain.rails, "vdd": rail}})
+    mean, figures = running(design)
+    assert abs(figures["energy_balance"]) < 1e-3
+    assert figures["frequency"] == pytest.approx(6.60444e6, rel=1e-3)
+    if current is None:  # nothing but direct current comes through the cable
+        assert figures["vdd.current_ripple"] < 1e-4
+        assert figures["vdd.current_mean"] == pytest.approx(4.22 * (24 - 0.05 * 4.2) / 24, rel=3e-3)
+        return
+    drawn = figures["vdd.current_mean"]
+    assert drawn == pytest.approx(current, rel=5e-3)
+    given = (mean["vdd"] + 0.05 * drawn) * drawn  # not the 24 V that the limit holds back
+    assert figures["input_power"] == pytest.approx(given, rel=1e-3)
+
+
+def running(design: Design) -> tuple[dict[str, float], dict[str, float]]:
+    """Mean net voltages and figures of the nominal orbit, started near it."""
+    case = Case(design, typical_values(design), heated=False)
+    nominal = find_nominal(case, 128)
+    assert nominal.found
+    index = case.network(case.cold_junctions()).index
+    mean = nominal.solution.samples[:-1, 0].mean(axis=0)
+    figures = measure_orbits(case, nominal.solution)
+    return (
+        {name: float(mean[i]) for name, i in index.items()},
+        {name: float(value[0]) for name, value in figures.items()},
+    )

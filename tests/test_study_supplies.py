@@ -15,6 +15,7 @@ from tolsim.answers.provenance import provenance_of
 from tolsim.answers.supply_words import supply_entries, supply_words
 from tolsim.circuit.supply_ramp import profile_of
 from tolsim.design import Bounce, Dip, Rail
+from tolsim.run import keep_recordings
 from tolsim.study import StudyFile, read_study
 from tolsim.study.recording import read_recording
 from tolsim.study.supplies import Recordings
@@ -196,3 +197,15 @@ def test_a_recording_is_hashed_with_what_a_run_is_made_from(tmp_path):
     assert first != second
     assert "recordings" not in provenance_of(opened(tmp_path, ""))
     assert supply_entries(study.study)[0]["words"].endswith("rises as recorded in scope.csv")
+
+
+def test_results_keep_the_recordings_beside_the_study(tmp_path):
+    """What a results folder holds reads as the same study."""
+    (tmp_path / "in" / "traces").mkdir(parents=True)
+    (tmp_path / "in" / "traces" / "scope.csv").write_bytes(b"t [ms];U\xb0\n0;0\n1;2\n2;5\n3;5\n")
+    keys = 'ramp_file = "traces/scope.csv"'
+    first = opened(tmp_path / "in", keys)
+    keep_recordings(first, tmp_path / "out")
+    second = opened(tmp_path / "out", keys)
+    assert second.study == first.study
+    assert provenance_of(second)["recordings"] == provenance_of(first)["recordings"]

@@ -138,7 +138,7 @@ def _solve_and_judge(
     results = Results(summary, opened.text, store.folder, unit_table, factor_table)
     results = results.save(store.folder)
     _keep_tables(opened, store.folder / TABLES_FOLDER)
-    _keep_recordings(opened, store.folder)
+    keep_recordings(opened, store.folder)
     _write_report(plan, opened, results)
     return results
 
@@ -224,7 +224,7 @@ def _keep_tables(opened: StudyFile, folder: Path) -> None:
             write_text(folder / path, text)
 
 
-def _keep_recordings(opened: StudyFile, folder: Path) -> None:
+def keep_recordings(opened: StudyFile, folder: Path) -> None:
     """Copies of the recorded ramps, at the same place beside the copy of the study."""
     for path, recording in opened.recordings.items():
         (folder / path).parent.mkdir(parents=True, exist_ok=True)
