@@ -8,7 +8,9 @@ import fake_run
 import numpy as np
 import pytest
 
+from tolsim.answers.supply_words import supply_entries
 from tolsim.answers.wording import verdict_sentence
+from tolsim.design import Rail
 from tolsim.inputs import input_rows
 from tolsim.library import find_study
 from tolsim.report import render, write_report
@@ -203,3 +205,17 @@ def test_start_margins_are_those_of_start_states(content):
     assert np.bincount(content.verdicts).tolist() == [
         content.summary["yield"][key] for key in ("passed", "failed", "undecided")
     ]
+
+
+def test_supplies_are_told_and_their_rise_is_drawn(content):
+    """Each rail in words; a picture as soon as one of them takes its time."""
+    slow = Rail(net="vdd", voltage=36.0, resistance=0.1, current_limit=4.0, ramp_time=5e-3)
+    rails = {"supply": slow, "bias": Rail(net="v5", voltage=5.0)}
+    summary = {**content.summary, "supplies": supply_entries(rails)}
+    page = render(replace(content, summary=summary, rails=rails))
+    words = text_of(page)
+    assert "supply net vdd 36 V, limited to 4 A, 100 mohm; rises evenly in 5 ms" in words
+    assert "bias net v5 5 V, ideal; rises at once" in words
+    assert "Rise after power-on" in words
+    still = render(replace(content, rails={"bias": rails["bias"]}))
+    assert "Rise after power-on" not in still

@@ -196,7 +196,9 @@ def test_a_recording_is_hashed_with_what_a_run_is_made_from(tmp_path):
     assert first.keys() == second.keys() == {"scope.csv"}
     assert first != second
     assert "recordings" not in provenance_of(opened(tmp_path, ""))
-    assert supply_entries(study.study)[0]["words"].endswith("rises as recorded in scope.csv")
+    assert supply_entries(study.study.design.rails)[0]["words"].endswith(
+        "rises as recorded in scope.csv"
+    )
 
 
 def test_results_keep_the_recordings_beside_the_study(tmp_path):

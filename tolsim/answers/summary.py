@@ -69,7 +69,7 @@ def summarise(
         "format": FORMAT,
         "title": study.title,
         "kind": study.kind,
-        "supplies": supply_entries(study),
+        "supplies": supply_entries(study.design.rails),
         "yield": counting.yield_(unit_failed, unit_undecided),
         "cases": [
             {

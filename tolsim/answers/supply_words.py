@@ -2,11 +2,11 @@
 
 from __future__ import annotations
 
-from collections.abc import Iterator
+from collections.abc import Iterator, Mapping
 from typing import Any
 
 from tolsim.circuit.supply_ramp import ramp_kind
-from tolsim.design import Rail, Study
+from tolsim.design import Rail
 from tolsim.quantity import show
 
 
@@ -56,9 +56,9 @@ def _time(rail: Rail) -> Iterator[str]:
         yield f"dips to {low} for {show(dip.length, 's')}, {show(dip.at, 's')} after power-on"
 
 
-def supply_entries(study: Study) -> list[dict[str, Any]]:
+def supply_entries(rails: Mapping[str, Rail]) -> list[dict[str, Any]]:
     """The entries `supplies` of the summary."""
     return [
         {"rail": name, "net": rail.net, "voltage": rail.voltage, "words": supply_words(rail)}
-        for name, rail in study.design.rails.items()
+        for name, rail in rails.items()
     ]

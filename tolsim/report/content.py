@@ -12,7 +12,7 @@ from numpy.typing import NDArray
 from tolsim.answers.ranking import START_MARGIN, worst_case
 from tolsim.answers.results import Results
 from tolsim.answers.unit_files import UnitRows
-from tolsim.design import Study
+from tolsim.design import Rail, Study
 from tolsim.figure_names import FIGURES
 from tolsim.report.lots import LotStrips, lot_strips
 
@@ -104,6 +104,8 @@ class ReportInput:
     study_text : str
     lots : bool
         True if units differ by what a whole lot of parts shares.
+    rails : mapping of str to Rail
+        The supplies of the study.
     strips : LotStrips or None
         A figure lot by lot, if the study says how units share reels.
     """
@@ -123,6 +125,7 @@ class ReportInput:
     repeat_command: str
     study_text: str
     lots: bool
+    rails: Mapping[str, Rail]
     strips: LotStrips | None
 
 
@@ -172,6 +175,7 @@ def report_input(
         repeat_command=repeat_command,
         study_text=results.study_text,
         lots=lots,
+        rails=study.design.rails,
         strips=lot_strips(study, rows, results.summary),
     )
 

@@ -19,6 +19,7 @@ from tolsim.report.content import FAIL, PASS, UNDECIDED, ReportInput
 from tolsim.report.laws import law_section
 from tolsim.report.lot_chart import lot_chart
 from tolsim.report.mission_section import mission_section
+from tolsim.report.supply_chart import supply_chart
 from tolsim.report.tables import (
     case_rows,
     limit_rows,
@@ -81,6 +82,7 @@ def render(content: ReportInput) -> str:
         ],
         guesses=sum(row.guess for row in content.inputs),
         quality=_quality(summary["quality"]),
+        supply_chart=supply_chart(content.rails),
         provenance=_lines({k: v for k, v in summary["provenance"].items() if k != "tables"}),
         tables=_lines(summary["provenance"].get("tables", {})),
     )
