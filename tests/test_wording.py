@@ -61,6 +61,13 @@ def test_a_share_that_is_not_0_or_1_never_reads_so(share):
     assert 0 < number < 100
 
 
+def test_an_end_moved_off_its_border_by_a_trifle_is_written_there():
+    """Lots leave fractions of units: 0.00005 % beside 9.5 % says no more than 0."""
+    assert percents(5e-7, 0.095) == "0.0 to 9.5 %"
+    assert percents(0.728, 0.99997) == "72.8 to 100.0 %"
+    assert percents(0.0, 0.1) == "0 to 10.0 %"
+
+
 def test_intervals():
     assert percents(0.9714, 0.9943) == "97.1 to 99.4 %"
     assert between([79.1, 81.26], "V") == "79.1 to 81.3 V"

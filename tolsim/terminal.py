@@ -99,7 +99,8 @@ def _contents(study: Study) -> Iterator[str]:
         for name, state in study.states.items()
     )
     yield "conditions: " + ", ".join(study.conditions)
-    yield f"limits: {len(study.limits)}; units: {study.run.units}; seed: {study.run.seed}"
+    lots = f" in lots of {study.lots.units_per_lot}" if study.lots else ""
+    yield f"limits: {len(study.limits)}; units: {study.run.units}{lots}; seed: {study.run.seed}"
 
 
 def _tables_of(study: Study) -> set[str]:

@@ -14,6 +14,7 @@ Summary = Mapping[str, Any]
 DIGITS = 3
 FARTHEST_DB = 60.0  # margins are not searched for beyond, see circuit.startup
 MOST_DECIMALS = 6
+NO_DISTANCE = 1e-3  # of an interval: an end nearer to 0 or to 1 than that is written as there
 DASH = "\u2013"  # nothing to show
 OPEN = "open"  # an end this many units cannot bound
 
@@ -79,7 +80,10 @@ def percent(share: float | None, places: int | None = None) -> str:
 
 def percents(low: float, high: float) -> str:
     """Interval of a share: "97.1 to 99.4 %"."""
-    return f"{percent(low).removesuffix(' %')} to {percent(high)}"
+    # an end that a part of a unit in lots has moved off 0 or 1 says no more than 0 or 1
+    first = percent(low, 1 if 0.0 < low < NO_DISTANCE * high else None)
+    last = percent(high, 1 if 0.0 < 1.0 - high < NO_DISTANCE * (1.0 - low) else None)
+    return f"{first.removesuffix(' %')} to {last}"
 
 
 def share_with_interval(entry: Mapping[str, Any]) -> str:
