@@ -4,6 +4,7 @@ import fake_run
 import numpy as np
 import pandas as pd
 import pytest
+import quick_study
 from hypothesis import given, settings
 from hypothesis import strategies as st
 from small_study import capacitor, everything, study, tables
@@ -17,6 +18,7 @@ from tolsim.answers.unit_files import FrameColumns
 from tolsim.design import Condition, Lots
 from tolsim.errors import StudyError
 from tolsim.report import render, report_input
+from tolsim.run import run_study
 from tolsim.spread.part_values import part_values
 from tolsim.spread.sampling import draw, factors
 from tolsim.stats.clusters import share_of_lots
@@ -301,3 +303,21 @@ def test_lots_are_a_table_in_python(run):
     assert found["failed"].tolist() == by_lot.tolist()
     assert found["undecided"].sum() == results.summary["yield"]["undecided"]
     assert fake_run.results().lots.empty
+
+
+def test_a_run_in_lots_begins_with_the_same_unit_and_tells_of_its_lots(tmp_path):
+    """Lot 0 takes the numbers that unit 0 takes without lots."""
+    found = {}
+    for name, lots in (("plain", ""), ("lots", "\n[lots]\nunits_per_lot = 3\n")):
+        path = tmp_path / f"{name}.toml"
+        path.write_text(quick_study.text(units=6) + lots, encoding="utf-8")
+        found[name] = run_study(path, jobs=1)
+    one, other = (results.units.query("unit == 0") for results in found.values())
+    pd.testing.assert_frame_equal(one, other)
+    drawn = found["lots"].factors.set_index("unit")
+    shared = [name for name in drawn if "lot shift" in name]
+    assert shared
+    assert (drawn.loc[0, shared] == drawn.loc[2, shared]).all()
+    assert (drawn.loc[2, shared] != drawn.loc[3, shared]).all()
+    assert found["lots"].summary["lots"]["lots"] == 2
+    assert found["lots"].lots["units"].tolist() == [3, 3]
