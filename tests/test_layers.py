@@ -45,7 +45,10 @@ FLOORS = [
     {"circuit.transients.sources"},
     {"circuit.transients.stepping"},
     {"circuit.transients.kernel"},
-    {"circuit.transients.journey"},
+    {"circuit.transients.journey"}
+    | {"circuit.load_change", "circuit.load_change.handover", "circuit.load_change.probes"},
+    {"circuit.load_change.road"},
+    {"circuit.load_change.passage"},
     {"circuit.shooting"},
     {"circuit.nominal"},
     {"circuit.continuation"},

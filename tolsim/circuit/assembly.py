@@ -225,6 +225,7 @@ class _Equations:
     F: Floats
     source: Floats
     pushes: Mapping[str, Floats]  # right-hand sides of their own, by net of a live rail's source
+    held: Floats  # charge that fixed nets put on the others
 
     def right_side(self, net: str) -> Floats:
         """The right-hand side (N, n) that a known net pushes on."""
@@ -238,10 +239,12 @@ class _Equations:
                 self.right_side(column)[:, self.index[row]] -= sign * g * self.known[column]
 
     def capacitance(self, a: str, b: str, c: Floats) -> None:
-        # a plate on a net of fixed voltage only shifts the charge by a constant
+        # a plate on a net of fixed voltage only shifts the charge, by what is `held`
         for row, column, sign in ((a, a, 1), (a, b, -1), (b, b, 1), (b, a, -1)):
             if row in self.index and column in self.index:
                 self.E[:, self.index[row], self.index[column]] += sign * c
+            elif row in self.index:
+                self.held[:, self.index[row]] += sign * c * self.known[column]
 
     def inductor(self, ref: str, a: str, b: str, inductance: Floats, resistance: Floats) -> None:
         """L di/dt + R i - v_a + v_b = 0, i flowing from a to b."""
@@ -272,6 +275,7 @@ def _number(
         np.zeros((units, n, n)),
         np.zeros((units, n)),
         {f"{name}:source": push[:, :, r] for r, name in enumerate(rails)},
+        np.zeros((units, n)),
     )
     for a, b, g in stamps.conductances:
         eq.conductance(a, b, g)
@@ -306,6 +310,7 @@ def _number(
         drive_frequency=frequency,
         rail_matrix=push if live_rails else None,
         rail_names=rails,
+        held=eq.held if eq.held.any() else None,
     )
 
 

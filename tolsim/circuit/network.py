@@ -68,6 +68,7 @@ class Network:
     leak: float = 0.0  # S, from every net to ground
     rail_matrix: Floats | None = None  # (N, n, R), only with live rails
     rail_names: tuple[str, ...] = ()  # of its R columns
+    held: Floats | None = None  # (N, n) C that fixed nets put on the others; None: nothing
 
     @property
     def units(self) -> int:
@@ -94,6 +95,7 @@ class Network:
             drive_matrix=None if self.drive_matrix is None else self.drive_matrix[units],
             drive_shape=None if self.drive_shape is None else self.drive_shape.take(units),
             rail_matrix=None if self.rail_matrix is None else self.rail_matrix[units],
+            held=None if self.held is None else self.held[units],
         )
 
     def raised(self, level: Floats | float = 1.0) -> Network:

@@ -89,7 +89,8 @@ def _core(e: FlatElements, row: int, inductance: float, current: float) -> tuple
     share = _polynomial(e.core_share[row], e.core_breaks[row], inside)
     at_end = _polynomial(e.core_share[row], e.core_breaks[row], last)
     area = _polynomial(e.core_area[row], e.core_breaks[row], inside) + at_end * (size - inside)
-    return inductance * math.copysign(area - size, current), inductance * (share - 1.0)
+    missing = size - area if current < 0.0 else area - size
+    return inductance * missing, inductance * (share - 1.0)
 
 
 @hot
