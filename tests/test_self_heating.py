@@ -11,6 +11,7 @@ from tolsim.figures.parts import resistor
 from tolsim.library import distributions_folder
 from tolsim.nominals import prepare
 from tolsim.parts import Resistor
+from tolsim.recheck import recheck
 from tolsim.report.page import _quality
 from tolsim.self_heating import (
     ROUNDS,
@@ -166,6 +167,8 @@ def test_every_unit_is_warm_and_the_gap_is_told(two_stages):
     own = 2.0 * chunk.rows["L.loss"].to_numpy() - case.heat.rises["L"]
     assert record[0]["gap"] == pytest.approx(np.quantile(np.abs(own), 0.95))
     assert 0.0 < record[0]["gap"] < 0.3 * record[0]["rise"]
+    again = recheck(Plan(given, SHIPPED, names, {("room", "lit"): case}))["rechecked"]
+    assert again["units"] == again["agreed"] == 4  # in time, with the same warm parts
     cold = part_values(given, SHIPPED, "room", "lit", draw(names, given.run.seed, 0, 4))
     warm = part_values(
         given, SHIPPED, "room", "lit", draw(names, given.run.seed, 0, 4), case.heat.rises

@@ -245,6 +245,16 @@ def test_every_unit_is_wound_anew():
     assert 0.005 < np.std(expected) / np.mean(expected) < 0.02
 
 
+def test_a_coil_does_not_depend_on_its_neighbours():
+    given = study({"L1": Inductor(**{**coil().model_dump(), "spread": "wound-by-hand"})})
+    found = factors(given, TABLES)
+    whole = part_values(given, TABLES, "room", "normal", draw(found, 3, 0, 20))
+    for first, count in ((0, 1), (7, 5), (19, 1)):
+        part = part_values(given, TABLES, "room", "normal", draw(found, 3, first, count))
+        for key, values in part.items():
+            np.testing.assert_array_equal(values, whole[key][first : first + count], err_msg=key)
+
+
 def test_coils_of_one_winder_share_a_habit():
     parts = {
         ref: Inductor(**{**coil().model_dump(), "spread": "wound-by-hand", "reel": reel})
@@ -314,5 +324,8 @@ def test_notes_say_where_the_formulas_end():
     assert any("wavelengths" in note for note in winding_notes(coil(frequency="30 MHz")))
     assert any("stretched" in note for note in winding_notes(coil(wire="0.1 mm")))
     assert winding_notes(core()) == []
+    assert not any("expected" in note for note in winding_notes(coil(), (3.0e6, 4.0e6)))
+    (off,) = [note for note in winding_notes(coil(), (6.0e6, 7.0e6)) if "expected" in note]
+    assert "taken at 3.3 MHz, but the stage is expected at 6 MHz to 7 MHz" in off
     said = assumptions(study({"L1": coil()}), {})
     assert any(sentence.startswith("L1: self-capacitance") for sentence in said)

@@ -22,6 +22,7 @@ from tolsim.winding import Coil
 Floats = NDArray[np.float64]
 
 LONG_WIRE = 0.1  # wavelengths; beyond, the lumped coil is a few per cent off
+NEAR = 1.2  # times the expected frequency: the loss is then within 10 %
 SKIN_DEPTHS = 5.0  # in a wire; with fewer the measured crowding is stretched
 
 
@@ -88,8 +89,15 @@ def _wound(coil: Coil, shape: Mapping[str, Floats]) -> tuple[Floats, Floats, Flo
     return shape["turns"], shape["diameter"], length
 
 
-def winding_notes(part: Inductor) -> list[str]:
-    """What was assumed about a coil, and where its formulas are near their end."""
+def winding_notes(part: Inductor, expected: tuple[float, float] | None = None) -> list[str]:
+    """What was assumed about a coil, and where its formulas are near their end.
+
+    Parameters
+    ----------
+    part : Inductor
+    expected : tuple, optional
+        Lowest and highest frequency the stage is expected to run at, Hz.
+    """
     coil = part.coil
     if coil is None or coil.wire is None:
         return []
@@ -112,6 +120,11 @@ def winding_notes(part: Inductor) -> list[str]:
                 f"the wire is only {depths:.2g} skin depths thick at {at}: the proximity effect"
                 " is stretched beyond its measurements"
             )
+    if expected is not None and not (expected[0] / NEAR <= coil.frequency <= expected[1] * NEAR):
+        said.append(
+            f"its loss is taken at {at}, but the stage is expected at {show(expected[0], 'Hz')} to"
+            f" {show(expected[1], 'Hz')}"
+        )
     waves = coil.wire_length * coil.frequency / speed_of_light
     if waves > LONG_WIRE:
         said.append(

@@ -109,7 +109,7 @@ def _of_part(study: Study, tables: Mapping[str, SpreadTable], reference: str) ->
         yield from _measured_elsewhere(study, tables[name])
         yield from _windows(tables[name])
     if isinstance(part, Inductor):
-        yield from winding_notes(part)
+        yield from winding_notes(part, study.expected_frequency)
     if len(names) > 1:
         yield (
             f"a unit keeps its rank in every load state; each state's table "
