@@ -5,11 +5,11 @@ import pytest
 from circuits import CIRCUIT_A_SPREAD, circuit_a, scattered, typical_values
 
 from tolsim.circuit.bulk.grid import Grid, analyse, synthesis
-from tolsim.circuit.bulk.kernels import Scratch, element_currents, kernels_of
 from tolsim.circuit.bulk.multipliers import _pass
 from tolsim.circuit.bulk.unit_table import Topology, TopologyError, UnitTable, bare_network
 from tolsim.circuit.devices import BiasedCapacitors, Devices, Junctions, Ramps, SaturatingCore
 from tolsim.circuit.floquet import largest_beside_charge
+from tolsim.circuit.kernels import Scratch, element_waves, kernels_of
 from tolsim.circuit.nominal import find_nominal
 from tolsim.circuit.thermal import Case
 
@@ -90,13 +90,22 @@ def test_kernels_agree_with_the_elements_that_have_derivatives(dtype):
         np.testing.assert_allclose(found, truth, rtol=tolerance, atol=tolerance)
 
 
-def test_element_currents_are_those_of_the_devices():
+@pytest.mark.parametrize("kind", ["current", "charge"])
+def test_waves_of_elements_are_what_the_devices_answer(kind):
     devices, v = some_devices(4), RNG.uniform(-3, 3, (3, 9, 4))
-    truth = devices.currents(v.transpose(1, 2, 0))
-    found = element_currents(devices, v)
+    truth = {}
+    for elements in devices.elements:
+        if elements.kind == kind:
+            points = np.stack([elements.respond(v[:, k])[0] for k in range(9)], axis=1)
+            truth |= dict(zip(elements.names, points, strict=True))
+    found = element_waves(devices, v, kind)
     assert found.keys() == truth.keys()
-    for name, current in found.items():
-        np.testing.assert_allclose(current, truth[name], rtol=1e-12, atol=1e-15)
+    for name, wave in found.items():
+        np.testing.assert_allclose(wave, truth[name], rtol=1e-12, atol=1e-15)
+    name = next(iter(truth))
+    (only,) = element_waves(devices, v, kind, {name}).items()
+    assert only[0] == name
+    assert np.array_equal(only[1], found[name])
 
 
 def test_an_element_is_skipped_only_where_its_current_is_exactly_zero():

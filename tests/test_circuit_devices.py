@@ -11,6 +11,7 @@ from scipy.integrate import quad
 from stages import capacitor, inductor, mosfet, resistor, units_of
 
 from tolsim.circuit.devices import soft_ramp
+from tolsim.circuit.kernels import element_waves
 from tolsim.circuit.network import Network
 from tolsim.circuit.thermal import Case
 from tolsim.design import Design, Rail
@@ -98,9 +99,9 @@ def channel(vgs: float, vds: float) -> float:
             "Q1": mosfet("d", "g", 3.0, 2.0, knee=0.02),
         }
     )
-    v = np.zeros((1, 1, 2))
-    v[..., network.ports["Q1:gs"]], v[..., network.ports["Q1:ds"]] = vgs, vds
-    currents = network.devices.currents(v)
+    v = np.zeros((2, 1, 1))
+    v[network.ports["Q1:gs"]], v[network.ports["Q1:ds"]] = vgs, vds
+    currents = element_waves(network.devices, v, "current")
     return float((currents["Q1:forward"] + currents["Q1:reverse"])[0, 0])
 
 

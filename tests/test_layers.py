@@ -35,7 +35,13 @@ FLOORS = [
     # the circuit: it knows the design, but neither studies nor spread
     {"circuit.devices"},
     {"circuit.supply_ramp"}
-    | {"circuit.network", "circuit.orbit", "circuit.periodic", "circuit.floquet"},
+    | {
+        "circuit.network",
+        "circuit.kernels",
+        "circuit.orbit",
+        "circuit.periodic",
+        "circuit.floquet",
+    },
     {"circuit.device_groups", "circuit.stepper"},
     {"circuit.assembly", "circuit.bias", "circuit.charge", "circuit.walk"},
     {"circuit.cycle"},
@@ -53,7 +59,7 @@ FLOORS = [
     {"circuit.nominal"},
     {"circuit.continuation"},
     # the bulk solver
-    {"circuit.bulk.grid", "circuit.bulk.kernels"},
+    {"circuit.bulk.grid"},
     {"circuit.bulk.unit_table", "circuit.bulk.multipliers"},
     {"circuit.bulk.residual"},
     {"circuit.bulk.inverse"},

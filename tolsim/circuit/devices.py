@@ -121,23 +121,6 @@ class Junctions:
         depth = self.phi / (1.0 - self.grading) * (stretch / power - 1.0)
         return self.c0 * (depth + np.minimum(u, 0.0)), self.c0 / power
 
-    def only(self, name: str) -> Junctions:
-        """One of the elements by itself."""
-        row = slice(self.names.index(name), self.names.index(name) + 1)
-        return Junctions(
-            (name,),
-            self.sense[row],
-            self.inject[:, row],
-            self.c0[row],
-            self.phi[row],
-            self.grading[row],
-        )
-
-    def respond_along(self, v: Floats) -> Floats:
-        """Charge of a single element along waves v (p, m, N): (m, N)."""
-        points = [self.respond(v[:, k])[0][0] for k in range(v.shape[1])]
-        return np.stack(points)
-
     def take(self, units: Ints) -> Junctions:
         """Return the same elements for some of the units."""
         return replace(self, c0=pick(self.c0, units))
@@ -243,13 +226,3 @@ class Devices:
         taken = Devices(tuple(each.take(units) for each in self.elements), self.ports)
         taken.__dict__["_spread"] = self._spread  # depends on the topology only
         return taken
-
-    def currents(self, v: Floats) -> dict[str, Floats]:
-        """Current of every ramp element by name, (m, N) each, for v of shape (m, N, p)."""
-        answer: dict[str, Floats] = {}
-        for elements in self.elements:
-            if isinstance(elements, Ramps):
-                rows = [elements.respond(np.ascontiguousarray(point.T))[0] for point in v]
-                stacked = np.stack(rows, axis=1)
-                answer |= dict(zip(elements.names, stacked, strict=True))
-        return answer

@@ -110,6 +110,15 @@ class Network:
         """v = D x + v0 for x of shape (..., N, n)."""
         return x @ self.D.T + self.v0
 
+    def port_waves(self, x: Floats) -> Floats:
+        """Port voltages (p, m, N) along states x (m, N, n), each wave in one piece of memory."""
+        volts = np.empty((len(self.D), *x.shape[:2]))
+        for port, row in enumerate(self.D):
+            volts[port] = self.v0[:, port]
+            for state in np.flatnonzero(row):
+                volts[port] += row[state] * x[..., state]
+        return volts
+
     def potential(self, net: str, x: Floats) -> Floats:
         """Voltage of a net for x of shape (..., N, n)."""
         if net in self.index:

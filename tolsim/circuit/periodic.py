@@ -8,34 +8,41 @@ from __future__ import annotations
 
 import numpy as np
 
-from tolsim.circuit.devices import Floats
+from tolsim.circuit.devices import Floats, Ints
 
 LARGEST_LIFT = 0.01  # of peak-to-peak; a sine of 32 points per period asks for a quarter of it
 
 
 def highest(wave: Floats) -> Floats:
     """Largest value of a periodic wave, by a parabola through the three points around it."""
-    top = np.argmax(wave, axis=0)
+    return _vertex(wave, np.argmax(wave, axis=0), np.ptp(wave, axis=0), 1.0)
+
+
+def extremes(wave: Floats) -> tuple[Floats, Floats]:
+    """Largest and smallest value of a periodic wave."""
+    top, bottom, units = np.argmax(wave, axis=0), np.argmin(wave, axis=0), np.arange(wave.shape[1])
+    swing = wave[top, units] - wave[bottom, units]
+    return _vertex(wave, top, swing, 1.0), -_vertex(wave, bottom, swing, -1.0)
+
+
+def largest(wave: Floats) -> Floats:
+    """Largest magnitude of a periodic wave."""
+    high, low = extremes(wave)
+    return np.maximum(high, -low)
+
+
+def _vertex(wave: Floats, top: Ints, swing: Floats, sign: float) -> Floats:
+    """Largest value of `sign` times the wave, whose largest sample stands at `top`."""
     units = np.arange(wave.shape[1])
-    middle = wave[top, units]
-    before, after = wave[top - 1, units], wave[(top + 1) % len(wave), units]
+    middle = sign * wave[top, units]
+    before, after = sign * wave[top - 1, units], sign * wave[(top + 1) % len(wave), units]
     bend = before - 2 * middle + after
     slope = 0.5 * (after - before)
     lift = np.where(bend < 0, -(slope**2) / np.where(bend < 0, 2 * bend, 1.0), 0.0)
     # a vertex lies at most half a step from the largest sample; beside an edge that rises within
     # one step the parabola knows nothing, and what it may add is bounded
-    bound = np.minimum(0.5 * np.abs(slope), LARGEST_LIFT * np.ptp(wave, axis=0))
-    return middle + np.minimum(lift, bound)
-
-
-def lowest(wave: Floats) -> Floats:
-    """Smallest value of a periodic wave."""
-    return -highest(-wave)
-
-
-def largest(wave: Floats) -> Floats:
-    """Largest magnitude of a periodic wave."""
-    return np.maximum(highest(wave), highest(-wave))
+    bound = np.minimum(0.5 * np.abs(slope), LARGEST_LIFT * swing)
+    return np.asarray(middle + np.minimum(lift, bound))
 
 
 def rms(wave: Floats) -> Floats:

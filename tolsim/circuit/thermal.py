@@ -14,6 +14,7 @@ import numpy as np
 
 from tolsim.circuit.assembly import PartValues, assemble
 from tolsim.circuit.devices import Floats, Ints
+from tolsim.circuit.kernels import element_waves
 from tolsim.circuit.network import Network
 from tolsim.design import Design
 from tolsim.parts import Mosfet
@@ -97,11 +98,13 @@ def dissipation(design: Design, network: Network, samples: Floats) -> dict[str, 
         States over a period, first = last.
     """
     x = samples[:-1]
-    v = network.port_voltages(x)
-    currents = network.devices.currents(v)
+    v = network.port_waves(x)
+    ends = ("forward", "reverse", "body")
+    inner = {f"{ref}:{end}" for ref in mosfets(design) for end in ends}
+    currents = element_waves(network.devices, v, "current", inner)
     losses = {}
     for ref, part in mosfets(design).items():
-        vds = v[..., network.ports[f"{ref}:ds"]]
+        vds = v[network.ports[f"{ref}:ds"]]
         inside = currents[f"{ref}:forward"] + currents[f"{ref}:reverse"] - currents[f"{ref}:body"]
         losses[ref] = np.mean(inside * vds, axis=0) + _series_loss(network, ref, part, x)
     return losses

@@ -7,6 +7,7 @@ import numpy as np
 from tolsim.circuit.bias import Bias, bias_point
 from tolsim.circuit.critical import Critical
 from tolsim.circuit.devices import Floats
+from tolsim.circuit.kernels import element_waves
 from tolsim.circuit.network import Network
 from tolsim.circuit.nominal import Nominal
 from tolsim.circuit.startup import critical_point, modes, noise_amplitude, resemblance, start_margin
@@ -50,7 +51,7 @@ def measure_idle(case: Case, network: Network, bias: Bias) -> dict[str, Floats]:
     port_current, *_ = network.devices.evaluate(bias.v)
     idle_current = np.zeros(case.units)
     idle_power = np.zeros(case.units)
-    channel = network.devices.currents(bias.v[None])
+    channel = element_waves(network.devices, bias.v.T[:, None], "current")
     for rail, supply in network.supplies.items():
         current = supply.at(bias.x, port_current)
         idle_current = idle_current + current

@@ -5,7 +5,7 @@ from __future__ import annotations
 import numpy as np
 
 from tolsim.circuit.devices import Floats
-from tolsim.circuit.periodic import highest, largest, lowest, mean, rms
+from tolsim.circuit.periodic import extremes, largest, mean, rms
 from tolsim.figures.waves import Waves
 from tolsim.parts import Mosfet
 
@@ -46,15 +46,17 @@ def mosfet(
     switching = mean(np.where(ohmic, 0.0, power))
     body_loss = mean(body * inner_drain)
     turn_on = _at_turn_on(inner_gate - threshold, inner_drain)
+    drain_high, drain_low = extremes(drain)
+    gate_high, gate_low = extremes(gate)
     drawn = _drain_current(ref, part, waves, channel + body)
     return {
-        "drain_peak": highest(drain),
-        "drain_negative_peak": np.maximum(-lowest(drain), 0.0),
+        "drain_peak": drain_high,
+        "drain_negative_peak": np.maximum(-drain_low, 0.0),
         "turn_on_voltage": turn_on,
         "turn_on_share": turn_on / supply,
-        "gate_peak": largest(gate),
-        "gate_positive_peak": highest(gate),
-        "gate_negative_peak": np.maximum(-lowest(gate), 0.0),
+        "gate_peak": np.maximum(gate_high, -gate_low),
+        "gate_positive_peak": gate_high,
+        "gate_negative_peak": np.maximum(-gate_low, 0.0),
         "drain_current_peak": largest(drawn),
         "drain_current_rms": rms(drawn),
         "dissipation": conduction + switching + body_loss + gate_loss,
@@ -71,7 +73,7 @@ def _drain_current(ref: str, part: Mosfet, waves: Waves, conducted: Floats) -> F
     inner = f"{ref}:drain"
     if inner in waves.network.index:
         return waves.series_current(part.drain, inner)
-    return conducted + waves.rate(waves.charge(f"{ref}:gd") + waves.charge(f"{ref}:ds"))
+    return conducted + waves.rate(waves.charges[f"{ref}:gd"] + waves.charges[f"{ref}:ds"])
 
 
 def _series(waves: Waves, outer: str, inner: str) -> Floats:

@@ -10,8 +10,8 @@ from functools import cached_property
 
 import numpy as np
 
-from tolsim.circuit.bulk.kernels import element_currents
-from tolsim.circuit.devices import Floats, Junctions
+from tolsim.circuit.devices import Floats
+from tolsim.circuit.kernels import element_waves
 from tolsim.circuit.network import Network
 from tolsim.circuit.orbit import Solution
 from tolsim.parts import Capacitor
@@ -34,26 +34,18 @@ class Waves:
 
     @cached_property
     def ports(self) -> Floats:
-        """Port voltages (m, N, p), each port's wave in one piece of memory."""
-        m, units, _ = self.x.shape
-        volts = np.empty((len(self.network.D), m, units))
-        for port, row in enumerate(self.network.D):
-            volts[port] = self.network.v0[:, port]
-            for state in np.flatnonzero(row):
-                volts[port] += row[state] * self.x[..., state]
-        return volts.transpose(1, 2, 0)
+        """Port voltages (p, m, N), each port's wave in one piece of memory."""
+        return self.network.port_waves(self.x)
 
     @cached_property
     def currents(self) -> dict[str, Floats]:
         """Current of every nonlinear element, along its own controlling direction."""
-        return element_currents(self.network.devices, self.ports.transpose(2, 0, 1))
+        return element_waves(self.network.devices, self.ports, "current")
 
-    def charge(self, name: str) -> Floats:
-        """Charge of one junction element ("Q1:ds"), C, (m, N)."""
-        for elements in self.network.devices.elements:
-            if isinstance(elements, Junctions) and name in elements.names:
-                return elements.only(name).respond_along(self.ports.transpose(2, 0, 1))
-        raise KeyError(name)
+    @cached_property
+    def charges(self) -> dict[str, Floats]:
+        """Charge of every nonlinear element ("Q1:ds"), C, (m, N)."""
+        return element_waves(self.network.devices, self.ports, "charge")
 
     def net(self, name: str) -> Floats:
         """Voltage of a net."""
@@ -65,7 +57,7 @@ class Waves:
 
     def port(self, name: str) -> Floats:
         """Voltage of a device's port."""
-        return self.ports[..., self.network.ports[name]]
+        return self.ports[self.network.ports[name]]
 
     def branch(self, ref: str) -> Floats:
         """Current of an inductor or load loop."""
@@ -73,10 +65,12 @@ class Waves:
 
     def rate(self, wave: Floats) -> Floats:
         """Time derivative, fourth-order central differences around the period."""
-        near = np.roll(wave, -1, axis=0) - np.roll(wave, 1, axis=0)
-        far = np.roll(wave, -2, axis=0) - np.roll(wave, 2, axis=0)
-        step = self.period / len(wave)
-        return (8 * near - far) / (12 * step)
+        around = np.concatenate([wave[-2:], wave, wave[:2]])
+        slope = around[3:-1] - around[1:-3]
+        slope *= 8
+        slope -= around[4:] - around[:-4]
+        slope /= 12 * (self.period / len(wave))
+        return slope
 
     def series_current(self, outer: str, inner: str) -> Floats:
         """Current through the resistance between a terminal and the inner net of a part."""

@@ -65,16 +65,12 @@ def _pass(
     phases = (np.arange(steps)[:, None] + np.array([GAMMA, 1.0])).ravel() / steps
     basis = _basis(coefficients.shape[1] // 2, np.concatenate([[0.0], phases]))
     waves = sampled(coefficients, basis).transpose(1, 2, 0) * scale
-    GH = matrices.G @ matrices.H
-    start = _reach(network, matrices, GH, waves[0])
-    here, identity = start, np.eye(network.states)
-    product = np.broadcast_to(identity, here.shape)
+    reach = _reach(network, matrices, waves[: 2 * steps])
+    identity = np.eye(network.states)
+    product = np.broadcast_to(identity, reach.shape[1:])
     for k in range(steps):
-        inner = _reach(network, matrices, GH, waves[2 * k + 1])
-        step = A * (inner @ (2.0 * here - identity)) - B * here
-        product = step @ product
-        last = k == steps - 1
-        here = start if last else _reach(network, matrices, GH, waves[2 * k + 2])
+        here, inner = reach[2 * k], reach[2 * k + 1]
+        product = (A * (inner @ (2.0 * here - identity)) - B * here) @ product
     driven = network.drive_matrix is not None
     flow = None if driven else _flow(network, matrices, waves[0], waves[-1])
     # an island's charge is the row (E + P C P') of its nets; in u it reads E + c F, a constant
@@ -82,12 +78,18 @@ def _pass(
     return sorted_multipliers(product, flow, scale, charges)
 
 
-def _reach(network: Network, matrices: StepMatrices, GH: Floats, x: Floats) -> Floats:
-    """Y (N, n, n) at states x (N, n)."""
-    _, _, conductance, capacitance = network.devices.evaluate(network.port_voltages(x))
-    W = capacitance + matrices.c[:, None, None] * conductance
-    within = np.linalg.inv(np.eye(W.shape[1]) + matrices.K @ W)
-    return matrices.G + ((matrices.H @ capacitance - GH @ W) @ within) @ network.D
+def _reach(network: Network, matrices: StepMatrices, x: Floats) -> Floats:
+    """Y (s, N, n, n) at states x (s, N, n) of s instants, all devices evaluated at once."""
+    instants, units, _ = x.shape
+    devices = network.devices.take(np.tile(np.arange(units), instants))
+    v = network.port_voltages(x).reshape(instants * units, -1)
+    _, _, conductance, capacitance = devices.evaluate(v)
+    shape = (instants, units, *conductance.shape[1:])
+    C = capacitance.reshape(shape)
+    W = C + matrices.c[:, None, None] * conductance.reshape(shape)
+    within = np.linalg.inv(np.eye(shape[-1]) + matrices.K @ W)
+    bent = matrices.H @ C - (matrices.G @ matrices.H) @ W
+    return np.asarray(matrices.G + (bent @ within) @ network.D)
 
 
 def _flow(network: Network, matrices: StepMatrices, x: Floats, slope: Floats) -> Floats:

@@ -20,9 +20,9 @@ import numpy as np
 from numpy.typing import NDArray
 
 from tolsim.circuit.bulk.grid import Grid
-from tolsim.circuit.bulk.kernels import Scratch, weighted
 from tolsim.circuit.bulk.unit_table import Place, Topology, UnitTable, drive_spectra
 from tolsim.circuit.devices import Floats, Ints
+from tolsim.circuit.kernels import Scratch, weighted
 from tolsim.circuit.thermal import KELVIN, REFERENCE_C, mosfets
 from tolsim.design import Design
 

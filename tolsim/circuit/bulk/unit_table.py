@@ -16,8 +16,8 @@ from numpy.typing import NDArray
 
 from tolsim.circuit.assembly import assemble
 from tolsim.circuit.bulk.grid import Grid, analyse
-from tolsim.circuit.bulk.kernels import Kernel, kernels_of
 from tolsim.circuit.devices import Floats, Ints
+from tolsim.circuit.kernels import Kernel, kernels_of
 from tolsim.circuit.network import Network
 from tolsim.circuit.thermal import Case, mosfets
 from tolsim.parts import Mosfet

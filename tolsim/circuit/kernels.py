@@ -12,7 +12,7 @@ changes no bit.
 
 from __future__ import annotations
 
-from collections.abc import Callable
+from collections.abc import Callable, Collection
 from dataclasses import dataclass
 
 import numpy as np
@@ -84,11 +84,17 @@ def weighted(v: Slab, weights: Weights, out: Slab) -> Slab:
     return out
 
 
-def kernels_of(devices: Devices, units: int) -> tuple[Kernel, ...]:
-    """Every element of a network's devices, with its per-unit numbers (r, N)."""
+def kernels_of(
+    devices: Devices, units: int, kind: str | None = None, names: Collection[str] | None = None
+) -> tuple[Kernel, ...]:
+    """Elements of a network's devices, with their per-unit numbers (r, N); all unless told."""
     found = []
     for elements in devices.elements:
+        if kind is not None and elements.kind != kind:
+            continue
         for place, name in enumerate(elements.names):
+            if names is not None and name not in names:
+                continue
             numbers, respond = _response(elements, place)
             rows = np.stack([np.broadcast_to(row, (units,)) for row in numbers])
             sense, inject = elements.sense[place], elements.inject[:, place]
@@ -204,14 +210,23 @@ def _core(elements: SaturatingCore) -> tuple[list[Floats], Response]:
     return [elements.inductance[0]], respond
 
 
-def element_currents(devices: Devices, v: Floats) -> dict[str, Floats]:
-    """Current of every ramp element by name, (m, N) each, at port voltages v (p, m, N)."""
+def element_waves(
+    devices: Devices, v: Floats, kind: str, names: Collection[str] | None = None
+) -> dict[str, Floats]:
+    """Waves of elements by name along port voltages v (p, m, N), (m, N) each.
+
+    Parameters
+    ----------
+    kind : str
+        "current" or "charge".
+    names : collection of str, optional
+        Elements wanted; all of that kind if None.
+    """
     _, points, units = v.shape
     scratch = Scratch.of(points, units, np.float64)
     answer = {}
-    for kernel in kernels_of(devices, units):
-        if kernel.kind == "current":
-            current = kernel.evaluate(v, tuple(kernel.rows), scratch)
-            idle = current is None
-            answer[kernel.name] = np.zeros((points, units)) if idle else np.array(current, float)
+    for kernel in kernels_of(devices, units, kind, names):
+        amount = kernel.evaluate(v, tuple(kernel.rows), scratch)
+        idle = amount is None
+        answer[kernel.name] = np.zeros((points, units)) if idle else np.array(amount, float)
     return answer
