@@ -320,6 +320,9 @@ def test_the_summary_counts_and_measures_what_the_rows_hold(trimmed_run):
     steep = 3.0 * rows["bias.trim_slope"].abs().quantile(0.99) / 0.4
     assert entry["needed_resolution"] == pytest.approx(2.0 * 0.09 / steep)
     assert {strain["part"] for strain in entry["strains"]} == {"QA", "QB"}
+    (row,) = trimmed_run.trims.to_dict("records")
+    assert (row["trim"], row["set"], row["exhausted"]) == ("bias", set_.sum(), (~set_).sum())
+    assert row["error_p50"] == entry["error"]["p50"]
 
 
 def test_the_words_name_the_ones_that_were_not_set(trimmed_run):

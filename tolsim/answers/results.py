@@ -259,6 +259,17 @@ class Results:
         units = pd.DataFrame({"units": 1, "failed": failed, "undecided": undecided}).astype(int)
         found = units.groupby(units.index // per_lot).sum()
         return found.rename_axis("lot").reset_index()
+    def trims(self) -> pd.DataFrame:
+        """One row per trim: what was turned to what, how units ended, percentiles as columns."""
+        rows = []
+        for entry in self.summary.get("trim", []):
+            nested = ("position_counts", "strains", "drift")
+            plain = {key: value for key, value in entry.items() if key not in nested}
+            row = {key: value for key, value in plain.items() if not isinstance(value, dict)}
+            for name in ("position", "turns", "error", "before"):
+                row |= {f"{name}_{key}": value for key, value in entry[name].items()}
+            rows.append({**row, **entry["endings"]})
+        return pd.DataFrame(rows)
 
     @property
     def quality(self) -> Mapping[str, Any]:

@@ -28,6 +28,11 @@ def place(value: float | None, unit_of_measure: str) -> str:
     return shown(value, unit_of_measure)
 
 
+def width_words(share: float | None) -> str:
+    """Width of a spread: "17 %", "670 %"."""
+    return deviation(share).removeprefix("+")
+
+
 def deviation(share: float | None) -> str:
     """Deviation from a target: "+2.1 %", "-12 %", "+580 %"."""
     if share is None:
@@ -44,11 +49,12 @@ def spread_words(spread: Mapping[str, Any]) -> str:
 def trim_sentences(summary: Summary) -> Iterator[str]:
     """What the operator did to the units, a few sentences per trim; nothing without trims."""
     for entry in summary.get("trim") or ():
+        yield f"{heading(entry)}:"
         yield from entry_sentences(entry)
 
 
 def entry_sentences(entry: Entry) -> Iterator[str]:
-    """Sentences of one trim."""
+    """Sentences of one trim, under its heading."""
     yield _task(entry)
     yield from _not_set(entry)
     yield _before_and_after(entry)
@@ -70,9 +76,10 @@ def _task(entry: Entry) -> str:
     done = f"{entry['endings']['set']} of {units} units set within {within}"
     where = f"{entry['condition']}, {entry['state']}"
     if turns["p50"] is None:
-        return f"{heading(entry)} ({where}): {done}."
-    often = f"{turns['p50']:.0f} turns, {turns['p95']:.0f} in one unit of twenty"
-    return f"{heading(entry)} ({where}): {done}, in {often}."
+        return f"{where}: {done}."
+    middle = f"{turns['p50']:.0f}"
+    noun = "turn" if middle == "1" else "turns"
+    return f"{where}: {done}, in {middle} {noun}, one in twenty in {turns['p95']:.0f} or more."
 
 
 def _not_set(entry: Entry) -> Iterator[str]:

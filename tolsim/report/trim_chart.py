@@ -66,6 +66,6 @@ def readings_chart(entry: Mapping[str, Any], number: int) -> Markup:
             axes.plot([100.0 * spread["p50"]], [place], "|", color="white", ms=9, mew=1.6)
         axes.set_yticks(range(len(rows)), [name for name, _ in rows])
         axes.set_ylim(len(rows) - 0.4, -0.6)
-        axes.set_xlabel("Off the target (%); thick: 90 % of units, thin: 99 %")
+        figure.supxlabel("Off the target (%); thick 90 % of units, thin 99 %", fontsize="medium")
         axes.xaxis.set_major_locator(MaxNLocator(nbins=6))
         return svg(figure, f"drift{number}", f"{entry['reading_title']} against its target")

@@ -5,7 +5,7 @@ from __future__ import annotations
 from collections.abc import Iterator, Mapping
 from typing import Any
 
-from tolsim.answers.trim_words import deviation, entry_sentences, heading, spread_words
+from tolsim.answers.trim_words import deviation, entry_sentences, heading, spread_words, width_words
 from tolsim.answers.wording import DASH, percent, shown
 from tolsim.report.trim_chart import positions_chart, readings_chart
 
@@ -40,12 +40,11 @@ def _rows(entry: Entry) -> Iterator[dict[str, str]]:
 
 
 def _row(name: str, spread: Mapping[str, Any]) -> dict[str, str]:
-    width = spread["width"]
     return {
         "name": name,
         "middle": deviation(spread["p50"]),
         "inner": spread_words(spread),
-        "width": DASH if width is None else f"{100.0 * width:.2g} %",
+        "width": width_words(spread["width"]),
     }
 
 
