@@ -68,8 +68,9 @@ not known (an interval that this many units cannot close).  Every `low`, `high` 
                 first_not_set, nominal (position of the nominal unit), position_counts (units in
                 equal parts of the range, from its low end), position, turns,
                 error (true reading over target, less 1, of units that were set), before (the
-                same of untrimmed units), needed_range [from, to] (99 % of the units set end
-                there), needed_resolution (largest step with which 99 % can be set),
+                same of untrimmed units), needed_range [from, to] (99 % of the units end
+                there, or would have to: beyond the range extrapolated), needed_resolution
+                (largest step with which 99 % can be set),
                 strains [{part, figure, title, unit_of_measure, rating, p50, p99, highest}] (on
                 the operator's way), drift [{condition, state, and the keys of a spread}] (reading
                 over target, less 1)}]; position, turns, error and before are spreads {low, p5,

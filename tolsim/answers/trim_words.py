@@ -126,10 +126,12 @@ def _needs(entry: Entry) -> Iterator[str]:
     unit = entry["unit_of_measure"]
     if low is None:
         return
-    text = f"99 % of them end at {place(low, unit)} to {place(high, unit)}"
+    first, last = entry["range"]
+    beyond = " (beyond the range extrapolated)" if low < first or high > last else ""
+    text = f"99 % of units need a range of {place(low, unit)} to {place(high, unit)}{beyond}"
     if entry["needed_resolution"] is not None:
         most = place(entry["needed_resolution"], unit)
-        text += f" and need steps of at most {most} (here {place(entry['resolution'], unit)})"
+        text += f" and steps of at most {most} (here {place(entry['resolution'], unit)})"
     yield f"{text}."
 
 

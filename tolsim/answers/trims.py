@@ -19,7 +19,8 @@ from tolsim.trim.operator import TrimStatus
 
 Floats = NDArray[np.float64]
 Nominal = Mapping[tuple[str, str], Mapping[str, float]]
-Interval = Callable[[NDArray[np.bool_]], tuple[float, float]]
+Flags = NDArray[np.bool_]
+Interval = Callable[[Flags], tuple[float, float]]
 
 BINS = 24  # equal parts of the range that positions are counted in
 FIRST_UNITS = 5  # named of those that were not set
@@ -105,7 +106,9 @@ def _entry(
         "turns": _spread(column("trim_turns")),
         "error": _spread(np.where(was_set, after, np.nan)),
         "before": _spread(before),
-        "needed_range": _inner(low + position[was_set] * (high - low)),
+        "needed_range": _inner(
+            low + wanted_places(position, after, slope, was_set, hit) * (high - low)
+        ),
         "needed_resolution": _resolution(trim, slope),
         "strains": _strains(study, name, rows, here),
         "drift": _drift(trim, rows),
@@ -135,6 +138,20 @@ def _inner(values: Floats) -> list[float | None]:
     """Ends between which 99 % of the units lie."""
     known = _spread(values)
     return [known["low"], known["high"]]
+
+
+def wanted_places(
+    position: Floats, error: Floats, slope: Floats, was_set: Flags, exhausted: Flags
+) -> Floats:
+    """Where adjusters ended, and where those of exhausted ranges would have had to, (N,).
+
+    Beyond the range the reading is taken to go on as it did at last; places are in shares of the
+    range, errors and slopes of the reading in shares of its target.
+    """
+    with np.errstate(divide="ignore", invalid="ignore"):
+        beyond = position - error / slope
+    places = np.where(was_set, position, np.where(exhausted, beyond, np.nan))
+    return np.where(np.isfinite(places), places, np.nan)
 
 
 def _resolution(trim: Trim, slope: Floats) -> float | None:
