@@ -260,6 +260,8 @@ class Results:
         units = pd.DataFrame({"units": 1, "failed": failed, "undecided": undecided}).astype(int)
         found = units.groupby(units.index // per_lot).sum()
         return found.rename_axis("lot").reset_index()
+
+    @property
     def trims(self) -> pd.DataFrame:
         """One row per trim: what was turned to what, how units ended, percentiles as columns."""
         rows = []
