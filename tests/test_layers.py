@@ -82,7 +82,14 @@ FLOORS = [
     {"spread.matching"},
     {"spread.reading", "spread.sampling"},
     {"spread.alternatives"},
-    {"spread.portrait", "spread.part_values", "spread.checks", "spread.words", "self_heating"},
+    {
+        "spread.portrait",
+        "spread.reel_record",
+        "spread.part_values",
+        "spread.checks",
+        "spread.words",
+        "self_heating",
+    },
     {"trim.nominal_unit"},
     {"families", "answers.law_words"},
     # the door for study files
@@ -96,12 +103,13 @@ FLOORS = [
     {"study"},
     # answers
     {"nominals", "answers.provenance", "answers.supply_words", "answers.ranking"},
-    {"answers.lots", "answers.trims", "answers.trim_words", "trim.drawn"} | {"report.lots"},
+    {"answers.lots", "answers.reel_words", "answers.trims", "answers.trim_words", "trim.drawn"}
+    | {"report.lots"},
     {"evaluation", "answers.summary", "answers.lines", "report.content", "report.tables"},
     {"report.laws", "report.bench"},
     {"report.charts"},
     {"report.lot_chart", "report.trim_chart", "report.supply_chart"},
-    {"report.trim_section"},
+    {"report.trim_section", "report.reel_section"},
     {"report.page", "report.unit_picture", "report.table_picture"},
     {"report"},
     {"inputs"},

@@ -1,5 +1,6 @@
 """Tables with measured laws: read beside their files, told in words, kept with a run."""
 
+import json
 import math
 from pathlib import Path
 
@@ -8,10 +9,13 @@ import pytest
 from quick_study import text as quick_text
 from scipy import stats
 
+from tolsim.answers.reel_words import reel_sentences
 from tolsim.errors import RequestError, StudyError
+from tolsim.report.reel_section import reel_section
 from tolsim.run import run_study
 from tolsim.spread.part_values import part_values
 from tolsim.spread.reading import read_shelf
+from tolsim.spread.reel_record import reel_records
 from tolsim.spread.sampling import draw, factors
 from tolsim.spread.words import assumptions, describe
 from tolsim.study import open_study
@@ -197,3 +201,34 @@ def test_readings_are_called_measured_whatever_the_rest_of_the_table_is(tmp_path
         read_shelf(None, tmp_path).tables["reel"].quantities["capacitance"].origins["tolerance"]
     )
     assert (origin.basis, origin.source) == ("measured", "12 pieces in reel.csv")
+
+
+def test_reels_are_told_in_summary_terminal_and_report(tmp_path):
+    given = ', meter_noise = "0.1 %", meter_bias = "0.3 %", test_frequency = "10 kHz"}'
+    write(tmp_path, LAW.replace("}", given))
+    (tmp_path / "study.toml").write_text(study_text())
+    opened = open_study(tmp_path / "study.toml")
+    (entry,) = reel_records(opened.study, opened.tables)
+    assert entry["parts"] == ["CA", "CSA", "CFA", "CB", "CSB", "CFB"]
+    assert (entry["pieces"], entry["meter_bias"]) == (12, pytest.approx(0.003))
+    assert entry["values"] == sorted(entry["values"])
+    x, below = entry["next"]["curve"]
+    law = opened.tables["reel"].quantities["capacitance"].tolerance
+    np.testing.assert_allclose(below, law.cdf(x))
+    summary = {"reels": [entry]}
+    said = " ".join(reel_sentences(summary))
+    assert "from reel.csv. 12 pieces, mean -0.358 %" in said
+    assert "off by up to 0.3 %" in said
+    (section,) = reel_section(summary)
+    assert section["chart"].startswith("<svg")
+    assert reel_section({}) == []
+    assert json.loads(json.dumps(summary)) == summary
+
+
+def test_remarks_on_readings_stand_among_the_assumptions(tmp_path):
+    low, high = np.linspace(97.0, 97.8, 20), np.linspace(102.2, 103.0, 20)
+    write(tmp_path, LAW, (*low, *high))
+    (tmp_path / "study.toml").write_text(study_text())
+    opened = open_study(tmp_path / "study.toml")
+    said = " ".join(assumptions(opened.study, opened.tables))
+    assert "capacitance in reel.csv: hollow middle: a tighter grade was sorted out" in said

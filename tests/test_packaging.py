@@ -62,7 +62,8 @@ def test_wheel_holds_package_tables_and_studies_only(tmp_path):
     assert tops == {"tolsim", information}
     for folder in ("distributions", "studies"):
         shipped = {Path(name).name for name in names if name.startswith(f"tolsim/_data/{folder}/")}
-        assert shipped == {path.name for path in (ROOT / folder).glob("*.toml")}
+        data = [path for ending in ("toml", "csv") for path in (ROOT / folder).rglob(f"*.{ending}")]
+        assert shipped == {path.name for path in data}
     templates = {name for name in names if name.startswith("tolsim/report/templates/")}
     assert len(templates) == len(list((ROOT / "tolsim/report/templates").iterdir()))
     assert "# tolsim" in wheel.read(f"{information}/METADATA").decode()

@@ -10,7 +10,7 @@ from click.testing import CliRunner
 
 import tolsim
 from tolsim.cli import main
-from tolsim.library import shipped_studies
+from tolsim.library import distributions_folder, shipped_studies
 
 ROOT = Path(__file__).resolve().parent.parent
 README = (ROOT / "README.md").read_text(encoding="utf-8")
@@ -44,6 +44,8 @@ def test_the_study_is_short_and_without_mistakes(place):
 def test_the_spread_table_shown_can_be_used(place):
     (table,) = (text for text in indented() if text.startswith("[table"))
     (place / "ours.toml").write_text(table, encoding="utf-8")
+    readings = distributions_folder() / "readings" / "example_film_10n.csv"
+    (place / "reel.csv").write_bytes(readings.read_bytes())
     study = (place / "beacon.toml").read_text(encoding="utf-8")
     (place / "beacon.toml").write_text(study.replace("film-pp-5pct", "our-film"), encoding="utf-8")
     assert tolsim.load_study("beacon.toml")

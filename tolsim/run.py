@@ -38,6 +38,7 @@ from tolsim.nominals import prepare
 from tolsim.recheck import recheck
 from tolsim.self_heating import heat_record
 from tolsim.solver_choice import choose_solvers, wants_bulk
+from tolsim.spread.reel_record import reel_records
 from tolsim.spread.sampling import factors
 from tolsim.study import StudyFile, open_study
 
@@ -129,6 +130,7 @@ def _solve_and_judge(
         _quality(plan, unit_table),
         record,
     )
+    summary["reels"] = reel_records(opened.study, opened.tables)
     summary["law_check"] = check_laws(plan, unit_table, jobs)
     summary["prototype"] = model_check(plan, unit_table, factor_table, jobs)
     if store is None:

@@ -8,6 +8,7 @@ from typing import Any
 
 from tolsim.answers.lot_words import lot_sentences
 from tolsim.answers.mission_words import mission_sentences
+from tolsim.answers.reel_words import reel_sentences
 from tolsim.answers.trim_words import trim_sentences
 from tolsim.answers.wording import (
     failures,
@@ -44,6 +45,7 @@ def summary_lines(summary: Summary) -> list[str]:
         ("Hardest driven: p99 over the limit, else over the rating", _stresses(summary)),
         ("What matters: share of variance, 95 % interval", _factors(summary)),
         ("Guessed laws", _laws(summary.get("law_check") or {})),
+        ("Measured reels", _wrapped(reel_sentences(summary))),
         ("Quality", _quality(summary["quality"], summary.get("prototype"))),
     ):
         rows = list(body)

@@ -92,6 +92,13 @@ not known (an interval that this many units cannot close).  Every `low`, `high` 
                 the units' own losses lie from it), settled (in every case)}]; passive parts whose
                 values follow their own temperature}
                 With other than random sampling also sampling (how, and what intervals mean then)
+``reels``       one entry per measured law in use (empty without): [{table, parts, quantity,
+                unit_of_measure ("share" for relative deviations), file, pieces, values
+                (readings, rising), mean, sd, meter_noise, meter_bias, test_frequency (Hz or
+                null), shape ("normal", "lognormal", "as measured"), fit_p (Anderson-Darling, of
+                the normal or lognormal shape; null for less than 8 pieces), remarks (what the
+                readings look like), next {low, high, sd, curve [values, shares below]} (law of
+                the next piece)}]
 ``law_check``   {done, reason (why not done), laws (tolerance and lot laws), guesses and
                 common_practice (so many of them), alternatives [{law, words}],
                 together [{law, method, estimate, low, high, change (of the yield),

@@ -87,6 +87,8 @@ class Sample:
     fit_p : float
         Probability of a worse fit to the normal shape by chance (Anderson-Darling); of the
         logarithms for a lognormal shape.
+    values : tuple of float
+        The readings, rising.
     remarks : tuple of str
         Sentences about what the readings look like.
     test_frequency : float or None
@@ -100,6 +102,7 @@ class Sample:
     noise: float
     shape: str
     fit_p: float
+    values: tuple[float, ...] = ()
     remarks: tuple[str, ...] = ()
     test_frequency: float | None = None
 

@@ -87,7 +87,16 @@ def next_piece(
     else:
         law = _as_measured(x, noise, low, high, end, origin)
     sample = Sample(
-        file, x.size, float(np.mean(x)), spread, noise, chosen, fit_p, remarks, test_frequency
+        file,
+        x.size,
+        float(np.mean(x)),
+        spread,
+        noise,
+        chosen,
+        fit_p,
+        tuple(x.tolist()),
+        remarks,
+        test_frequency,
     )
     return Measured(law, sample)
 

@@ -19,6 +19,7 @@ from tolsim.report.content import FAIL, PASS, UNDECIDED, ReportInput
 from tolsim.report.laws import law_section
 from tolsim.report.lot_chart import lot_chart
 from tolsim.report.mission_section import mission_section
+from tolsim.report.reel_section import reel_section
 from tolsim.report.supply_chart import supply_chart
 from tolsim.report.tables import (
     case_rows,
@@ -80,6 +81,7 @@ def render(content: ReportInput) -> str:
             {"wave": wave, "svg": waveform_chart(wave, number)}
             for number, wave in enumerate(content.waveforms)
         ],
+        reels=reel_section(summary),
         guesses=sum(row.guess for row in content.inputs),
         quality=_quality(summary["quality"]),
         supply_chart=supply_chart(content.rails),

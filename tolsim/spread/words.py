@@ -108,6 +108,7 @@ def _of_part(study: Study, tables: Mapping[str, SpreadTable], reference: str) ->
     for name in names:
         yield from _measured_elsewhere(study, tables[name])
         yield from _windows(tables[name])
+        yield from _seen(tables[name])
     if isinstance(part, Inductor):
         yield from winding_notes(part, study.expected_frequency)
     if len(names) > 1:
@@ -115,6 +116,15 @@ def _of_part(study: Study, tables: Mapping[str, SpreadTable], reference: str) ->
             f"a unit keeps its rank in every load state; each state's table "
             f"({', '.join(names)}) turns the rank into a value"
         )
+
+
+def _seen(table: SpreadTable) -> Iterator[str]:
+    """What readings look like that a law was made of."""
+    for quantity, spread in table.quantities.items():
+        for law in (spread.tolerance, spread.lot):
+            if isinstance(law, Measured):
+                file = law.sample.file
+                yield from (f"{plain(quantity)} in {file}: {words}" for words in law.sample.remarks)
 
 
 def _windows(table: SpreadTable) -> Iterator[str]:
