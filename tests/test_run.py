@@ -178,6 +178,7 @@ def test_blocks_in_one_pool_have_the_bits_of_blocks_alone(
 ) -> None:
     """One job takes four blocks together, two jobs take them one by one."""
     monkeypatch.setattr(building, "BLOCK", 8)
+    monkeypatch.setattr("tolsim.crosscheck.PART", 8)
     path = write(tmp_path, units=32, solver="auto")
     together, alone = (run_study(path, jobs=jobs, out=tmp_path / str(jobs)) for jobs in (1, 2))
     for table in ("units", "factors"):
@@ -185,6 +186,7 @@ def test_blocks_in_one_pool_have_the_bits_of_blocks_alone(
         pd.testing.assert_frame_equal(mine, other, check_exact=True)
     files = [len(list((tmp_path / str(jobs) / "chunks").glob("units-*"))) for jobs in (1, 2)]
     assert files == [1, 4]
+    assert together.quality["crosscheck"] == alone.quality["crosscheck"]
 
 
 def test_a_run_is_taken_up_with_another_layout(

@@ -3,9 +3,11 @@
 from __future__ import annotations
 
 from collections.abc import Mapping
+from dataclasses import replace
 from typing import Any
 
 import numpy as np
+from joblib import Parallel, cpu_count, delayed, parallel_config
 from numpy.typing import NDArray
 
 from tolsim.answers.bounds import bounds, named_figure, rating_of
@@ -21,12 +23,18 @@ Floats = NDArray[np.float64]
 
 SHARE = 0.01
 LEAST_UNITS = 16
+PART = 32  # units compared side by side
 WARNING = 0.005  # relative disagreement from which the verdict carries a warning
 ALWAYS = ("frequency", "supply_current", "input_power", "output_power")
 
 
-def crosscheck(plan: Plan) -> dict[str, Any]:
+def crosscheck(plan: Plan, jobs: int | None = 1) -> dict[str, Any]:
     """Solve some units of every case served by the bulk solver by shooting as well.
+
+    Parameters
+    ----------
+    jobs : int, optional
+        Worker processes; all cores if None.
 
     Returns
     -------
@@ -46,7 +54,7 @@ def crosscheck(plan: Plan) -> dict[str, Any]:
     rng = np.random.default_rng([plan.study.run.seed, units])
     numbers = np.sort(rng.choice(units, wanted, replace=False))
     draws = built(plan, draw_chosen(plan.factors, plan.study.run.seed, numbers))
-    found = [entry for name in served for entry in _compare(plan, name, draws)]
+    found = _compared(plan, tuple(served), draws, jobs)
     judged = {*ALWAYS, *(bound.column for bound in bounds(plan.study))}
     worst_judged = _largest([entry for entry in found if entry["figure"] in judged])
     return {
@@ -56,6 +64,31 @@ def crosscheck(plan: Plan) -> dict[str, Any]:
         "worst_judged": worst_judged,
         "warning": bool(worst_judged["difference"] > WARNING),
     }
+
+
+def _compared(
+    plan: Plan, names: tuple[CaseName, ...], draws: Draws, jobs: int | None
+) -> list[dict[str, Any]]:
+    """Differences in every case, the units in parts of constant size whatever the jobs.
+
+    Shooting is so much slower than the bulk solver that done alone by one process it would keep
+    the others waiting.
+    """
+    tasks = [
+        (_only(plan, name), name, draws.rows(begin, PART))
+        for name in names
+        for begin in range(0, draws.count, PART)
+    ]
+    with parallel_config(backend="loky", inner_max_num_threads=1):
+        work = Parallel(n_jobs=min(jobs or cpu_count(), len(tasks)))
+        found = work(delayed(_compare)(*task) for task in tasks)
+    return [entry for part in found for entry in part]
+
+
+def _only(plan: Plan, name: CaseName) -> Plan:
+    """The plan with a single case, which is less to send."""
+    choices = {name: plan.choices[name]}
+    return replace(plan, cases={name: plan.cases[name]}, choices=choices)
 
 
 def _largest(entries: list[dict[str, Any]]) -> dict[str, Any]:

@@ -127,7 +127,7 @@ def _solve_and_judge(
         unit_table,
         factor_table,
         {name: prepared.figures for name, prepared in cases.items()},
-        _quality(plan, unit_table),
+        _quality(plan, unit_table, jobs),
         record,
     )
     summary["reels"] = reel_records(opened.study, opened.tables)
@@ -188,7 +188,7 @@ def _identity_of(file: Path) -> Mapping[str, Any]:
     return identity
 
 
-def _quality(plan: Plan, units: Columns) -> dict[str, Any]:
+def _quality(plan: Plan, units: Columns, jobs: int | None) -> dict[str, Any]:
     """How far the solutions can be trusted."""
     answer: dict[str, Any] = {}
     for figure in ("energy_balance", "orbit_residual"):
@@ -208,7 +208,7 @@ def _quality(plan: Plan, units: Columns) -> dict[str, Any]:
     ]
     heats = {name: prepared.heat for name, prepared in plan.cases.items()}
     answer["self_heating"] = heat_record(plan.study, heats, UnitRows.of(units))
-    answer["crosscheck"] = crosscheck(plan)
+    answer["crosscheck"] = crosscheck(plan, jobs)
     return answer | recheck(plan)
 
 
