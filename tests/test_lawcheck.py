@@ -159,6 +159,24 @@ def test_units_of_a_lot_are_counted_by_lots(checked):
         assert other["effective_units"] is None
 
 
+def test_parts_that_depend_on_each_other_are_not_weighted(checked):
+    tied = (
+        TEXT
+        + b"""[table.bell.resistance]
+follows = {inductance = 0.8}
+tolerance = {law = "truncated-normal", half_width = "20 %", sigma = "8 %"}
+"""
+    )
+    found = checked(0.1, text=tied)
+    bell = next(family for family in found["families"] if family["tables"] == ["bell"])
+    assert all(entry["effective_units"] is None for entry in bell["entries"])
+    known = {e["law"]: e["estimate"] for e in bell["entries"]}
+    plain = checked(0.1)
+    bell = next(family for family in plain["families"] if family["tables"] == ["bell"])
+    for entry in bell["entries"]:
+        assert known[entry["law"]] == pytest.approx(entry["estimate"], abs=0.03)
+
+
 def test_pieces_to_measure_follow_the_stated_formula():
     """A shift of half a half width costs 10 points, 2 points matter: delta = 0.5 x 2 / 10."""
     entries = [{"law": "shifted up", "change": -0.10}, {"law": "uniform", "change": -0.4}]

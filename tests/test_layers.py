@@ -16,7 +16,7 @@ FLOORS = [
     {"quantity", "library", "records", "answers.results", "laws.law"}
     | {"spread.codes", "spread.coil", "spread.wire", "stats.percentiles", "stats.ranking"}
     | {"stats.sample_shape", "spread.preferred", "spread.quantity_words", "text_picture"},
-    {"stats.response", "stats.reweighting", "stats.plausibility"},
+    {"stats.response", "stats.reweighting", "stats.plausibility", "stats.neighbours"},
     {"laws.lognormal", "laws.sorted_out", "laws.triangular", "laws.truncated_normal"}
     | {"spread.value_codes"}
     | {"laws.measured", "laws.mixture", "laws.student", "stats.clusters"}

@@ -5,6 +5,7 @@ from __future__ import annotations
 from math import sqrt
 
 import numpy as np
+import pandas as pd
 import pytest
 import quick_study
 import small_study
@@ -13,10 +14,13 @@ from stages import PAIR_FREQUENCY, crossed_pair
 from study_texts import GOOD, TABLES
 from test_physics_push_pull import settle
 
+from tolsim import modelcheck
 from tolsim.answers.prototype_words import board_sentence
+from tolsim.answers.unit_files import FrameColumns
 from tolsim.design import Run, State, Study
-from tolsim.errors import StudyError
-from tolsim.modelcheck import shown_by, with_parts, with_probes
+from tolsim.errors import RunError, StudyError
+from tolsim.evaluation import Plan
+from tolsim.modelcheck import model_check, shown_by, with_parts, with_probes
 from tolsim.prototype import BenchReading, Probe, Prototype
 from tolsim.run import run_study
 from tolsim.spread.part_values import part_values
@@ -212,6 +216,54 @@ def test_a_case_is_cooler_than_its_junction_by_its_own_resistance():
     )
     figures = {"Q1.junction_temperature": np.array([90.0]), "Q1.dissipation": np.array([8.0])}
     assert shown_by(reading, figures.__getitem__) == pytest.approx([78.0])
+
+
+def test_too_few_units_or_a_probe_that_stops_the_stage_give_no_answer(monkeypatch):
+    probe = Probe(net="a", resistance=1.0)
+    study = small_study.everything()
+    run = study.run.model_copy(update={"units": 19})
+    study = study.model_copy(update={"prototypes": {"one": board(probes=(probe,))}, "run": run})
+    plan = Plan(study, {}, (), {})
+    few = model_check(plan, FrameColumns(pd.DataFrame()), FrameColumns(pd.DataFrame()), 1)
+    assert few["boards"][0]["reason"] == "fewer than 20 units"
+
+    def stopped(*_: object) -> None:
+        raise RunError("no orbit")
+
+    monkeypatch.setattr(modelcheck, "prepare", stopped)
+    monkeypatch.setattr(modelcheck, "built", lambda _plan, draws: draws)
+    run = study.run.model_copy(update={"units": 30})
+    plan = Plan(study.model_copy(update={"run": run}), {}, (), {})
+    rows = pd.DataFrame({"unit": np.arange(30), "condition": "room", "state": "normal"})
+    dead = model_check(plan, FrameColumns(rows), FrameColumns(rows[["unit"]]), 1)
+    assert dead["boards"][0]["verdict"] == "no answer"
+    assert "does not run" in dead["sentence"]
+
+
+def test_a_measured_part_is_no_longer_matched_with_its_mate():
+    study = small_study.everything()
+    parts = dict(study.design.parts)
+    match = {"matched_with": "Q1", "match": {"threshold": "0.1"}}
+    parts["Q2"] = parts["Q2"].model_copy(update=match)
+    study = study.model_copy(update={"design": study.design.model_copy(update={"parts": parts})})
+    fixed, own = with_parts(study, small_study.tables(), {"Q1.threshold": 3.2})
+    values = part_values(fixed, own, "room", "full", draw(factors(fixed, own), 3, 0, 50))
+    assert np.ptp(values["Q1.threshold"]) == 0.0
+    assert values["Q2.threshold"].std() > 0.0
+
+
+def test_luck_is_told_where_a_side_is_the_good_one():
+    far = {"figure": "start_margin", "part": "", "title": "Start margin", "percentile": 0.96}
+    entry = {"verdict": "pass", "name": "one", "joint_p": 0.2}
+    words = {
+        good: board_sentence({**entry, "readings": [{**far, "good_side": good}]}, single=True)
+        for good in ("high", "low", None)
+    }
+    assert words["high"].endswith(
+        "start margin is higher than in 96 % of the units: a lucky starter."
+    )
+    assert words["low"].endswith("an unlucky starter.")
+    assert words[None].endswith("of the units.")
 
 
 def test_no_board_means_an_unchecked_model():

@@ -4,8 +4,9 @@ import numpy as np
 import pytest
 
 from tolsim.laws import TruncatedNormal, Uniform
+from tolsim.stats.neighbours import Neighbours
 from tolsim.stats.proportion import share_interval
-from tolsim.stats.response import moved, slopes
+from tolsim.stats.response import foretold, moved, normal_scores, slopes
 from tolsim.stats.reweighting import corrected_share, effective_units, weighted_share
 
 BELL = TruncatedNormal(-1.0, 1.0, 0.4)
@@ -90,6 +91,50 @@ def test_too_few_units_move_nothing():
     figures = np.arange(10.0)[:, None]
     x = np.random.default_rng(1).normal(size=(10, 5))
     np.testing.assert_array_equal(moved(figures, x, x + 1.0), figures)
+
+
+def test_scores_keep_the_order_and_marks_their_place():
+    values = np.array([3.0, -20.0, np.nan, 25.0, 30.0, -22.0])
+    scores, marks = normal_scores(values, np.array([0.0, 28.0, np.inf, -30.0]))
+    known = np.isfinite(values)
+    assert np.array_equal(np.argsort(scores[known]), np.argsort(values[known]))
+    for value, mark in ((0.0, marks[0]), (28.0, marks[1])):
+        assert np.array_equal(scores[known] > mark, values[known] > value)
+    assert marks[2] == np.inf
+    assert marks[3] < np.nanmin(scores)
+
+
+def test_a_jump_that_one_factor_makes_is_known_from_neighbours():
+    """A figure that falls with x and collapses below x = -0.5: half of the units cross over."""
+    rng = np.random.default_rng(8)
+    x = rng.uniform(-1.0, 1.0, size=(600, 12))
+    figure = np.where(x[:, 0] < -0.5, -25.0, 30.0 - 5.0 * x[:, 0]) + 0.1 * rng.normal(size=600)
+    passing = figure > 3.0
+    found = Neighbours.of(x, passing.astype(float))
+    assert found.columns.tolist() == [0]
+    there = found.share_at(np.column_stack([0.5 * (x[:, 0] - 1.0), x[:, 1:]]))
+    expected = passing + there - found.share_around()
+    assert passing.mean() == pytest.approx(0.75, abs=0.04)
+    assert expected.mean() == pytest.approx(0.5, abs=0.03)
+    # lines through the figure do not foretell it, and that is seen from the units themselves
+    scores, (mark,) = normal_scores(figure, np.array([3.0]))
+    lines = foretold(scores[:, None], x)[:, 0] > mark
+    assert np.mean((found.share_around() - passing) ** 2) < 0.5 * np.mean(lines != passing)
+
+
+def test_where_nothing_decides_there_are_no_neighbours():
+    rng = np.random.default_rng(9)
+    x = rng.uniform(size=(400, 80))
+    assert Neighbours.of(x, (rng.uniform(size=400) < 0.9).astype(float)) is None
+    assert Neighbours.of(x, np.ones(400)) is None
+    assert Neighbours.of(x, (x[:, 0] > 0.04).astype(float)) is None  # some 16 units fail
+
+
+def test_a_fit_foretells_the_other_half_of_a_linear_answer():
+    rng = np.random.default_rng(10)
+    x = rng.normal(size=(300, 10))
+    figure = x @ rng.normal(size=10) + 0.05 * rng.normal(size=300)
+    assert np.std(foretold(figure[:, None], x)[:, 0] - figure) < 0.1
 
 
 def test_more_factors_than_units_still_show_the_few_that_matter():

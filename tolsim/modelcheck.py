@@ -20,6 +20,7 @@ from tolsim.answers.bounds import named_figure
 from tolsim.answers.prototype_words import board_sentence
 from tolsim.answers.unit_files import Columns, UnitRows
 from tolsim.design import State, Study
+from tolsim.errors import RunError
 from tolsim.evaluation import Plan, built
 from tolsim.figure_names import FigureInfo
 from tolsim.nominals import CaseName, prepare
@@ -77,29 +78,41 @@ class _Board:
 
     def answer(self) -> dict[str, Any]:
         """Readings with their percentiles, the joint judgement, and what to suspect."""
-        again = bool(self.board.probes or self.board.parts)
-        if again:
+        entry: dict[str, Any] = {
+            "name": self.name,
+            "title": self.board.title,
+            "solved_again": self._again,
+            "probes": [probe.model_dump() for probe in self.board.probes],
+            "fixed": dict(self.board.parts),
+            "units": 0,
+            "without": 0,
+            **_no_answer(),
+        }
+        if self.plan.study.run.units < FEWEST_UNITS:  # nothing is solved again for no answer
+            entry["reason"] = f"fewer than {FEWEST_UNITS} units"
+        else:
+            try:
+                entry |= self._compared()
+            except RunError:
+                entry["reason"] = "the nominal unit with its probe and parts does not run"
+        return entry | {"sentence": board_sentence(entry, single=self._single)}
+
+    def _compared(self) -> dict[str, Any]:
+        """Predict the readings and judge them."""
+        if self._again:
             predicted, bare, factor_values = self._solved_again()
         else:
             predicted = bare = self._from_rows(np.arange(MOST_UNITS))
             factor_values = self._factors(np.arange(predicted.shape[0]))
         runs = np.isfinite(predicted).all(axis=1)
-        entry: dict[str, Any] = {
-            "name": self.name,
-            "title": self.board.title,
-            "solved_again": again,
-            "probes": [probe.model_dump() for probe in self.board.probes],
-            "fixed": dict(self.board.parts),
-            "units": int(runs.sum()),
-            "without": int((~runs).sum()),
-        }
+        counts = {"units": int(runs.sum()), "without": int((~runs).sum())}
         if runs.sum() < FEWEST_UNITS:
-            reason = f"only {runs.sum()} units run in all its cases"
-            answer = {**_no_answer(), "reason": reason, "readings": [], "suspect": None}
-        else:
-            answer = self._judged(predicted[runs], bare, factor_values[runs])
-        entry |= answer
-        return entry | {"sentence": board_sentence(entry, single=self._single)}
+            return counts | {"reason": f"only {runs.sum()} units run in all its cases"}
+        return counts | self._judged(predicted[runs], bare, factor_values[runs])
+
+    @property
+    def _again(self) -> bool:
+        return bool(self.board.probes or self.board.parts)
 
     @property
     def _single(self) -> bool:
@@ -141,7 +154,7 @@ class _Board:
             "state": one.state,
             "unit_of_measure": one.unit_of_measure,
             "worse": figure.worse,
-            "judged": any(limit.figure == one.figure for limit in self.plan.study.limits),
+            "good_side": _good_side(self.plan.study, one.figure),
             "value": one.value,
             "uncertainty": one.uncertainty,
             "p5": low,
@@ -159,13 +172,12 @@ class _Board:
     def _suspect(self, j: int, predicted: Floats, values: Floats) -> dict[str, Any]:
         """The reading that adds most to the distance, and the factor it follows most."""
         one = self.board.readings[j]
-        names = [name for name in self.drawn.names if name != "unit"]
         varying = np.flatnonzero(values.std(axis=0) > 0.0)
         answer: dict[str, Any] = {"reading": one.column, "factor": None, "correlation": None}
         if varying.size and predicted.std() > 0.0:
             r, _, _ = rank_correlation(values[:, varying], predicted, CONFIDENCE)
             leading = int(np.argmax(np.abs(r)))
-            answer["factor"] = names[varying[leading]]
+            answer["factor"] = self._names[varying[leading]]
             answer["correlation"] = float(r[leading])
         return answer
 
@@ -181,8 +193,13 @@ class _Board:
     def _factors(self, numbers: NDArray[np.intp]) -> Floats:
         """Values drawn for units of the run (n, k)."""
         order = np.argsort(self.drawn.column("unit").to_numpy(np.int64), kind="stable")[numbers]
-        names = [name for name in self.drawn.names if name != "unit"]
-        return np.column_stack([self.drawn.column(name).to_numpy(float)[order] for name in names])
+        columns = [self.drawn.column(name).to_numpy(float)[order] for name in self._names]
+        return np.column_stack(columns)
+
+    @property
+    def _names(self) -> list[str]:
+        """Factors of the run."""
+        return [name for name in self.drawn.names if name != "unit"]
 
     def _solved_again(self) -> tuple[Floats, Floats, Floats]:
         """Readings of units with probe and measured parts, the same without probe, factors."""
@@ -196,10 +213,10 @@ class _Board:
             fixed = _only_cases(fixed, cases)
             plan = Plan(fixed, tables, factors(fixed, tables), prepare(fixed, tables, self.jobs))
         draws = built(plan, draw(plan.factors, seed, 0, count))
-        values = self._factors(numbers)
-        for column, name in enumerate(name for name in self.drawn.names if name != "unit"):
-            if name not in draws.names:
-                values[:, column] = 0.0  # measured: it explains nothing any more
+        values = np.zeros((count, len(self._names)))  # what was measured explains nothing any more
+        for column, name in enumerate(self._names):
+            if name in draws.column:
+                values[:, column] = draws.values[:, draws.column[name]]
         if self.board.parts:
             bare = self._read(figures_of_units(plan, list(cases), draws, self.jobs))
         else:
@@ -222,7 +239,15 @@ class _Board:
 
 
 def _no_answer() -> dict[str, Any]:
-    return {"verdict": "no answer", "joint_p": None, "distance": None, "chi_square_p": None}
+    return {
+        "verdict": "no answer",
+        "reason": "",
+        "joint_p": None,
+        "distance": None,
+        "chi_square_p": None,
+        "readings": [],
+        "suspect": None,
+    }
 
 
 def _figure(study: Study, one: BenchReading) -> FigureInfo:
@@ -231,6 +256,16 @@ def _figure(study: Study, one: BenchReading) -> FigureInfo:
     named = named_figure(study, f"{one.part}.{hidden}" if one.part else hidden)
     assert named is not None  # the door has checked it
     return named[1]
+
+
+def _good_side(study: Study, figure: str) -> str | None:
+    """Side on which a figure is far from its limits: "low", "high"; None if neither or unknown."""
+    own = [limit for limit in study.limits if limit.figure == figure]
+    top = any(limit.at_most is not None or limit.share_of_rating is not None for limit in own)
+    floor = any(limit.at_least is not None for limit in own)
+    if top == floor:
+        return {"start_margin": "high", "start_time": "low"}.get(figure)
+    return "low" if top else "high"
 
 
 def _column_of(rows: UnitRows, case: CaseName) -> Callable[[str], Floats]:
@@ -316,6 +351,9 @@ def with_parts(
             own = _own(section[ref].spread, ref)
             section[ref] = section[ref].model_copy(update={"spread": own})
         states = {name: _measured(state, ref, known) for name, state in states.items()}
+    for ref, part in owners["parts"].items():
+        if part.match and {ref, part.matched_with} & by_part.keys():  # its mate is known now
+            owners["parts"][ref] = part.model_copy(update={"match": None, "matched_with": None})
     trims = {name: trim for name, trim in study.trims.items() if trim.address not in values}
     design = study.design.model_copy(update=owners)
     return study.model_copy(update={"design": design, "states": states, "trims": trims}), changed

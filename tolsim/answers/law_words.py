@@ -14,7 +14,7 @@ Entry = Mapping[str, Any]
 
 FEWEST_PIECES = 10
 DOUBTED: Final = ("guess", "common practice")
-_UNCONFIRMED = "response"  # expected of every unit, none drawn anew
+_UNCONFIRMED = ("response", "neighbours")  # expected of every unit, none drawn anew
 _BY_NAME: Final[Mapping[str, Alternative]] = {other.name: other for other in ALTERNATIVES}
 
 
@@ -55,7 +55,7 @@ def conclusion(
 def _grade(entry: Entry, own: Estimate) -> str:
     if own.low <= entry["estimate"] <= own.high:
         return "no"
-    unsure = entry["low"] <= own.share <= entry["high"] or entry["method"] == _UNCONFIRMED
+    unsure = entry["low"] <= own.share <= entry["high"] or entry["method"] in _UNCONFIRMED
     return "perhaps" if unsure else "yes"
 
 

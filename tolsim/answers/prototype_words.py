@@ -11,7 +11,7 @@ Entry = Mapping[str, Any]
 
 MIDDLE = 0.5
 FAR = 0.90  # percentile (or 1 minus it) worth telling
-STARTS_BETTER = ("start_margin", "start_time", "growth_rate")
+AT_START = ("start_margin", "start_time")
 
 
 def board_sentence(board: Entry, *, single: bool) -> str:
@@ -50,8 +50,8 @@ def _luck(board: Entry) -> str:
     said = f"; its {what} is higher than in {percent(share, 0)} of the units"
     if share < MIDDLE:
         said = f"; its {what} is lower than in {percent(1.0 - share, 0)} of the units"
-    if far["figure"] not in STARTS_BETTER and not far["judged"]:
+    if far["good_side"] is None:
         return said
-    good = share if far["worse"] == "low" else 1.0 - share
-    kind = "starter" if far["figure"] in STARTS_BETTER else "board"
-    return f"{said}: a{' lucky' if good > MIDDLE else 'n unlucky'} {kind}"
+    lucky = (far["good_side"] == "high") == (share > MIDDLE)
+    kind = "starter" if far["figure"] in AT_START else "board"
+    return f"{said}: a{' lucky' if lucky else 'n unlucky'} {kind}"

@@ -107,15 +107,16 @@ not known (an interval that this many units cannot close).  Every `low`, `high` 
                 [{tables, parts, bases, guesses, lots, entries [as in together]}] (one family of
                 tables at a time, largest change first), direct_units, depends ("no", "perhaps",
                 "yes"), next {tables, parts, law, estimate, change, lots, pieces} (the guess worth
-                measuring next) or null, sentence}; method is "weights", "response" (fitted)
-                or "response, drawn anew" (and corrected)
+                measuring next) or null, sentence}; method is "weights", "response" (figures
+                fitted) or "neighbours" (units alike), each also with ", drawn anew" (corrected)
 ``prototype``   {measured, threshold (of joint_p), sentence, boards [{name, title, verdict ("pass",
                 "fail", "no answer"), reason (why no answer), solved_again, probes, fixed {address:
                 value}, units (that run), without (those that do not), joint_p, distance
                 (Mahalanobis), chi_square_p, readings [{figure, title, part, condition, state,
-                unit_of_measure, worse, judged (by a limit), value, uncertainty (k = 2), p5, p50,
-                p95, deviation (of the units), bare_p50 (without probe), percentile, p, z, outside
-                (farther from every unit than the uncertainty), share (of the squared distance)}],
+                unit_of_measure, worse, good_side (away from its limits) or null, value,
+                uncertainty (k = 2), p5, p50, p95, deviation (of the units), bare_p50 (without
+                probe), percentile, p, z, outside (farther from every unit than the uncertainty),
+                share (of the squared distance)}],
                 suspect {reading, factor, correlation}, sentence}]}
 ``provenance``  {seed, versions {name: version}, study_sha256, tables {name: sha256},
                 recordings {path: sha256} (only if supplies have recorded ramps), ...}

@@ -51,6 +51,8 @@ def _how(entry: Entry) -> str:
     words: list[str] = []
     if entry["method"].startswith("response"):
         words.append("all units moved along the fitted response")
+    elif entry["method"].startswith("neighbours"):
+        words.append("all units moved to where others show what happens")
     direct = entry["direct"]
     if direct:
         words.append(

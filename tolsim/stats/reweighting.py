@@ -85,11 +85,12 @@ def corrected_share(
     ----------
     expected : Estimate
         Share of all units that would be hit under the other law, as far as is known.
-    few_expected, few_found : array_like (m,) of bool
-        The same for some units, and what was found when they were built under that law.
+    few_expected, few_found : array_like (m,)
+        The same for some units (0 to 1), and what was found (0 or 1) when they were built under
+        that law.
     disagreement : float
-        Share of units on which finding and expectation differ, of this and similar laws: for
-        the interval only, since a few units that happen to agree prove little.
+        Mean square by which finding and expectation differ, of this and similar laws: for the
+        interval only, since a few units that happen to agree prove little.
     confidence : float
         Two-sided.
     """
