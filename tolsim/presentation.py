@@ -34,7 +34,10 @@ NOT_MODELLED = (
         "Power-on and load changes in time: start is judged by the modes at the bias point,"
         " running by the steady orbit of each load state."
     ),
-    "Ramp of a rail: read, but the supply counts as up.",
+    (
+        "Ramp of a rail: read, but the supply counts as up. Where its limit is below the idle"
+        " current, start is judged at the bias point that the limit leaves."
+    ),
     "Stray inductance and capacitance that the study does not list as parts.",
     "Core loss beyond a constant series resistance, proximity effect that changes with frequency.",
     "Package inductance of the transistors, gate charge plateau beyond the capacitance law.",

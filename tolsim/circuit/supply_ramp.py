@@ -7,7 +7,8 @@
     csv           as recorded
     points        as drawn
 
-Contact bounce and dips multiply what the ramp gives.  All of them are straight pieces between
+Contact bounce and dips multiply what the ramp gives: an open contact counts as a source at 0 V,
+which also draws charge back and so is harsher than a contact that is open.  All of them are straight pieces between
 points, so an integrator can put its steps on the corners.
 """
 
