@@ -11,6 +11,7 @@ from tolsim.circuit.assembly import assemble
 from tolsim.circuit.bias import bias_point
 from tolsim.circuit.network import Network
 from tolsim.circuit.nominal import find_nominal
+from tolsim.circuit.startup import start_margin
 from tolsim.circuit.supply_ramp import profile_of
 from tolsim.circuit.thermal import Case
 from tolsim.circuit.transient import march
@@ -188,3 +189,40 @@ def running(design: Design) -> tuple[dict[str, float], dict[str, float]]:
         {name: float(mean[i]) for name, i in index.items()},
         {name: float(value[0]) for name, value in figures.items()},
     )
+
+
+def test_a_folding_limit_charges_a_capacitor_exponentially():
+    """C dv/dt = I [f + (1 - f) v/V] gives v = V f/(1 - f) [e^((1 - f) I t/(C V)) - 1]."""
+    volts, limit, left, c = 20.0, 2.0, 0.25, 100e-6
+    rail = Rail(net="vdd", voltage=volts, current_limit=limit, foldback=left, bulk_capacitance=c)
+    network = live(rail, R1=resistor(1e9))
+    step, count = 2e-6, 1100
+    v = rise(network, rail, step, count)[:, network.index["vdd"]]
+    t = np.arange(count + 1) * step
+    rate = (1 - left) * limit / (c * volts)
+    exact = volts * left / (1 - left) * (np.exp(rate * t) - 1)
+    charging = (exact > 0.05 * volts) & (exact < 0.95 * volts)
+    assert charging.sum() > 300
+    assert v[charging] == pytest.approx(exact[charging], rel=0.012)
+    assert v[-1] == pytest.approx(volts, rel=1e-3)
+
+
+def test_a_limit_that_is_not_reached_changes_nothing_about_the_start():
+    """Its slope against the output voltage is no transconductance."""
+    plain = circuit_a()
+    margins = []
+    for extra in ({}, {"current_limit": 9.0, "foldback": 0.3}):
+        rail = Rail(
+            net="vdd",
+            voltage=24.0,
+            resistance=0.1,
+            inductance=1e-6,
+            bulk_capacitance=1e-4,
+            bulk_resistance=0.05,
+            **extra,  # type: ignore[arg-type]
+        )
+        design = plain.model_copy(update={"rails": {**plain.rails, "vdd": rail}})
+        network = assemble(design, typical_values(design))
+        margins.append(start_margin(network, bias_point(network), 5e7)[0])
+    assert margins[1] == pytest.approx(margins[0], abs=1e-3)
+    assert margins[0] > 3.0
