@@ -8,8 +8,8 @@
     points        as drawn
 
 Contact bounce and dips multiply what the ramp gives: an open contact counts as a source at 0 V,
-which also draws charge back and so is harsher than a contact that is open.  All of them are straight pieces between
-points, so an integrator can put its steps on the corners.
+which also draws charge back and so is harsher than a contact that is open.  All of them are
+straight pieces between points, so an integrator can put its steps on the corners.
 """
 
 from __future__ import annotations
