@@ -102,9 +102,8 @@ FLOORS = [
     {"study.file"},
     {"study"},
     # answers
-    {"nominals", "answers.provenance", "answers.supply_words", "answers.ranking"},
-    {"answers.lots", "answers.reel_words", "answers.trims", "answers.trim_words", "trim.drawn"}
-    | {"report.lots"},
+    {"nominals", "answers.provenance", "answers.trims", "answers.supply_words", "answers.ranking"},
+    {"answers.lots", "answers.reel_words", "answers.trim_words", "trim.drawn"} | {"report.lots"},
     {"evaluation", "answers.summary", "answers.lines", "report.content", "report.tables"},
     {"report.laws", "report.bench"},
     {"report.charts"},

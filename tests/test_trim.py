@@ -14,7 +14,8 @@ from scipy.optimize import brentq
 from tolsim.answers.lines import summary_lines
 from tolsim.answers.trim_words import trim_sentences
 from tolsim.answers.trims import wanted_places
-from tolsim.design import Condition, Design, Rail, Run, State, Study, Trim
+from tolsim.circuit.thermal import Case
+from tolsim.design import Condition, Design, Lots, Rail, Run, State, Study, Trim
 from tolsim.errors import RunError, StudyError
 from tolsim.laws import LAWS
 from tolsim.nominals import prepare
@@ -25,7 +26,7 @@ from tolsim.spread.part_values import part_values
 from tolsim.spread.sampling import draw, draw_chosen, factors, trim_error
 from tolsim.study import open_study
 from tolsim.trim.operator import TrimStatus
-from tolsim.trim.session import do_trims
+from tolsim.trim.session import do_trims, idle_voltages
 
 TABLES = small_study.tables(b"""
 [table.pot]
@@ -224,6 +225,51 @@ def test_strain_is_the_largest_on_the_way():
     assert (ends[1] > 2.0 * ends[0]).all()
 
 
+def test_trims_follow_their_order_and_build_on_each_other():
+    """The second trim starts where the first left the unit, and moves the reading of the first."""
+    study = divider()
+    load = {"part": "R1", "quantity": "resistance", "unit_of_measure": "ohm", "target": 2.8}
+    second = trim(range=(1e3, 60e3), resolution=10.0, coarse_step=3e3, **load)
+    study = study.model_copy(update={"trims": {"bias": study.trims["bias"], "load": second}})
+    done, draws = session(study)
+    assert list(done.logs) == ["bias", "load"]
+    np.testing.assert_allclose(done.logs["load"].before, done.logs["bias"].reading, rtol=1e-9)
+    after = part_values(study, TABLES, "room", "normal", replace(draws, moved=done.moved))
+    tuned = wiper(after["P1.setting"], after["P1.resistance"], after["R1.resistance"])
+    assert np.abs(tuned - 2.8).max() <= 0.01 * (1.0 + 1e-6)
+
+
+def test_order_in_the_file_is_that_of_its_numbers(tmp_path):
+    later = TRIM.format(highest=4.6) + "order = 2\n"
+    sooner = (
+        later.replace("bias", "rail").replace('"vb"', '"vdd"').replace("order = 2", "order = 1")
+    )
+    sooner = sooner.replace('["3.7 V", "4.6 V"]', '["20 V", "28 V"]')
+    (tmp_path / "study.toml").write_text(quick_study.text() + later + sooner)
+    assert list(open_study(tmp_path / "study.toml").study.trims) == ["rail", "bias"]
+
+
+def test_one_meter_serves_a_lot():
+    gain = {"law": "uniform", "half_width": "3 %"}
+    study = divider(meter={"gain": gain, "noise": {"law": "uniform", "half_width": "1 mV"}})
+    study = study.model_copy(update={"lots": Lots(units_per_lot=5)})
+    drawn = draw(factors(study, TABLES), 1, 0, 10)
+    gains = drawn.values[:, drawn.column["trim bias: meter gain"]]
+    assert len(set(gains)) == 2
+    assert len(set(drawn.values[:, drawn.column["trim bias: meter noise"]])) == 10
+
+
+def test_the_idle_voltage_is_told_in_every_case():
+    """It drifts with the track and the load: closed form in the hot case too."""
+    study = divider()
+    done, draws = session(study)
+    values = part_values(study, TABLES, "hot", "normal", replace(draws, moved=done.moved))
+    found = idle_voltages(study, Case(study.design, values, heated=False), np.zeros(3))
+    track, load = values["P1.resistance"], values["R1.resistance"]
+    formula = wiper(values["P1.setting"], track, load)
+    np.testing.assert_allclose(found["bias.trim_voltage"], formula, rtol=1e-6)
+
+
 def test_frequency_of_circuit_a_after_its_coil_was_squeezed():
     """The trimmed coil, put into the equations written by hand, gives the target."""
     state = {"part": "L", "quantity": "inductance", "unit_of_measure": "H", "net": None}
@@ -369,6 +415,8 @@ def test_a_trimmed_unit_is_replayed_as_trimmed(trimmed_run):
     replay = replay_unit(trimmed_run.folder, 0)
     stored = trimmed_run.units.iloc[0]
     assert any("trim bias" in sentence.lower() for sentence in replay.story)
+    way = next(sentence for sentence in replay.story if "on the way: 3.7 V" in sentence)
+    assert way.count(" A") + way.count(" mA") == stored["bias.trim_turns"] + 1
     wave = next(iter(replay.signals.values()))[0]
     assert wave.units.max() == pytest.approx(stored["QA.drain_peak"], rel=0.01)
 

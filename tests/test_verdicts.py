@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from dataclasses import dataclass, field
+from dataclasses import dataclass, field, replace
 
 import numpy as np
 import pandas as pd
@@ -16,7 +16,7 @@ from tolsim.answers.unit_files import FrameColumns
 from tolsim.circuit.orbit import Status
 from tolsim.design import Condition, Design, Limit, Rail, Run, State, Study
 from tolsim.parts import DeviceModel, Mosfet, Rating
-from tolsim.verdicts import judge
+from tolsim.verdicts import CaseVerdicts, judge, judged_at_bench
 
 NOMINAL = {"start_frequency": 7e6, "supply_current": 2.0}
 GOOD = {
@@ -226,3 +226,23 @@ def test_the_order_of_units_permutes_their_verdicts(lot, random):
         np.testing.assert_array_equal(there.outcome, here.outcome[order])
         np.testing.assert_array_equal(there.verdict, here.verdict[order])
         np.testing.assert_array_equal(there.failed_limits, here.failed_limits[order])
+
+
+def test_what_the_operator_puts_aside_fails_and_what_he_leaves_open_is_undecided():
+    verdicts = CaseVerdicts(
+        np.array(["runs", "over stress", "runs", "over stress", "undecided"]),
+        np.array(["pass", "fail", "pass", "fail", "undecided"], dtype="U32"),
+        np.array(["", "0", "", "0", ""], dtype=object),
+    )
+    verdicts = replace(verdicts, outcome=verdicts.outcome.astype("U32"))
+    first, last = np.array([1, 1, 0, 0, 0], bool), np.array([0, 0, 1, 1, 1], bool)
+    judged = judged_at_bench(verdicts, {"trim range exhausted": first, "undecided": last})
+    assert judged.outcome.tolist() == [
+        "trim range exhausted",
+        "trim range exhausted",
+        "undecided",
+        "over stress",
+        "undecided",
+    ]
+    assert judged.verdict.tolist() == ["fail", "fail", "undecided", "fail", "undecided"]
+    assert judged.failed_limits.tolist() == ["", "0", "", "0", ""]

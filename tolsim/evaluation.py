@@ -25,7 +25,7 @@ from tolsim.spread.part_values import part_values
 from tolsim.spread.sampling import Draws, Factor, draw
 from tolsim.spread.table import SpreadTable
 from tolsim.trim.drawn import trim_draws
-from tolsim.trim.session import Trimmed, joined, trim_figures, trim_outcomes
+from tolsim.trim.session import Trimmed, idle_voltages, joined, trim_figures, trim_outcomes
 from tolsim.verdicts import judge, judged_at_bench
 
 
@@ -162,7 +162,7 @@ def _rows(
 ) -> pd.DataFrame:
     """Rows of solved units."""
     figures = case_figures(plan, name, draws, case, solution)
-    figures |= trim_figures(plan.study, name, trimmed)
+    figures |= trim_figures(plan.study, name, trimmed) | _idle_voltages(plan, name, draws)
     verdicts = judge(
         plan.study,
         *name,
@@ -192,6 +192,14 @@ def passes(rows: UnitRows) -> NDArray[np.bool_]:
     """Units (N,) that pass in every case."""
     codes, words = rows.words("verdict")
     return np.asarray((codes == (words.index("pass") if "pass" in words else -2)).all(axis=1))
+
+
+def _idle_voltages(plan: Plan, name: CaseName, draws: Draws) -> dict[str, Floats]:
+    """What trims that read an idle voltage would read in this case."""
+    if not any(trim.net for trim in plan.study.trims.values()):
+        return {}
+    cold = case_of(plan.study, part_values(plan.study, plan.tables, *name, draws))
+    return idle_voltages(plan.study, cold, plan.cases[name].start.bias.x[0])
 
 
 def _status_word(code: int) -> str:

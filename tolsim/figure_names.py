@@ -215,6 +215,7 @@ _PARTS: Final = [
         ("trim_turns", "Turns", "1", None, "How often the operator turned the adjuster."),
         ("trim_error", "Error after trim", "1", None, "True reading over target, less 1."),
         ("trim_before", "Error before trim", "1", None, "The same of the untrimmed unit."),
+        ("trim_voltage", "Idle voltage read", "V", None, "Of the net a trim reads, in any case."),
         ("trim_slope", "Slope", "1", None, "Reading over target per whole range of the adjuster."),
     ),
 ]

@@ -22,7 +22,7 @@ from tolsim.self_heating import Heat, Rises, rises_of, settle, warmed_parts
 from tolsim.spread.part_values import Values, nominal_values
 from tolsim.spread.table import SpreadTable
 from tolsim.trim.nominal_unit import trim_nominal
-from tolsim.trim.session import Trimmed, trim_figures
+from tolsim.trim.session import Trimmed, idle_voltages, trim_figures
 
 CaseName = tuple[str, str]  # condition, state
 
@@ -198,6 +198,7 @@ def _prepared(
     if study.kind == "self-oscillating":
         start_from = cold if cold.found else replace(leader.nominal, bias=cold.bias)
         figures = figures | measure_start(cold.case, start_from)
+    figures = figures | idle_voltages(study, cold.case, cold.bias.x[0])
     plain = {name: float(value[0]) for name, value in figures.items()}
     return PreparedCase(warm, compass, plain, heat, start)
 

@@ -7,7 +7,7 @@ was judged.
 from __future__ import annotations
 
 from collections.abc import Mapping
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from pathlib import Path
 
 import numpy as np
@@ -17,18 +17,19 @@ from numpy.typing import NDArray
 from tolsim import __version__
 from tolsim.answers.bounds import Bound, bounds
 from tolsim.answers.results import STUDY_FILE, TABLES_FOLDER, Results
-from tolsim.answers.trims import trim_sentence
+from tolsim.answers.trims import trim_sentence, way_sentence
 from tolsim.answers.wording import shown
 from tolsim.circuit.orbit import Status
 from tolsim.design import Study
 from tolsim.errors import RequestError
-from tolsim.evaluation import Plan, built, solve_case
+from tolsim.evaluation import Plan, solve_case, trim_drawn
 from tolsim.nominals import CaseName, prepare
 from tolsim.presentation import Signal, signals
 from tolsim.quantity import show
 from tolsim.spread.sampling import Draws, draw, factors
 from tolsim.stats.ranking import rank_correlation, readings_of
 from tolsim.study import StudyFile, open_study
+from tolsim.trim.session import Trimmed
 
 UNUSUAL = 6  # factors named in the story
 FEWEST_UNITS = 20  # stored units from which a rank correlation means something
@@ -77,7 +78,8 @@ def replay_unit(folder: Path | str, number: int) -> Replay:
     draws = draw(names, seed, number, 1)
     _compare_with_stored(results, draws, number)
     plan = Plan(study, opened.tables, names, prepare(study, opened.tables, jobs=None))
-    draws = built(plan, draws)
+    trimmed = trim_drawn(plan, draws)
+    draws = replace(draws, moved=trimmed.moved)
     found = {}
     for name, prepared in plan.cases.items():
         case, solution = solve_case(plan, name, draws)
@@ -88,6 +90,7 @@ def replay_unit(folder: Path | str, number: int) -> Replay:
     story = (
         *_version_story(results),
         *_lot_story(results, study, number),
+        *_trim_story(study, rows, trimmed),
         *_outcome_story(opened, rows, broken),
         *_draw_story(draws, influence),
         *_neighbour(results, draws, influence),
@@ -177,16 +180,23 @@ def _broken(opened: StudyFile, rows: pd.DataFrame) -> list[_Broken]:
     return found
 
 
+def _trim_story(study: Study, rows: pd.DataFrame, trimmed: Trimmed) -> list[str]:
+    """What the operator did to the unit, turn by turn."""
+    story = []
+    for name, log in trimmed.logs.items():
+        trim = study.trims[name]
+        bench = (rows["condition"] == trim.condition) & (rows["state"] == trim.state)
+        story.append(trim_sentence(study, name, rows[bench].to_dict("records")[0]))
+        way = [(float(place[0]), float(reading[0])) for place, reading in log.way]
+        story.append(way_sentence(study, name, way))
+    return story
+
+
 def _outcome_story(opened: StudyFile, rows: pd.DataFrame, broken: list[_Broken]) -> list[str]:
     """One sentence per case, with every limit it breaks."""
     story = []
     for row in rows.to_dict("records"):
         where = f"{row['condition']} / {row['state']}"
-        story += [
-            trim_sentence(opened.study, name, row)
-            for name, trim in opened.study.trims.items()
-            if (trim.condition, trim.state) == (row["condition"], row["state"])
-        ]
         if row["verdict"] == "pass":
             story.append(f"{where}: {row['outcome']}, within every limit.")
             continue

@@ -99,6 +99,9 @@ def _contents(study: Study) -> Iterator[str]:
         for name, state in study.states.items()
     )
     yield "conditions: " + ", ".join(study.conditions)
+    for name, trim in study.trims.items():
+        target = shown(trim.target, trim.reading_unit)
+        yield f"trim {name}: {trim.address} until {trim.reading} is {target}"
     lots = f" in lots of {study.lots.units_per_lot}" if study.lots else ""
     yield f"limits: {len(study.limits)}; units: {study.run.units}{lots}; seed: {study.run.seed}"
 

@@ -6,6 +6,7 @@ import math
 from collections.abc import Iterator, Mapping
 from typing import Any
 
+from tolsim.answers.trims import place_words
 from tolsim.answers.wording import list_of_units, percent, percents, shown
 
 Summary = Mapping[str, Any]
@@ -17,15 +18,7 @@ ENDINGS = (
     ("no_reading", "where the meter showed nothing further on"),
     ("unsettled", "when the operator gave up"),
 )
-DIGITS = 3
 FINEST = 0.01  # %, that deviations are told to
-
-
-def place(value: float | None, unit_of_measure: str) -> str:
-    """A position of an adjuster: shares as percentages."""
-    if value is not None and unit_of_measure == "1":
-        return f"{100.0 * value:.{DIGITS}g} %"
-    return shown(value, unit_of_measure)
 
 
 def width_words(share: float | None) -> str:
@@ -128,10 +121,11 @@ def _needs(entry: Entry) -> Iterator[str]:
         return
     first, last = entry["range"]
     beyond = " (beyond the range extrapolated)" if low < first or high > last else ""
-    text = f"99 % of units need a range of {place(low, unit)} to {place(high, unit)}{beyond}"
+    ends = f"{place_words(low, unit)} to {place_words(high, unit)}"
+    text = f"99 % of units need a range of {ends}{beyond}"
     if entry["needed_resolution"] is not None:
-        most = place(entry["needed_resolution"], unit)
-        text += f" and steps of at most {most} (here {place(entry['resolution'], unit)})"
+        most = place_words(entry["needed_resolution"], unit)
+        text += f" and steps of at most {most} (here {place_words(entry['resolution'], unit)})"
     yield f"{text}."
 
 

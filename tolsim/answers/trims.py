@@ -5,7 +5,7 @@ Entry `trim` of the summary, documented in `tolsim.answers.results`, and one uni
 
 from __future__ import annotations
 
-from collections.abc import Callable, Hashable, Mapping
+from collections.abc import Callable, Hashable, Mapping, Sequence
 from typing import Any
 
 import numpy as np
@@ -13,7 +13,7 @@ from numpy.typing import NDArray
 
 from tolsim.answers.bounds import named_figure
 from tolsim.answers.unit_files import UnitRows
-from tolsim.answers.wording import percent, shown
+from tolsim.answers.wording import DIGITS, percent, shown
 from tolsim.design import Study, Trim
 from tolsim.trim.operator import TrimStatus
 
@@ -111,7 +111,7 @@ def _entry(
         ),
         "needed_resolution": _resolution(trim, slope),
         "strains": _strains(study, name, rows, here),
-        "drift": _drift(trim, rows),
+        "drift": _drift(name, trim, rows),
     }
 
 
@@ -197,11 +197,12 @@ def _strains(study: Study, name: str, rows: UnitRows, here: int) -> list[dict[st
     return found
 
 
-def _drift(trim: Trim, rows: UnitRows) -> list[dict[str, Any]]:
+def _drift(name: str, trim: Trim, rows: UnitRows) -> list[dict[str, Any]]:
     """Reading over target, less 1, in every case that has it."""
-    if trim.reading not in rows.figure_columns:
+    column = f"{name}.trim_voltage" if trim.net else trim.reading
+    if column not in rows.figure_columns:
         return []
-    values = rows.figure(trim.reading)
+    values = rows.figure(column)
     found = []
     for c, (condition, state) in enumerate(rows.cases):
         if np.isfinite(values[:, c]).any():
@@ -215,7 +216,7 @@ def trim_sentence(study: Study, name: str, row: Mapping[Hashable, Any]) -> str:
     trim = study.trims[name]
     low, high = trim.range
     turns = int(row[f"{name}.trim_turns"])
-    place = shown(low + row[f"{name}.trim_position"] * (high - low), trim.unit_of_measure)
+    place = place_words(low + row[f"{name}.trim_position"] * (high - low), trim.unit_of_measure)
     ended = _ENDED[TrimStatus(int(row[f"{name}.trim_status"]))]
     return (
         f"Trim {name}: {ended} after {turns} {'turn' if turns == 1 else 'turns'}, {trim.address}"
@@ -223,6 +224,23 @@ def trim_sentence(study: Study, name: str, row: Mapping[Hashable, Any]) -> str:
         f" {shown(trim.target, trim.reading_unit)} (untrimmed"
         f" {signed(row[f'{name}.trim_before'])})."
     )
+
+
+def way_sentence(study: Study, name: str, way: Sequence[tuple[float, float]]) -> str:
+    """The operator's way with one unit: places and true readings in the order he saw them."""
+    trim = study.trims[name]
+    unit = trim.unit_of_measure
+    seen = ", ".join(
+        f"{place_words(place, unit)} {shown(reading, trim.reading_unit)}" for place, reading in way
+    )
+    return f"  {trim.address} and {_title(study, trim)} on the way: {seen}."
+
+
+def place_words(value: float | None, unit_of_measure: str) -> str:
+    """A position of an adjuster: shares as percentages."""
+    if value is not None and unit_of_measure == "1":
+        return f"{100.0 * value:.{DIGITS}g} %"
+    return shown(value, unit_of_measure)
 
 
 def signed(share: float | None) -> str:

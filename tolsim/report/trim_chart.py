@@ -38,7 +38,15 @@ def positions_chart(entry: Mapping[str, Any], number: int) -> Markup:
             axes.set_ylim(0, 1.25 * counts.max())
             middle = entry["nominal"] / scale
             axes.axvline(middle, color=MUTED, lw=1.2, ls=(0, (4, 2)))
-            axes.text(middle, 1.2 * counts.max(), " nominal unit", color=MUTED, va="top")
+            axes.annotate(
+                "nominal unit",
+                (middle, 1.2 * counts.max()),
+                xytext=(4, 0),
+                textcoords="offset points",
+                color=MUTED,
+                va="top",
+                bbox={"fc": "white", "ec": "none", "pad": 0.6},
+            )
         axes.set_xlim(edges[0], edges[-1])
         name = f"{entry['part']} {entry['quantity']}"
         axes.set_xlabel(f"{name} after trim, whole range ({prefix}{'' if unit == '1' else unit})")

@@ -70,6 +70,9 @@ class TrimLog:
         Reading per position; NaN if the operator saw none.
     strains : mapping of column to (N,)
         Hardest strain on the operator's way: "Q1.trim_drain_peak".
+    way : tuple of (position (N,), reading (N,))
+        Places and true readings in the order in which he saw them, the place the part was left at
+        last; NaN where a unit was not read in that round.
     """
 
     status: Ints
@@ -79,6 +82,7 @@ class TrimLog:
     turns: Ints
     slope: Floats
     strains: Mapping[str, Floats]
+    way: tuple[tuple[Floats, Floats], ...]
 
 
 @dataclass(frozen=True)
@@ -132,12 +136,19 @@ def _do_trim(study: Study, name: str, units: Units, stands: Values) -> TrimLog:
     start = untrimmed
     if trim.start is not None:  # he never sees the unit as it came
         start = np.full(len(every), trim.start)
-        reader.forget_strains()
+        reader.begin()
     session = operate(meter, start, _adjuster(trim), units.usual_slope(name))
     position = np.clip(session.position + setting, *trim.range)
     reading = reader.read(position, every)
     return TrimLog(
-        session.status, position, reading, before, session.moves, session.slope, reader.strains
+        session.status,
+        position,
+        reading,
+        before,
+        session.moves,
+        session.slope,
+        reader.strains,
+        tuple(reader.way),
     )
 
 
@@ -165,6 +176,7 @@ class _Reader:
         self.reading = np.full(count, np.nan)
         self.bias: Floats | None = None  # (N, n) bias points of the latest readings
         self.strains: dict[str, Floats] = {}
+        self.way: list[tuple[Floats, Floats]] = []
 
     def read(self, position: Floats, some: Ints) -> Floats:
         """True readings at positions (M,) of the units `some` (M,)."""
@@ -181,9 +193,9 @@ class _Reader:
             self._note(figures, which)
         return self.reading[some]
 
-    def forget_strains(self) -> None:
-        """Begin anew with the strains."""
-        self.strains = {}
+    def begin(self) -> None:
+        """Forget what was read and strained so far."""
+        self.strains, self.way = {}, []
         self.position[:] = np.nan
 
     def _idle(self, case: Case, which: Ints) -> dict[str, Floats]:
@@ -203,13 +215,39 @@ class _Reader:
         return measure_orbits(case, self.units.orbits(self.bench, case))
 
     def _note(self, figures: Mapping[str, Floats], which: Ints) -> None:
-        """Keep the hardest strain of every transistor."""
+        """Keep the place, its reading and the hardest strain of every transistor."""
+        seen = np.full((2, len(self.position)), np.nan)
+        seen[:, which] = self.position[which], self.reading[which]
+        self.way.append((seen[0], seen[1]))
         for ref in mosfets(self.study.design):
             for figure, strain in TRIM_STRAINS.items():
                 if f"{ref}.{figure}" in figures:
                     nothing = np.full(len(self.position), np.nan)
                     worst = self.strains.setdefault(f"{ref}.{strain}", nothing)
                     worst[which] = np.fmax(worst[which], figures[f"{ref}.{figure}"])
+
+
+def idle_voltages(study: Study, case: Case, guess: Floats) -> dict[str, Floats]:
+    """What trims that read the idle voltage of a net would read in a case: column to (N,).
+
+    Parameters
+    ----------
+    case : Case
+        Units with cold parts.
+    guess : (n,)
+        A bias point near theirs.
+    """
+    reads = {name: trim for name, trim in study.trims.items() if trim.net is not None}
+    if not reads:
+        return {}
+    network = case.network(case.cold_junctions())
+    bias = bias_point(network, np.tile(guess, (case.units, 1)))
+    return {
+        f"{name}.trim_voltage": np.where(
+            bias.settled, network.potential(trim.net or "", bias.x), np.nan
+        )
+        for name, trim in reads.items()
+    }
 
 
 FAILED = {
