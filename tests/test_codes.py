@@ -1,8 +1,10 @@
 """Marking codes against the standards (IEC 60062:2016, IEC 60063:2015, EIA-198)."""
 
 import pytest
+from small_study import capacitor, study
 
 from tolsim.errors import Mistake
+from tolsim.parts import Resistor
 from tolsim.spread.codes import (
     Class1,
     Class2,
@@ -19,6 +21,7 @@ from tolsim.spread.preferred import (
     neighbours,
     smallest_series,
 )
+from tolsim.spread.purchase import value_notes
 from tolsim.spread.value_codes import capacitor_code, resistor_code
 
 # IEC 60062:2016, table of tolerance codes: per cent from 10 pF on.
@@ -215,6 +218,20 @@ def test_neighbours_and_membership():
     ]  # fmt: skip
     with pytest.raises(Mistake):
         neighbours(0.0, 12)
+
+
+def test_values_nobody_sells_are_told():
+    parts = {
+        "C1": capacitor(capacitance="4.6 nF"),
+        "C2": capacitor(capacitance="4.7 nF"),
+        "C3": capacitor(capacitance="3.17 pF", spread="stray-capacitance"),
+        "R1": Resistor(kind="resistor", nets=("a", "b"), resistance="5.01 kohm"),
+        "R2": Resistor(kind="resistor", nets=("a", "b"), resistance="49.9 ohm"),
+    }
+    assert list(value_notes(study(parts))) == [
+        "C1 4.6 nF is in no E series; nearest of E24: 4.7 nF",
+        "R1 5.01 kohm is in no E series; nearest of E96: 4.99 kohm",
+    ]
 
 
 # EIA-198-1: code, slope and its tolerance in ppm/K.

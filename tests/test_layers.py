@@ -85,6 +85,7 @@ FLOORS = [
     {
         "spread.portrait",
         "spread.reel_record",
+        "spread.purchase",
         "spread.part_values",
         "spread.checks",
         "spread.words",

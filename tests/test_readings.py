@@ -41,6 +41,11 @@ NANO = pytest.approx([99.8e-9, 100.4e-9, 101e-9])
         "\ufeffC [nF]\n99.8\n100.4\n101\n",
         "nr|C [nF]\n1|9.98e1\n2|1.004e2\n3|101\n",
         "piece;C [nF]\n1;99,8\n2;\n3;100,4\n4;n/a\n5;101\n",
+        "Date;2026-05-01\nOperator;X\nnr;C [nF]\n1;99,8\n2;100,4\n3;101\n",
+        '"C [nF]"\n"99,8"\n"100.4"\n"101"\n',
+        "C nF\n99.8\n100.4\n101\n",
+        "Cp_nF\n99.8\n100.4\n101\n",
+        "nr C_nF\n1 99.8\n2 100.4\n3 101\n",
         "C [pF]\n99.800,0\n100.400,0\n101.000,0\n",
     ],
 )
@@ -90,6 +95,11 @@ def test_every_mistake_is_told_with_its_line():
     assert got[:2] == ['"hello"', '"100.4"']
     assert "unit" in told[1][1].cure
     assert "Check its unit" in told[3][1].cure
+
+
+def test_overload_is_no_reading():
+    _, told = read("C [nF]\nOL\n99\n98\n")
+    assert [(line, mistake.got) for line, mistake in told] == [(2, '"OL"')]
 
 
 def test_empty_and_missing_files(tmp_path):

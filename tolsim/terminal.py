@@ -22,6 +22,7 @@ from tolsim.answers.wording import shown
 from tolsim.design import Study
 from tolsim.figure_names import FIGURES
 from tolsim.self_heating import heating_notes
+from tolsim.spread.purchase import value_notes
 from tolsim.spread.words import assumptions
 from tolsim.study import StudyFile
 
@@ -84,6 +85,7 @@ def show_study(opened: StudyFile) -> None:
         screen.print(Text(line))
     said = [*assumptions(study, opened.tables), *heating_notes(study, opened.tables)]
     _paragraphs(screen, "Assumed:", said)
+    _paragraphs(screen, "Hard to buy:", list(value_notes(study)))
     used = {name for name in _tables_of(study) if opened.tables[name].guesses}
     guesses = [f"{name}: {', '.join(opened.tables[name].guesses)}" for name in sorted(used)]
     _paragraphs(screen, "Guessed in spread tables:", guesses)

@@ -27,8 +27,12 @@ Tell = Callable[[int, Mistake], None]
 """Called with the number of a line (0: the file as a whole) and what is wrong with it."""
 
 _COMMENTS: Final = ("#", "//", "%")
-_NUMBER: Final = re.compile(r"([+-]?(?:\d[\d.,]*|[.,]\d+)(?:[eE][+-]?\d+)?)\s*(\D.*)?")
+_NUMBER: Final = re.compile(
+    r"([+-]?(?:\d[\d.,]*|[.,]\d+)(?:[eE][+-]?\d+)?)\s*([A-Za-z%µμΩ°].*)?"  # not a date
+)
+_IN_BLANKS: Final = re.compile(r"\s*[+-]?[\d.,]+\s+[+-]?\d[\d.,]*(?:\s.*)?")
 _IN_BRACKETS: Final = re.compile(r"^(.*?)\s*[\[(]\s*([^\])]*)\s*[\])]\s*$")
+_NEVER: Final = "\x1f"  # no line of text holds this sign
 _EMPTY: Final = ("", "-", "--", "n/a", "na")
 _LARGEST: Final = 4_000_000  # bytes; more is no list of readings
 _FAR_OFF: Final = 30.0  # times the median: a wrong unit, a short or an open
@@ -129,7 +133,7 @@ def parse_readings(
 
     text = _decoded(data)
     rows = list(_rows(text))
-    head, body = _head(rows)
+    head, body = _head(rows, unit)
     found = _column(head, body, unit, column, note) if rows else None
     values: list[float] = []
     lines: list[int] = []
@@ -173,12 +177,12 @@ def _rows(text: str) -> Iterator[_Row]:
     ]
     sign = _delimiter([line for _, line in numbered])
     for number, line in numbered:
-        cells = next(csv.reader([line], delimiter=sign)) if sign else [line]
+        cells = line.split() if sign == " " else next(csv.reader([line], delimiter=sign))
         yield _Row(number, tuple(cell.strip() for cell in cells))
 
 
 def _delimiter(lines: Sequence[str]) -> str:
-    """Sign between columns; "" if there is one column only.
+    """Sign between columns; one that never occurs if there is one column only.
 
     A comma may also be the decimal sign: it is, if every line is one number with one comma
     and the numbers before the commas do not simply count the pieces.
@@ -186,12 +190,14 @@ def _delimiter(lines: Sequence[str]) -> str:
     for sign in (";", "\t", "|"):
         if sum(sign in line for line in lines) * 2 > len(lines):
             return sign
-    commas = [line for line in lines if "," in line]
+    bare = [re.sub(r'"[^"]*"', '""', line) for line in lines]  # commas in quotes divide nothing
+    commas = [line for line in bare if "," in line]
     if len(commas) * 2 <= len(lines):
-        return ""
+        blanks = sum(bool(_IN_BLANKS.fullmatch(line)) for line in bare)
+        return " " if blanks * 2 > len(lines) else _NEVER
     numbers = [line.strip() for line in commas if re.match(r"\s*[+-]?\d", line)]
     single = all(re.fullmatch(r"[+-]?[\d.]+,\d+(?:[eE][+-]?\d+)?\s*[^\d,;]*", n) for n in numbers)
-    return "" if single and not _counting([n.split(",")[0] for n in numbers]) else ","
+    return _NEVER if single and not _counting([n.split(",")[0] for n in numbers]) else ","
 
 
 def _counting(texts: Sequence[str]) -> bool:
@@ -202,18 +208,39 @@ def _counting(texts: Sequence[str]) -> bool:
     return numbers[0] in (0, 1) and all(b == a + 1 for a, b in pairwise(numbers))
 
 
-def _head(rows: Sequence[_Row]) -> tuple[tuple[str, ...], list[_Row]]:
-    """Heads of the columns, units of a second head line joined to them, and the rest."""
-    body = list(rows)
-    head: tuple[str, ...] = ()
-    if body and not any(_number_in(cell) for cell in body[0].cells):
-        head = body.pop(0).cells
-        if body and not any(_number_in(cell) for cell in body[0].cells):
-            units = body.pop(0).cells
-            units += ("",) * (len(head) - len(units))
-            pairs = zip(head, units, strict=False)
-            head = tuple(f"{name} [{own.strip('[]()')}]" if own else name for name, own in pairs)
-    return head, body
+def _head(rows: Sequence[_Row], unit: str) -> tuple[tuple[str, ...], list[_Row]]:
+    """Heads of the columns, units of a second head line joined to them, and the rest.
+
+    Before the heads, lines may stand that meters write about themselves.
+    """
+    first = next((n for n, row in enumerate(rows) if any(map(_number_in, row.cells))), len(rows))
+    above, body = list(rows[:first]), list(rows[first:])
+    units: tuple[str, ...] = ()
+    if len(above) > 1 and any(_measures(cell.strip("[]()"), unit) for cell in above[-1].cells):
+        units = tuple(cell.strip("[]()") for cell in above.pop().cells)
+    measuring = [
+        n
+        for n, row in enumerate(above)
+        if any(_measures(_split(c, unit)[1], unit) for c in row.cells)
+    ]
+    if measuring and not units:  # what stands below the heads should be readings
+        body = above[measuring[-1] + 1 :] + body
+        above = above[: measuring[-1] + 1]
+    heads = above[-1].cells if above else ()
+    units += ("",) * (len(heads) - len(units))
+    pairs = zip(heads, units, strict=False)
+    return tuple(f"{name} [{own}]" if own else name for name, own in pairs), body
+
+
+def _measures(unit_text: str, unit: str) -> bool:
+    """True if a text is a unit of measure of the quantity wanted."""
+    if not unit_text.strip():
+        return False
+    try:
+        quantity.read(f"1 {unit_text.strip()}", unit)
+    except Mistake:
+        return False
+    return True
 
 
 def _number_in(cell: str) -> bool:
@@ -230,10 +257,10 @@ def _column(
     """The column that holds the readings."""
     width = max((len(row.cells) for row in body), default=0)
     names = [*head, *("" for _ in range(width - len(head)))]
-    columns = [_Column(place, *_split(name)) for place, name in enumerate(names)]
+    columns = [_Column(place, *_split(name, unit)) for place, name in enumerate(names)]
     if wanted is not None:
         for one in columns:
-            if one.name.casefold() == wanted.casefold() or one.name == _split(wanted)[0]:
+            if one.name.casefold() == wanted.casefold() or one.name == _split(wanted, unit)[0]:
                 return one
         known = [one.name for one in columns if one.name]
         cure = f"Columns here: {', '.join(known)}." if known else "The file has no head line."
@@ -257,9 +284,12 @@ def _column(
     return None
 
 
-def _split(head: str) -> tuple[str, str]:
-    """Name and unit of a column: "C [nF]", "C (nF)", "C in nF", "C/nF"."""
+def _split(head: str, unit: str) -> tuple[str, str]:
+    """Name and unit of a column: "C [nF]", "C (nF)", "C in nF", "C/nF", "C nF", "C_nF"."""
     match = _IN_BRACKETS.match(head) or re.match(r"^(.*?)\s*(?:\bin\b|/)\s*(\S+)$", head)
+    if match is None:
+        match = re.match(r"^(.*?)[\s_]+([^\s_]+)$", head)
+        match = match if match and _measures(match[2], unit) else None
     return (match[1].strip(), match[2].strip()) if match else (head.strip(), "")
 
 
@@ -270,13 +300,7 @@ def _fits(column: _Column, body: Sequence[_Row], unit: str) -> bool:
         cells = [row.cells[column.place] for row in body if column.place < len(row.cells)]
         matches = [m for m in map(_NUMBER.fullmatch, cells) if m]
         own = (matches[0][2] or "") if matches else ""
-    if not own.strip():
-        return False
-    try:
-        quantity.read(f"1 {own.strip()}", unit)
-    except Mistake:
-        return False
-    return True
+    return _measures(own, unit)
 
 
 def _filled(column: _Column, body: Sequence[_Row]) -> bool:
@@ -299,7 +323,8 @@ def _value(cell: str, own: str, unit: str, line: int, note: Tell) -> float | Non
     number, in_cell = _plain(match[1]), (match[2] or "").strip()
     measure = in_cell or own
     if not measure and unit != "1":
-        cure = f'Write the unit into the head of the column, "C [{_LIKELY.get(unit, unit)}]".'
+        likely = _LIKELY.get(unit, unit)
+        cure = f'Write it into the head, "C [{likely}]", or unit = "{likely}" into the law.'
         note(line, Mistake("a reading with a unit of measure", cure, got=f'"{cell}"'))
         return None
     try:
