@@ -260,7 +260,7 @@ def test_the_report_shows_lots_side_by_side(run):
     content = report_input(results, checked)
     page = render(content)
     assert "Lot by lot" in page
-    assert "Lot, worst first" in page
+    assert "the one with the worst unit first" in page
     assert "Lots with a failing unit" in page
     strips = content.strips
     most = max(results.summary["limits"], key=lambda entry: entry["units"])

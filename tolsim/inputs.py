@@ -59,8 +59,7 @@ def _single_rows(study: Study, tables: Mapping[str, SpreadTable]) -> Iterator[In
                         origin.source,
                     )
         for quantity, words in pair_words(part):
-            basis = getattr(part, "confidence", None) or ""
-            yield InputRow(ref, plain(quantity), "", words, "", basis, part.source or "")
+            yield InputRow(ref, plain(quantity), "", words, "", "", "asked for by the study")
 
 
 def _nominal(part: AnyPart | Rail, quantity: str) -> str:

@@ -21,11 +21,11 @@ def lot_sentences(summary: Summary) -> Iterator[str]:
     seen, lost = lots["with_failure"], lots["lost"]
     yield f"lots with a failing unit: {_counted(seen)}"
     if lots["lost_when"] * lots["units_per_lot"] > 1.0:
-        when = percent(lots["lost_when"])
+        when = f"{100 * lots['lost_when']:.3g} %"
         yield f"lots lost ({when} or more of their units fail): {_counted(lost)}"
     if lots["worst"]:
         worst = ", ".join(
-            f"lot {entry['lot']} {entry['failed']} of {entry['units']}"
+            f"lot {entry['lot']} ({entry['failed']} of {entry['units']})"
             for entry in lots["worst"][:MOST_WORST]
         )
         more = ", ..." if len(lots["worst"]) > MOST_WORST else ""

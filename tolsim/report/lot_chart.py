@@ -25,7 +25,10 @@ MARKS = (  # verdict, colour, marker, size; failing units drawn last, on top
 
 
 def lot_chart(strips: LotStrips | None, verdicts: NDArray[np.int8]) -> Markup:
-    """Strips of the lots, worst lot first, failing units marked; empty if there is nothing."""
+    """Strips of the lots, that of the worst unit first, failing units marked.
+
+    Empty if no lot or no value is known.
+    """
     if strips is None or not np.isfinite(strips.values).any():
         return Markup()
     order = _worst_first(strips)[:MOST_LOTS]
@@ -41,17 +44,17 @@ def lot_chart(strips: LotStrips | None, verdicts: NDArray[np.int8]) -> Markup:
             _row(axes, lots, strips, verdicts, scale)
         unit = strips.unit_of_measure.replace("degC", "°C")
         figure.supylabel(f"{strips.title} ({prefix}{unit})", fontsize=11.5)
-        panels[-1].set_xlabel("Lot, worst first")
+        panels[-1].set_xlabel("Lot, the one with the worst unit first")
         return svg(figure, "lots", f"{strips.title} of every unit, lot by lot")
 
 
 def _worst_first(strips: LotStrips) -> NDArray[np.int64]:
-    """Lot numbers in the order of their middle unit, the worst first."""
+    """Lot numbers in the order of their worst unit."""
     sign = -1.0 if strips.at_most is not None else 1.0
     finite = np.isfinite(strips.values)
     lots = np.unique(strips.lot[finite])
-    middle = [np.median(strips.values[finite & (strips.lot == lot)]) for lot in lots]
-    return lots[np.argsort(sign * np.array(middle), kind="stable")]
+    worst = [(sign * strips.values[finite & (strips.lot == lot)]).min() for lot in lots]
+    return lots[np.argsort(worst, kind="stable")]
 
 
 def _row(
