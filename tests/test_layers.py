@@ -82,15 +82,9 @@ FLOORS = [
     {"spread.matching"},
     {"spread.reading", "spread.sampling"},
     {"spread.alternatives"},
-    {
-        "spread.portrait",
-        "spread.reel_record",
-        "spread.purchase",
-        "spread.part_values",
-        "spread.checks",
-        "spread.words",
-        "self_heating",
-    },
+    {"spread.portrait", "spread.reel_record", "spread.purchase", "spread.part_values"}
+    | {"spread.checks", "spread.words"},
+    {"self_heating"},
     {"trim.nominal_unit"},
     {"families", "answers.law_words"},
     # the door for study files
@@ -114,7 +108,7 @@ FLOORS = [
     {"report"},
     {"inputs"},
     # the corridor, and the faces
-    {"crosscheck", "presentation", "recheck", "solver_choice"},
+    {"crosscheck", "heatcheck", "presentation", "recheck", "solver_choice"},
     {"workers"},
     {"building", "lawcheck", "modelcheck"},
     {"run", "replay"},

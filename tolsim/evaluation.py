@@ -120,7 +120,7 @@ def solve_case(plan: Plan, name: CaseName, draws: Draws) -> tuple[Case, Solution
 
 
 def _drawn_case(plan: Plan, name: CaseName, draws: Draws) -> Case:
-    rises = plan.cases[name].heat.rises
+    rises = plan.cases[name].heat.of_units
     return case_of(plan.study, part_values(plan.study, plan.tables, *name, draws, rises))
 
 

@@ -18,7 +18,15 @@ from tolsim.circuit.thermal import Case, heats
 from tolsim.design import Study
 from tolsim.errors import RunError
 from tolsim.figures import measure_orbits, measure_start
-from tolsim.self_heating import Heat, Rises, rises_of, settle, warmed_parts
+from tolsim.self_heating import (
+    Heat,
+    Rises,
+    moved_aside,
+    rises_of,
+    settle,
+    slopes_of,
+    warmed_parts,
+)
 from tolsim.spread.part_values import Values, nominal_values
 from tolsim.spread.table import SpreadTable
 from tolsim.trim.nominal_unit import trim_nominal
@@ -194,6 +202,8 @@ def _prepared(
         keys = tuple(key for key in warm.case.values if not key.endswith("largest_share"))
         compass = aim(warm, keys, study.run.steps_per_cycle)
         figures = measure_orbits(warm.case, warm.solution)
+    if heat.rises:
+        heat = replace(heat, slopes=_heat_slopes(study, cold, compass, heat))
     start = cold if cold.found else leader.nominal
     if study.kind == "self-oscillating":
         start_from = cold if cold.found else replace(leader.nominal, bias=cold.bias)
@@ -201,6 +211,19 @@ def _prepared(
     figures = figures | idle_voltages(study, cold.case, cold.bias.x[0])
     plain = {name: float(value[0]) for name, value in figures.items()}
     return PreparedCase(warm, compass, plain, heat, start)
+
+
+def _heat_slopes(
+    study: Study, cold: Nominal, compass: Compass, heat: Heat
+) -> Mapping[str, Mapping[str, tuple[float, float]]]:
+    """How the rise of each warm part goes with the values of a unit, from orbits beside it."""
+    keys, values = moved_aside(compass.nominal.case.values)
+    case = case_of(study, values)
+    solution = solve_units(case, compass, study.run.steps_per_cycle)
+    figures = measure_orbits(case, solution)
+    settled = np.where(solution.status == Status.SETTLED, 1.0, np.nan)
+    known = {name: figure * settled for name, figure in figures.items()}
+    return slopes_of(study.design, heat.rises, keys, known, cold.case.values)
 
 
 def _no_orbit(found: Mapping[CaseName, Nominal]) -> str:

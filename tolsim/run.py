@@ -32,11 +32,11 @@ from tolsim.crosscheck import crosscheck
 from tolsim.design import Study
 from tolsim.errors import RequestError
 from tolsim.evaluation import Plan
+from tolsim.heatcheck import heat_check
 from tolsim.lawcheck import law_check as check_laws
 from tolsim.modelcheck import model_check
 from tolsim.nominals import prepare
 from tolsim.recheck import recheck
-from tolsim.self_heating import heat_record
 from tolsim.solver_choice import choose_solvers, wants_bulk
 from tolsim.spread.reel_record import reel_records
 from tolsim.spread.sampling import factors
@@ -206,8 +206,7 @@ def _quality(plan: Plan, units: Columns, jobs: int | None) -> dict[str, Any]:
         {"condition": condition, "state": state, **record}
         for (condition, state), record in choices.items()
     ]
-    heats = {name: prepared.heat for name, prepared in plan.cases.items()}
-    answer["self_heating"] = heat_record(plan.study, heats, UnitRows.of(units))
+    answer["self_heating"] = heat_check(plan, UnitRows.of(units))
     answer["crosscheck"] = crosscheck(plan, jobs)
     return answer | recheck(plan)
 

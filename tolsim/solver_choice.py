@@ -100,7 +100,7 @@ def _choose_in_state(
     found: dict[CaseName, Choice] = {}
     first: Choice | None = None
     for name, prepared in cases.items():
-        values = part_values(study, tables, *name, draws, prepared.heat.rises)
+        values = part_values(study, tables, *name, draws, prepared.heat.of_units)
         pilots = case_of(study, values)
         if first is None:
             first = choose(prepared.nominal, prepared.compass, pilots, study.run.steps_per_cycle)

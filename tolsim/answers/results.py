@@ -88,9 +88,9 @@ not known (an interval that this many units cannot close).  Every `low`, `high` 
                 rechecked {units, share, agreed, worst_difference, worst_frequency_difference},
                 steps {steps_per_cycle, recheck_steps_per_cycle, recheck_cycles},
                 self_heating [{part, condition, state (where it runs hottest), rise (K, of the
-                nominal unit, taken for every unit), gap (K, within which the rises of 95 % of
-                the units' own losses lie from it), settled (in every case)}]; passive parts whose
-                values follow their own temperature}
+                nominal unit), gap (K, within which the rises by the own losses of 95 % of units
+                lie from those taken), settled (in that case)}]: passive parts whose values follow
+                their own temperature; part "" tells a case without orbit when warm}
                 With other than random sampling also sampling (how, and what intervals mean then)
 ``reels``       one entry per measured law in use (empty without): [{table, parts, quantity,
                 unit_of_measure ("share" for relative deviations), file, pieces, values

@@ -150,11 +150,15 @@ def _quality(quality: dict[str, Any]) -> list[tuple[str, str]]:
 
 def _warm(entry: dict[str, Any]) -> str:
     """How warm a passive part runs, and how far units may be from that."""
-    gap = "" if entry["gap"] is None else f"; 95 % of units within {entry['gap']:.2g} K of it"
+    if not entry["part"]:
+        where = f"{entry['condition']}, {entry['state']}"
+        return f"{where}: the nominal unit has no orbit with warm parts; they are taken as cold"
+    gap = "" if entry["gap"] is None else f"; right within {entry['gap']:.2g} K for 95 % of units"
     unsettled = "" if entry["settled"] else "; its losses found no balance, values are uncertain"
     return (
         f"{entry['part']}: {entry['rise']:.3g} K above its surroundings by the loss of the nominal"
-        f" unit ({entry['condition']}, {entry['state']}), taken for every unit{gap}{unsettled}"
+        f" unit ({entry['condition']}, {entry['state']}), corrected by each unit's own values"
+        f"{gap}{unsettled}"
     )
 
 

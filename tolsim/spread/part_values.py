@@ -12,7 +12,7 @@ from __future__ import annotations
 
 import math
 from collections.abc import Callable, Mapping
-from dataclasses import dataclass
+from dataclasses import dataclass, field
 from types import MappingProxyType
 
 import numpy as np
@@ -46,6 +46,9 @@ Values = dict[str, Floats]
 Drawn = Callable[[str, str, Law], Floats]
 """Value of a factor in every unit: (name, aspect, law) to an array (N,)."""
 
+AMBIENT = "ambient"
+MOST_CHANGE = 1.0  # of the logarithm of a rise, to which first order is believed
+HIGHEST_RISE = 300.0  # K; nothing soldered survives more
 HIGHEST_COUPLING = 0.9999  # spread must not couple two coils more than fully
 
 
@@ -55,7 +58,7 @@ def part_values(
     condition: str,
     state: str,
     draws: Draws,
-    rises: Mapping[str, float] | None = None,
+    rises: Mapping[str, Rise] | None = None,
 ) -> Values:
     """Values of every part of the units in `draws`.
 
@@ -69,7 +72,7 @@ def part_values(
     draws : Draws
         N units.
     rises : mapping, optional
-        K by which a part is warmer than ambient, in every unit; parts not named are as warm.
+        By how much each part is warmer than ambient; parts not named are as warm.
 
     Returns
     -------
@@ -80,8 +83,50 @@ def part_values(
     def drawn(name: str, _: str, law: Law) -> Floats:
         return draws.of(name, law)  # same rank, the law of this state or condition
 
-    values = _Maker(study, tables, condition, state, draws.count, drawn, rises or {}).values()
+    own: Mapping[str, float | Floats] = {}
+    if rises:
+        own = own_rises(study, tables, condition, state, draws, rises)
+    values = _Maker(study, tables, condition, state, draws.count, drawn, own).values()
     return adjusted(study, values, draws.moved)
+
+
+@dataclass(frozen=True)
+class Rise:
+    """How much warmer than ambient a part runs, and how that goes with the values of a unit.
+
+    Attributes
+    ----------
+    kelvin : float
+        Of the nominal unit.
+    slopes : mapping
+        Address of a value to (value of the cold nominal unit, slope): the rise changes by slope
+        per relative change of that value; for "ambient" per K.
+    """
+
+    kelvin: float
+    slopes: Mapping[str, tuple[float, float]] = field(default_factory=dict)
+
+    def of(self, cold: Values) -> Floats:
+        """Rise (N,) of units with these values of cold parts, to first order in them."""
+        change = np.zeros(len(cold[AMBIENT]))
+        for key, (usual, slope) in self.slopes.items():
+            apart = cold[key] - usual
+            change = change + slope * (apart if key == AMBIENT else apart / usual)
+        factor = np.exp(np.clip(change, -MOST_CHANGE, MOST_CHANGE))
+        return np.minimum(self.kelvin * factor, HIGHEST_RISE)
+
+
+def own_rises(
+    study: Study,
+    tables: Mapping[str, SpreadTable],
+    condition: str,
+    state: str,
+    draws: Draws,
+    rises: Mapping[str, Rise],
+) -> dict[str, Floats]:
+    """Rise (N,) of each part in every drawn unit."""
+    cold = part_values(study, tables, condition, state, draws)
+    return {reference: rise.of(cold) for reference, rise in rises.items()}
 
 
 def nominal_values(
@@ -139,7 +184,7 @@ class _Maker:
     state_name: str
     count: int
     drawn: Drawn
-    rises: Mapping[str, float]
+    rises: Mapping[str, float | Floats]
 
     def __post_init__(self) -> None:
         self.condition: Condition = self.study.conditions[self.condition_name]
@@ -152,7 +197,7 @@ class _Maker:
 
     def values(self) -> Values:
         """All part values."""
-        values: Values = {"ambient": self.ambient}
+        values: Values = {AMBIENT: self.ambient}
         for reference, part in self.study.design.parts.items():
             values |= self._of_part(reference, part)
         for reference, rail in self.study.design.rails.items():

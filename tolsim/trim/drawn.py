@@ -54,7 +54,7 @@ class _Drawn:
     draws: Draws
 
     def values(self, case: CaseName, moved: Mapping[str, Floats], *, runs: bool) -> Values:
-        rises = self.cases[case].heat.rises if runs else {}
+        rises = self.cases[case].heat.of_units if runs else {}
         return part_values(self.study, self.tables, *case, replace(self.draws, moved=moved), rises)
 
     def error(self, trim: str, error: str) -> Floats:
