@@ -118,6 +118,28 @@ def test_yields_under_other_laws_agree_with_quadrature(checked):
     assert {"weights", "response"} <= methods
 
 
+def test_units_that_fail_without_breaking_a_limit_are_foretold_by_units_alike(monkeypatch):
+    """The stage does not start above dC = 3 %: no figure tells, the neighbours do."""
+
+    def starting(plan, draws, count, block):
+        rows = invented(plan, draws, count, block)
+        values = part_values(plan.study, plan.tables, "room", "normal", draws)
+        dead = values["C1.capacitance"] > 1.03e-9
+        return rows.assign(verdict=np.where(dead, "fail", "pass"), failed_limits="")
+
+    monkeypatch.setattr(workers, "rows_of", starting)
+    plan = plan_of(10.0)
+    rows = starting(plan, draw(plan.factors, plan.study.run.seed, 0, UNITS), UNITS, UNITS)
+    found = lawcheck.law_check(plan, FrameColumns(rows), 1)
+    flat = next(family for family in found["families"] if family["tables"] == ["flat"])
+    assert {e["method"].split(",")[0] for e in flat["entries"]} <= {"neighbours", "weights"}
+    for entry in flat["entries"]:
+        other = next(other for other in ALTERNATIVES if other.name == entry["law"])
+        known = float(replacement(FLAT, "tolerance", other).cdf(0.03))
+        assert entry["estimate"] == pytest.approx(known, abs=0.045), entry["law"]
+    assert found["next"]["tables"] == ["flat"]
+
+
 def test_the_part_that_moves_the_yield_is_named(checked):
     found = checked(0.1)
     assert found["depends"] == "yes"
