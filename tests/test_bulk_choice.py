@@ -122,6 +122,20 @@ def test_edges_that_no_order_carries_are_left_to_shooting(stage):
     assert "edges" in made.reason
 
 
+def test_a_refusal_without_trial_shoots_few_units(stage, monkeypatch):
+    """Nothing is to be chosen then: shooting serves, and a few units tell how far it is off."""
+    asked = []
+
+    def counted(probes, *rest):
+        asked.append(probes.units)
+        return by_shooting(probes, *rest)
+
+    monkeypatch.setattr(chosen, "by_shooting", counted)
+    made = choose(*stage, STEPS, orders=(16, 24))
+    assert asked == [chosen.FEW]
+    assert 0 < made.shooting_errors.peak < 0.01
+
+
 def test_the_next_order_follows_from_the_excess(stage):
     nominal, orders = stage[0], (32, 48, 64, 96)
     assert chosen._next_order(32, 1.2, nominal, orders) == 48

@@ -17,13 +17,14 @@ import numpy as np
 from circuits import CIRCUIT_A_SPREAD, circuit_a, scattered, typical_values
 from references.circuit_a import Values, run_cycles
 
+from tolsim.building import BLOCK, TOGETHER
 from tolsim.circuit.bulk.choice import Choice, choose
 from tolsim.circuit.continuation import Compass, aim, solve_units
 from tolsim.circuit.nominal import Nominal, find_nominal
 from tolsim.circuit.thermal import Case
 from tolsim.figures import measure_orbits, measure_start
 
-STEPS, UNITS, CHUNK, PILOTS, RUNS = 192, 4096, 1024, 256, 5
+STEPS, UNITS, PILOTS, RUNS = 192, 4096, 256, 5
 RECHECKED = 0.01
 CYCLES, FREQUENCY = 60, 6.6e6
 
@@ -39,14 +40,17 @@ def units_of(first: int, count: int) -> Case:
 def run_units(nominal: Nominal, compass: Compass, choice: Choice) -> tuple[float, float, float]:
     """Seconds for orbits, for figures, for the re-check."""
     orbits = figures = 0.0
-    for first in range(0, UNITS, CHUNK):
-        case = units_of(PILOTS + first, CHUNK)
-        began = time.perf_counter()
-        solution = choice.solve(case, compass, STEPS)
-        solved = time.perf_counter()
-        measure_orbits(case, solution)
-        measure_start(case, nominal)
-        orbits, figures = orbits + solved - began, figures + time.perf_counter() - solved
+    for first in range(0, UNITS, TOGETHER * BLOCK):
+        pool = units_of(PILOTS + first, TOGETHER * BLOCK)
+        blocks = choice.solve_in_blocks(pool, compass, STEPS, BLOCK)
+        for place in range(TOGETHER):
+            began = time.perf_counter()
+            solution = next(blocks)
+            solved = time.perf_counter()
+            case = pool.take(np.arange(place * BLOCK, (place + 1) * BLOCK))
+            measure_orbits(case, solution)
+            measure_start(case, nominal)
+            orbits, figures = orbits + solved - began, figures + time.perf_counter() - solved
     some = units_of(PILOTS, max(16, int(RECHECKED * UNITS)))
     began = time.perf_counter()
     solve_units(some, compass, STEPS)
@@ -76,12 +80,15 @@ def matrix_rate() -> float:
 def work_per_unit(choice: Choice, iterations: float) -> float:
     """Floating-point operations of the products of one unit's iterations, counted by hand.
 
-    M (N N) once, synthesis of p ports and analysis of p currents and p charges, per iteration.
+    The inverse Jacobian through the ports (a dense matrix over p K, blocks per harmonic), synthesis
+    of p ports and analysis of p currents and p charges, per iteration.
     """
     assert choice.plan is not None
-    grid, ports = choice.plan.grid, 4
-    unknowns = len(choice.plan.reference.z)
-    return iterations * (2 * unknowns**2 + 3 * ports * 2 * grid.size * grid.points)
+    grid, inverse = choice.plan.grid, choice.plan.reference.inverse
+    ports = len(inverse.sensed.constant)
+    blocks = (inverse.spread, inverse.sensed, inverse.acting)
+    condensed = inverse.dense.size + sum(each.waves.size for each in blocks)
+    return iterations * (2 * condensed + 3 * ports * 2 * grid.size * grid.points)
 
 
 def main() -> None:
@@ -99,7 +106,7 @@ def main() -> None:
         total = prepared + sum(seconds)
         rows.append((prepared, *seconds, UNITS / total, UNITS / sum(seconds), yardstick()))
     print(f"solver: {choice.record()}")
-    iterations = choice.solve(units_of(PILOTS, CHUNK), compass, STEPS).iterations.mean()
+    iterations = choice.solve(units_of(PILOTS, TOGETHER * BLOCK), compass, STEPS).iterations.mean()
     work = work_per_unit(choice, float(iterations))
     columns = list(zip(*rows, strict=True))
     titles = ("prepare s", "orbits s", "figures s", "re-check s", "units/s", "units/s after")

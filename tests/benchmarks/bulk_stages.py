@@ -14,6 +14,7 @@ from collections.abc import Iterator
 import numpy as np
 from circuits import CIRCUIT_A_SPREAD, circuit_a, scattered, typical_values
 
+from tolsim.building import BLOCK, TOGETHER
 from tolsim.circuit.bulk.choice import Choice, choose
 from tolsim.circuit.bulk.judges import Marks
 from tolsim.circuit.continuation import Compass, aim, solve_units
@@ -27,7 +28,7 @@ from tolsim.spread.part_values import nominal_values, part_values
 from tolsim.spread.sampling import draw, factors
 from tolsim.study import open_study
 
-PILOTS, UNITS, JUDGED, BATCH = 256, 1024, 192, 128
+PILOTS, UNITS, JUDGED = 256, 1024, 192
 STUDIES = (("tip-heater", "room", "tip_cold"), ("work-heater", "room", "cold_steel"))
 
 
@@ -72,12 +73,13 @@ def _rate(
 ) -> tuple[float, int]:
     unsettled = 0
     began = time.perf_counter()
-    for first in range(0, UNITS, BATCH):
-        case = units.take(np.arange(first, first + BATCH))
-        solution = choice.solve(case, compass, steps)
-        measure_orbits(case, solution)
-        measure_start(case, nominal)
-        unsettled += int(np.sum(solution.status != Status.SETTLED))
+    for first in range(0, UNITS, TOGETHER * BLOCK):
+        pool = units.take(np.arange(first, first + TOGETHER * BLOCK))
+        for place, solution in enumerate(choice.solve_in_blocks(pool, compass, steps, BLOCK)):
+            case = pool.take(np.arange(place * BLOCK, (place + 1) * BLOCK))
+            measure_orbits(case, solution)
+            measure_start(case, nominal)
+            unsettled += int(np.sum(solution.status != Status.SETTLED))
     return UNITS / (time.perf_counter() - began), unsettled
 
 

@@ -34,6 +34,7 @@ from tolsim.circuit.thermal import Case
 
 ORDERS = (16, 24, 32, 40, 48, 56, 64, 80, 96, 128)
 PROBES = 64  # spread units that decide
+FEW = 16  # of them tell how far shooting is off where it serves without rival
 ATTEMPTS = 3  # orders tried
 LARGEST_SYSTEM = 4000  # unknowns: beyond, an iteration costs more than it saves
 FEWEST_SETTLED = 0.7  # share of the probes that collocation settles itself
@@ -134,6 +135,8 @@ def choose(
         if excess <= RESERVE:
             break
         order = _next_order(order, max(excess / RESERVE, 1.2), nominal, orders)
+    if judge is None and best is None:  # shooting serves anyway, and only says how well
+        judge = by_shooting(probes.take(np.arange(min(FEW, probes.units))), compass, steps, None)
     judge = judge or by_shooting(probes, compass, steps, best.solution if best else None)
     # short of the accuracy both ways, the smaller error serves
     if best is not None and best.excess(judge) < max(judge[1].excess, 1.0):
