@@ -53,8 +53,9 @@ FLOORS = [
     {"circuit.transients.kernel"},
     {"circuit.transients.journey"}
     | {"circuit.load_change", "circuit.load_change.handover", "circuit.load_change.probes"},
-    {"circuit.load_change.road"},
-    {"circuit.load_change.passage"},
+    {"circuit.load_change.road"}
+    | {"circuit.poweron", "circuit.poweron.fates", "circuit.poweron.ramps", "circuit.poweron.path"},
+    {"circuit.load_change.passage", "circuit.poweron.switch_on"},
     {"circuit.shooting"},
     {"circuit.nominal"},
     {"circuit.continuation"},

@@ -38,17 +38,31 @@ class Ending(IntEnum):
 class Ramps:
     """How the live rails of N units come up: piecewise linear, constant after the last point."""
 
-    times: Floats  # (N, r, k) s
-    levels: Floats  # (r, k), 1 is the full voltage
+    times: Floats  # (N, r, k) s; a repeated last time fills a row
+    levels: Floats  # (N, r, k), 1 is the full voltage
+
+    @classmethod
+    def none(cls, units: int) -> Ramps:
+        """No live rails."""
+        return cls(np.zeros((units, 0, 2)), np.zeros((units, 0, 2)))
 
     @property
     def up(self) -> Floats:
         """When all rails are up, (N,) s."""
         return self.times[:, :, -1].max(axis=1, initial=0.0)
 
+    def at(self, time: Floats) -> Floats:
+        """Levels (N, r) at a time (N,) of every unit, s."""
+        found = np.empty(self.times.shape[:2])
+        for unit, rail in np.ndindex(*found.shape):
+            found[unit, rail] = np.interp(
+                time[unit], self.times[unit, rail], self.levels[unit, rail]
+            )
+        return found
+
     def take(self, units: Ints) -> Ramps:
         """Return the ramps of some of the units."""
-        return Ramps(self.times[units], self.levels)
+        return Ramps(self.times[units], self.levels[units])
 
 
 @dataclass(frozen=True)

@@ -33,7 +33,7 @@ class SourceTable(NamedTuple):
 
     kind: NDArray[np.int64]  # (s,)
     times: Floats  # (N, s, k)
-    levels: Floats  # (s, k)
+    levels: Floats  # (N, s, k)
     low: Floats  # (N, s)
     high: Floats  # (N, s)
     duty: Floats  # (s,)
@@ -47,18 +47,17 @@ def sources_of(network: Network, times: Floats, levels: Floats) -> SourceTable:
 
     Parameters
     ----------
-    times : (N, r, k)
-    levels : (r, k)
+    times, levels : (N, r, k)
         Of the r live rails, in the order of `network.rail_names`.
     """
-    rails = levels.shape[0]
+    rails = levels.shape[1]
     shape = network.drive_shape
     drives = 0 if shape is None else len(shape.duty)
     units, total = network.units, rails + drives
     kind = np.full(total, PROFILE, dtype=np.int64)
-    all_times = np.zeros((units, total, levels.shape[1]))
-    all_levels = np.ones((total, levels.shape[1]))
-    all_times[:, :rails], all_levels[:rails] = times, levels
+    all_times = np.zeros((units, total, levels.shape[2]))
+    all_levels = np.ones_like(all_times)
+    all_times[:, :rails], all_levels[:, :rails] = times, levels
     low, high = np.zeros((units, total)), np.ones((units, total))
     duty, edge = np.full(total, 0.5), np.full(total, 0.02)
     matrix = np.zeros((units, network.states, total))
@@ -79,7 +78,7 @@ def unit_sources(table: SourceTable, unit: int) -> Sources:
     return Sources(
         table.kind,
         table.times[unit],
-        table.levels,
+        table.levels[unit],
         table.low[unit],
         table.high[unit],
         table.duty,
@@ -99,11 +98,17 @@ def _along(times: Floats, levels: Floats, time: float) -> float:
     """A piecewise linear profile at a time."""
     if time <= times[0]:
         return levels[0]
-    for k in range(1, len(times)):
-        if time < times[k]:
-            share = (time - times[k - 1]) / (times[k] - times[k - 1])
-            return levels[k - 1] + share * (levels[k] - levels[k - 1])
-    return levels[-1]
+    if time >= times[-1]:
+        return levels[-1]
+    below, above = 0, len(times) - 1
+    while above - below > 1:
+        middle = (below + above) // 2
+        if time < times[middle]:
+            above = middle
+        else:
+            below = middle
+    share = (time - times[below]) / (times[above] - times[below])
+    return levels[below] + share * (levels[above] - levels[below])
 
 
 @hot
