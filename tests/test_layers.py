@@ -46,7 +46,7 @@ FLOORS = [
     {"circuit.assembly", "circuit.bias", "circuit.charge", "circuit.walk"},
     {"circuit.cycle"},
     {"circuit.thermal", "circuit.critical", "circuit.transient"},
-    {"circuit.startup", "circuit.transients.elements"},
+    {"circuit.startup", "circuit.transients.elements", "circuit.transients.compiling"},
     {"circuit.transients", "circuit.transients.laws"},
     {"circuit.transients.sources"},
     {"circuit.transients.stepping"},

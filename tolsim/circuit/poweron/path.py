@@ -1,4 +1,4 @@
-"""A slow ramp passes through bias points: where does oscillation begin to grow?
+"""Where oscillation begins to grow while a slow ramp passes through bias points.
 
 While the supplies rise slowly against the oscillation, each unit follows its bias point, and its
 leading mode grows or decays with the momentary real part of its eigenvalue.  From the noise of

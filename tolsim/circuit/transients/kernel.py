@@ -11,13 +11,13 @@ from __future__ import annotations
 from typing import NamedTuple
 
 import numpy as np
-from numba import njit
 from numpy.typing import NDArray
 
 from tolsim.circuit.devices import Floats
 from tolsim.circuit.stepper import GAMMA
+from tolsim.circuit.transients.compiling import hot
 from tolsim.circuit.transients.elements import FlatElements
-from tolsim.circuit.transients.laws import LOOSE, Point, evaluate, hot, new_point, unit_elements
+from tolsim.circuit.transients.laws import Point, evaluate, new_point, unit_elements
 from tolsim.circuit.transients.sources import Sources, SourceTable, unit_sources
 from tolsim.circuit.transients.stepping import (
     LOCAL_ERROR,
@@ -243,7 +243,7 @@ def _accept(now: Point, inner: Point, end: Point, past: Past) -> None:
     now.value[:] = end.value
 
 
-@njit(cache=True)
+@hot
 def _begin(
     task: Task, unit: int, e: FlatElements, place: Place, rung: Rung
 ) -> tuple[Point, Past, Window]:
@@ -268,7 +268,7 @@ def _begin(
     )
 
 
-@njit(cache=True)
+@hot
 def _place(circuit: Circuit, unit: int) -> Place:
     p, n = circuit.D.shape
     return Place(
@@ -278,11 +278,13 @@ def _place(circuit: Circuit, unit: int) -> Place:
         np.zeros(p),
         np.zeros(p),
         np.zeros(p),
+        np.zeros(p),
+        np.zeros((p, p)),
         np.zeros((p, p)),
     )
 
 
-@njit(cache=True, fastmath=LOOSE)
+@hot
 def _run_unit(
     unit: int,
     circuit: Circuit,
@@ -336,7 +338,7 @@ def _run_unit(
     record.steps[unit] = steps
 
 
-@njit(cache=True)
+@hot
 def run_all(
     circuit: Circuit, e: FlatElements, table: SourceTable, task: Task, record: Record
 ) -> None:

@@ -9,14 +9,11 @@ import math
 from typing import NamedTuple
 
 import numpy as np
-from numba import njit
 
 from tolsim.circuit.devices import SQUARE_ROOT, Floats
+from tolsim.circuit.transients.compiling import hot
 from tolsim.circuit.transients.elements import FlatElements
 
-# sums may be regrouped, so that they vectorise; NaN and infinity keep their meaning
-LOOSE = {"reassoc", "contract", "nsz"}
-hot = njit(cache=True, fastmath=LOOSE)  # handed flat tuples only: taking one out of another costs
 FAR = 36.0  # knees away from its corner a smooth ramp is its asymptote to the last bit
 
 
@@ -34,7 +31,7 @@ class Point(NamedTuple):
     slope: Floats  # (e,)
 
 
-@njit(cache=True)
+@hot
 def new_point(n: int, p: int, e: int) -> Point:
     """All zero."""
     g, c = np.zeros((p, p)), np.zeros((p, p))
@@ -51,7 +48,7 @@ def new_point(n: int, p: int, e: int) -> Point:
     )
 
 
-@njit(cache=True)
+@hot
 def unit_elements(e: FlatElements, unit: int) -> FlatElements:
     """The elements of one unit."""
     return FlatElements(

@@ -10,7 +10,7 @@ from numpy.typing import NDArray
 
 from tolsim.circuit.devices import Floats
 from tolsim.circuit.network import Network
-from tolsim.circuit.transients.laws import hot
+from tolsim.circuit.transients.compiling import hot
 
 PROFILE, SQUARE, SINE = 0, 1, 2
 

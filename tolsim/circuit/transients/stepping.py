@@ -9,12 +9,12 @@ from __future__ import annotations
 from typing import NamedTuple
 
 import numpy as np
-from numba import njit
 
 from tolsim.circuit.devices import Floats
 from tolsim.circuit.stepper import GAMMA, PORT_TOLERANCE, A, B
+from tolsim.circuit.transients.compiling import hot
 from tolsim.circuit.transients.elements import FlatElements
-from tolsim.circuit.transients.laws import Point, evaluate, hot, solve_small
+from tolsim.circuit.transients.laws import Point, evaluate, solve_small
 from tolsim.circuit.transients.sources import Sources, level
 
 QUICK_ROUNDS = 8
@@ -53,10 +53,12 @@ class Place(NamedTuple):
     target: Floats  # (p,)
     move: Floats  # (p,)
     whole: Floats  # (p,)
+    guess: Floats  # (p,)
+    kept: Floats  # (p, p)
     matrix: Floats  # (p, p)
 
 
-@njit(cache=True)
+@hot
 def make_ladder(circuit: Circuit, matrix: Floats, unit: int, longest: float, rungs: int) -> Rung:
     """Matrices of the step lengths h, h/2, h/4 ... in seconds, along a first axis."""
     n, p, s = circuit.E.shape[1], circuit.D.shape[0], matrix.shape[1]
@@ -105,41 +107,59 @@ def add_push(rung: Rung, sources: Sources, time: float, out: Floats) -> None:
 
 
 @hot
+def _linearise(rung: Rung, c: float, at: Point, place: Place) -> None:
+    """I + K dw/dv at a point, into `place.kept`."""
+    p = len(at.v)
+    for i in range(p):
+        for j in range(p):
+            place.kept[i, j] = 0.0
+        for k in range(p):
+            for j in range(p):
+                place.kept[i, j] += rung.K[i, k] * (at.c[k, j] + c * at.g[k, j])
+        place.kept[i, i] += 1.0
+
+
+@hot
 def _correction(rung: Rung, c: float, at: Point, place: Place) -> bool:
-    """Newton move of v + K w(v) = target into `place.move`; False if the matrix is singular."""
+    """Newton move of v + K w(v) = target by the matrix in `place.kept`; False if it is singular."""
     p = len(at.v)
     for i in range(p):
         left = place.target[i] - at.v[i]
         for j in range(p):
             left -= rung.K[i, j] * (at.q[j] + c * at.f[j])
-            place.matrix[i, j] = 0.0
-        for k in range(p):
-            for j in range(p):
-                place.matrix[i, j] += rung.K[i, k] * (at.c[k, j] + c * at.g[k, j])
-        place.matrix[i, i] += 1.0
+            place.matrix[i, j] = place.kept[i, j]
         place.move[i] = left
     return bool(solve_small(place.matrix, place.move))
+
+
+@hot
+def _settle(at: Point, move: Floats) -> None:
+    """One linear step, which keeps v + K w = target exact, so that charge is conserved."""
+    for i in range(len(move)):
+        for j in range(len(move)):
+            at.q[i] += at.c[i, j] * move[j]
+            at.f[i] += at.g[i, j] * move[j]
+    for i in range(len(move)):
+        at.v[i] += move[i]
 
 
 @hot
 def _newton(rung: Rung, c: float, e: FlatElements, place: Place, at: Point, trial: Point) -> int:
     """Solve the port equations from the voltages in `at`; rounds needed, 0 if not settled."""
     p = len(at.v)
+    place.guess[:] = at.v
     for turn in range(QUICK_ROUNDS + CAREFUL_ROUNDS):
+        if turn == QUICK_ROUNDS:
+            at.v[:] = place.guess
         evaluate(e, at)
+        _linearise(rung, c, at, place)
         if not _correction(rung, c, at, place):
             return 0
         size = 0.0
         for i in range(p):
             size = max(size, abs(place.move[i]))
         if size < PORT_TOLERANCE:
-            # one linear step keeps v + K w = target exact, so that charge is conserved
-            for i in range(p):
-                for j in range(p):
-                    at.q[i] += at.c[i, j] * place.move[j]
-                    at.f[i] += at.g[i, j] * place.move[j]
-            for i in range(p):
-                at.v[i] += place.move[i]
+            _settle(at, place.move)
             return turn + 1
         if turn >= QUICK_ROUNDS:
             _shorten(rung, c, e, place, at, trial, size)
