@@ -15,7 +15,7 @@ from tolsim.circuit.devices import Floats
 from tolsim.circuit.network import Network
 from tolsim.circuit.transients.elements import FlatElements, flatten
 from tolsim.circuit.transients.laws import evaluate, new_point, unit_elements
-from tolsim.circuit.transients.stepping import Circuit, Place, Rung, add_product, solve_stage
+from tolsim.circuit.transients.stepping import Circuit, Rung, add_product, new_place, solve_stage
 
 SHORT = 1e-6  # of a period: the step in which the new circuit settles
 
@@ -93,15 +93,8 @@ def _settle_all(
         inverse = np.linalg.inv(new.E[unit] + c * new.F[unit])
         H = inverse @ P
         rung = Rung(inverse @ new.E[unit], H, new.D @ H, np.zeros(n), np.zeros((n, 0)))
-        place = Place(
-            new.D,
-            new.v0[unit],
-            inverse @ side,
-            np.zeros(p),
-            np.zeros(p),
-            np.zeros(p),
-            np.zeros((p, p)),
-        )
+        place = new_place(new.D, new.v0[unit])
+        place.x_lin[:] = inverse @ side
         changed = unit_elements(after, unit)
         trial = new_point(n, p, len(changed.numbers))
         if solve_stage(rung, c, changed, place, at, trial):

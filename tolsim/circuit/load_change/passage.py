@@ -121,7 +121,7 @@ def travel_road(
             travel(
                 network,
                 x,
-                _no_ramps(len(period)),
+                Ramps.none(len(period)),
                 goal,
                 span,
                 clock + cycles * period if last else left,
@@ -138,10 +138,6 @@ def travel_road(
 def _phase(network: Network, clock: Floats) -> float:
     """Phase of the drive, in periods; the same for all units, whose clocks then agree."""
     return 0.0 if network.drive_frequency is None else float(clock[0] * network.drive_frequency)
-
-
-def _no_ramps(units: int) -> Ramps:
-    return Ramps(np.zeros((units, 0, 2)), np.zeros((0, 2)))
 
 
 def _joined(legs: list[Journey], start: Floats, goal: Goal) -> Passage:

@@ -28,6 +28,7 @@ from tolsim.circuit.transients.stepping import (
     charge_state,
     final_part,
     make_ladder,
+    new_place,
     rung_of,
     solve_stage,
     trapezoid_part,
@@ -269,22 +270,6 @@ def _begin(
 
 
 @hot
-def _place(circuit: Circuit, unit: int) -> Place:
-    p, n = circuit.D.shape
-    return Place(
-        circuit.D,
-        circuit.v0[unit],
-        np.zeros(n),
-        np.zeros(p),
-        np.zeros(p),
-        np.zeros(p),
-        np.zeros(p),
-        np.zeros((p, p)),
-        np.zeros((p, p)),
-    )
-
-
-@hot
 def _run_unit(
     unit: int,
     circuit: Circuit,
@@ -298,7 +283,7 @@ def _run_unit(
     lowest = task.rungs - 1
     ladder = make_ladder(circuit, matrix, unit, task.step[unit], task.rungs)
     k = lowest  # begin with the shortest step
-    place = _place(circuit, unit)
+    place = new_place(circuit.D, circuit.v0[unit])
     now, past, window = _begin(task, unit, e, place, rung_of(ladder, k))
     n, p = len(now.x), len(now.v)
     inner, end = new_point(n, p, len(e.numbers)), new_point(n, p, len(e.numbers))

@@ -59,6 +59,15 @@ class Place(NamedTuple):
 
 
 @hot
+def new_place(D: Floats, v0: Floats) -> Place:
+    """Scratch arrays at zero."""
+    p, n = D.shape
+    few = np.zeros((4, p))
+    square = np.zeros((2, p, p))
+    return Place(D, v0, np.zeros(n), few[0], few[1], few[2], few[3], square[0], square[1])
+
+
+@hot
 def make_ladder(circuit: Circuit, matrix: Floats, unit: int, longest: float, rungs: int) -> Rung:
     """Matrices of the step lengths h, h/2, h/4 ... in seconds, along a first axis."""
     n, p, s = circuit.E.shape[1], circuit.D.shape[0], matrix.shape[1]
