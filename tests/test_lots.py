@@ -160,6 +160,10 @@ def test_lots_are_counted_as_pandas_counts_them(run):
     assert lots["batches"][-1]["share"] == pytest.approx((by_lot > 0).mean())
     assert lots["batches"][0]["share"] == pytest.approx(failed.mean())
     assert lots["batches"][0]["independent"] == pytest.approx(failed.mean())
+    one_board, y = lots["batches"][0], results.summary["yield"]
+    assert (1 - one_board["high"], 1 - one_board["low"]) == pytest.approx(
+        (y["low"], y["high"]), abs=0.01
+    )
     margin = next(entry for entry in lots["between"] if entry["target"] == "start_margin")
     assert margin["share"] > 0.5
 

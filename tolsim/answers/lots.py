@@ -126,13 +126,14 @@ def _batches(lots: LotCounts, failed: Flags, confidence: float) -> list[dict[str
     largest = int(lots.units.min())
     found = []
     for boards in dict.fromkeys([*(b for b in BATCHES if b < largest), largest]):
-        chance = share_of_lots(
-            chance_in_batch(lots.failed, lots.units, boards), lots.group, confidence
-        )
-        most = share_of_lots(
-            chance_in_batch(lots.failed + lots.undecided, lots.units, boards),
-            lots.group,
-            confidence,
+        chance, most = (
+            share_of_lots(
+                chance_in_batch(bad, lots.units, boards),
+                lots.group,
+                confidence,
+                most=float(lots.units.sum() / boards),
+            )
+            for bad in (lots.failed, lots.failed + lots.undecided)
         )
         found.append(
             {

@@ -41,7 +41,9 @@ class LotShare:
     worth: float
 
 
-def share_of_lots(hit: ArrayLike, lot: ArrayLike, confidence: float = 0.95) -> LotShare:
+def share_of_lots(
+    hit: ArrayLike, lot: ArrayLike, confidence: float = 0.95, most: float | None = None
+) -> LotShare:
     """Share of units with an interval that does not count lot-mates as independent.
 
     Parameters
@@ -52,6 +54,8 @@ def share_of_lots(hit: ArrayLike, lot: ArrayLike, confidence: float = 0.95) -> L
         Lot of each unit, any labels.
     confidence : float
         Two-sided.
+    most : float, optional
+        What the readings may be worth at most; n unless each of them stands for several units.
 
     Raises
     ------
@@ -62,12 +66,12 @@ def share_of_lots(hit: ArrayLike, lot: ArrayLike, confidence: float = 0.95) -> L
     given, group = np.asarray(hit, float), np.unique(np.asarray(lot), return_inverse=True)[1]
     if given.ndim != 1 or given.shape != group.shape or not given.size:
         raise ValueError(f"`hit` and `lot` must be (n,), n > 0 (got {given.shape}, {group.shape})")
-    worth = units_worth(given, group, confidence)
+    worth = units_worth(given, group, confidence, most)
     share = float(given.mean())
     return LotShare(share, *share_ends(share, worth, confidence), worth)
 
 
-def units_worth(hit: Floats, group: Labels, confidence: float) -> float:
+def units_worth(hit: Floats, group: Labels, confidence: float, most: float | None = None) -> float:
     """Independent units that would tell as much about the share as these do in their lots.
 
     Parameters
@@ -76,8 +80,11 @@ def units_worth(hit: Floats, group: Labels, confidence: float) -> float:
         0 .. 1.
     group : ndarray (n,)
         Lot of each unit, numbered from 0.
+    most : float, optional
+        As in `share_of_lots`.
     """
     n = hit.size
+    most = float(n) if most is None else most
     sizes, hits = np.bincount(group).astype(float), np.bincount(group, hit)
     k = sizes.size
     if k == 1:
@@ -88,10 +95,10 @@ def units_worth(hit: Floats, group: Labels, confidence: float) -> float:
     if rarer == 0:
         return least
     between = k / (k - 1) * float(np.sum((hits - share * sizes) ** 2)) / n**2
-    effect = max(between / (share * (1.0 - share) / n), 1.0)
+    independent = min(share * (1.0 - share) / between, most) if between > 0.0 else most
     tail = 0.5 - 0.5 * confidence
-    reach = t.isf(tail, n - 1) / t.isf(tail, min(rarer, k - 1))
-    return float(np.clip(n / effect * reach**2, least, n))
+    reach = t.isf(tail, most - 1) / t.isf(tail, min(rarer, k - 1))
+    return float(np.clip(independent * reach**2, least, most))
 
 
 def share_ends(share: float, worth: float, confidence: float) -> tuple[float, float]:
