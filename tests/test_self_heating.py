@@ -27,7 +27,7 @@ from tolsim.self_heating import (
     warmed_parts,
 )
 from tolsim.spread.part_values import Rise, nominal_values, own_rises, part_values
-from tolsim.spread.reading import load_tables
+from tolsim.spread.reading import read_shelf
 from tolsim.spread.sampling import draw, factors
 from tolsim.study import read_study
 
@@ -161,7 +161,7 @@ def test_board_rise_reaches_every_part():
     assert {key: value[0] for key, value in one.items()} == {k: v[0] for k, v in other.items()}
 
 
-SHIPPED = load_tables(None, distributions_folder())
+SHIPPED = read_shelf(None, distributions_folder()).tables
 KINDS = {name: table.kinds for name, table in SHIPPED.items()}
 THERMAL = 'resistance = "3.6 ohm"\nthermal_resistance = "2 K/W"'
 

@@ -26,6 +26,7 @@ from tolsim.evaluation import Plan, solve_case, trim_drawn
 from tolsim.nominals import CaseName, prepare
 from tolsim.presentation import Signal, signals
 from tolsim.quantity import show
+from tolsim.spread.quantity_words import factor_words
 from tolsim.spread.sampling import Draws, draw, factors
 from tolsim.stats.ranking import rank_correlation, readings_of
 from tolsim.study import StudyFile, open_study
@@ -261,7 +262,8 @@ def _draw_story(draws: Draws, influence: _Influence) -> list[str]:
     return [
         f"What moves its {influence.title.strip()} (place among all units, 50 % is the middle):",
         *(
-            f"  {draws.names[k]} at {100 * draws.u[0, k]:.0f} %: {'up' if push[k] > 0 else 'down'}"
+            f"  {factor_words(draws.names[k])} at {100 * draws.u[0, k]:.0f} %: "
+            f"{'up' if push[k] > 0 else 'down'}"
             for k in order
         ),
     ]
@@ -280,7 +282,7 @@ def _neighbour(results: Results, draws: Draws, influence: _Influence) -> list[st
     gap[~passed.reindex(influence.numbers).to_numpy(bool)] = np.inf
     nearest = int(np.argmin(gap))
     leading = np.argsort(-np.abs(away[nearest]) * np.sqrt(influence.weights))[:3]
-    moves = ", ".join(f"{draws.names[k]} {away[nearest, k]:+.1f} sd" for k in leading)
+    moves = ", ".join(f"{factor_words(draws.names[k])} {away[nearest, k]:+.1f} sd" for k in leading)
     return [f"Nearest passing unit: {influence.numbers[nearest]}, which differs by {moves}."]
 
 

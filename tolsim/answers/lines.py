@@ -18,6 +18,7 @@ from tolsim.answers.wording import (
     percent,
     verdict_sentence,
 )
+from tolsim.spread.quantity_words import factor_words
 
 WIDTH = 80
 MOST_FAILURES = 6
@@ -90,7 +91,7 @@ def _factors(summary: Summary) -> Iterator[str]:
         seen = [factor for factor in ranking["factors"] if factor["distinguishable"]]
         for factor in seen[:MOST_FACTORS]:
             low, high = max(factor["low"], 0.0), min(factor["high"], 1.0)
-            name = textwrap.shorten(factor["factor"], 46, placeholder="...")
+            name = textwrap.shorten(factor_words(factor["factor"]), 46, placeholder="...")
             yield f"  {name:<46} {max(factor['share'], 0.0):>4.0%}  ({low:.0%} to {high:.0%})"
         if not seen:
             yield "  no factor can be told from one without effect"

@@ -22,6 +22,7 @@ from tolsim.answers.wording import (
     share_with_interval,
     shown,
 )
+from tolsim.spread.quantity_words import factor_words
 
 Summary = Mapping[str, Any]
 Level = Literal["fine", "near", "over"]
@@ -280,7 +281,7 @@ def _ranking_column(entry: Mapping[str, Any]) -> dict[str, Any]:
         "reason": entry["reason"],
         "factors": [
             {
-                "name": factor["factor"],
+                "name": factor_words(factor["factor"]),
                 "seen": factor["distinguishable"],
                 "share": percent(factor["share"], 0),
                 "interval": percents_whole(factor["low"], factor["high"]),

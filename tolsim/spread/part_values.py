@@ -66,7 +66,7 @@ def part_values(
     ----------
     study : Study
     tables : mapping
-        Spread tables by name, as `spread.load_tables` returns them.
+        Spread tables by name, as `spread.reading.read_shelf` finds them.
     condition, state : str
         Names in the study.
     draws : Draws

@@ -14,12 +14,12 @@ from dataclasses import dataclass, field
 from pathlib import Path
 from typing import Final
 
-from tolsim.errors import Problem, StudyError
+from tolsim.errors import Problem
 from tolsim.library import distributions_folder
 from tolsim.spread.entry import QUANTITIES, UNITS, Entry
 from tolsim.spread.table import SpreadTable
 
-__all__ = ["QUANTITIES", "UNITS", "Shelf", "load_tables", "read_shelf", "read_tables"]
+__all__ = ["QUANTITIES", "UNITS", "Shelf", "read_shelf", "read_tables"]
 
 _ENTRY: Final = re.compile(rb"^\s*\[\s*table\s*\.", re.MULTILINE)
 _NAME: Final = re.compile(rb"^\s*\[\s*table\s*\.\s*\"?([A-Za-z0-9_-]+)\"?\s*[.\]]", re.MULTILINE)
@@ -81,20 +81,6 @@ def read_shelf(study_path: Path | None, tables_dir: Path | None) -> Shelf:
         _read_folder(place, shelf, study_path)
     shelf.tables = dict(sorted(shelf.tables.items()))
     return shelf
-
-
-def load_tables(study_path: Path | None, tables_dir: Path | None) -> dict[str, SpreadTable]:
-    """As `read_shelf`, but every table must be sound.
-
-    Raises
-    ------
-    StudyError
-        With every mistake found in any of the files.
-    """
-    shelf = read_shelf(study_path, tables_dir)
-    if shelf.problems() or shelf.in_study:
-        raise StudyError([*shelf.in_study, *shelf.problems()])
-    return shelf.tables
 
 
 def _read_folder(folder: Path, shelf: Shelf, study: Path | None) -> None:
