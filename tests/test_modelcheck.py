@@ -15,7 +15,7 @@ from study_texts import GOOD, TABLES
 from test_physics_push_pull import settle
 
 from tolsim import modelcheck
-from tolsim.answers.prototype_words import board_sentence
+from tolsim.answers.prototype_words import board_sentence, precise
 from tolsim.answers.unit_files import FrameColumns
 from tolsim.design import Run, State, Study
 from tolsim.errors import RunError, StudyError
@@ -186,7 +186,10 @@ readings = [{read["frequency"]}]
 parts = {{"L.inductance" = "2.2 uH"}}
 """
     path.write_text(quick_study.text(units=24) + boards, encoding="utf-8")
-    return run_study(open_study(path), jobs=1, law_check=False).summary
+    results = run_study(open_study(path), jobs=1, law_check=False)
+    assert results.prototype["board"].tolist() == ["own"] * 2 + ["spoilt"] * 2 + ["probed"]
+    assert results.law_check.empty
+    return results.summary
 
 
 def test_a_board_of_the_model_passes_and_a_spoilt_one_fails(checked):
@@ -250,6 +253,13 @@ def test_a_measured_part_is_no_longer_matched_with_its_mate():
     values = part_values(fixed, own, "room", "full", draw(factors(fixed, own), 3, 0, 50))
     assert np.ptp(values["Q1.threshold"]) == 0.0
     assert values["Q2.threshold"].std() > 0.0
+
+
+def test_a_reading_is_told_with_the_digits_its_meter_has():
+    assert precise(2.017e6, 1e3, "Hz") == "2.017 MHz"
+    assert precise(92.04, 2.3, "V") == "92 V"
+    assert precise(0.86, 0.0, "A") == "860 mA"
+    assert precise(36.04, 2.0, "degC") == "36 °C"
 
 
 def test_luck_is_told_where_a_side_is_the_good_one():

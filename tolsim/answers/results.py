@@ -283,6 +283,24 @@ class Results:
         return pd.DataFrame(rows)
 
     @property
+    def law_check(self) -> pd.DataFrame:
+        """One row per set of tables and law put in its place: the yield that would be."""
+        found = self.summary.get("law_check", {})
+        scopes = [("all tables", found.get("together", []))]
+        scopes += [(", ".join(f["tables"]), f["entries"]) for f in found.get("families", [])]
+        return pd.DataFrame(
+            [{"tables": name, **entry} for name, entries in scopes for entry in entries]
+        ).drop(columns="direct", errors="ignore")
+
+    @property
+    def prototype(self) -> pd.DataFrame:
+        """One row per board and reading: measured, predicted, percentile."""
+        boards = self.summary.get("prototype", {}).get("boards", [])
+        return pd.DataFrame(
+            [{"board": board["name"], **one} for board in boards for one in board["readings"]]
+        )
+
+    @property
     def quality(self) -> Mapping[str, Any]:
         """How good the solutions are."""
         quality: Mapping[str, Any] = self.summary.get("quality", {})

@@ -5,8 +5,10 @@ from __future__ import annotations
 from collections.abc import Mapping
 from typing import Any
 
-from tolsim.answers.wording import DASH, measured, percent, shown
+from tolsim.answers.prototype_words import precise
+from tolsim.answers.wording import DASH, percent, shown
 from tolsim.quantity import show
+from tolsim.spread.entry import UNITS
 
 Entry = Mapping[str, Any]
 
@@ -33,11 +35,16 @@ def _board(board: Entry) -> dict[str, Any]:
         "units": board["units"],
         "without": board["without"],
         "probes": "; ".join(_probe(probe) for probe in board["probes"]),
-        "fixed": ", ".join(f"{address} = {value:.4g}" for address, value in board["fixed"].items()),
+        "fixed": ", ".join(_fixed(*one) for one in board["fixed"].items()),
         "joint": _probability(board["joint_p"]),
         "distance": DASH if board["distance"] is None else f"{board['distance']:.2f}",
         "rows": [_row(reading) for reading in board["readings"]],
     }
+
+
+def _fixed(address: str, value: float) -> str:
+    """A measured part in words: "C3.capacitance 9.97 nF"."""
+    return f"{address} {show(value, UNITS.get(address.rpartition('.')[2], '1'))}"
 
 
 def _probe(probe: Entry) -> str:
@@ -60,13 +67,18 @@ def _row(reading: Entry) -> dict[str, Any]:
     unit = reading["unit_of_measure"]
     width = "K" if unit == "degC" else unit
     bare = reading["bare_p50"]
+    title = reading["title"]
+
+    def say(value: float) -> str:
+        return precise(value, reading["uncertainty"], unit)
+
     return {
-        "title": f"{reading['part']} {reading['title'].lower()}".strip(),
+        "title": f"{reading['part']} {title.lower()}" if reading["part"] else title,
         "case": f"{reading['condition']}, {reading['state']}",
-        "value": f"{measured(reading['value'], unit)} ± {shown(reading['uncertainty'], width)}",
-        "predicted": measured(reading["p50"], unit),
-        "band": f"{measured(reading['p5'], unit)} to {measured(reading['p95'], unit)}",
-        "bare": measured(bare, unit) if bare is not None and bare != reading["p50"] else "",
+        "value": f"{say(reading['value'])} ± {shown(reading['uncertainty'], width)}",
+        "predicted": say(reading["p50"]),
+        "band": f"{say(reading['p5'])} to {say(reading['p95'])}",
+        "bare": say(bare) if bare is not None and bare != reading["p50"] else "",
         "percentile": percent(reading["percentile"], 1),
         "z": f"{reading['z']:+.1f}",
         "p": _probability(reading["p"]),
