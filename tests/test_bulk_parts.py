@@ -1,15 +1,24 @@
 """The pieces of the bulk solver: basis, kernels, topology, multipliers."""
 
+from types import SimpleNamespace
+
 import numpy as np
 import pytest
 from circuits import CIRCUIT_A_SPREAD, circuit_a, scattered, typical_values
 
 from tolsim.circuit.bulk.grid import Grid, analyse, synthesis
 from tolsim.circuit.bulk.multipliers import _pass
-from tolsim.circuit.bulk.unit_table import Topology, TopologyError, UnitTable, bare_network
+from tolsim.circuit.bulk.unit_table import (
+    Topology,
+    TopologyError,
+    UnitTable,
+    bare_network,
+    drive_spectra,
+)
 from tolsim.circuit.devices import BiasedCapacitors, Devices, Junctions, Ramps, SaturatingCore
 from tolsim.circuit.floquet import largest_beside_charge
 from tolsim.circuit.kernels import Scratch, element_waves, kernels_of
+from tolsim.circuit.network import DriveShape
 from tolsim.circuit.nominal import find_nominal
 from tolsim.circuit.thermal import Case
 
@@ -146,3 +155,25 @@ def test_scattered_units_share_one_topology(nominal):
     part = UnitTable.of(case.take(np.array([4])), topology, np.float64)
     assert np.array_equal(table.linear[:, 4:5], part.linear)
     assert np.array_equal(table.device[:, 4:5], part.device)
+
+
+def test_spectra_of_drives_are_those_of_their_waves():
+    """Square and sine between 0 and 1, of whatever level: the fundamental in closed form."""
+    shape = DriveShape(
+        low=np.full((3, 2), -2.0),
+        high=np.full((3, 2), 5.0),
+        duty=np.array([0.5, 0.5]),
+        edge=np.array([0.05, 0.05]),
+        sine=np.array([False, True]),
+    )
+    phases = np.arange(40)[:, None] / 40
+    unit = shape.take(np.array([0]))
+    one_by_one = np.array([unit.at(float(phase))[0] for phase in phases[:, 0]])
+    np.testing.assert_allclose(unit.at(phases), one_by_one, atol=1e-14)
+    square, sine = drive_spectra(SimpleNamespace(drive_shape=shape), Grid(8))
+    np.testing.assert_allclose(sine[[0, 1, 9]], [0.5, 0.0, 0.5], atol=1e-12)
+    # a square wave of half duty: 2 / (pi k), rounded by edges that are half a cosine
+    width = 2 * np.pi * 0.05 / 2
+    rounded = np.cos(width) / (1 - (2 * width / np.pi) ** 2)
+    assert square[9] == pytest.approx(2 / np.pi * rounded, abs=1e-6)
+    assert square[0] == pytest.approx(0.5, abs=1e-6)

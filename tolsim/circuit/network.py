@@ -154,8 +154,8 @@ class DriveShape:
     edge: NDArray[np.float64]  # (d,)
     sine: NDArray[np.bool_]  # (d,)
 
-    def at(self, phase: float) -> Floats:
-        """Source voltages (N, d) at a phase in periods."""
+    def at(self, phase: float | Floats) -> Floats:
+        """Source voltages (N, d) at a phase in periods; for a single unit also phases (m, 1)."""
         turn = phase % 1.0
         half = np.maximum(self.edge / 2, 1e-12)
 
@@ -163,7 +163,7 @@ class DriveShape:
             return 0.5 + 0.5 * np.sin(0.5 * np.pi * np.clip(distance / half, -1.0, 1.0))
 
         # the rising edge around phase 0 is seen from both ends of the period
-        rising = risen(np.full_like(half, turn)), risen(turn - 1.0 + 0 * half)
+        rising = risen(turn + 0 * half), risen(turn - 1.0 + 0 * half)
         square = rising[0] - risen(turn - self.duty) + rising[1]
         wave = np.where(self.sine, 0.5 + 0.5 * np.sin(2 * np.pi * turn), square)
         return self.low + (self.high - self.low) * wave

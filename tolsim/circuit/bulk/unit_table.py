@@ -194,5 +194,5 @@ def drive_spectra(network: Network, grid: Grid) -> Floats:
     count = len(shape.duty)
     unit = replace(shape, low=np.zeros((1, count)), high=np.ones((1, count)))
     points = SHAPE_SAMPLES * grid.harmonics
-    waves = np.array([unit.at(k / points)[0] for k in range(points)])
+    waves = unit.at(np.arange(points)[:, None] / points)
     return analyse(waves, grid.harmonics).T
