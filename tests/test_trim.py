@@ -297,9 +297,10 @@ def test_frequency_of_circuit_a_after_its_coil_was_squeezed():
     coil = float(case.nominal.case.values["L.inductance"][0])
     assert coil < 2.2e-6
     assert case.figures["frequency"] == pytest.approx(6.7e6, abs=3e3)
+    assert case.figures["QA.trim_drain_peak"] >= case.figures["QA.drain_peak"]
     values = reference.Values(coil=coil)
     slope, ringing = reference.slope_of(values), 2.0 * np.pi / reference.start_mode(values).imag
-    _, period = transient(slope, reference.kicked(values), 40 * ringing, reference.PIN)
+    _, period = transient(slope, reference.kicked(values), 25 * ringing, reference.PIN)
     # before it was trimmed the stage ran 1.4 % lower
     assert 1.0 / period == pytest.approx(6.7e6, rel=1e-3)
 
@@ -316,14 +317,32 @@ from = "low end"
 meter = {{gain = {{law = "uniform", half_width = "1 %"}}}}
 """
 
+STRAIN = """
+[[limits]]
+figure = "trim_idle_dissipation"
+parts = ["QA"]
+at_most = "36 W"
+rule = "the bench has no fan"
+"""
+
+
+COIL = """
+[trim.coil]
+part = "L"
+range = ["1.9 uH", "2.5 uH"]
+resolution = "1 nH"
+reading = "frequency"
+target = "6.7 MHz"
+within = "0.1 %"
+"""
+
 
 @pytest.fixture(scope="module")
 def trimmed_run(tmp_path_factory):
     """Six push-pull stages; the range ends below what the weakest of them need."""
     folder = tmp_path_factory.mktemp("trim")
-    (folder / "study.toml").write_text(
-        quick_study.text(units=6).replace("cycle = 128", "cycle = 64") + TRIM.format(highest=4.1)
-    )
+    coarse = quick_study.text(units=6).replace("cycle = 128", "cycle = 64")
+    (folder / "study.toml").write_text(coarse + STRAIN + TRIM.format(highest=4.1))
     return run_study(folder / "study.toml", jobs=1, out=folder / "out")
 
 
@@ -382,6 +401,29 @@ def test_a_range_that_ended_too_soon_is_extrapolated():
     exhausted = np.array([True, False, True, False])
     wanted = wanted_places(position, error, slope, was_set, exhausted)
     np.testing.assert_allclose(wanted, [1.2, 0.75, 0.075, np.nan])
+
+
+def test_a_limit_on_the_way_is_judged(trimmed_run):
+    """A unit that was strained too hard while trimmed fails, whatever it does afterwards."""
+    rows = trimmed_run.units
+    beyond = rows["QA.trim_idle_dissipation"] > 36.0
+    (limit,) = (e for e in trimmed_run.summary["limits"] if e["figure"] == "trim_idle_dissipation")
+    assert limit["units"] == beyond.sum() > 0
+    assert (rows["verdict"][beyond] == "fail").all()
+    way = rows["QA.trim_idle_dissipation"]
+    assert (way >= rows["QA.idle_dissipation"] * (1.0 - 1e-9)).all()
+
+
+def test_a_coil_is_trimmed_as_warm_as_it_runs(tmp_path):
+    """What the operator read is what the bench case shows, self-heating included."""
+    text = quick_study.text(units=1).replace("cycle = 128", "cycle = 64")
+    text = text.replace('"3.6 ohm"\n', '"3.6 ohm"\nthermal_resistance = "4 K/W"\n')
+    (tmp_path / "study.toml").write_text(text + COIL)
+    found = run_study(tmp_path / "study.toml", jobs=1)
+    assert found.quality["self_heating"][0]["rise"] > 100.0
+    (row,) = found.units.to_dict("records")
+    assert row["frequency"] == pytest.approx(6.7e6 * (1.0 + row["coil.trim_error"]), rel=1e-9)
+    assert abs(row["coil.trim_error"]) <= 1e-3
 
 
 def test_the_words_name_the_ones_that_were_not_set(trimmed_run):

@@ -115,7 +115,7 @@ def _strains() -> list[tuple[str, str, str, str | None, str]]:
         ("dissipation", "Dissipation while trimmed", "W", "power"),
         ("junction_temperature", "Junction while trimmed", "degC", "junction_temperature"),
     )
-    about = "Largest on the operator's way; running figures only if he reads on the orbit."
+    about = "Largest on the operator's way; running figures only where the reading needs the orbit."
     return [(TRIM_STRAINS[name], title, unit, rating, about) for name, title, unit, rating in words]
 
 
