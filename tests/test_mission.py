@@ -9,7 +9,7 @@ from study_texts import GOOD, TABLES
 from tolsim.answers.counting import Counting
 from tolsim.answers.lines import summary_lines
 from tolsim.answers.mission import arrhenius, mission_entry
-from tolsim.answers.mission_words import energy_words, hours_words, mission_sentences
+from tolsim.answers.mission_words import NO_BREAK, energy_words, hours_words, mission_sentences
 from tolsim.answers.results import Results
 from tolsim.answers.summary import summarise
 from tolsim.answers.unit_files import FrameColumns, UnitRows
@@ -165,7 +165,7 @@ def test_terminal_and_report_tell_the_mission():
     lines = summary_lines(results.summary)
     assert all(len(line) <= 80 for line in lines)
     head = lines.index("Over the mission, with 95 % intervals")
-    told = " ".join(line.strip() for line in lines[head + 1 : head + 12])
+    told = " ".join(line.strip() for line in lines[head + 1 : head + 12]).replace(NO_BREAK, " ")
     assert "5 years, 10 000 h of running: room / full 68 %" in told
     assert "kWh" in told
     assert "ages most, in hours at 55 °C that do the same: Q" in told
@@ -176,9 +176,9 @@ def test_terminal_and_report_tell_the_mission():
 
 
 def test_numbers_in_words():
-    assert hours_words(32_149.0) == "32 100 h"
-    assert hours_words(12.34) == "12.3 h"
-    assert energy_words(7.2e6) == "2 kWh"
+    assert hours_words(32_149.0) == "32 100 h".replace(" ", NO_BREAK)
+    assert hours_words(12.34) == f"12.3{NO_BREAK}h"
+    assert energy_words(7.2e6) == f"2{NO_BREAK}kWh"
     assert energy_words(None) == DASH
 
 

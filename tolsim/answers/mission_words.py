@@ -15,12 +15,15 @@ MOST_LIMITS = 2
 MOST_PARTS = 3
 LEAST_SHARE = 0.005  # of the hours, to be named among the cases
 KILOWATT_HOUR = 3.6e6  # J
+WHOLE_FROM = 100.0  # h; below, digits after the point count
+NO_BREAK = "\u00a0"
 
 
 def hours_words(hours: float) -> str:
-    """Hours to three digits: "32 100 h"."""
+    """Hours to three digits, in one piece where lines are broken: "32 100 h"."""
     rounded = float(f"{hours:.3g}")
-    return f"{rounded:,.0f} h".replace(",", " ") if rounded >= 100 else f"{rounded:g} h"  # noqa: PLR2004 - below, digits after the point count
+    number = f"{rounded:,.0f}" if rounded >= WHOLE_FROM else f"{rounded:g}"
+    return f"{number} h".replace(",", NO_BREAK).replace(" ", NO_BREAK)
 
 
 def mission_sentences(summary: Summary, *, limits: bool = True) -> Iterator[str]:
@@ -99,7 +102,7 @@ def _power(mission: Mapping[str, Any]) -> Iterator[str]:
 
 def energy_words(joule: float | None) -> str:
     """Energy in kilowatt hours."""
-    return shown(None, "W") if joule is None else f"{joule / KILOWATT_HOUR:.3g} kWh"
+    return shown(None, "W") if joule is None else f"{joule / KILOWATT_HOUR:.3g}{NO_BREAK}kWh"
 
 
 def in_order_words(mission: Mapping[str, Any]) -> str:
