@@ -19,6 +19,7 @@ from tolsim.spread.reel_record import reel_records
 from tolsim.spread.sampling import draw, factors
 from tolsim.spread.words import assumptions, describe
 from tolsim.study import open_study
+from tolsim.study.outline import every_text
 
 HEAD = '[table.reel]\ntitle = "T"\nfor = "capacitor"\nbasis = "measured"\nsource = "our meter"\n'
 PIECES = (99.1, 100.4, 98.7, 99.9, 100.8, 99.5, 98.2, 100.1, 99.0, 99.7, 101.0, 99.3)
@@ -146,6 +147,11 @@ def test_mistakes_in_tables_nobody_uses_are_warnings(tmp_path: Path):
     with pytest.raises(StudyError) as caught:
         open_study(tmp_path / "study.toml")
     assert [problem.file for problem in caught.value.problems] == ["other.toml"]
+
+
+def test_every_text_of_a_study_may_name_a_table():
+    raw = {"a": "x", "b": [{"c": "y"}, 3, None], "d": {"e": {"f": "z"}}, "g": 1.0}
+    assert every_text(raw) == {"x", "y", "z"}
 
 
 def test_an_unknown_table_may_lie_in_a_file_that_cannot_be_read(tmp_path):

@@ -6,10 +6,11 @@ import pytest
 from small_study import TABLES, capacitor, everything, mosfet, study, tables
 
 from tolsim.design import Condition, State
+from tolsim.laws import StudentT
 from tolsim.parts import Coupling
 from tolsim.spread.checks import check_spread
 from tolsim.spread.reading import read_shelf, read_tables
-from tolsim.spread.words import assumptions, describe
+from tolsim.spread.words import assumptions, describe, law_words
 
 HEAD = 'title = "T"\nfor = "capacitor"\nbasis = "guess"\nsource = "a test"\n'
 
@@ -215,3 +216,8 @@ tolerance = {law = "uniform", half_width = "10 %"}
         ("parts.C3", "spread"),
         ("parts.K1", "spread"),
     ]
+
+
+def test_pure_numbers_of_a_law_are_no_percentages():
+    words = law_words(StudentT(-0.1, 0.1, 0.0, 0.02, 4.0), "share")
+    assert words == "student-t (low -10 %, high 10 %, centre 0 %, scale 2 %, degrees of freedom 4)"

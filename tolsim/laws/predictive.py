@@ -83,7 +83,7 @@ def next_piece(
         logs = np.log(ratio)
         law: Law = Exponential(_normal(logs, relative_noise, ends[0], ends[1], end), origin)
     elif chosen == "normal":
-        law = _normal(x, noise, low if low is not None else None, high, end, origin)
+        law = _normal(x, noise, low, high, end, origin)
     else:
         law = _as_measured(x, noise, low, high, end, origin)
     sample = Sample(

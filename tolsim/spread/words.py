@@ -27,6 +27,7 @@ _LABELS: Mapping[str, str] = {
     "meter": "error of the meter, the same for all parts",
 }
 
+_PURE = ("exponent", "below", "degrees_of_freedom")  # parameters without unit of measure
 FAR_FREQUENCY = 10.0  # a meter further from the frequency of use is worth a sentence
 
 
@@ -222,7 +223,9 @@ def _value_words(law: Law | TemperatureLaw | AgeingLaw, name: str, value: object
             for row in value
         )
         return "; ".join(rows)
-    if name in ("exponent", "below") or (law.NAME == "lognormal" and name == "sigma"):
+    if name in ("exponent", "below", "degrees_of_freedom") or (
+        law.NAME == "lognormal" and name == "sigma"
+    ):
         return f"{value:g}"
     own = "h" if isinstance(law, AgeingLaw) else "degC" if isinstance(law, TemperatureLaw) else unit
     return _number(float(str(value)), own)

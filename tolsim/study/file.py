@@ -40,7 +40,7 @@ from tolsim.study.lots import lot_problems
 from tolsim.study.markings import expanded
 from tolsim.study.mission import mission_problems
 from tolsim.study.nets import net_problems
-from tolsim.study.outline import Table, named_tables
+from tolsim.study.outline import Table, every_text, named_tables
 from tolsim.study.prototypes import read_prototypes
 from tolsim.study.reading import Reading
 from tolsim.study.recording import Recording
@@ -147,7 +147,8 @@ def open_study(path: Path | str, tables_dir: Path | str | None = None) -> StudyF
     kinds |= {name: table.kinds for name, table in shelf.tables.items()}
     raw = _parsed(text, path.name)
     used = named_tables(raw)
-    broken = shelf.problems(used)
+    texts = every_text(raw)  # whatever names a table, now or in sections to come
+    broken = shelf.problems(texts)
     if used - kinds.keys():  # it may be in a file that could not be read
         broken += shelf.loose
     recordings = Recordings(path.parent)
@@ -159,7 +160,7 @@ def open_study(path: Path | str, tables_dir: Path | str | None = None) -> StudyF
     problems = broken or check_spread(study, tables, path.name)
     if problems:
         raise StudyError(problems)
-    warnings = tuple(problem.sentence() for problem in shelf.unused(used))
+    warnings = tuple(problem.sentence() for problem in shelf.unused(texts))
     return StudyFile(study, text, tables, warnings, recordings.read)
 
 

@@ -6,7 +6,7 @@ file is told at once.  So they look at this outline of raw tables, not at the re
 
 from __future__ import annotations
 
-from collections.abc import Collection, Mapping, Sequence
+from collections.abc import Collection, Iterable, Mapping, Sequence
 from dataclasses import dataclass, field
 from typing import Any
 
@@ -96,3 +96,13 @@ def named_tables(raw: Table) -> set[str]:
         given = spread.values() if isinstance(spread, Mapping) else ()
         names |= {name for name in given if isinstance(name, str)}
     return names
+
+
+def every_text(value: object) -> set[str]:
+    """Every text that stands as a value anywhere in a study, so whatever it could name."""
+    if isinstance(value, str):
+        return {value}
+    inside = value.values() if isinstance(value, Mapping) else value
+    if not isinstance(inside, Iterable):
+        return set()
+    return set().union(*(every_text(item) for item in inside))
