@@ -237,6 +237,7 @@ def test_a_study_says_how_units_share_reels():
     lots = read_study(GOOD + LOTS, TABLES).lots
     assert (lots.units_per_lot, lots.lost_when, lots.reels) == (25, 0.2, {})
     assert read_study(GOOD, TABLES).lots is None
+    assert read_study(GOOD + LOTS + "reels = {vdd = 4}\n", TABLES).lots.units_of("vdd") == 100
 
 
 @pytest.mark.parametrize(

@@ -21,13 +21,14 @@ def lot_problems(outline: Outline, lots: object) -> Iterator[Problem]:
     if not isinstance(lots, dict):
         return
     own = [ref for ref, part in outline.parts.items() if not isinstance(part.get("reel"), str)]
+    own += outline.rails
     reels = dict.fromkeys(
         part["reel"] for part in outline.parts.values() if isinstance(part.get("reel"), str)
     )
     named = lots.get("reels", {})
     for name in named if isinstance(named, dict) else ():
         if name not in reels and name not in own:
-            what = "a reel of this study, or a part that has none"
+            what = "a reel of this study, or a part or rail that has none"
             yield outline.unknown("lots.reels", name, name, what, [*reels, *own])
     if lots.get("lost_when") in (0, "0 %", "0%"):
         got, cure = "0 %", "Write the share of failing units that makes a lot useless to you."
