@@ -15,7 +15,7 @@ from tolsim.spread.entry import QUANTITIES
 from tolsim.spread.portrait import Portrait, portraits
 from tolsim.spread.quantity_words import plain
 from tolsim.spread.table import SpreadTable
-from tolsim.spread.words import describe
+from tolsim.spread.words import describe, guess_words
 from tolsim.terminal import console
 from tolsim.text_picture import axis, can_show_blocks, hill
 
@@ -64,7 +64,7 @@ def show_table(table: SpreadTable) -> None:
             screen.print(Text(line.rstrip(), no_wrap=True))
     if table.guesses:
         screen.print()
-        text = f"{_guesses(table)} Replace them by readings of your own parts."
+        text = f"{_guessed(table)} Replace them by readings of your own parts."
         screen.print(Text(textwrap.fill(text, screen.width)))
 
 
@@ -81,17 +81,12 @@ def draw(table: SpreadTable, path: Path) -> None:
     if path.suffix.lower() not in SUFFIXES:
         raise RequestError(f"'{path}' must end in {' or '.join(SUFFIXES)}.")
     rows = {plain(name): portrait for name, portrait in portraits(table).items()}
-    draw_table(table.title, rows, _guesses(table), path)
+    draw_table(table.title, rows, _guessed(table), path)
 
 
-def _guesses(table: SpreadTable) -> str:
+def _guessed(table: SpreadTable) -> str:
     """Which laws are guesses, as a sentence; empty if none is."""
-    laws: dict[str, list[str]] = {}
-    for words in table.guesses:
-        name, _, aspect = words.partition(" ")
-        laws.setdefault(plain(name), []).append(aspect)
-    said = "; ".join(f"{name} ({', '.join(aspects)})" for name, aspects in laws.items())
-    return f"Guessed: {said}." if said else ""
+    return f"Guessed: {guess_words(table)}." if table.guesses else ""
 
 
 def _portrait(name: str, portrait: Portrait, *, blocks: bool) -> Iterator[str]:

@@ -23,7 +23,7 @@ from tolsim.design import Study
 from tolsim.figure_names import FIGURES
 from tolsim.self_heating import heating_notes
 from tolsim.spread.purchase import value_notes
-from tolsim.spread.words import assumptions
+from tolsim.spread.words import assumptions, guess_words
 from tolsim.study import StudyFile
 
 _WIDTH = 80
@@ -87,7 +87,7 @@ def show_study(opened: StudyFile) -> None:
     _paragraphs(screen, "Assumed:", said)
     _paragraphs(screen, "Hard to buy:", list(value_notes(study)))
     used = {name for name in _tables_of(study) if opened.tables[name].guesses}
-    guesses = [f"{name}: {', '.join(opened.tables[name].guesses)}" for name in sorted(used)]
+    guesses = [f"{name}: {guess_words(opened.tables[name])}" for name in sorted(used)]
     _paragraphs(screen, "Guessed in spread tables:", guesses)
 
 

@@ -57,6 +57,15 @@ def describe(table: SpreadTable) -> list[str]:
     return said
 
 
+def guess_words(table: SpreadTable) -> str:
+    """Laws of a table that are guesses: "capacitance (tolerance, lot); series resistance (lot)"."""
+    laws: dict[str, list[str]] = {}
+    for words in table.guesses:
+        name, _, aspect = words.partition(" ")
+        laws.setdefault(plain(name), []).append(aspect)
+    return "; ".join(f"{name} ({', '.join(aspects)})" for name, aspects in laws.items())
+
+
 def spread_words(table: SpreadTable, quantity: str, aspect: str) -> str:
     """One law of a table, or what a quantity follows, in words: "tolerance: normal (...)"."""
     spread = table.quantities[quantity]
@@ -64,6 +73,8 @@ def spread_words(table: SpreadTable, quantity: str, aspect: str) -> str:
         others = (f"{other} with correlation {rho:g}" for other, rho in spread.follows.items())
         return f"follows {', '.join(others)}"
     words = law_words(getattr(spread, aspect), _unit(quantity, aspect, spread))
+    if spread.deviation == "position" and aspect in ("tolerance", "lot", "meter"):
+        words += " in half widths of the datasheet window"
     shared = ", shared by a reel" if aspect in spread.shared or aspect == "lot" else ""
     if aspect in spread.tracking:
         shared = f", tracking {spread.tracking[aspect]:g} in a reel"
@@ -236,6 +247,8 @@ def _number(value: float, unit: str) -> str:
         return f"{100.0 * value:.4g} %"
     if unit == "1/K":
         return f"{1e6 * value:.4g} ppm/K"
+    if unit == "h":
+        return f"{value:.6g} h"
     return show(value, unit)
 
 
