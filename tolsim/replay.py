@@ -30,6 +30,7 @@ from tolsim.spread.quantity_words import factor_words
 from tolsim.spread.sampling import Draws, draw, factors
 from tolsim.stats.ranking import rank_correlation, readings_of
 from tolsim.study import StudyFile, open_study
+from tolsim.trim.operator import TrimStatus
 from tolsim.trim.session import Trimmed
 
 UNUSUAL = 6  # factors named in the story
@@ -87,7 +88,7 @@ def replay_unit(folder: Path | str, number: int) -> Replay:
         if prepared.nominal.found and solution.status[0] in (Status.SETTLED, Status.UNSTABLE):
             found[name] = tuple(signals(study, prepared.nominal, case, solution))
     broken = _broken(opened, rows)
-    influence = _influence(results, draws.names, broken)
+    influence = _influence(results, draws.names, broken, _not_set(trimmed))
     story = (
         *_version_story(results),
         *_lot_story(results, study, number),
@@ -229,8 +230,16 @@ class _Influence:
         return squares / total if total > 0 else np.full(len(squares), 1 / max(len(squares), 1))
 
 
-def _influence(results: Results, names: tuple[str, ...], broken: list[_Broken]) -> _Influence:
-    """What goes with the first broken limit, or with the start margin if none is broken."""
+def _not_set(trimmed: Trimmed) -> str | None:
+    """The first trim that did not succeed, if any."""
+    failed = (name for name, log in trimmed.logs.items() if log.status[0] != TrimStatus.SET)
+    return next(failed, None)
+
+
+def _influence(
+    results: Results, names: tuple[str, ...], broken: list[_Broken], not_set: str | None
+) -> _Influence:
+    """What goes with the first broken limit, else the failed trim, else the start margin."""
     stored, units = results.factor_columns, results.unit_columns
     table = np.column_stack([stored.column(name).to_numpy(float) for name in names])
     numbers = stored.column("unit").to_numpy(np.int64)
@@ -238,6 +247,9 @@ def _influence(results: Results, names: tuple[str, ...], broken: list[_Broken]) 
         one = broken[0]
         column, title = one.bound.column, f"{one.bound.part} {one.bound.figure.title.lower()}"
         here = (units.column("condition") == one.condition) & (units.column("state") == one.state)
+    elif not_set is not None:
+        column, title = f"{not_set}.trim_position", f"place of trim {not_set}"
+        here = units.column("unit") >= 0
     else:
         column, title = "start_margin", "start margin"
         here = units.column("unit") >= 0

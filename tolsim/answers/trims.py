@@ -80,6 +80,8 @@ def _entry(
     after, before, slope = (column(f"trim_{word}") for word in ("error", "before", "slope"))
     was_set = status == TrimStatus.SET
     hit = status == TrimStatus.EXHAUSTED
+    # an adjuster that could not be turned at all shows no slope: the nominal one stands in
+    known = np.where(np.isnan(slope), nominal.get(f"{name}.trim_slope", np.nan), slope)
     ends = interval(hit)
     where = nominal.get(f"{name}.trim_position")
     return {
@@ -107,7 +109,7 @@ def _entry(
         "error": _spread(np.where(was_set, after, np.nan)),
         "before": _spread(before),
         "needed_range": _inner(
-            low + wanted_places(position, after, slope, was_set, hit) * (high - low)
+            low + wanted_places(position, after, known, was_set, hit) * (high - low)
         ),
         "needed_resolution": _resolution(trim, slope),
         "strains": _strains(study, name, rows, here),
