@@ -6,11 +6,16 @@ import pytest
 from tolsim.laws import TruncatedNormal, Uniform
 from tolsim.stats.neighbours import Neighbours
 from tolsim.stats.proportion import share_interval
-from tolsim.stats.response import foretold, moved, normal_scores, slopes
+from tolsim.stats.response import Response, foretold, normal_scores, slopes
 from tolsim.stats.reweighting import corrected_share, effective_units, weighted_share
 
 BELL = TruncatedNormal(-1.0, 1.0, 0.4)
 FLAT = Uniform(-1.0, 1.0)
+
+
+def moved(figures, factors, changed):
+    """Figures of the same units with their factors changed."""
+    return Response.of(figures, factors).at(changed)
 
 
 def plain(hit):

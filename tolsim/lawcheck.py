@@ -34,7 +34,7 @@ from tolsim.spread.alternatives import (
 )
 from tolsim.spread.sampling import Factor, draw, factors
 from tolsim.stats.neighbours import Neighbours
-from tolsim.stats.response import foretold, moved, normal_scores
+from tolsim.stats.response import Response, foretold, normal_scores
 from tolsim.stats.reweighting import Estimate, corrected_share, effective_units, weighted_share
 from tolsim.workers import Variation, evaluate_variations
 
@@ -42,7 +42,7 @@ Floats = NDArray[np.float64]
 Flags = NDArray[np.bool_]
 
 FEWEST_UNITS = 100  # below, a yield is too wide for its law to matter
-MOST_UNITS = 20_000  # more sharpen no answer
+MOST_UNITS = 5_000  # more sharpen no answer
 DIRECT_SHARE = 0.05  # of the units, drawn anew under each law that needs it
 FEWEST_DIRECT, MOST_DIRECT = 32, 512
 ENOUGH_EFFECTIVE = 0.5  # share of the units that weights must leave to be trusted alone
@@ -100,6 +100,7 @@ def _nothing() -> dict[str, Any]:
         "alternatives": [],
         "together": [],
         "families": [],
+        "units": 0,
         "direct_units": 0,
         "depends": None,
         "next": None,
@@ -159,6 +160,11 @@ class _Check:
     def _foreteller(self) -> tuple[Neighbours | None, Floats]:
         return self._choose()
 
+    @cached_property
+    def response(self) -> Response:
+        """How the judged figures answer to the factors."""
+        return Response.of(self.figures, self.drawn)
+
     @property
     def neighbours(self) -> Neighbours | None:
         """Units in the factors that decide the verdict; None if fitted figures foretell better."""
@@ -206,6 +212,7 @@ class _Check:
             "alternatives": [{"law": other.name, "words": other.words} for other in ALTERNATIVES],
             "together": entries,
             "families": sorted(by_family, key=_largest_change, reverse=True),
+            "units": self.count,
             "direct_units": self.direct * len(anew),
         }
         widths = {family.tables: family.relative_sd for family in self.families}
@@ -273,8 +280,7 @@ class _Check:
         if self.neighbours is not None:
             expected = self.passed + self.neighbours.share_at(changed) - self.around
             return _Reading(scope, self._expected(expected), "neighbours", expected, effective)
-        there = moved(self.figures, self.drawn, changed)
-        expected = (self._within(there) & ~self.fails_anyway).astype(float)
+        expected = (self._within(self.response.at(changed)) & ~self.fails_anyway).astype(float)
         return _Reading(scope, self._expected(expected), "response", expected, effective)
 
     def _choose(self) -> tuple[Neighbours | None, Floats]:

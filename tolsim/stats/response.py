@@ -12,6 +12,8 @@ scores (van der Waerden, 1952), where no outlier pulls the fit.
 
 from __future__ import annotations
 
+from dataclasses import dataclass
+
 import numpy as np
 from numpy.typing import NDArray
 from scipy.special import ndtri
@@ -58,34 +60,49 @@ def normal_scores(values: Floats, marks: Floats) -> tuple[Floats, Floats]:
     )
 
 
-def moved(figures: Floats, factors: Floats, changed: Floats) -> Floats:
-    """Figures of the same units with their factors changed.
+@dataclass(frozen=True)
+class Response:
+    """Fitted answers of figures (N, f) to factors (N, k).
 
-    Parameters
+    Attributes
     ----------
     figures : ndarray (N, f)
-        NaN where a unit has none: it keeps none, and does not take part in the fit.
-    factors, changed : ndarray (N, k)
-        Values as drawn and as they would be.
-
-    Returns
-    -------
-    ndarray (N, f)
-        figures + fit(changed) - fit(factors); unchanged where fewer than `FEWEST_UNITS` have one.
+        As found; NaN where a unit has none: it keeps none, and did not take part in the fit.
+    scale : ndarray (k,)
+        Standard deviations of the factors.
+    terms : ndarray (N, k)
+        Factors over their scale.
+    fits : tuple
+        Columns that miss the same units, their bends and their slopes.
     """
-    scale = factors.std(axis=0)
-    scale = np.where(scale > 0.0, scale, 1.0)
-    before, after = factors / scale, changed / scale
-    result = figures.copy()
-    known = np.isfinite(figures)
-    for pattern in np.unique(known, axis=1).T:  # columns that miss the same units share a fit
-        if pattern.sum() >= FEWEST_UNITS:
-            columns = np.flatnonzero((known == pattern[:, None]).all(axis=0))
-            x, y = before[pattern], figures[pattern][:, columns]
-            bends = _bends(x, y)
-            step = _terms(after, bends) - _terms(before, bends)
-            result[:, columns] += step @ slopes(_terms(x, bends), y)
-    return result
+
+    figures: Floats
+    scale: Floats
+    terms: Floats
+    fits: tuple[tuple[NDArray[np.intp], list[tuple[int, float]], Floats], ...]
+
+    @classmethod
+    def of(cls, figures: Floats, factors: Floats) -> Response:
+        """Fit all figures; those that fewer than `FEWEST_UNITS` units have stay as they are."""
+        scale = factors.std(axis=0)
+        scale = np.where(scale > 0.0, scale, 1.0)
+        terms, known, fits = factors / scale, np.isfinite(figures), []
+        for pattern in np.unique(known, axis=1).T:
+            if pattern.sum() >= FEWEST_UNITS:
+                columns = np.flatnonzero((known == pattern[:, None]).all(axis=0))
+                x, y = terms[pattern], figures[pattern][:, columns]
+                bends = _bends(x, y)
+                fits.append((columns, bends, slopes(_terms(x, bends), y)))
+        return cls(figures, scale, terms, tuple(fits))
+
+    def at(self, changed: Floats) -> Floats:
+        """Figures (N, f) of the same units with their factors changed (N, k)."""
+        result = self.figures.copy()
+        after = changed / self.scale
+        for columns, bends, found in self.fits:
+            step = _terms(after, bends) - _terms(self.terms, bends)
+            result[:, columns] += step @ found
+        return result
 
 
 def foretold(figures: Floats, factors: Floats) -> Floats:
