@@ -54,7 +54,8 @@ FLOORS = [
     {"circuit.transients.journey"}
     | {"circuit.load_change", "circuit.load_change.handover", "circuit.load_change.probes"},
     {"circuit.load_change.road"}
-    | {"circuit.poweron", "circuit.poweron.fates", "circuit.poweron.ramps", "circuit.poweron.path"},
+    | {"circuit.poweron", "circuit.poweron.fates", "circuit.poweron.ramps", "circuit.poweron.path"}
+    | {"circuit.poweron.latch"},
     {"circuit.load_change.passage", "circuit.poweron.switch_on"},
     {"circuit.shooting"},
     {"circuit.nominal"},
@@ -72,7 +73,7 @@ FLOORS = [
     {"figures.waves"},
     {"circuit.bulk.choice"},
     {"figures.parts", "figures.transistors"},
-    {"figures.stage", "figures.start"},
+    {"figures.stage", "figures.start", "figures.power_on"},
     {"figures", "verdicts"},
     {"trim.session"},
     # spread and chance

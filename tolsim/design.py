@@ -76,6 +76,7 @@ class Rail(Frozen):
     ramp_file: str | None = None  # recorded time and voltage, in the folder of the study
     ramp_points: tuple[tuple[DurationOrZero, Level], ...] = ()  # also those of the file
     delay: DurationOrZero = 0.0
+    trip_time: Duration | None = None  # until a fuse or the supply itself ends an overload
     dip: Dip | None = None
     bounce: Bounce | None = None
     follows_supply: bool = True  # scaled by the supply deviation of a condition
@@ -156,6 +157,7 @@ class Run(Frozen):
     solver: Literal["auto", "shooting"] = "auto"
     law_check: bool | None = None  # None: if any tolerance or lot law is a guess
     sampling: Literal["random", "latin-hypercube", "sobol"] = "random"
+    power_on_share: Share = 0.05  # of the units that look sure to start, switched on in time
     rank: tuple[str, ...] = ()  # figures to rank factors for, "Q1.drain_peak"
 
 

@@ -17,16 +17,21 @@ from tolsim.circuit.bulk.choice import Choice, shot_in_blocks
 from tolsim.circuit.continuation import solve_units
 from tolsim.circuit.devices import Floats
 from tolsim.circuit.orbit import Solution, Status
+from tolsim.circuit.poweron.fates import Fate
 from tolsim.circuit.thermal import Case
 from tolsim.design import Study
 from tolsim.figures import measure_orbits, measure_start
-from tolsim.nominals import CaseName, PreparedCase, case_of
+from tolsim.figures.power_on import SwitchedOn, expected_of, measure_power_on
+from tolsim.nominals import CaseName, PreparedCase, case_of, switched_on_here
 from tolsim.spread.part_values import part_values
 from tolsim.spread.sampling import Draws, Factor, draw
 from tolsim.spread.table import SpreadTable
 from tolsim.trim.drawn import trim_draws
 from tolsim.trim.session import Trimmed, idle_voltages, joined, trim_figures, trim_outcomes
 from tolsim.verdicts import judge, judged_at_bench
+
+SURE_MARGIN_DB = 1.5  # start margin from which a growing unit with an orbit is taken to start
+MOST_IMBALANCE = 0.02  # of the input power, between it and all losses
 
 
 @dataclass(frozen=True)
@@ -139,6 +144,25 @@ def case_figures(
     return figures
 
 
+def switch_units_on(
+    plan: Plan, name: CaseName, draws: Draws, solution: Solution, figures: Mapping[str, Floats]
+) -> SwitchedOn | None:
+    """Power-on in time of the units whose start is in doubt, and of a share of the others.
+
+    None where units do not start, or no orbit is known that they should reach.
+    """
+    prepared, share = plan.cases[name], plan.study.run.power_on_share
+    if not (switched_on_here(plan.study, name) and prepared.nominal.found):
+        return None
+    sure = (solution.status == Status.SETTLED) & (figures["start_margin"] > SURE_MARGIN_DB)
+    sure &= figures["growth_rate"] > 0
+    numbers = np.arange(draws.first, draws.first + draws.count)
+    sampled = numbers % max(round(1 / share), 1) == 0
+    cold = case_of(plan.study, part_values(plan.study, plan.tables, *name, draws))
+    expected = expected_of(prepared.nominal, solution, figures["supply_current"])
+    return measure_power_on(cold, expected, prepared.start.shift, sampled | ~sure)
+
+
 def case_rows(
     plan: Plan, name: CaseName, draws: Draws, trims: Sequence[Trimmed]
 ) -> Iterator[pd.DataFrame]:
@@ -161,7 +185,12 @@ def _rows(
     plan: Plan, name: CaseName, draws: Draws, case: Case, solution: Solution, trimmed: Trimmed
 ) -> pd.DataFrame:
     """Rows of solved units."""
-    figures = case_figures(plan, name, draws, case, solution)
+    solution, figures = _trusted(plan, name, draws, case, solution)
+    switched = switch_units_on(plan, name, draws, solution, figures)
+    fate = None
+    if switched is not None:
+        figures |= switched.figures
+        fate = switched.fate
     figures |= trim_figures(plan.study, name, trimmed) | _idle_voltages(plan, name, draws)
     verdicts = judge(
         plan.study,
@@ -169,6 +198,7 @@ def _rows(
         solution.status,
         figures,
         plan.cases[name].figures,
+        fate,
     )
     verdicts = judged_at_bench(verdicts, trim_outcomes(plan.study, name, trimmed))
     figures.pop("mode_match", None)
@@ -182,10 +212,43 @@ def _rows(
         "failed_limits": verdicts.failed_limits,
         "status": np.array([_status_word(code) for code in solution.status], dtype=object),
         "way": solution.way.astype(object),
+        "power_on": _power_on_words(fate, draws.count),
     }
     missing = np.full(draws.count, np.nan)
     ordered = {column: figures.get(column, missing) for column in figure_columns(plan)}
     return pd.DataFrame(columns | ordered)
+
+
+def _trusted(
+    plan: Plan, name: CaseName, draws: Draws, case: Case, solution: Solution
+) -> tuple[Solution, dict[str, Floats]]:
+    """Orbits and figures of units; what does not keep its energy is solved again by shooting.
+
+    A unit that still does not is none that can be judged.
+    """
+    figures = case_figures(plan, name, draws, case, solution)
+    for last in (False, True):
+        settled = solution.status == Status.SETTLED
+        lost = np.flatnonzero(settled & ~(np.abs(figures["energy_balance"]) < MOST_IMBALANCE))
+        if not lost.size:
+            break
+        if last:
+            status = solution.status.copy()
+            status[lost] = Status.NOT_CONVERGED
+            return replace(solution, status=status), figures
+        steps = plan.study.run.steps_per_cycle
+        again = solve_units(case.take(lost), plan.cases[name].compass, steps)
+        solution = solution.put(lost, again)
+        figures = case_figures(plan, name, draws, case, solution)
+    return solution, figures
+
+
+def _power_on_words(fate: NDArray[np.intp] | None, units: int) -> NDArray[np.object_]:
+    """What became of every unit that was switched on in time, in words; else empty."""
+    words = {int(code): code.name.lower().replace("_", " ") for code in Fate}
+    words[int(Fate.NOT_RUN)] = ""
+    codes = np.zeros(units, dtype=np.intp) if fate is None else fate
+    return np.array([words[int(code)] for code in codes], dtype=object)
 
 
 def passes(rows: UnitRows) -> NDArray[np.bool_]:

@@ -18,6 +18,7 @@ from tolsim.circuit.thermal import Case, heats
 from tolsim.design import Study
 from tolsim.errors import RunError
 from tolsim.figures import measure_orbits, measure_start
+from tolsim.figures.power_on import expected_of, measure_power_on
 from tolsim.self_heating import (
     Heat,
     Rises,
@@ -54,6 +55,12 @@ def cases_of(study: Study) -> tuple[CaseName, ...]:
     """Every condition with every state, start states first."""
     states = sorted(study.states, key=lambda name: not study.states[name].starts_here)
     return tuple((condition, state) for condition in study.conditions for state in states)
+
+
+def switched_on_here(study: Study, name: CaseName) -> bool:
+    """Whether units of this case are switched on in time."""
+    oscillates = study.kind == "self-oscillating" and study.states[name[1]].starts_here
+    return oscillates and study.run.power_on_share > 0
 
 
 def case_of(study: Study, values: Values) -> Case:
@@ -150,7 +157,7 @@ def _prepare_state(
         again = nominal if nominal.found else _follow(nominal.case, leader, steps)
         cold = again or nominal
         warm, heat = _warmed(study, tables, name, cold, leader, moved)
-        prepared[name] = _prepared(study, cold, warm, heat, leader)
+        prepared[name] = _prepared(study, name, cold, warm, heat, leader)
     return prepared
 
 
@@ -194,7 +201,7 @@ def _follow(case: Case, leader: Compass, steps: int) -> Nominal | None:
 
 
 def _prepared(
-    study: Study, cold: Nominal, warm: Nominal, heat: Heat, leader: Compass
+    study: Study, name: CaseName, cold: Nominal, warm: Nominal, heat: Heat, leader: Compass
 ) -> PreparedCase:
     """Aim from the case's own nominal orbit, or from the leader's if it has none."""
     compass, figures = leader, {}
@@ -208,6 +215,10 @@ def _prepared(
     if study.kind == "self-oscillating":
         start_from = cold if cold.found else replace(leader.nominal, bias=cold.bias)
         figures = figures | measure_start(cold.case, start_from)
+    if warm.found and switched_on_here(study, name):
+        expected = expected_of(warm, warm.solution, figures["supply_current"])
+        once = measure_power_on(cold.case, expected, start.shift, np.ones(1, dtype=bool))
+        figures = {**figures, **once.figures}
     figures = figures | idle_voltages(study, cold.case, cold.bias.x[0])
     plain = {name: float(value[0]) for name, value in figures.items()}
     return PreparedCase(warm, compass, plain, heat, start)

@@ -24,6 +24,7 @@ from tolsim.quantity import (
     Current,
     Duration,
     Frequency,
+    HeatCapacity,
     Inductance,
     Power,
     ReactivePower,
@@ -269,6 +270,7 @@ class Mosfet(Part):
     gate_resistance: ResistanceOrZero = 0.0
     body_diode: BodyDiode = BodyDiode()
     thermal_resistance: ThermalResistance | None = None  # junction to ambient, K/W
+    thermal_capacity: HeatCapacity | None = None  # J/K, of the junction and what is fastened to it
     threshold_slope: VoltageSlope = -6e-3
     gain_exponent: Annotated[float, Field(ge=-4, le=0)] = -1.5
     drift_exponent: Annotated[float, Field(ge=0, le=5)] = 2.3

@@ -198,6 +198,7 @@ KINDS: Final[Mapping[str, Kind]] = {
         Kind("a temperature", "degC", -100.0, 500.0, "85 degC"),
         Kind("a temperature difference", "K", 0.0, 300.0, "15 K"),
         Kind("a thermal resistance", "K/W", 1e-4, 1e5, "1.2 K/W"),
+        Kind("a heat capacity", "J/K", 1e-6, 1e5, "50 mJ/K"),
         Kind("a gain", "A/V^2", 1e-6, 1e5, "11 A/V^2"),
         Kind("an age", "h", 0.0, 1e7, "10000 h"),
         Kind("an activation energy", "eV", 0.05, 5.0, "0.7 eV"),
@@ -258,6 +259,7 @@ ReactivePower = Annotated[float, _field(KINDS["reactive power"])]
 Temperature = Annotated[float, _field(KINDS["temperature"])]  # degC
 TemperatureDifference = Annotated[float, _field(KINDS["temperature difference"])]
 ThermalResistance = Annotated[float, _field(KINDS["thermal resistance"])]
+HeatCapacity = Annotated[float, _field(KINDS["heat capacity"])]
 VoltageSlope = Annotated[float, _field(_VOLTAGE_SLOPE)]
 Gain = Annotated[float, _field(KINDS["gain"])]
 Share = Annotated[float, _field(_SHARE)]

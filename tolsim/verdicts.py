@@ -14,18 +14,23 @@ from numpy.typing import NDArray
 
 from tolsim.answers.bounds import Bound, applies, bounds
 from tolsim.circuit.orbit import Status
+from tolsim.circuit.poweron.fates import Fate
 from tolsim.design import Study
 from tolsim.figure_names import STAGE, TRIM
+from tolsim.parts import Mosfet
 
 Floats = NDArray[np.float64]
 Words = NDArray[np.str_]
 Flags = NDArray[np.bool_]
 
-START_FIGURES = ("start_margin", "growth_rate", "start_frequency", "start_time")
+START_FIGURES = ("start_margin", "growth_rate", "start_frequency", "start_time", "power_on_time")
 LATCHED_SHARE = 0.5  # of the nominal running current: an idle unit above it sits in DC conduction
 LIKE_NOMINAL = 0.5  # likeness of the leading mode below which it is another mode
 OFF_FREQUENCY = 0.3  # relative to the nominal start frequency, for another mode
 WORD_LENGTH = "U32"
+
+LATCHED, LATCHED_ALONE = "latched both on", "latched on"  # a single switch has no other
+OPEN_ENDED = (Status.NO_ORBIT, Status.NOT_CONVERGED)
 
 GOOD_OUTCOMES = ("runs", "starts")
 
@@ -46,6 +51,7 @@ def judge(
     status: NDArray[np.intp],
     figures: Mapping[str, Floats],
     nominal: Mapping[str, float],
+    fate: NDArray[np.intp] | None = None,
 ) -> CaseVerdicts:
     """Outcome, verdict and failed limits of every unit.
 
@@ -57,11 +63,15 @@ def judge(
         "mode_match" among them where the state is one in which units start.
     nominal : mapping
         Figures of the nominal unit in the same case.
+    fate : (N,), optional
+        Of `Fate`: what became of the units that were switched on in time.
     """
     starts_here = study.states[state].starts_here and study.kind == "self-oscillating"
     outcome = _orbit_outcomes(status, starts_here=starts_here)
     if starts_here:
-        outcome = _start_outcomes(outcome, status, figures, nominal)
+        outcome = _start_outcomes(outcome, status, figures, nominal, _switches(study))
+        if fate is not None:
+            outcome = _switched_on(outcome, status, figures, fate, _switches(study))
     outcome = _wrong_frequency(study, outcome, status, figures)
     broken = _broken_limits(study, (condition, state), figures, len(status), starts=starts_here)
     outcome = _limit_outcomes(outcome, broken)
@@ -104,6 +114,7 @@ def _start_outcomes(
     status: NDArray[np.intp],
     figures: Mapping[str, Floats],
     nominal: Mapping[str, float],
+    switches: int,
 ) -> Words:
     """Refine by the modes at the bias point."""
     growth = figures["growth_rate"]
@@ -119,12 +130,43 @@ def _start_outcomes(
     without = status == Status.NO_ORBIT
     running = nominal.get("supply_current", np.nan)
     latched = figures["idle_current"] > LATCHED_SHARE * running
-    outcome[without & ~grows & latched] = "latched both on"
+    outcome[without & ~grows & latched] = LATCHED if switches > 1 else LATCHED_ALONE
     # growth without an orbit to grow into is a contradiction only the time domain can resolve
     outcome[without & grows] = "undecided"
     # without a bias point nobody knows whether it starts; what bursts or overheats fails anyway
     outcome[np.isnan(growth) & (settled | without)] = "undecided"
     return outcome
+
+
+def _switched_on(
+    outcome: Words,
+    status: NDArray[np.intp],
+    figures: Mapping[str, Floats],
+    fate: NDArray[np.intp],
+    switches: int,
+) -> Words:
+    """What a power-on in time says goes before what modes and orbit say."""
+    settled = status == Status.SETTLED
+    rests = (fate == Fate.DIES) & settled & ~(figures["growth_rate"] > 0)
+    words = {
+        "starts": (fate == Fate.STARTS) & settled,
+        LATCHED if switches > 1 else LATCHED_ALONE: fate == Fate.LATCHED,
+        "dies away": (fate == Fate.DIES) & ~rests,
+        "starts only with a kick": rests,
+        "bursts": fate == Fate.BURSTS,
+        "wrong mode": fate == Fate.OTHER_SWING,
+        # it swings, but on no orbit that was found; or nobody knows
+        "undecided": ((fate == Fate.STARTS) & np.isin(status, OPEN_ENDED))
+        | (fate == Fate.UNDECIDED),
+    }
+    outcome = outcome.copy()
+    for word, flags in words.items():
+        outcome[flags] = word
+    return outcome
+
+
+def _switches(study: Study) -> int:
+    return sum(isinstance(part, Mosfet) for part in study.design.parts.values())
 
 
 def _wrong_frequency(
@@ -172,7 +214,7 @@ def _limit_outcomes(outcome: Words, broken: list[tuple[Bound, Flags]]) -> Words:
     outcome = outcome.copy()
     good = np.isin(outcome, GOOD_OUTCOMES)
     kinds: tuple[tuple[str, Callable[[Bound], bool]], ...] = (
-        ("starts late", lambda bound: bound.figure.name == "start_time"),
+        ("starts late", lambda bound: bound.figure.name in ("start_time", "power_on_time")),
         ("out of band", lambda bound: bound.figure.name == "frequency"),
         ("over stress", lambda bound: bound.figure.owner not in (STAGE, TRIM)),
     )

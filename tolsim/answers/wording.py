@@ -21,6 +21,7 @@ OPEN = "open"  # an end this many units cannot bound
 GOOD = frozenset(("starts", "runs"))
 NO_START = (
     "latched both on",
+    "latched on",
     "dies away",
     "starts only with a kick",
     "wrong mode",

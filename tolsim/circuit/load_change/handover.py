@@ -9,10 +9,10 @@ is too short to move charge, but long enough to settle nets that hold none:
 from __future__ import annotations
 
 import numpy as np
-from numba import njit
 
 from tolsim.circuit.devices import Floats
 from tolsim.circuit.network import Network
+from tolsim.circuit.transients.compiling import hot
 from tolsim.circuit.transients.elements import FlatElements, flatten
 from tolsim.circuit.transients.laws import evaluate, new_point, unit_elements
 from tolsim.circuit.transients.stepping import Circuit, Rung, add_product, new_place, solve_stage
@@ -65,7 +65,7 @@ def _circuit(network: Network, phase: float) -> Circuit:
     )
 
 
-@njit(cache=True)
+@hot
 def _settle_all(
     elements: tuple[FlatElements, FlatElements],
     circuits: tuple[Circuit, Circuit],

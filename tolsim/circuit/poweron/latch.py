@@ -1,0 +1,110 @@
+"""How long a unit with its switches on and no oscillation lasts, until a junction is too hot.
+
+The supply then sees chokes and switches in series.  Its current rises with the slowest electrical
+time constant tau of the circuit at that bias point, i(t) = I (1 - exp(-t/tau)), and with it the
+dissipation, P(t) = P(T) (i/I)^2, where P(T) is that of the bias point at junction temperature T.
+The junction is one thermal pole, C dT/dt = P - (T - T_ambient) / R, so that C matters while the
+current is short and R when it lasts.  The heat capacity is that of the junction and what is
+fastened to it; where a part does not state one, `HEAT_CAPACITY` stands in (a guess).
+"""
+
+from __future__ import annotations
+
+from collections.abc import Mapping
+from dataclasses import dataclass
+
+import numpy as np
+
+from tolsim.circuit.bias import bias_point
+from tolsim.circuit.devices import Floats
+from tolsim.circuit.startup import modes
+from tolsim.circuit.thermal import HIGHEST_C, Case, dissipation, mosfets
+
+HEAT_CAPACITY = 0.05  # J/K, a power package's die and the tab under it (guess)
+FIRST_MOMENT, LAST_MOMENT = 1e-7, 1e3  # s
+MOMENTS = 800
+GRID = (0.0, 50.0, 100.0, 175.0, HIGHEST_C - 25.0)  # K above ambient, for P(T)
+
+
+@dataclass(frozen=True)
+class Latch:
+    """N units that sit in DC conduction."""
+
+    current: Floats  # (N,) A, of all rails in the end, junctions at ambient
+    rise_time: Floats  # (N,) s, electrical time constant tau
+    damage_time: Mapping[str, Floats]  # MOSFET -> (N,) s to its junction limit; inf if never
+
+
+def latch_of(case: Case, shift: float, guess: Floats | None = None) -> Latch:
+    """What DC conduction does to the units of a case.
+
+    Parameters
+    ----------
+    case : Case
+        N cold units.
+    shift : float, rad/s
+        Angular frequency scale of the stage.
+    guess : (N, n), optional
+        Bias points to begin from.
+    """
+    ambient = case.values["ambient"]
+    powers: dict[str, list[Floats]] = {ref: [] for ref in mosfets(case.design)}
+    x = guess
+    current = rise = np.zeros(case.units)
+    for above in GRID:
+        network = case.network(dict.fromkeys(powers, ambient + above))
+        bias = bias_point(network, x)
+        x = bias.x
+        losses = dissipation(case.design, network, np.stack([bias.x, bias.x]))
+        for ref, loss in losses.items():
+            powers[ref].append(loss)
+        if above == 0.0:
+            flows, *_ = network.devices.evaluate(bias.v)
+            current = sum((s.at(bias.x, flows) for s in network.supplies.values()), current)
+            rate = -modes(network, bias, shift).eigenvalues.real
+            slow = np.isfinite(rate) & (rate > 1.0 / LAST_MOMENT)
+            rise = 1.0 / np.where(slow, rate, np.inf).min(axis=1)
+    times = {}
+    for ref, part in mosfets(case.design).items():
+        limit = part.rating.junction_temperature
+        times[ref] = np.full(case.units, np.inf)
+        if limit is not None and part.thermal_resistance:
+            times[ref] = _time_to(
+                limit,
+                ambient,
+                np.stack(powers[ref]),
+                rise,
+                part.thermal_resistance,
+                part.thermal_capacity or HEAT_CAPACITY,
+            )
+    return Latch(current, rise, times)
+
+
+def _time_to(
+    limit: float, ambient: Floats, power: Floats, rise: Floats, resistance: float, capacity: float
+) -> Floats:
+    """When each junction passes `limit`, (N,) s; `power` (g, N) W at the temperatures of `GRID`."""
+    moments = np.geomspace(FIRST_MOMENT, LAST_MOMENT, MOMENTS)
+    warm = np.zeros(len(ambient))  # K above ambient
+    found = np.where(ambient >= limit, 0.0, np.inf)
+    before = 0.0
+    for now in moments:
+        share = -np.expm1(-0.5 * (before + now) / rise)
+        heat = _at(warm, power) * share**2
+        # exact for constant heat, so that steps may be long against R C
+        end = resistance * heat
+        warm = np.minimum(
+            end + (warm - end) * np.exp(-(now - before) / (resistance * capacity)), HIGHEST_C
+        )
+        found = np.where(np.isinf(found) & (ambient + warm >= limit), now, found)
+        before = now
+    return found
+
+
+def _at(warm: Floats, power: Floats) -> Floats:
+    """Power of every unit at its temperature, linear between the points of `GRID`."""
+    grid = np.array(GRID)
+    place = np.clip(np.searchsorted(grid, warm, side="right") - 1, 0, len(grid) - 2)
+    share = np.clip((warm - grid[place]) / (grid[place + 1] - grid[place]), 0.0, 1.0)
+    every = np.arange(len(warm))
+    return (1.0 - share) * power[place, every] + share * power[place + 1, every]

@@ -1,0 +1,150 @@
+"""Figures of switching on: when it starts, what it strains on the way, what a latch destroys."""
+
+from __future__ import annotations
+
+from collections.abc import Mapping
+from dataclasses import dataclass
+
+import numpy as np
+from numpy.typing import NDArray
+
+from tolsim.circuit.devices import Floats, Ints
+from tolsim.circuit.nominal import Nominal
+from tolsim.circuit.orbit import Solution, Status
+from tolsim.circuit.poweron.fates import Fate
+from tolsim.circuit.poweron.latch import latch_of
+from tolsim.circuit.poweron.ramps import profiles_of, ramps_of
+from tolsim.circuit.poweron.switch_on import Expected, PowerOn, switch_on
+from tolsim.circuit.thermal import Case, mosfets
+from tolsim.circuit.transients.journey import Ramps
+from tolsim.design import GROUND
+from tolsim.parts import Inductor
+
+
+@dataclass(frozen=True)
+class SwitchedOn:
+    """Figures and fate of N units; NaN and `Fate.NOT_RUN` where it was not integrated."""
+
+    fate: Ints  # (N,)
+    figures: Mapping[str, Floats]  # (N,) each
+
+
+def expected_of(nominal: Nominal, orbits: Solution, current: Floats) -> Expected:
+    """What units do once they run; a unit without orbit is expected to do as the nominal one.
+
+    Parameters
+    ----------
+    nominal : Nominal
+        With an orbit.
+    orbits : Solution
+        Of N units.
+    current : (N,)
+        Mean supply current on the orbits, A; NaN where there is none.
+    """
+    assert nominal.frame is not None
+    names = tuple(nominal.case.network(nominal.solution.junctions).index)
+    none = (orbits.status != Status.SETTLED) | ~np.isfinite(orbits.period)
+    own = np.ptp(nominal.solution.samples[:, 0], axis=0)
+    swing = np.where(none[:, None], own, np.ptp(orbits.samples, axis=0))
+    period = np.where(none, nominal.solution.period[0], orbits.period)
+    scale = dict(zip(names, nominal.frame.scale.tolist(), strict=True))
+    return Expected(swing, period, names[nominal.frame.lead], scale, current)
+
+
+def take(expected: Expected, units: Ints) -> Expected:
+    """What some of the units are expected to do."""
+    return Expected(
+        expected.swing[units],
+        expected.period[units],
+        expected.lead,
+        expected.scale,
+        expected.current[units],
+    )
+
+
+def measure_power_on(
+    cold: Case,
+    expected: Expected,
+    shift: float,
+    chosen: NDArray[np.bool_],
+    ramps: Ramps | None = None,
+) -> SwitchedOn:
+    """Switch the chosen ones of N units on by the ramps of their design.
+
+    Parameters
+    ----------
+    cold : Case
+        The units before they have run.
+    expected : Expected
+        Their orbits.
+    shift : float, rad/s
+        Angular frequency scale of the stage.
+    chosen : (N,)
+    ramps : Ramps, optional
+        In place of the design's own.
+    """
+    units = np.flatnonzero(chosen)
+    if not units.size:
+        return spread_out(None, {}, units, cold)
+    some = cold.take(units)
+    own = ramps.take(units) if ramps is not None else None
+    way = own or ramps_of(profiles_of(cold.design), len(units))
+    done = switch_on(some, way, take(expected, units), shift)
+    figures = {"power_on_time": done.start_time}
+    figures |= _strains(some, done) | _latches(some, done, shift)
+    return spread_out(done.fate, figures, units, cold)
+
+
+def spread_out(
+    fate: Ints | None, figures: Mapping[str, Floats], units: Ints, case: Case
+) -> SwitchedOn:
+    """Answers of some units among all of a case."""
+    whole = np.full(case.units, Fate.NOT_RUN, dtype=np.intp)
+    if fate is not None:
+        whole[units] = fate
+    columns = {}
+    for name, values in figures.items():
+        columns[name] = np.full(case.units, np.nan)
+        columns[name][units] = values
+    return SwitchedOn(whole, columns)
+
+
+def _strains(case: Case, done: PowerOn) -> dict[str, Floats]:
+    """Largest voltages and currents on the way."""
+    found: dict[str, Floats] = {}
+    journey, n = done.journey, done.network.states
+    for ref, part in mosfets(case.design).items():
+        inside = n + done.network.ports[f"{ref}:gs"]
+        drain, gate = f"{ref}.power_on_drain_peak", f"{ref}.power_on_gate_peak"
+        found[drain] = journey.highest[:, _across(done, part.drain, part.source_net, f"{ref}:ds")]
+        pin = _across(done, part.gate, part.source_net, f"{ref}:gs")
+        sizes = [
+            np.abs(side[:, k]) for k in (pin, inside) for side in (journey.highest, journey.lowest)
+        ]
+        found[gate] = np.max(sizes, axis=0)
+    for ref, other in case.design.parts.items():
+        if isinstance(other, Inductor) and ref in done.network.index:
+            place = done.network.index[ref]
+            both = np.abs(journey.highest[:, place]), np.abs(journey.lowest[:, place])
+            found[f"{ref}.power_on_current_peak"] = np.maximum(*both)
+    return found
+
+
+def _across(done: PowerOn, net: str, source: str, port: str) -> int:
+    """Place of a voltage in the ranges of a journey: at the pins if the source is ground."""
+    if source == GROUND and net in done.network.index:
+        return done.network.index[net]
+    return done.network.states + done.network.ports[port]
+
+
+def _latches(case: Case, done: PowerOn, shift: float) -> dict[str, Floats]:
+    """Current and time to damage of the latched units; NaN for all others."""
+    units = np.flatnonzero(done.fate == Fate.LATCHED)
+    names = [f"{ref}.latch_damage_time" for ref in mosfets(case.design)]
+    found = {name: np.full(case.units, np.nan) for name in ("latch_current", *names)}
+    if units.size:
+        latch = latch_of(case.take(units), shift)
+        found["latch_current"][units] = latch.current
+        for ref, time in latch.damage_time.items():
+            found[f"{ref}.latch_damage_time"][units] = np.where(np.isinf(time), np.nan, time)
+    return found
