@@ -19,7 +19,8 @@ def test_columns():
     assert figure_of("stage", "frequency").column("") == "frequency"
     assert figure_of("mosfet", "drain_peak").column("Q1") == "Q1.drain_peak"
     assert figure_of("mosfet", "frequency") is None
-    assert {info.name for info in figures_of("rail")} == {"current_mean", "current_ripple"}
+    rail = {"current_mean", "current_ripple", "transition_current_peak"}
+    assert {info.name for info in figures_of("rail")} == rail
 
 
 def test_targets_of_a_limit():

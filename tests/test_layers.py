@@ -20,7 +20,7 @@ FLOORS = [
     {"laws.lognormal", "laws.sorted_out", "laws.triangular", "laws.truncated_normal"}
     | {"spread.value_codes"}
     | {"laws.measured", "laws.mixture", "laws.student", "stats.clusters"}
-    | {"laws.uniform", "stats", "mosfet_sheet", "winding", "mission"}
+    | {"laws.uniform", "stats", "mosfet_sheet", "winding", "mission", "transition"}
     | {"study.plain_words", "answers.wording"},
     {"laws.window"},
     {"laws", "answers.lot_words"},
@@ -73,14 +73,14 @@ FLOORS = [
     {"figures.waves"},
     {"circuit.bulk.choice"},
     {"figures.parts", "figures.transistors"},
-    {"figures.stage", "figures.start", "figures.power_on"},
+    {"figures.stage", "figures.start", "figures.power_on", "figures.load_change"},
     {"figures", "verdicts"},
     {"trim.session"},
     # spread and chance
     {"spread.drift_reading", "spread.table", "spread.measured_reading", "spread.shorthand"},
     {"spread.dependence", "spread.streams"},
     {"spread.dependence_reading"},
-    {"spread.entry"},
+    {"spread.entry", "spread.needs"},
     {"spread.matching"},
     {"spread.reading", "spread.sampling"},
     {"spread.alternatives"},
@@ -93,14 +93,17 @@ FLOORS = [
     {"study.outline", "study.recording", "study.markings"},
     {"study.nets", "study.limits", "study.checks", "study.lots", "study.supplies"}
     | {"study.mission"},
-    {"study.trims"},
+    {"study.trims", "study.transitions"},
     {"study.reading"},
     {"study.prototypes"},
     {"study.file"},
     {"study"},
     # answers
     {"nominals", "answers.provenance", "answers.trims", "answers.supply_words", "answers.ranking"},
-    {"answers.lots", "answers.reel_words", "answers.trim_words", "trim.drawn"} | {"report.lots"},
+    {"answers.lots", "answers.reel_words", "answers.trim_words", "trim.drawn"}
+    | {"transitions.prepared"}
+    | {"report.lots"},
+    {"transitions.drawn"},
     {"evaluation", "answers.summary", "answers.lines", "report.content", "report.tables"},
     {"report.laws", "report.bench"},
     {"report.charts"},

@@ -16,7 +16,7 @@ from tolsim.answers.unit_files import FrameColumns
 from tolsim.circuit.orbit import Status
 from tolsim.design import Condition, Design, Limit, Rail, Run, State, Study
 from tolsim.parts import DeviceModel, Mosfet, Rating
-from tolsim.verdicts import CaseVerdicts, judge, judged_at_bench
+from tolsim.verdicts import CaseVerdicts, judge, overruled
 
 NOMINAL = {"start_frequency": 7e6, "supply_current": 2.0}
 GOOD = {
@@ -236,7 +236,7 @@ def test_what_the_operator_puts_aside_fails_and_what_he_leaves_open_is_undecided
     )
     verdicts = replace(verdicts, outcome=verdicts.outcome.astype("U32"))
     first, last = np.array([1, 1, 0, 0, 0], bool), np.array([0, 0, 1, 1, 1], bool)
-    judged = judged_at_bench(verdicts, {"trim range exhausted": first, "undecided": last})
+    judged = overruled(verdicts, {"trim range exhausted": first, "undecided": last})
     assert judged.outcome.tolist() == [
         "trim range exhausted",
         "trim range exhausted",

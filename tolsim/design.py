@@ -36,6 +36,7 @@ from tolsim.quantity import (
     show,
 )
 from tolsim.records import Frozen
+from tolsim.transition import Transition
 
 GROUND = "gnd"
 
@@ -159,6 +160,8 @@ class Run(Frozen):
     sampling: Literal["random", "latin-hypercube", "sobol"] = "random"
     power_on_share: Share = 0.05  # of the units that look sure to start, switched on in time
     rank: tuple[str, ...] = ()  # figures to rank factors for, "Q1.drain_peak"
+    transition_share: Share = 0.05  # of the units, whose changes of load are integrated in time
+    transition_phases: Annotated[int, Field(ge=1, le=16)] = 1  # of the cycle, to change at
 
 
 class Lots(Frozen):
@@ -247,5 +250,6 @@ class Study(Frozen):
     mission: Mission | None = None
     prototypes: Mapping[str, Prototype] = {}
     trims: Mapping[str, Trim] = {}  # in the order in which they are done
+    transitions: tuple[Transition, ...] = ()  # of the load, in their order
     expected_frequency: tuple[Frequency, Frequency] | None = None
     kind: Literal["self-oscillating", "driven"] = "self-oscillating"

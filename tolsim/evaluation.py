@@ -26,9 +26,11 @@ from tolsim.nominals import CaseName, PreparedCase, case_of, switched_on_here
 from tolsim.spread.part_values import part_values
 from tolsim.spread.sampling import Draws, Factor, draw
 from tolsim.spread.table import SpreadTable
+from tolsim.transitions.drawn import SolvedCase, Told, tell_transitions
+from tolsim.transitions.prepared import MoveName, PreparedMove
 from tolsim.trim.drawn import trim_draws
 from tolsim.trim.session import Trimmed, idle_voltages, joined, trim_figures, trim_outcomes
-from tolsim.verdicts import judge, judged_at_bench
+from tolsim.verdicts import judge, overruled
 
 SURE_MARGIN_DB = 1.5  # start margin from which a growing unit with an orbit is taken to start
 MOST_IMBALANCE = 0.02  # of the input power, between it and all losses
@@ -43,6 +45,7 @@ class Plan:
     factors: tuple[Factor, ...]
     cases: Mapping[CaseName, PreparedCase]
     choices: Mapping[CaseName, Choice] = field(default_factory=dict)  # none: shooting
+    moves: Mapping[MoveName, PreparedMove] = field(default_factory=dict)  # changes of load
 
 
 @dataclass(frozen=True)
@@ -68,14 +71,29 @@ def evaluate(plan: Plan, first: int, count: int, block: int) -> Chunk:
     return Chunk(first, rows, factors)
 
 
-def rows_of(plan: Plan, draws: Draws, count: int, block: int) -> pd.DataFrame:
-    """Rows of the first `count` drawn units in every case, `block` of them after the other."""
+def rows_of(
+    plan: Plan, draws: Draws, count: int, block: int, numbers: NDArray[np.intp] | None = None
+) -> pd.DataFrame:
+    """Rows of the first `count` drawn units in every case, `block` of them after the other.
+
+    `numbers` (N,) are those of the units where they do not follow each other.
+    """
+    number = draws.first + np.arange(draws.count) if numbers is None else numbers
+    number = np.where(np.arange(draws.count) < count, number, -1)  # nobody asks for the surplus
     trims = [trim_drawn(plan, draws.rows(row, block)) for row in range(0, draws.count, block)]
     draws = replace(draws, moved=joined(trims))
-    cases = [case_rows(plan, name, draws, trims) for name in plan.cases]
+    cases = [solved_in_blocks(plan, name, draws, block) for name in plan.cases]
     tables = []
     for place, blocks in enumerate(zip(*cases, strict=True)):
-        tables += [table.head(count - place * block) for table in blocks]
+        solved = dict(zip(plan.cases, blocks, strict=True))
+        own, first = draws.rows(place * block, block), place * block
+        told: Mapping[CaseName, Told] = {}
+        if plan.study.transitions:
+            asked = number[first : first + own.count]
+            told = tell_transitions(plan.study, plan.tables, plan.moves, solved, own, asked)
+        for name, one in solved.items():
+            table = _rows(plan, name, own, one, trims[place], told.get(name))
+            tables.append(table.head(count - first))
     return pd.concat(tables, ignore_index=True)
 
 
@@ -163,11 +181,8 @@ def switch_units_on(
     return measure_power_on(cold, expected, prepared.start.shift, sampled | ~sure)
 
 
-def case_rows(
-    plan: Plan, name: CaseName, draws: Draws, trims: Sequence[Trimmed]
-) -> Iterator[pd.DataFrame]:
-    """Rows of the drawn units in one case, one table per block; `trims` likewise."""
-    block = draws.count // len(trims)
+def solved_in_blocks(plan: Plan, name: CaseName, draws: Draws, block: int) -> Iterator[SolvedCase]:
+    """The drawn units in one case, solved and measured, one block after the other."""
     case = _drawn_case(plan, name, draws)
     compass, steps = plan.cases[name].compass, plan.study.run.steps_per_cycle
     choice = plan.choices.get(name)
@@ -177,21 +192,27 @@ def case_rows(
         solutions = choice.solve_in_blocks(case, compass, steps, block)
     for place, solution in enumerate(solutions):
         own = draws.rows(place * block, block)
-        units = np.arange(place * block, place * block + own.count)
-        yield _rows(plan, name, own, case.take(units), solution, trims[place])
+        own_case = case.take(np.arange(place * block, place * block + own.count))
+        yield SolvedCase(own_case, *_trusted(plan, name, own, own_case, solution))
 
 
 def _rows(
-    plan: Plan, name: CaseName, draws: Draws, case: Case, solution: Solution, trimmed: Trimmed
+    plan: Plan,
+    name: CaseName,
+    draws: Draws,
+    solved: SolvedCase,
+    trimmed: Trimmed,
+    told: Told | None,
 ) -> pd.DataFrame:
-    """Rows of solved units."""
-    solution, figures = _trusted(plan, name, draws, case, solution)
+    """Rows of solved units, with what switching on and the changes of load say of them."""
+    solution, figures = solved.solution, dict(solved.figures)
     switched = switch_units_on(plan, name, draws, solution, figures)
     fate = None
     if switched is not None:
         figures |= switched.figures
         fate = switched.fate
     figures |= trim_figures(plan.study, name, trimmed) | _idle_voltages(plan, name, draws)
+    figures |= told.figures if told else {}
     verdicts = judge(
         plan.study,
         *name,
@@ -200,7 +221,8 @@ def _rows(
         plan.cases[name].figures,
         fate,
     )
-    verdicts = judged_at_bench(verdicts, trim_outcomes(plan.study, name, trimmed))
+    verdicts = overruled(verdicts, told.said if told else {})
+    verdicts = overruled(verdicts, trim_outcomes(plan.study, name, trimmed))
     figures.pop("mode_match", None)
     condition, state = name
     columns: dict[str, object] = {
@@ -214,6 +236,8 @@ def _rows(
         "way": solution.way.astype(object),
         "power_on": _power_on_words(fate, draws.count),
     }
+    if plan.study.transitions:
+        columns["changes"] = told.words if told else np.full(draws.count, "", dtype=object)
     missing = np.full(draws.count, np.nan)
     ordered = {column: figures.get(column, missing) for column in figure_columns(plan)}
     return pd.DataFrame(columns | ordered)

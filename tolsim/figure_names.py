@@ -26,6 +26,13 @@ TRIM_STRAINS: Final[Mapping[str, str]] = {
 }
 """Figures of a MOSFET whose largest value while an operator trims is a figure of its own."""
 
+TRANSITION_FIGURES: Final = frozenset((
+    "settle_time", "transition_drain_peak", "transition_gate_peak", "transition_gate_positive_peak",
+    "transition_gate_negative_peak", "transition_inner_gate_peak", "transition_current_peak",
+    "transition_voltage_peak", "clamp_energy", "avalanche_energy",
+))  # fmt: skip
+"""Figures of the way to a state: from the moment the load changes until the unit has settled."""
+
 
 @dataclass(frozen=True)
 class FigureInfo:
@@ -96,6 +103,13 @@ def _stage() -> list[FigureInfo]:
             "high",
             "Largest Floquet multiplier beside the phase one; above 1 the orbit is unstable.",
         ),
+        (
+            "settle_time",
+            "Settling after a change of load",
+            "s",
+            "high",
+            "To within 2 % of the swing.",
+        ),
         ("energy_balance", "Energy balance", "1", "high", "Relative gap between input and losses."),
         ("orbit_residual", "Orbit residual", "1", "high", "Relative gap after one cycle."),
     ]
@@ -111,6 +125,8 @@ _CURRENT_PEAK = ("current_peak", "Peak current", "A")
 _CURRENT_RMS = ("current_rms", "RMS current", "A")
 _DISSIPATION = ("dissipation", "Dissipation", "W", "power", "Mean power turned into heat.")
 _BODY = ("body_temperature", "Body temperature", "degC", "temperature")
+_CHANGE_CURRENT = ("transition_current_peak", "Peak current in a change", "A")
+_ON_THE_WAY = "Largest from the change of load until the unit has settled."
 _LARGEST = "Largest magnitude within a cycle, DC included."
 
 
@@ -127,11 +143,29 @@ def _strains() -> list[tuple[str, str, str, str | None, str]]:
     return [(TRIM_STRAINS[name], title, unit, rating, about) for name, title, unit, rating in words]
 
 
+def _changes() -> list[tuple[str, str, str, str | None, str]]:
+    """Figures of a MOSFET while the load changes."""
+    inner = "Behind the gate resistance; largest magnitude, either sign."
+    below = "How far the gate goes below the source, as a positive number."
+    taken = "What the breakdown takes in a change, were it at the rated drain voltage."
+    drain, gate = "Peak drain voltage in a change", "Peak gate voltage in a change"
+    positive, negative = "Positive gate peak in a change", "Negative gate peak in a change"
+    return [
+        ("transition_drain_peak", drain, "V", "drain_voltage", _ON_THE_WAY),
+        ("transition_gate_peak", gate, "V", "gate_voltage", "At the pin. " + _ON_THE_WAY),
+        ("transition_gate_positive_peak", positive, "V", None, _ON_THE_WAY),
+        ("transition_gate_negative_peak", negative, "V", None, below),
+        ("transition_inner_gate_peak", "Peak inner gate in a change", "V", "gate_voltage", inner),
+        ("avalanche_energy", "Avalanche energy in a change", "J", None, taken),
+    ]
+
+
 _PARTS: Final = [
     *_of(
         RAIL,
         ("current_mean", "Mean current", "A", None, "Mean current the rail delivers."),
         ("current_ripple", "Ripple current", "A", None, "Peak-to-peak alternating current."),
+        (*_CHANGE_CURRENT, None, _ON_THE_WAY),
     ),
     *_of(
         "capacitor",
@@ -150,6 +184,8 @@ _PARTS: Final = [
         ("loss", "Loss", "W", "power", "Mean power turned into heat."),
         (*_VOLTAGE_PEAK, None, _LARGEST),
         ("saturation_use", "Saturation use", "1", None, "Peak over saturation current."),
+        (*_CHANGE_CURRENT, "saturation_current", _ON_THE_WAY),
+        ("transition_voltage_peak", "Peak voltage in a change", "V", None, _ON_THE_WAY),
         (*_BODY, "Surroundings plus self-heating."),
         (
             "power_on_current_peak",
@@ -179,6 +215,7 @@ _PARTS: Final = [
         _DISSIPATION,
         (*_CURRENT_PEAK, None, _LARGEST),
         (*_CURRENT_RMS, "current", "DC included."),
+        ("clamp_energy", "Energy in a change", "J", None, "Taken while the load changes."),
     ),
     *_of(
         "mosfet",
@@ -223,6 +260,7 @@ _PARTS: Final = [
         ),
         ("idle_dissipation", "Idle dissipation", "W", None, "At the bias point."),
         *_strains(),
+        *_changes(),
         (
             "power_on_drain_peak",
             "Peak drain voltage at power-on",

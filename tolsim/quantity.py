@@ -31,7 +31,7 @@ _UNIT_TEXT = re.compile(rf"(?:{_FACTOR}(?:\s?[*/]\s?{_FACTOR})*)?")
 _PREFIXES: Final = {
     -15: "f", -12: "p", -9: "n", -6: "u", -3: "m", 0: "", 3: "k", 6: "M", 9: "G", 12: "T",
 }  # fmt: skip
-_TAKES_PREFIX: Final = frozenset(("F", "H", "ohm", "S", "A", "V", "Hz", "W", "var", "s", "m"))
+_TAKES_PREFIX: Final = frozenset(("F", "H", "ohm", "S", "A", "V", "Hz", "W", "var", "s", "m", "J"))
 
 
 @dataclass(frozen=True)

@@ -41,6 +41,7 @@ from tolsim.solver_choice import choose_solvers, wants_bulk
 from tolsim.spread.reel_record import reel_records
 from tolsim.spread.sampling import factors
 from tolsim.study import StudyFile, open_study
+from tolsim.transitions.prepared import prepared_changes
 
 IDENTITY_FILE = "run.json"
 _IDENTITY = {
@@ -116,11 +117,13 @@ def _solve_and_judge(
     progress: Progress | None,
 ) -> Results:
     """The road itself, for a checked request."""
-    cases = prepare(opened.study, opened.tables, jobs)
+    cases, moves = prepared_changes(
+        opened.study, opened.tables, prepare(opened.study, opened.tables, jobs), jobs
+    )
     names = factors(opened.study, opened.tables)
     bulk = wants_bulk(opened.study)
     choices = choose_solvers(opened.study, opened.tables, names, cases, jobs) if bulk else {}
-    plan = Plan(opened.study, opened.tables, names, cases, choices)
+    plan = Plan(opened.study, opened.tables, names, cases, choices, moves)
     unit_table, factor_table = build_units(plan, jobs, store, progress)
     summary = summarise(
         opened.study,

@@ -81,10 +81,10 @@ def judge(
     return CaseVerdicts(outcome, verdict.astype(WORD_LENGTH), _numbers(broken, len(status)))
 
 
-def judged_at_bench(verdicts: CaseVerdicts, said: Mapping[str, Flags]) -> CaseVerdicts:
-    """Verdicts after what the operator who trimmed the units says: outcome to flags (N,).
+def overruled(verdicts: CaseVerdicts, said: Mapping[str, Flags]) -> CaseVerdicts:
+    """Verdicts after what a change of load or the trimming operator says: outcome to flags (N,).
 
-    What he puts aside fails, whatever it does else; what he leaves open may have failed already.
+    What they put aside fails, whatever it does else; what they leave open may have failed already.
     """
     outcome, verdict = verdicts.outcome.copy(), verdicts.verdict.copy()
     for word, flags in said.items():

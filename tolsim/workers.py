@@ -106,7 +106,7 @@ def _varied(plan: Plan, variation: Variation) -> Plan:
 
 def _passing(plan: Plan, chosen: Numbers) -> Flags:
     draws = draw_chosen(plan.factors, plan.study.run.seed, chosen)
-    return passes(UnitRows.of(FrameColumns(rows_of(plan, draws, chosen.size, chosen.size))))
+    return passes(UnitRows.of(FrameColumns(rows_of(plan, draws, chosen.size, chosen.size, chosen))))
 
 
 def _passing_stored(plan_file: str, variation: Variation, chosen: Numbers) -> Flags:

@@ -30,6 +30,7 @@ from tolsim.laws.reading import read_law
 from tolsim.parts import Capacitor, Part
 from tolsim.spread.dependence import Match, Tie, correlation_matrix
 from tolsim.spread.matching import bin_widths
+from tolsim.spread.needs import need_factors
 from tolsim.spread.streams import RANDOM, Scheme, shares
 from tolsim.spread.table import ASPECTS, FOLLOWING, Aspect, SpreadTable, correlations
 
@@ -194,7 +195,8 @@ def factors(study: Study, tables: Mapping[str, SpreadTable]) -> tuple[Factor, ..
     one factor per quantity in the same way.
     """
     found: dict[str, Factor] = {}
-    for factor in (*_of_parts(study, tables), *_of_conditions(study), *_of_trims(study)):
+    sources = (*_of_parts(study, tables), *_of_conditions(study), *_of_trims(study))
+    for factor in (*sources, *(Factor(*one) for one in need_factors(study))):
         found.setdefault(factor.name, factor)
     method = study.run.sampling
     if method == "random":

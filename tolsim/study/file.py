@@ -10,6 +10,7 @@
     [mission]                        years, conditions, states, activation_energy, reference
     [prototype.NAME]                 readings of a built board, probe, its measured parts
     [trim.NAME]                      a part turned per unit until a reading meets its target
+    [[transitions]]                  from, to, time, needs, stays_while, falls_back_to
     [[limits]]                       figure, parts, at_most | at_least | share_of_rating, rule
 
 Quantities are texts with a unit of measure.  Every mistake of a file is told at once.
@@ -45,6 +46,7 @@ from tolsim.study.prototypes import read_prototypes
 from tolsim.study.reading import Reading
 from tolsim.study.recording import Recording
 from tolsim.study.supplies import Recordings, supply_problems
+from tolsim.study.transitions import read_transitions
 from tolsim.study.trims import read_trims
 
 _CONDITION_UNITS = {"ambient": "degC", "supply": "1", "age": "h"}
@@ -76,6 +78,7 @@ class _Top(Frozen):
     conditions: Mapping[str, Any] = {}
     trim: Mapping[str, Any] = {}
     prototype: Mapping[str, Any] = {}
+    transitions: Any = ()
     limits: tuple[Any, ...] = ()
 
 
@@ -204,6 +207,7 @@ def read_study(
     conditions = reading.conditions(outline)
     limits = reading.limits(outline)
     trims = read_trims(outline, reading.problems)
+    transitions = read_transitions(outline, raw.get("transitions"), reading.problems)
     prototypes = read_prototypes(outline, reading)
     values = {name: state.values for name, state in states.items()}
     reading.problems += study_problems(outline)
@@ -227,6 +231,7 @@ def read_study(
         lots=top.lots,
         mission=top.mission,
         trims=trims,
+        transitions=transitions,
         prototypes=prototypes,
         expected_frequency=top.expected_frequency,
         kind=top.kind,
@@ -260,6 +265,6 @@ def _in_file_order(problems: Iterable[Problem], raw: Table) -> list[Problem]:
     def height(problem: Problem) -> tuple[int, int]:
         table, _, number = problem.table.partition(" #")
         above = [n for n, place in enumerate(places) if f"{table}.".startswith(f"{place}.")]
-        return max(above, default=0), int(number or 0)
+        return max(above, default=0), int(number.partition(".")[0] or 0)
 
     return sorted(dict.fromkeys(problems), key=height)

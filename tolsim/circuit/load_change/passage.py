@@ -12,12 +12,21 @@ from tolsim.circuit.devices import Floats, Ints
 from tolsim.circuit.load_change.handover import hand_over
 from tolsim.circuit.load_change.road import Road
 from tolsim.circuit.network import Network
-from tolsim.circuit.transients.journey import Ending, Goal, Journey, Ramps, travel
+from tolsim.circuit.transients.journey import (
+    STEPS_PER_WINDOW,
+    Ending,
+    Goal,
+    Journey,
+    Ramps,
+    travel,
+)
 
 SETTLED_WITHIN = 0.02  # of the last swing: nearer counts as settled
 STEADY_WINDOWS = 16  # at the end, whose swing tells whether it still moves
 STEADY_WITHIN = 0.01
 MOST_CYCLES = 400.0
+STEADY = 5e-3  # change over some windows that counts as none
+TOLERANCE = 2e-3  # local error; peaks are then right to 0.1 % or so, see the tests
 
 
 class Fate(IntEnum):
@@ -86,6 +95,8 @@ def travel_road(
     cycles: float = MOST_CYCLES,
     watch: tuple[int, ...] = (),
     regrows: NDArray[np.bool_] | None = None,
+    steady: float = STEADY,
+    tolerance: float = TOLERANCE,
 ) -> Passage:
     """Take N units along a road.
 
@@ -106,6 +117,8 @@ def travel_road(
         Time that units get after the change, in periods.
     regrows : (N,) bool, optional
         Units that grow by themselves in the new state: gone quiet is not their end.
+    steady, tolerance : float
+        See `travel`.
     """
     start = np.zeros(len(period)) if begin is None else begin
     pieces = len(road.stations) - 1
@@ -115,8 +128,11 @@ def travel_road(
         network = road.stations[k]
         x = hand_over(road.stations[k - 1], network, x, period, _phase(network, clock))
         last = k == pieces
-        left = start + duration * k / pieces if pieces > 1 else start
-        span = period if last else (left - clock) / np.ceil((left - clock) / period)
+        span, until = period, clock + cycles * period
+        if not last:  # whole windows, the last of which ends with the piece
+            left = np.maximum(start + duration * k / pieces - clock, period / STEPS_PER_WINDOW)
+            span = left / np.ceil(left / period)
+            until = clock + left - 0.5 * span
         legs.append(
             travel(
                 network,
@@ -124,11 +140,12 @@ def travel_road(
                 Ramps.none(len(period)),
                 goal,
                 span,
-                clock + cycles * period if last else left,
+                until,
                 begin=clock,
                 hopeless=hopeless if last else None,
                 watch=watch,
-                steady=0.005 if last else 0.0,
+                steady=steady if last else 0.0,
+                tolerance=tolerance,
             )
         )
         clock, x = legs[-1].time, legs[-1].x
