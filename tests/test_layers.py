@@ -21,9 +21,9 @@ FLOORS = [
     | {"spread.value_codes"}
     | {"laws.measured", "laws.mixture", "laws.student", "stats.clusters"}
     | {"laws.uniform", "stats", "mosfet_sheet", "winding", "mission", "transition"}
-    | {"study.plain_words", "answers.wording"},
+    | {"study.plain_words", "answers.wording", "starts.asked"},
     {"laws.window"},
-    {"laws", "answers.lot_words"},
+    {"laws", "answers.lot_words", "answers.start_words"},
     # the design: parts, then what is made of them
     {"parts", "laws.reading"} | {"laws.predictive", "spread.readings"},
     {"prototype", "answers.prototype_words"},
@@ -95,7 +95,7 @@ FLOORS = [
     | {"study.mission"},
     {"study.trims", "study.transitions"},
     {"study.reading"},
-    {"study.prototypes"},
+    {"study.prototypes", "study.starts"},
     {"study.file"},
     {"study"},
     # answers
@@ -107,15 +107,18 @@ FLOORS = [
     {"evaluation", "answers.summary", "answers.lines", "report.content", "report.tables"},
     {"report.laws", "report.bench"},
     {"report.charts"},
-    {"report.lot_chart", "report.trim_chart", "report.supply_chart"},
-    {"report.trim_section", "report.reel_section"},
+    {"report.lot_chart", "report.trim_chart", "report.supply_chart"}
+    | {"report.start_map_chart"},
+    {"report.trim_section", "report.reel_section", "report.start_section"},
     {"report.page", "report.unit_picture", "report.table_picture"},
     {"report"},
     {"inputs"},
     # the corridor, and the faces
     {"crosscheck", "heatcheck", "presentation", "recheck", "solver_choice"},
     {"workers"},
-    {"building", "lawcheck", "modelcheck"},
+    {"building", "lawcheck", "modelcheck", "starts.attempt"},
+    {"starts.grid"},
+    {"starts.answers"},
     {"run", "replay"},
     {"terminal"},
     {"table_screen"},

@@ -174,6 +174,46 @@ def run(
     show_summary(results.summary, folder)
 
 
+@main.command("start-map")
+@click.argument("study")
+@click.option("--units", type=click.IntRange(1, 10_000), help="Units to switch on.")
+@click.option("--seed", type=click.IntRange(0), help="Seed of chance; else as STUDY says.")
+@click.option("--jobs", type=click.IntRange(1), help="Processor cores to use; else all of them.")
+@click.option(
+    "--out",
+    metavar="DIR",
+    type=click.Path(file_okay=False, path_type=Path),
+    help="Write the answers (starts.json) and the map (start-map.svg) there too.",
+)
+@_tables_option
+def start_map(
+    study: str,
+    units: int | None,
+    seed: int | None,
+    jobs: int | None,
+    out: Path | None,
+    tables_dir: Path | None,
+) -> None:
+    """Switch units of STUDY on over ramp time, ambient or supply.
+
+    STUDY is a TOML file or the name of a shipped study; its tables [start_map],
+    [supply_contract] and [repeated_starts] say what is asked.
+    """
+    from tolsim.starts.answers import map_starts
+    from tolsim.study import open_study
+    from tolsim.terminal import progress, show_starts, warn_of
+
+    opened = open_study(find_study(study), tables_dir)
+    warn_of(opened.warnings)
+    with progress("done") as step:
+        found = map_starts(opened, units=units, seed=seed, jobs=jobs, progress=step)
+    show_starts(found)
+    if out is not None:
+        from tolsim.report.start_section import write_starts
+
+        click.echo(f"Written: {', '.join(str(path) for path in write_starts(found, out))}")
+
+
 @main.command()
 @click.argument("results", type=click.Path(exists=True, file_okay=False, path_type=Path))
 @click.argument("number", metavar="UNIT", type=click.IntRange(0))

@@ -36,6 +36,7 @@ from tolsim.quantity import (
     show,
 )
 from tolsim.records import Frozen
+from tolsim.starts.asked import Starts
 from tolsim.transition import Transition
 
 GROUND = "gnd"
@@ -251,5 +252,6 @@ class Study(Frozen):
     prototypes: Mapping[str, Prototype] = {}
     trims: Mapping[str, Trim] = {}  # in the order in which they are done
     transitions: tuple[Transition, ...] = ()  # of the load, in their order
+    starts: Starts = Starts()
     expected_frequency: tuple[Frequency, Frequency] | None = None
     kind: Literal["self-oscillating", "driven"] = "self-oscillating"

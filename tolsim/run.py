@@ -40,6 +40,7 @@ from tolsim.recheck import recheck
 from tolsim.solver_choice import choose_solvers, wants_bulk
 from tolsim.spread.reel_record import reel_records
 from tolsim.spread.sampling import factors
+from tolsim.starts.answers import answer_starts
 from tolsim.study import StudyFile, open_study
 from tolsim.transitions.prepared import prepared_changes
 
@@ -136,6 +137,7 @@ def _solve_and_judge(
     summary["reels"] = reel_records(opened.study, opened.tables)
     summary["law_check"] = check_laws(plan, unit_table, jobs)
     summary["prototype"] = model_check(plan, unit_table, factor_table, jobs)
+    summary |= answer_starts(plan, jobs)
     if store is None:
         assert isinstance(unit_table, FrameColumns)
         assert isinstance(factor_table, FrameColumns)

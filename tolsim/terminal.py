@@ -16,7 +16,7 @@ from rich.table import Table
 from rich.text import Text
 
 from tolsim.answers.bounds import Bound, applies, bounds
-from tolsim.answers.lines import summary_lines
+from tolsim.answers.lines import start_lines, summary_lines
 from tolsim.answers.supply_words import supply_words
 from tolsim.answers.wording import shown
 from tolsim.design import Study
@@ -55,17 +55,17 @@ def warn_of(mistakes: Sequence[str]) -> None:
 
 
 @contextmanager
-def progress() -> Iterator[Step]:
+def progress(counted: str = "units") -> Iterator[Step]:
     """Progress bar on stderr, with rate and time left; yields what to call with news."""
     columns = (
-        TextColumn("units"),
+        TextColumn(counted),
         BarColumn(bar_width=None),
         MofNCompleteColumn(),
         TextColumn("{task.fields[rate]}"),
         TimeRemainingColumn(),
     )
     with Progress(*columns, console=console(stderr=True)) as bar:
-        task = bar.add_task("units", total=None, rate="")
+        task = bar.add_task(counted, total=None, rate="")
 
         def step(done: int, wanted: int) -> None:
             speed = bar.tasks[0].speed
@@ -194,6 +194,13 @@ def show_summary(summary: Mapping[str, Any], folder: Path) -> None:
         screen.print(Text(line))
     screen.print()
     screen.print(Text(f"Report: {folder / 'report.html'}", overflow="fold"))
+
+
+def show_starts(found: Mapping[str, Any]) -> None:
+    """Show what switching on was asked for."""
+    screen = console()
+    for line in start_lines(found):
+        screen.print(Text(line))
 
 
 def _grid(*heads: str) -> Table:

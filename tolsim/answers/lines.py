@@ -9,6 +9,7 @@ from typing import Any
 from tolsim.answers.lot_words import lot_sentences
 from tolsim.answers.mission_words import mission_sentences
 from tolsim.answers.reel_words import reel_sentences
+from tolsim.answers.start_words import map_sentences, map_table
 from tolsim.answers.trim_words import trim_sentences
 from tolsim.answers.wording import (
     failures,
@@ -43,6 +44,7 @@ def summary_lines(summary: Summary) -> list[str]:
         ("Trimmed at the bench", _wrapped(trim_sentences(summary))),
         ("By lot, with 95 % intervals", _wrapped(lot_sentences(summary))),
         ("Over the mission, with 95 % intervals", _wrapped(mission_sentences(summary))),
+        *_starts(summary),
         ("Hardest driven: p99 over the limit, else over the rating", _stresses(summary)),
         ("What matters: share of variance, 95 % interval", _factors(summary)),
         ("Guessed laws", _laws(summary.get("law_check") or {})),
@@ -54,6 +56,18 @@ def summary_lines(summary: Summary) -> list[str]:
             title = heading.replace("95 %", f"{100 * summary['yield']['confidence']:.3g} %")
             lines += ["", title, *(_cut(f"  {row}") for row in rows)]
     return lines
+
+
+def start_lines(summary: Summary) -> list[str]:
+    """What was asked about switching on, as lines."""
+    lines: list[str] = []
+    for heading, rows in _starts(summary):
+        lines += ["", heading, *(_cut(f"  {row}") for row in rows)] if rows else []
+    return lines[1:]
+
+
+def _starts(summary: Summary) -> Iterator[tuple[str, list[str]]]:
+    yield "Start map", [*_wrapped(map_sentences(summary)), *map_table(summary)]
 
 
 def _failures(summary: Summary) -> Iterator[str]:

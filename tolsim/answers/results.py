@@ -119,6 +119,11 @@ not known (an interval that this many units cannot close).  Every `low`, `high` 
                 probe), percentile, p, z, outside (farther from every unit than the uncertainty),
                 share (of the squared distance)}],
                 suspect {reading, factor, correlation}, sentence}]}
+``start_map``   {} unless asked for in the run; else {condition, state, units, confidence, across
+                {what, rails, all_rails, unit_of_measure, values}, down {the same}, cells [{across,
+                down (values), with_orbit (units), outcomes [{outcome ("starts" first, "latched",
+                "dies away", "bursts", "other swing", "undecided"), units, share, low, high}],
+                first_failing, start_time (s, median, to 90 % of the swing; or null)}]}
 ``provenance``  {seed, versions {name: version}, study_sha256, tables {name: sha256},
                 recordings {path: sha256} (only if supplies have recorded ramps), ...}
 """
@@ -254,6 +259,17 @@ class Results:
                 {"target": entry["target"], **factor}
                 for entry in self.summary.get("ranking", [])
                 for factor in entry["factors"]
+            ]
+        )
+
+    @property
+    def start_map(self) -> pd.DataFrame:
+        """One row per cell and outcome of the start map."""
+        return pd.DataFrame(
+            [
+                {"across": cell["across"], "down": cell["down"], **outcome}
+                for cell in (self.summary.get("start_map") or {}).get("cells", [])
+                for outcome in cell["outcomes"]
             ]
         )
 

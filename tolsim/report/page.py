@@ -20,6 +20,7 @@ from tolsim.report.laws import law_section
 from tolsim.report.lot_chart import lot_chart
 from tolsim.report.mission_section import mission_section
 from tolsim.report.reel_section import reel_section
+from tolsim.report.start_section import start_section
 from tolsim.report.supply_chart import supply_chart
 from tolsim.report.tables import (
     case_rows,
@@ -70,6 +71,7 @@ def render(content: ReportInput) -> str:
         clean=[case for case in cases if fold and case["clean"]],
         stresses=stress_rows(summary),
         mission=mission_section(summary),
+        switching=start_section(summary),
         trims=trim_section(summary),
         limited=limited_stage_rows(summary),
         stage=stage_rows(summary),

@@ -11,6 +11,9 @@
     [prototype.NAME]                 readings of a built board, probe, its measured parts
     [trim.NAME]                      a part turned per unit until a reading meets its target
     [[transitions]]                  from, to, time, needs, stays_while, falls_back_to
+    [start_map]                      units switched on under pairs of values; see `study.starts`
+    [supply_contract]                how slow and how low the supply may be
+    [repeated_starts]                the same units switched on again and again
     [[limits]]                       figure, parts, at_most | at_least | share_of_rating, rule
 
 Quantities are texts with a unit of measure.  Every mistake of a file is told at once.
@@ -45,6 +48,7 @@ from tolsim.study.outline import Table, every_text, named_tables
 from tolsim.study.prototypes import read_prototypes
 from tolsim.study.reading import Reading
 from tolsim.study.recording import Recording
+from tolsim.study.starts import read_starts
 from tolsim.study.supplies import Recordings, supply_problems
 from tolsim.study.transitions import read_transitions
 from tolsim.study.trims import read_trims
@@ -79,6 +83,9 @@ class _Top(Frozen):
     trim: Mapping[str, Any] = {}
     prototype: Mapping[str, Any] = {}
     transitions: Any = ()
+    start_map: Any = None
+    supply_contract: Any = None
+    repeated_starts: Any = None
     limits: tuple[Any, ...] = ()
 
 
@@ -209,6 +216,7 @@ def read_study(
     trims = read_trims(outline, reading.problems)
     transitions = read_transitions(outline, raw.get("transitions"), reading.problems)
     prototypes = read_prototypes(outline, reading)
+    starts = read_starts(outline, reading)
     values = {name: state.values for name, state in states.items()}
     reading.problems += study_problems(outline)
     reading.problems += supply_problems(outline)
@@ -233,6 +241,7 @@ def read_study(
         trims=trims,
         transitions=transitions,
         prototypes=prototypes,
+        starts=starts,
         expected_frequency=top.expected_frequency,
         kind=top.kind,
     )

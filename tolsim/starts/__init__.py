@@ -1,0 +1,1 @@
+"""Questions about switching on: a map of starts, a contract with the supply, repeated starts."""
