@@ -12,10 +12,12 @@ from matplotlib.figure import Figure
 from matplotlib.patches import Rectangle
 
 from tolsim.answers.start_words import axis_title, axis_value, commonest_failure, good
+from tolsim.quantity import typeset
 from tolsim.report.charts import BLUE, INK, RUST, WIDTH, chart_style, svg
 
 ROW = 0.62  # inch
 MOST_WORDS = 5  # columns beside which a failure is written out
+DARK = 0.92  # share from which a cell is so dark that its text is white
 BAR = 0.12  # of a cell's height
 COLOURS = {  # told apart also without red and green; hatched besides
     "starts": (BLUE, ""),
@@ -47,10 +49,8 @@ def start_map_chart(entry: Mapping[str, Any]) -> Markup:
         for cell in entry["cells"]:
             x, y = across["values"].index(cell["across"]), down["values"].index(cell["down"])
             share = good(cell)["share"]
-            colour = shade(share)
-            axes.add_patch(Rectangle((x, y), 1, 1, fc=(*colour[:3], 0.85), ec="white", lw=2))
-            dark = share < 0.2 or share > 0.8  # noqa: PLR2004 - the ends of the colours
-            ink = "white" if dark else INK
+            axes.add_patch(Rectangle((x, y), 1, 1, fc=shade(share), ec="white", lw=2))
+            ink = "white" if share > DARK or share < 1.0 - DARK else INK
             failure = commonest_failure(cell)
             size = 11.5 if columns <= MOST_WORDS else 9.0
             said = f"{100 * share:.0f} %"
@@ -63,11 +63,8 @@ def start_map_chart(entry: Mapping[str, Any]) -> Markup:
             _bar(axes, x, y, cell)
         axes.set_xlim(0, columns)
         axes.set_ylim(rows, 0)
-        names = [axis_value(across, value) for value in across["values"]]
-        axes.set_xticks([k + 0.5 for k in range(columns)], names)
-        axes.set_yticks(
-            [k + 0.5 for k in range(rows)], [axis_value(down, value) for value in down["values"]]
-        )
+        axes.set_xticks([k + 0.5 for k in range(columns)], _ticks(across))
+        axes.set_yticks([k + 0.5 for k in range(rows)], _ticks(down))
         axes.tick_params(length=0, labelsize=10.5 if columns <= MOST_WORDS else 8.5)
         for side in axes.spines.values():
             side.set_visible(False)
@@ -79,6 +76,7 @@ def start_map_chart(entry: Mapping[str, Any]) -> Markup:
 def _bar(axes: Any, x: int, y: int, cell: Mapping[str, Any]) -> None:  # noqa: ANN401 - untyped
     """All outcomes of a cell as one stacked bar along its lower edge."""
     left = x + 0.06
+    axes.add_patch(Rectangle((left, y + 0.82), 0.88, BAR, fc="white", ec="white", lw=1.5))
     for outcome in cell["outcomes"]:
         width = 0.88 * outcome["share"]
         colour, hatch = COLOURS[outcome["outcome"]]
@@ -86,6 +84,10 @@ def _bar(axes: Any, x: int, y: int, cell: Mapping[str, Any]) -> None:  # noqa: A
             Rectangle((left, y + 0.82), width, BAR, fc=colour, ec="white", lw=0.4, hatch=hatch)
         )
         left += width
+
+
+def _ticks(axis: Mapping[str, Any]) -> list[str]:
+    return [typeset(axis_value(axis, value)) for value in axis["values"]]
 
 
 def _capital(text: str) -> str:
