@@ -107,8 +107,7 @@ FLOORS = [
     {"evaluation", "answers.summary", "answers.lines", "report.content", "report.tables"},
     {"report.laws", "report.bench"},
     {"report.charts"},
-    {"report.lot_chart", "report.trim_chart", "report.supply_chart"}
-    | {"report.start_map_chart"},
+    {"report.lot_chart", "report.trim_chart", "report.supply_chart"} | {"report.start_map_chart"},
     {"report.trim_section", "report.reel_section", "report.start_section"},
     {"report.page", "report.unit_picture", "report.table_picture"},
     {"report"},
