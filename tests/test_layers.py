@@ -29,8 +29,8 @@ FLOORS = [
     {"prototype", "answers.prototype_words"},
     {"design", "spread.datasheet", "spread.temperature", "spread.ageing", "spread.winding"},
     {"answers.bounds", "answers.counting"},
-    {"answers.mission"},
-    {"answers.mission_words"},
+    {"answers.mission", "answers.transitions"},
+    {"answers.mission_words", "answers.transition_words"},
     {"report.mission_section"},
     # the circuit: it knows the design, but neither studies nor spread
     {"circuit.devices"},
@@ -102,15 +102,16 @@ FLOORS = [
     {"nominals", "answers.provenance", "answers.trims", "answers.supply_words", "answers.ranking"},
     {"answers.lots", "answers.reel_words", "answers.trim_words", "trim.drawn"}
     | {"transitions.prepared"}
-    | {"report.lots"},
-    {"transitions.drawn"},
+    | {"report.lots", "report.ways"},
+    {"transitions.drawn", "transitions.envelope"},
     {"evaluation", "answers.summary", "answers.lines", "report.content", "report.tables"},
     {"report.laws", "report.bench"},
     {"report.charts"},
     {"report.lot_chart", "report.trim_chart", "report.supply_chart"} | {"report.start_map_chart"},
-    {"report.trim_section", "report.reel_section", "report.start_section"},
+    {"report.trim_section", "report.reel_section", "report.start_section"}
+    | {"report.transition_section"},
     {"report.page", "report.unit_picture", "report.table_picture"},
-    {"report"},
+    {"report", "unit_changes"},
     {"inputs"},
     # the corridor, and the faces
     {"crosscheck", "heatcheck", "presentation", "recheck", "solver_choice"},

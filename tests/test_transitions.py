@@ -11,6 +11,8 @@ import pandas as pd
 import pytest
 import quick_study
 
+from tolsim.answers.lines import summary_lines
+from tolsim.answers.transition_words import fate_words
 from tolsim.circuit.continuation import solve_units
 from tolsim.circuit.load_change.passage import Fate, travel_road
 from tolsim.circuit.orbit import Status
@@ -19,11 +21,13 @@ from tolsim.errors import StudyError
 from tolsim.evaluation import Plan, evaluate, solve_case
 from tolsim.library import find_study
 from tolsim.nominals import prepare
+from tolsim.run import run_study
 from tolsim.spread.sampling import draw, factors
 from tolsim.study import StudyFile, open_study
 from tolsim.transition import Requirement, Transition
 from tolsim.transitions.drawn import followed, tell_transitions
 from tolsim.transitions.prepared import prepared_changes, roads, starts
+from tolsim.unit_changes import transitions_of
 
 LOAD = """
 [parts.LAMP]
@@ -328,3 +332,61 @@ def test_units_of_shipped_studies_end_on_their_orbits(name, cycles):
     draws = draw(plan.factors, study.run.seed, 3, 2)
     for number in range(len(study.transitions)):
         assert arrival(plan, "room", number, draws, cycles) < 0.002
+
+
+# --- what is told -----------------------------------------------------------------------------
+
+
+@pytest.fixture(scope="module")
+def told(tmp_path_factory):
+    """A small run into a folder, every other unit followed."""
+    place = tmp_path_factory.mktemp("told")
+    path = place / "moving.toml"
+    path.write_text(study_text(share="50 %"), encoding="utf-8")
+    return run_study(path, units=6, out=place / "out", law_check=False, jobs=1)
+
+
+def test_summary_and_lines_tell_the_changes(told):
+    entry = told.summary["transitions"]
+    assert (entry["units"], entry["of"], entry["phases"]) == (3, 6, 1)
+    there = entry["changes"][0]
+    assert (there["from"], there["to"], there["condition"]) == ("lit", "full", "room")
+    assert there["needs"] == {"part": "L", "figure": "voltage_peak", "at_least": 200.0}
+    assert there["fates"] == [
+        {"fate": "arrives", "units": 3, "of": 3, "share": 1.0,
+         "low": pytest.approx(0.2924, abs=1e-3), "high": 1.0, "first_units": [0, 2, 4]}
+    ]  # fmt: skip
+    text = "\n".join(summary_lines(told.summary))
+    assert "integrated in time for 3 of 6 units" in text
+    assert "lit to full, in 1 us: 3 of 3 settle on their new orbit" in text
+    assert max(map(len, text.splitlines())) <= 80
+    assert list(told.transitions["fate"]) == ["arrives", "arrives"]
+
+
+def test_the_page_shows_the_changes(told):
+    page = (told.folder / "report.html").read_text(encoding="utf-8")
+    assert "<h2>When the load changes</h2>" in page
+    assert "QA drain, full to lit" in page
+    assert "integrated in\ntime for 3 of 6" in page or "in time for 3 of 6 units" in page
+
+
+@pytest.mark.slow
+def test_one_unit_can_be_looked_at(told):
+    """Its envelopes reach the peaks that stand in its row."""
+    envelopes = transitions_of(told.folder, 2)
+    assert [one.transition.title for one in envelopes] == ["lit to full", "full to lit"]
+    units = told.units.set_index(["state", "unit"])
+    for one in envelopes:
+        row = units.loc[(one.transition.after, 2)]
+        assert one.high["QA drain"].max() == pytest.approx(
+            row["QA.transition_drain_peak"], rel=3e-3
+        )
+        coil = max(one.high["L voltage"].max(), -one.low["L voltage"].min())
+        assert coil == pytest.approx(row["L.transition_voltage_peak"], rel=3e-3)
+        assert (np.diff(one.time) > 0).all()
+
+
+def test_words_of_fates_that_fail():
+    entry = {"fate": "does not ignite", "units": 2, "of": 500, "share": 0.004, "low": 0.0005,
+             "high": 0.0144, "first_units": [17, 230]}  # fmt: skip
+    assert fate_words(entry) == "2 of 500 do not ignite (0.050 to 1.4 %; unit 17, 230)"

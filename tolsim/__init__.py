@@ -27,6 +27,7 @@ _HOMES = {
     "open_study": "tolsim.study",
     "replay_unit": "tolsim.replay",
     "run_study": "tolsim.run",
+    "transitions_of": "tolsim.unit_changes",
 }
 
 __all__ = [
@@ -43,6 +44,7 @@ __all__ = [
     "open_study",
     "replay_unit",
     "run_study",
+    "transitions_of",
 ]
 
 

@@ -23,6 +23,7 @@ from tolsim.spread.sampling import Draws, draw, draw_chosen, tables_of
 from tolsim.spread.table import SpreadTable
 from tolsim.spread.words import assumptions
 from tolsim.study import StudyFile
+from tolsim.unit_changes import change_ways
 
 Floats = NDArray[np.float64]
 
@@ -30,10 +31,7 @@ WAVE_UNITS = 128  # enough for 5 % and 95 % bands
 BAND = (0.05, 0.95)
 
 NOT_MODELLED = (
-    (
-        "Power-on and load changes in time: start is judged by the modes at the bias point,"
-        " running by the steady orbit of each load state."
-    ),
+    "Changes of load that the study does not state: those states are judged by their orbits alone.",
     (
         "Ramp of a rail: read, but the supply counts as up. Where its limit is below the idle"
         " current, start is judged at the bias point that the limit leaves."
@@ -71,6 +69,7 @@ def report_content(plan: Plan, opened: StudyFile, results: Results) -> ReportInp
         not_modelled=NOT_MODELLED,
         cautions=CAUTIONS,
         lots=_lots_differ(study, opened.tables),
+        ways=tuple(change_ways(plan, results, reference_condition(study))),
         repeat_command=f"tolsim run study.toml --units {study.run.units} --seed {study.run.seed}",
     )
 

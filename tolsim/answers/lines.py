@@ -10,6 +10,7 @@ from tolsim.answers.lot_words import lot_sentences
 from tolsim.answers.mission_words import mission_sentences
 from tolsim.answers.reel_words import reel_sentences
 from tolsim.answers.start_words import map_sentences, map_table
+from tolsim.answers.transition_words import transition_sentences
 from tolsim.answers.trim_words import trim_sentences
 from tolsim.answers.wording import (
     failures,
@@ -45,6 +46,7 @@ def summary_lines(summary: Summary) -> list[str]:
         ("By lot, with 95 % intervals", _wrapped(lot_sentences(summary))),
         ("Over the mission, with 95 % intervals", _wrapped(mission_sentences(summary))),
         *_starts(summary),
+        ("When the load changes, with 95 % intervals", _wrapped(transition_sentences(summary))),
         ("Hardest driven: p99 over the limit, else over the rating", _stresses(summary)),
         ("What matters: share of variance, 95 % interval", _factors(summary)),
         ("Guessed laws", _laws(summary.get("law_check") or {})),

@@ -42,6 +42,13 @@ not known (an interval that this many units cannot close).  Every `low`, `high` 
                 [{part, figure, units, missing, mean {p50, p95} (over the hours), highest {p50,
                 p95}, equivalent_hours {p50, p95} (at `reference`, or null)}], reference (degC),
                 activation_energy (eV)}
+``transitions`` {} unless the study states changes of load; else {share (of the units that are to
+                be followed in time), units (that were), of, phases (moments of the cycle each),
+                changes [{number, from, to, time (s), condition, needs, stays_while ({part, figure,
+                at_least} or null), fates [{fate, units, of, share, low, high, first_units}]}]}.
+                What a rule tells ("does not ignite", "falls back", "not reached") is known of all
+                units, the rest ("arrives", "dies", "ends elsewhere", "undecided") of those
+                followed.  Peaks and energies stand among `figures`, in the state that is reached
 ``cases``       [{condition, state, and all keys of `yield` but for that case alone}]
 ``outcomes``    [{condition, state, outcome, units, share, low, high, first_units, failed,
                 no_limit_broken {units, first_units}}]; `failed` counts those of them that
@@ -250,6 +257,17 @@ class Results:
                 row[f"{name}_low"], row[f"{name}_high"] = low, high
             rows.append(row)
         return pd.DataFrame(rows)
+
+    @property
+    def transitions(self) -> pd.DataFrame:
+        """One row per change of load, condition and fate."""
+        return pd.DataFrame(
+            [
+                {key: value for key, value in change.items() if key != "fates"} | fate
+                for change in self.summary.get("transitions", {}).get("changes", [])
+                for fate in change["fates"]
+            ]
+        )
 
     @property
     def ranking(self) -> pd.DataFrame:

@@ -18,6 +18,7 @@ from tolsim.answers.lots import lots_entry
 from tolsim.answers.mission import mission_entry
 from tolsim.answers.ranking import rankings
 from tolsim.answers.supply_words import supply_entries
+from tolsim.answers.transitions import transitions_entry
 from tolsim.answers.trims import trim_record
 from tolsim.answers.unit_files import Columns, UnitRows
 from tolsim.design import Study
@@ -84,6 +85,7 @@ def summarise(
         "figures": _figures(study, rows, nominal, counting),
         "trim": trim_record(study, rows, nominal, counting.interval),
         "mission": mission_entry(study, rows, counting, nominal),
+        "transitions": transitions_entry(study, rows),
         "lots": lots_entry(study, rows, unit_failed, unit_undecided),
         "ranking": rankings(study, rows, factors, unit_failed, unit_undecided),
         "quality": dict(quality) | sampling_note(study.run.sampling),

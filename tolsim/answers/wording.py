@@ -111,6 +111,8 @@ class Failure:
 def outcome_words(entry: Mapping[str, Any]) -> str:
     """Outcome as said of its units: "1 starts only with a kick", "3 start only with a kick"."""
     verb, _, rest = entry["outcome"].partition(" ")
+    if verb == "does" and entry["units"] != 1:
+        return f"do {rest}"
     if verb not in {"starts", "runs"} and entry["outcome"] != "dies away":
         return str(entry["outcome"])
     if entry["units"] != 1:

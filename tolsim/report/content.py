@@ -15,6 +15,7 @@ from tolsim.answers.unit_files import UnitRows
 from tolsim.design import Rail, Study
 from tolsim.figure_names import FIGURES
 from tolsim.report.lots import LotStrips, lot_strips
+from tolsim.report.ways import Way
 
 Floats = NDArray[np.float64]
 
@@ -106,6 +107,8 @@ class ReportInput:
         True if units differ by what a whole lot of parts shares.
     rails : mapping of str to Rail
         The supplies of the study.
+    ways : tuple of Way
+        Voltages along the changes of load.
     strips : LotStrips or None
         A figure lot by lot, if the study says how units share reels.
     """
@@ -127,6 +130,7 @@ class ReportInput:
     lots: bool
     rails: Mapping[str, Rail]
     strips: LotStrips | None
+    ways: tuple[Way, ...] = ()
 
 
 def report_input(
@@ -140,6 +144,7 @@ def report_input(
     cautions: Sequence[str] = (),
     repeat_command: str = "",
     lots: bool = False,
+    ways: Sequence[Way] = (),
 ) -> ReportInput:
     """Gather the content of the report from the results of a run.
 
@@ -176,6 +181,7 @@ def report_input(
         study_text=results.study_text,
         lots=lots,
         rails=study.design.rails,
+        ways=tuple(ways),
         strips=lot_strips(study, rows, results.summary),
     )
 

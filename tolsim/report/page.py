@@ -32,6 +32,7 @@ from tolsim.report.tables import (
     start_sentences,
     stress_rows,
 )
+from tolsim.report.transition_section import transition_section
 from tolsim.report.trim_section import trim_section
 
 MOST_TILES = 2000
@@ -72,6 +73,7 @@ def render(content: ReportInput) -> str:
         stresses=stress_rows(summary),
         mission=mission_section(summary),
         switching=start_section(summary),
+        transitions=transition_section(summary, content.ways),
         trims=trim_section(summary),
         limited=limited_stage_rows(summary),
         stage=stage_rows(summary),
