@@ -92,7 +92,7 @@ FLOORS = [
     # the door for study files
     {"study.outline", "study.recording", "study.markings"},
     {"study.nets", "study.limits", "study.checks", "study.lots", "study.supplies"}
-    | {"study.mission"},
+    | {"study.mission", "study.mark_check"},
     {"study.trims", "study.transitions"},
     {"study.reading"},
     {"study.prototypes", "study.starts"},

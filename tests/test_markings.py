@@ -54,6 +54,29 @@ def test_class_2_codes_and_marks_without_letters(tmp_path):
 def test_a_table_named_beside_the_mark_wins(tmp_path):
     found = opened(tmp_path, 'marking = "302J C0G"\nspread = "class1-ceramic-1pct"')
     assert found.study.design.parts["CA"].spread == "class1-ceramic-1pct"
+    assert found.warnings[0] == (
+        'study.toml [parts.CA] marking: tolerance -5 to 5 % by the mark "302J C0G", -1 to 1 % by'
+        " the table class1-ceramic-1pct. The table is followed; drop spread to follow the mark."
+    )
+
+
+@pytest.mark.parametrize(
+    ("marking", "spread", "words"),
+    [
+        ("302J C0G", "class1-ceramic-5pct", []),
+        ("302J", "class1-ceramic-n750-5pct", []),  # a mark without a code says nothing of slopes
+        ("302J C0G", "class1-ceramic-n750-5pct", ["change at -20 degC -0.13"]),
+        ("302K X7R", "class2-ceramic-x7r-10pct", []),
+        ("302M X7R", "class1-ceramic-5pct", ["tolerance -20 to 20 %", "change at"]),
+        ("302K", "example-measured-film", []),  # measured, and within what the mark promises
+    ],
+)
+def test_marks_that_contradict_their_table_are_told(tmp_path, marking, spread, words):
+    found = opened(tmp_path, f'marking = "{marking}"\nspread = "{spread}"')
+    told = [warning for warning in found.warnings if "parts.CA]" in warning]
+    assert len(told) == len(words)
+    for warning, part in zip(told, words, strict=True):
+        assert part in warning
 
 
 def test_all_wrong_marks_are_told_at_once(tmp_path):

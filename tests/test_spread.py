@@ -5,7 +5,7 @@ import hashlib
 import pytest
 from small_study import TABLES, capacitor, everything, mosfet, study, tables
 
-from tolsim.design import Condition, State
+from tolsim.design import State
 from tolsim.laws import StudentT
 from tolsim.parts import Coupling
 from tolsim.spread.checks import check_spread
@@ -175,7 +175,6 @@ def test_a_sound_study_passes_the_checks():
 
 
 def test_mistakes_of_a_study():
-    wide = {"law": "uniform", "low": "20 degC"}
     sheet = {
         "threshold": {"typical": 3.0, "current": 250e-6},
         "transfer": {"current": 10.0, "gate_voltage": 3.01},
@@ -206,11 +205,9 @@ tolerance = {law = "uniform", half_width = "10 %"}
             "Q1": mosfet(sheet=sheet),
         },
         states={"far": State(), "near": State(values={"K1.coupling": 0.95})},
-        conditions={"room": Condition(ambient=wide)},
     )
     problems = check_spread(given, tables() | tables(half_pf), "s.toml")
     assert [(problem.table, problem.key) for problem in problems] == [
-        ("conditions.room", "ambient.high"),
         ("parts.Q1.sheet", "transfer"),
         ("parts.C2", "spread"),
         ("parts.C3", "spread"),

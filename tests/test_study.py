@@ -255,3 +255,26 @@ def test_any_line_may_be_spoilt(number, line):
 )
 def test_any_value_may_be_spoilt(number, value):
     read_or_refused(number, f"{LINES[number].split(' = ')[0]} = {value}")
+
+
+def test_mistakes_of_every_sort_are_told_together(tmp_path):
+    """Slips in laws, pairs and reels are told although others keep the study from being read."""
+    (tmp_path / "mine.toml").write_text(
+        '[table.c-5]\ntitle = "Mine"\nfor = "capacitr"\nbasis = "guess"\nsource = "a test"\n'
+        '[table.c-5.capacitance]\ntolerance = {law = "unifrm", half_width = "5 %"}\n'
+        "ageing = 3\n",
+        encoding="utf-8",
+    )
+    lines = ['capacitance = "1 nF"', 'spread = "film-pp-5pct"', 'matched_with = "C9"']
+    lines += ['match = {capacitance = "1 %"}']
+    text = GOOD + added("CX", "capacitor", '["vdd", "gnd"]', *lines)
+    text = re.sub(r"seed = \d+", "seed = -1", text)
+    (tmp_path / "stage.toml").write_text(text, encoding="utf-8")
+    with pytest.raises(StudyError) as caught:
+        open_study(tmp_path / "stage.toml")
+    told = [(problem.table, problem.key) for problem in caught.value.problems]
+    assert ("parts.CX", "matched_with") in told
+    assert ("run", "seed") in told
+    assert ("table.c-5", "for") in told
+    assert ("table.c-5.capacitance", "tolerance.law") in told
+    assert ("table.c-5.capacitance", "ageing.law") in told

@@ -5,7 +5,7 @@ That the tables named exist and fit the kind of part is checked before (`tolsim.
 
 from __future__ import annotations
 
-from collections.abc import Iterator, Mapping
+from collections.abc import Collection, Iterator, Mapping
 
 from tolsim.design import Study
 from tolsim.errors import Mistake, Problem
@@ -13,22 +13,29 @@ from tolsim.parts import Inductor, Mosfet
 from tolsim.spread.datasheet import device_parameters
 from tolsim.spread.matching import matching_problems
 from tolsim.spread.reading import UNITS
-from tolsim.spread.sampling import CONDITION_UNITS, condition_law, tables_of
+from tolsim.spread.sampling import tables_of
 from tolsim.spread.table import QuantitySpread, SpreadTable
 from tolsim.spread.winding import shape_of
 
 
-def check_spread(study: Study, tables: Mapping[str, SpreadTable], file: str) -> list[Problem]:
-    """Mistakes in how a study uses spread tables, reels, datasheet rows and condition laws.
+def check_spread(
+    study: Study,
+    tables: Mapping[str, SpreadTable],
+    file: str,
+    unread: Collection[str] = (),
+) -> list[Problem]:
+    """Mistakes in how a study uses spread tables, reels and datasheet rows.
 
     Parameters
     ----------
     study : Study
-        Checked otherwise; every spread table it names exists.
+        What could be read of it; its spread tables exist, or their absence is told elsewhere.
     tables : mapping
-        All tables the study can name.
+        All sound tables the study can name.
     file : str
         Name of the study file, for the messages.
+    unread : collection of str
+        Parts with mistakes of their own, which are not in `study`.
 
     Returns
     -------
@@ -36,26 +43,12 @@ def check_spread(study: Study, tables: Mapping[str, SpreadTable], file: str) -> 
         Empty if all is well.
     """
     return [
-        *_conditions(study, file),
         *_datasheets(study, file),
-        *_reels(study, file),
+        *_reels(study, tables, file),
         *_reach(study, tables, file),
         *_shapes(study, tables, file),
-        *matching_problems(study, tables, file),
+        *matching_problems(study, tables, file, unread),
     ]
-
-
-def _conditions(study: Study, file: str) -> Iterator[Problem]:
-    """Every law a condition states can be read."""
-    for name, condition in study.conditions.items():
-        for quantity, unit in CONDITION_UNITS.items():
-            given = getattr(condition, quantity)
-            if isinstance(given, Mapping):
-                try:
-                    condition_law(given, unit)
-                except Mistake as mistake:
-                    key = ".".join(word for word in (quantity, mistake.key) if word)
-                    yield _problem(mistake, file, f"conditions.{name}", key)
 
 
 def _datasheets(study: Study, file: str) -> Iterator[Problem]:
@@ -72,14 +65,15 @@ def _problem(mistake: Mistake, file: str, table: str, key: str) -> Problem:
     return Problem(file, table, key, mistake.got, mistake.expected, mistake.nearest, mistake.cure)
 
 
-def _reels(study: Study, file: str) -> Iterator[Problem]:
+def _reels(study: Study, tables: Mapping[str, SpreadTable], file: str) -> Iterator[Problem]:
     """Parts of one reel are the same purchase, so they follow the same table."""
     first: dict[str, tuple[str, str | None]] = {}
     for reference, part in study.design.parts.items():
         if part.reel is None:
             continue
         other, table = first.setdefault(part.reel, (reference, part.spread))
-        if part.spread != table:
+        unknown = {part.spread, table} - tables.keys() - {None}  # which is told elsewhere
+        if part.spread != table and not unknown:
             yield Problem(
                 file,
                 f"parts.{reference}",
@@ -96,7 +90,7 @@ def _shapes(study: Study, tables: Mapping[str, SpreadTable], file: str) -> Itera
         if not isinstance(part, Inductor):
             continue
         known = shape_of(part)
-        for name in tables_of(study, reference):
+        for name in filter(tables.__contains__, tables_of(study, reference)):
             laws = [quantity for quantity in part.SHAPE if quantity in tables[name].quantities]
             missing = [quantity for quantity in laws if quantity not in known]
             if missing:
@@ -113,7 +107,7 @@ def _shapes(study: Study, tables: Mapping[str, SpreadTable], file: str) -> Itera
 def _reach(study: Study, tables: Mapping[str, SpreadTable], file: str) -> Iterator[Problem]:
     """No spread may make a value negative, or couple two coils fully."""
     for reference in study.design.parts:
-        for name in tables_of(study, reference):
+        for name in filter(tables.__contains__, tables_of(study, reference)):
             for quantity, spread in tables[name].quantities.items():
                 for value in _nominals(study, reference, quantity):
                     low, high = _ends(spread, value)

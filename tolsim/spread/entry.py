@@ -102,20 +102,22 @@ class Entry:
         kinds = self._kinds(entry.get("for"))
         origin = self._origin(entry, None, "")
         title = self._text(entry, "title", "")
-        allowed = tuple(dict.fromkeys(q for kind in kinds for q in QUANTITIES[kind]))
+        likely = kinds or tuple(QUANTITIES)  # whatever it is for, its laws shall be read
+        allowed = tuple(dict.fromkeys(q for kind in likely for q in QUANTITIES[kind]))
         quantities: dict[str, QuantitySpread] = {}
         for key, value in entry.items():
             if key in _HEAD:
                 continue
-            if key not in allowed and kinds:
+            if key not in allowed:
                 self._unknown(key, (*_HEAD, *allowed), "")
             elif not isinstance(value, Mapping):
                 self.report(Mistake("a table of laws", key=key, got=f"{value!r}"))
-            elif kinds:
-                quantities[key] = self._quantity(key, value, kinds, origin)
+            else:
+                having = kinds or tuple(kind for kind in likely if key in QUANTITIES[kind])
+                quantities[key] = self._quantity(key, value, having, origin)
         for mistake in dependence_mistakes(quantities):
             self.report(mistake)
-        if not quantities and kinds and len(self.problems) == before:
+        if not quantities and len(self.problems) == before:
             self.report(Mistake("laws for at least one of " + ", ".join(allowed), got="none"))
         if len(self.problems) > before:
             return None

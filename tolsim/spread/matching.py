@@ -10,7 +10,7 @@ scatter within the lot.
 
 from __future__ import annotations
 
-from collections.abc import Iterator, Mapping
+from collections.abc import Collection, Iterator, Mapping
 
 from tolsim.design import Rail, Study
 from tolsim.errors import Mistake, Problem, nearest_name
@@ -76,11 +76,16 @@ def _nominal(part: Part, quantity: str, spread: QuantitySpread) -> float:
 
 
 def matching_problems(
-    study: Study, tables: Mapping[str, SpreadTable], file: str
+    study: Study, tables: Mapping[str, SpreadTable], file: str, unread: Collection[str] = ()
 ) -> Iterator[Problem]:
-    """Pairs that cannot be had: other parts, other reels, quantities without scatter."""
+    """Pairs that cannot be had: other parts, other reels, quantities without scatter.
+
+    Of pairs with parts that are `unread`, for mistakes of their own, nothing is said.
+    """
     for reference, part in study.design.parts.items():
         if part.matched_with is None and part.match is None:
+            continue
+        if part.matched_with in unread:
             continue
         place = f"parts.{reference}"
         for mistake in _of_pair(study, tables, reference, part):
@@ -114,17 +119,26 @@ def _of_pair(
     if part.reel is None or part.reel != mate.reel:
         cure = "Pairs are picked from one reel: give both parts the same reel."
         yield Mistake(f'"{mate.reel}"', cure, key="reel", got=f'"{part.reel}"')
+    if {part.spread, mate.spread} - tables.keys() - {None}:  # unknown, or with mistakes: told there
+        return
     if part.spread is None or part.spread != mate.spread:
         got, want = f'"{part.spread}"', f'"{mate.spread}", as {part.matched_with}'
         yield Mistake(want, key="spread", got=got)
         return
+    yield from _of_mates(study, tables[part.spread], reference, part, mate)
+
+
+def _of_mates(
+    study: Study, table: SpreadTable, reference: str, part: AnyPart, mate: AnyPart
+) -> Iterator[Mistake]:
+    """Mistakes of two parts that follow one table."""
     if any(reference in s.spread or part.matched_with in s.spread for s in study.states.values()):
         yield Mistake("one table in all load states", key="matched_with", got="a table per state")
     if isinstance(part, Capacitor) and max(part.pieces, getattr(mate, "pieces", 1)) > 1:
         yield Mistake("single parts, not banks", key="matched_with", got="pieces in parallel")
     try:
-        if bin_widths(part, tables[part.spread]) != bin_widths(
-            mate.model_copy(update={"match": part.match}), tables[part.spread]
+        if bin_widths(part, table) != bin_widths(
+            mate.model_copy(update={"match": part.match}), table
         ):
             yield Mistake("parts of the same nominal value", key="matched_with", got="others")
     except Mistake as mistake:

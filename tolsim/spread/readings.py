@@ -330,7 +330,7 @@ def _value(cell: str, own: str, unit: str, line: int, note: Tell) -> float | Non
     try:
         return quantity.read(f"{number} {measure}".strip(), unit)
     except Mistake as mistake:
-        note(line, Mistake(mistake.expected, mistake.cure, got=f'"{cell} {own}"'.strip()))
+        note(line, Mistake(mistake.expected, mistake.cure, got=f'"{cell}"'))
         return None
 
 

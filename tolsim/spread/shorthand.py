@@ -9,6 +9,7 @@
 from __future__ import annotations
 
 from collections.abc import Collection, Mapping
+from itertools import pairwise
 from typing import Final
 
 from tolsim import quantity
@@ -94,6 +95,12 @@ def as_deviations(
         except Mistake as mistake:
             cure = mistake.cure or "Write all values of a window in the same way."
             report(Mistake(mistake.expected, cure, key, f'"{value}"'))
+            sound = False
+    stated = [key for key in _WINDOW if key in values]
+    for lower, upper in pairwise(stated):
+        if values[lower] > values[upper]:
+            expected = f"a value above {lower} = {words[lower]}"
+            report(Mistake(expected, key=upper, got=f'"{words[upper]}"'))
             sound = False
     if not sound:
         return None

@@ -23,7 +23,7 @@ from __future__ import annotations
 
 import re
 import tomllib
-from collections.abc import Collection, Iterable, Mapping
+from collections.abc import Callable, Collection, Iterable, Mapping
 from dataclasses import dataclass, field
 from pathlib import Path
 from typing import Annotated, Any, Literal
@@ -41,6 +41,7 @@ from tolsim.spread.table import SpreadTable
 from tolsim.study.checks import coupling_problems, study_problems
 from tolsim.study.limits import limit_problems
 from tolsim.study.lots import lot_problems
+from tolsim.study.mark_check import mark_warnings
 from tolsim.study.markings import expanded
 from tolsim.study.mission import mission_problems
 from tolsim.study.nets import net_problems
@@ -53,7 +54,9 @@ from tolsim.study.supplies import Recordings, supply_problems
 from tolsim.study.transitions import read_transitions
 from tolsim.study.trims import read_trims
 
-_CONDITION_UNITS = {"ambient": "degC", "supply": "1", "age": "h"}
+Further = Callable[[Study, Collection[str]], list[Problem]]
+"""Checks of a study as far as it could be read, and the names of parts that could not be."""
+
 _PLACE = re.compile(r" \(at (line \d+, column \d+|end of document)\)$")
 
 
@@ -102,7 +105,8 @@ class StudyFile:
     tables : mapping of str to SpreadTable
         Every spread table the study could name.
     warnings : tuple of str
-        Mistakes in spread tables within reach that the study does not use.
+        Mistakes in spread tables within reach that the study does not use; marks that
+        contradict the table named beside them.
     recordings : mapping of str to Recording
         Recorded ramps of supplies, by path in the study's folder.
     """
@@ -162,16 +166,21 @@ def open_study(path: Path | str, tables_dir: Path | str | None = None) -> StudyF
     if used - kinds.keys():  # it may be in a file that could not be read
         broken += shelf.loose
     recordings = Recordings(path.parent)
+    marked = expanded(raw, path.name)
+    tables = shelf.tables | marked.tables
+
+    def of_spread(study: Study, unread: Collection[str]) -> list[Problem]:
+        return check_spread(study, tables, path.name, unread)
+
     try:
-        study = read_study(text, kinds, path.name, recordings)
+        study = read_study(text, kinds, path.name, recordings, of_spread)
     except StudyError as error:
         raise StudyError([*error.problems, *broken]) from None
-    tables = shelf.tables | expanded(raw, path.name).tables
-    problems = broken or check_spread(study, tables, path.name)
-    if problems:
-        raise StudyError(problems)
-    warnings = tuple(problem.sentence() for problem in shelf.unused(texts))
-    return StudyFile(study, text, tables, warnings, recordings.read)
+    if broken:
+        raise StudyError(broken)
+    warnings = [problem.sentence() for problem in shelf.unused(texts)]
+    warnings += mark_warnings(marked.beside, tables, path.name)
+    return StudyFile(study, text, tables, tuple(warnings), recordings.read)
 
 
 def read_study(
@@ -179,6 +188,7 @@ def read_study(
     tables: Mapping[str, Collection[str]],
     file: str = "study",
     recordings: Recordings | None = None,
+    further: Further | None = None,
 ) -> Study:
     """Read and check the text of a study.
 
@@ -192,6 +202,8 @@ def read_study(
         File name for messages.
     recordings : Recordings, optional
         Where files that the study names are read; the current folder if not given.
+    further : callable, optional
+        More checks, of what could be read; also told which parts could not.
 
     Returns
     -------
@@ -226,25 +238,29 @@ def read_study(
     reading.problems += lot_problems(outline, raw.get("lots"))
     ages = {name: c.age for name, c in conditions.items() if isinstance(c.age, float)}
     reading.problems += mission_problems(outline, top.mission if top else None, ages)
-    if reading.problems or top is None:
-        raise StudyError(_in_file_order(reading.problems, raw))
-    return Study(
-        title=top.title,
-        scenario=top.scenario,
-        design=Design(parts=parts, rails=rails, leak=top.leak),
+    given = top or _Top(title="")
+    study = Study(
+        title=given.title,
+        scenario=given.scenario,
+        design=Design(parts=parts, rails=rails, leak=given.leak),
         states=states,
         conditions=conditions,
         limits=limits,
-        run=top.run,
-        lots=top.lots,
-        mission=top.mission,
+        run=given.run,
+        lots=given.lots,
+        mission=given.mission,
         trims=trims,
         transitions=transitions,
         prototypes=prototypes,
         starts=starts,
-        expected_frequency=top.expected_frequency,
-        kind=top.kind,
+        expected_frequency=given.expected_frequency,
+        kind=given.kind,
     )
+    if further is not None:
+        reading.problems += further(study, outline.parts.keys() - parts.keys())
+    if reading.problems:
+        raise StudyError(_in_file_order(reading.problems, raw))
+    return study
 
 
 def _parsed(text: str, file: str) -> dict[str, Any]:

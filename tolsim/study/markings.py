@@ -23,6 +23,29 @@ KEY: Final = "marking"
 _VALUE: Final = {"capacitor": ("capacitance", "F"), "resistor": ("resistance", "ohm")}
 
 
+@dataclass(frozen=True)
+class Beside:
+    """A mark of a part that also names a spread table.
+
+    Attributes
+    ----------
+    text, quantity : str
+        The mark, and what it is a value of.
+    value : float
+        That value, SI.
+    named : str
+        The table the part follows.
+    table : SpreadTable
+        What it would follow by the mark.
+    """
+
+    text: str
+    quantity: str
+    value: float
+    named: str
+    table: SpreadTable
+
+
 @dataclass
 class Expanded:
     """A study with values and spread tables in place of marks.
@@ -35,11 +58,14 @@ class Expanded:
         Spread tables made from marks, by name.
     problems : list of Problem
         Marks that cannot be read.
+    beside : dict
+        Marks of parts that name a table as well, by reference.
     """
 
     raw: dict[str, Any]
     tables: dict[str, SpreadTable] = field(default_factory=dict)
     problems: list[Problem] = field(default_factory=list)
+    beside: dict[str, Beside] = field(default_factory=dict)
 
 
 @dataclass(frozen=True)
@@ -87,8 +113,13 @@ def _part(ref: str, part: object, found: Expanded, file: str) -> object:
         return rest
     name, unit = _VALUE[kind]
     rest[name] = f"{mark.value:.12g} {unit}"
-    if "spread" not in part and (mark.tolerance or mark.temperature):
-        table = _table(kind, str(part[KEY]), mark)
+    if not (mark.tolerance or mark.temperature):
+        return rest
+    text = str(part[KEY])
+    table = _table(kind, text, mark)
+    if "spread" in part:
+        found.beside[ref] = Beside(text, name, mark.value, str(part["spread"]), table)
+    else:
         found.tables[table.name] = table
         rest["spread"] = table.name
     return rest
