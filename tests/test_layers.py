@@ -29,9 +29,9 @@ FLOORS = [
     {"prototype", "answers.prototype_words"},
     {"design", "spread.datasheet", "spread.temperature", "spread.ageing", "spread.winding"},
     {"answers.bounds", "answers.counting"},
-    {"answers.mission", "answers.transitions"},
-    {"answers.mission_words", "answers.transition_words"},
-    {"report.mission_section"},
+    {"answers.mission", "answers.power_on", "answers.transitions"},
+    {"answers.mission_words", "answers.power_on_words", "answers.transition_words"},
+    {"report.mission_section", "report.power_on_section"},
     # the circuit: it knows the design, but neither studies nor spread
     {"circuit.devices"},
     {"circuit.supply_ramp"}

@@ -12,6 +12,7 @@ import numpy as np
 import pandas as pd
 from numpy.typing import NDArray
 
+from tolsim.answers.power_on import SURE_MARGIN_DB
 from tolsim.answers.unit_files import UnitFiles, UnitRows
 from tolsim.circuit.bulk.choice import Choice, shot_in_blocks
 from tolsim.circuit.continuation import solve_units
@@ -32,7 +33,6 @@ from tolsim.trim.drawn import trim_draws
 from tolsim.trim.session import Trimmed, idle_voltages, joined, trim_figures, trim_outcomes
 from tolsim.verdicts import judge, overruled
 
-SURE_MARGIN_DB = 1.5  # start margin from which a growing unit with an orbit is taken to start
 MOST_IMBALANCE = 0.02  # of the input power, between it and all losses
 
 

@@ -33,8 +33,8 @@ BAND = (0.05, 0.95)
 NOT_MODELLED = (
     "Changes of load that the study does not state: those states are judged by their orbits alone.",
     (
-        "Ramp of a rail: read, but the supply counts as up. Where its limit is below the idle"
-        " current, start is judged at the bias point that the limit leaves."
+        "Power-on in time of every unit: only doubtful ones and a share of the others are switched"
+        " on, with cold junctions; the others are judged by their modes and orbits."
     ),
     "Stray inductance and capacitance that the study does not list as parts.",
     "Core loss beyond a constant series resistance, proximity effect that changes with frequency.",

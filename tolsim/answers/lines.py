@@ -8,6 +8,7 @@ from typing import Any
 
 from tolsim.answers.lot_words import lot_sentences
 from tolsim.answers.mission_words import mission_sentences
+from tolsim.answers.power_on_words import power_on_sentences
 from tolsim.answers.reel_words import reel_sentences
 from tolsim.answers.start_words import map_sentences, map_table
 from tolsim.answers.transition_words import transition_sentences
@@ -42,6 +43,7 @@ def summary_lines(summary: Summary) -> list[str]:
     lines = textwrap.wrap(verdict_sentence(summary), WIDTH)
     for heading, body in (
         ("Failing units (one unit may appear in several rows)", _failures(summary)),
+        ("Switched on in time", _wrapped(power_on_sentences(summary))),
         ("Trimmed at the bench", _wrapped(trim_sentences(summary))),
         ("By lot, with 95 % intervals", _wrapped(lot_sentences(summary))),
         ("Over the mission, with 95 % intervals", _wrapped(mission_sentences(summary))),

@@ -32,6 +32,14 @@ not known (an interval that this many units cannot close).  Every `low`, `high` 
                 fails), low, high, independent (the same for boards of many lots)}],
                 between [{target, title, share (of its variance that lies between lots), low,
                 high}], independent {low, high} (the yield interval if units shared nothing)}
+``power_on``    {} if no unit was switched on in time; else {share (of the units that look sure to
+                start, integrated nevertheless), units, of_units, cases [{condition, state, units
+                (integrated), in_doubt, sure, sure_failed, fates [{fate ("starts", "latched",
+                "dies", "bursts", "other swing", "undecided"), units, first_units}], time {units,
+                p5, p50,
+                p95, interval} (s, from power-on to 90 % of the swing)}], sure_failed (units),
+                warning (of them), latched {} or {units, first_units, current {median, highest},
+                shortest_damage_time, never_damaged, trip_time, saved_by_trip}}
 ``mission``     {} unless the study states one; else {years, hours (of running), cases [{condition,
                 state, hours, share}], power [{figure (mean_input_power, mean_output_power,
                 energy_per_year), unit_of_measure, nominal, units, missing (without an orbit in

@@ -16,6 +16,7 @@ from tolsim.answers.bounds import Bound, applies, bounds, named_figure, rating_o
 from tolsim.answers.counting import Counting, sampling_note
 from tolsim.answers.lots import lots_entry
 from tolsim.answers.mission import mission_entry
+from tolsim.answers.power_on import power_on_entry
 from tolsim.answers.ranking import rankings
 from tolsim.answers.supply_words import supply_entries
 from tolsim.answers.transitions import transitions_entry
@@ -84,6 +85,7 @@ def summarise(
         "limits": _limits(study, rows, counting),
         "figures": _figures(study, rows, nominal, counting),
         "trim": trim_record(study, rows, nominal, counting.interval),
+        "power_on": power_on_entry(study, rows, counting),
         "mission": mission_entry(study, rows, counting, nominal),
         "transitions": transitions_entry(study, rows),
         "lots": lots_entry(study, rows, unit_failed, unit_undecided),

@@ -20,7 +20,10 @@ from numpy.typing import NDArray
 
 from tolsim.errors import RequestError
 
-KEY_COLUMNS = ("unit", "condition", "state", "verdict", "outcome", "failed_limits", "status")
+KEY_COLUMNS = (
+    *("unit", "condition", "state", "verdict", "outcome", "failed_limits", "status"),
+    "power_on",
+)
 
 
 class Columns(Protocol):

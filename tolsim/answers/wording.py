@@ -217,6 +217,12 @@ def doubts(summary: Summary) -> list[str]:
             f"Warning: {again['units'] - again['agreed']} of {again['units']} units solved again"
             f" in the time domain came out differently{by}; more steps_per_cycle may cure it."
         )
+    switched = summary.get("power_on") or {}
+    if switched.get("warning"):
+        found.append(
+            f"Warning: {switched['sure_failed']} units that looked sure to start did not when"
+            " switched on in time."
+        )
     return found
 
 

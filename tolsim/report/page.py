@@ -19,6 +19,7 @@ from tolsim.report.content import FAIL, PASS, UNDECIDED, ReportInput
 from tolsim.report.laws import law_section
 from tolsim.report.lot_chart import lot_chart
 from tolsim.report.mission_section import mission_section
+from tolsim.report.power_on_section import power_on_section
 from tolsim.report.reel_section import reel_section
 from tolsim.report.start_section import start_section
 from tolsim.report.supply_chart import supply_chart
@@ -75,6 +76,7 @@ def render(content: ReportInput) -> str:
         switching=start_section(summary),
         transitions=transition_section(summary, content.ways),
         trims=trim_section(summary),
+        power_on=power_on_section(summary),
         limited=limited_stage_rows(summary),
         stage=stage_rows(summary),
         others=other_rows(summary),
