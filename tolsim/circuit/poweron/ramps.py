@@ -40,7 +40,7 @@ class Shortened:
     ratio: Floats  # (N,) compressed time over real time after the knee, at most 1
 
     def real_time(self, time: Floats) -> Floats:
-        """Real time of a moment on the compressed clock, (N,) s; beyond the ramps both run alike."""
+        """Real time of a moment on the compressed clock, (N,) s; past the ramps both run alike."""
         up = np.maximum(self.ramps.up, self.knee)
         inside = self.knee + (np.minimum(time, up) - self.knee) / self.ratio
         return np.where(time <= self.knee, time, inside + np.maximum(time - up, 0.0))
