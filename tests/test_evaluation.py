@@ -106,4 +106,5 @@ def test_without_spread_the_yield_is_all_or_nothing(tmp_path, monkeypatch, share
             continue
         assert entry["p50"] == pytest.approx(entry["nominal"], rel=TOLERANCE, abs=1e-9), entry
         name = f"{entry['part']}.{entry['figure']}" if entry["part"] else entry["figure"]
-        assert np.ptp(results.units[name]) <= 1e-9 * abs(entry["nominal"]), name
+        known = results.units[name].dropna()  # a share of the units is switched on in time
+        assert np.ptp(known) <= 1e-9 * abs(entry["nominal"]), name

@@ -14,6 +14,7 @@ from tolsim.answers import wording
 from tolsim.answers.summary import summarise
 from tolsim.answers.unit_files import FrameColumns
 from tolsim.circuit.orbit import Status
+from tolsim.circuit.poweron.fates import Fate
 from tolsim.design import Condition, Design, Limit, Rail, Run, State, Study
 from tolsim.parts import DeviceModel, Mosfet, Rating
 from tolsim.verdicts import CaseVerdicts, judge, overruled
@@ -79,7 +80,7 @@ ROWS = (
     Row("runs", "pass", state="lit", figures=DECAYS),
     Row("starts late", broken="1", figures={"start_time": 2e-4}),
     Row("starts only with a kick", figures=DECAYS | {"start_time": np.nan}),
-    Row("latched both on", status=Status.NO_ORBIT, figures=NO_FIGURES | DECAYS),
+    Row("latched on", status=Status.NO_ORBIT, figures=NO_FIGURES | DECAYS),
     Row("dies away", status=Status.NO_ORBIT, figures=NO_FIGURES | DECAYS | {"idle_current": 0.1}),
     Row("drops out", status=Status.NO_ORBIT, state="lit", figures=NO_FIGURES),
     Row("bursts", status=Status.UNSTABLE),
@@ -119,8 +120,38 @@ OTHER_FAILURES = {"drops out", "bursts", "over stress", "no thermal balance", "o
 
 
 def test_the_table_above_is_complete():
-    """Every word of the vocabulary occurs in the table, and no other."""
-    assert {row.outcome for row in ROWS} == wording.GOOD | set(wording.NO_START) | OTHER_FAILURES
+    """Every word of the vocabulary occurs in the table, and no other; one switch latches alone."""
+    known = wording.GOOD | set(wording.NO_START) | OTHER_FAILURES
+    assert {row.outcome for row in ROWS} == known - {"latched both on"}
+
+
+FATES = (
+    (Fate.NOT_RUN, {}, Status.SETTLED, "starts"),
+    (Fate.STARTS, {}, Status.SETTLED, "starts"),
+    (Fate.STARTS, DECAYS, Status.SETTLED, "starts"),  # the ramp itself kicks it
+    (Fate.STARTS, {}, Status.NO_ORBIT, "undecided"),  # it swings on an orbit nobody found
+    (Fate.LATCHED, {}, Status.SETTLED, "latched on"),  # an orbit exists, but it is not reached
+    (Fate.DIES, DECAYS, Status.SETTLED, "starts only with a kick"),
+    (Fate.DIES, {}, Status.SETTLED, "dies away"),
+    (Fate.DIES, DECAYS, Status.NO_ORBIT, "dies away"),
+    (Fate.BURSTS, {}, Status.SETTLED, "bursts"),
+    (Fate.OTHER_SWING, {}, Status.SETTLED, "wrong mode"),
+    (Fate.UNDECIDED, {}, Status.SETTLED, "undecided"),
+)
+
+
+def test_what_happens_in_time_goes_before_what_modes_say():
+    """The fate of a unit that was switched on decides its outcome."""
+    columns = {
+        name: np.array([(GOOD | figures)[name] for _, figures, _, _ in FATES], dtype=float)
+        for name in GOOD
+    }
+    status = np.array([status for _, _, status, _ in FATES], dtype=np.intp)
+    fate = np.array([fate for fate, *_ in FATES], dtype=np.intp)
+    found = judge(study(), "room", "dark", status, columns, NOMINAL, fate)
+    assert found.outcome.tolist() == [word for *_, word in FATES]
+    good = {"starts"}
+    assert [verdict == "pass" for verdict in found.verdict] == [word in good for *_, word in FATES]
 
 
 @st.composite
