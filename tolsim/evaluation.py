@@ -88,11 +88,11 @@ def rows_of(
         solved = dict(zip(plan.cases, blocks, strict=True))
         own, first = draws.rows(place * block, block), place * block
         told: Mapping[CaseName, Told] = {}
+        asked = number[first : first + own.count]
         if plan.study.transitions:
-            asked = number[first : first + own.count]
             told = tell_transitions(plan.study, plan.tables, plan.moves, solved, own, asked)
         for name, one in solved.items():
-            table = _rows(plan, name, own, one, trims[place], told.get(name))
+            table = _rows(plan, name, own, one, trims[place], told.get(name), asked)
             tables.append(table.head(count - first))
     return pd.concat(tables, ignore_index=True)
 
@@ -163,22 +163,29 @@ def case_figures(
 
 
 def switch_units_on(
-    plan: Plan, name: CaseName, draws: Draws, solution: Solution, figures: Mapping[str, Floats]
+    plan: Plan,
+    name: CaseName,
+    draws: Draws,
+    solution: Solution,
+    figures: Mapping[str, Floats],
+    numbers: NDArray[np.intp],
 ) -> SwitchedOn | None:
     """Power-on in time of the units whose start is in doubt, and of a share of the others.
 
-    None where units do not start, or no orbit is known that they should reach.
+    None where units do not start, or no orbit is known that they should reach.  `numbers` (N,)
+    are those of the units, so that the share is the same units in whatever company; negative for
+    units nobody asks for, which stay off.
     """
     prepared, share = plan.cases[name], plan.study.run.power_on_share
     if not (switched_on_here(plan.study, name) and prepared.nominal.found):
         return None
     sure = (solution.status == Status.SETTLED) & (figures["start_margin"] > SURE_MARGIN_DB)
     sure &= figures["growth_rate"] > 0
-    numbers = np.arange(draws.first, draws.first + draws.count)
     sampled = numbers % max(round(1 / share), 1) == 0
     cold = case_of(plan.study, part_values(plan.study, plan.tables, *name, draws))
     expected = expected_of(prepared.nominal, solution, figures["supply_current"])
-    return measure_power_on(cold, expected, prepared.start.shift, sampled | ~sure)
+    chosen = (sampled | ~sure) & (numbers >= 0)
+    return measure_power_on(cold, expected, prepared.start.shift, chosen)
 
 
 def solved_in_blocks(plan: Plan, name: CaseName, draws: Draws, block: int) -> Iterator[SolvedCase]:
@@ -203,10 +210,11 @@ def _rows(
     solved: SolvedCase,
     trimmed: Trimmed,
     told: Told | None,
+    numbers: NDArray[np.intp],
 ) -> pd.DataFrame:
     """Rows of solved units, with what switching on and the changes of load say of them."""
     solution, figures = solved.solution, dict(solved.figures)
-    switched = switch_units_on(plan, name, draws, solution, figures)
+    switched = switch_units_on(plan, name, draws, solution, figures, numbers)
     fate = None
     if switched is not None:
         figures |= switched.figures

@@ -7,12 +7,14 @@ from dataclasses import dataclass, replace
 
 import numpy as np
 from joblib import Parallel, cpu_count, delayed, parallel_config
+from numpy.typing import NDArray
 
 from tolsim.circuit.bias import bias_point
 from tolsim.circuit.continuation import Compass, aim, solve_units
+from tolsim.circuit.cycle import run_cycle
 from tolsim.circuit.devices import Floats
 from tolsim.circuit.nominal import Nominal, find_nominal, frame_of
-from tolsim.circuit.orbit import Status
+from tolsim.circuit.orbit import Solution, Status
 from tolsim.circuit.startup import modes
 from tolsim.circuit.thermal import Case, heats
 from tolsim.design import Study
@@ -106,12 +108,19 @@ def prepare(
         raise RunError(_no_orbit({k: v for f in by_state.values() for k, v in f.nominals.items()}))
     stand_in = next(found.leader for found in by_state.values() if found.leader is not None)
     with parallel_config(backend="loky", inner_max_num_threads=1):
-        work = Parallel(n_jobs=min(jobs or cpu_count(), len(states)))
+        work = Parallel(n_jobs=min(jobs or cpu_count(), len(names)))
         prepared = work(
-            delayed(_prepare_state)(study, tables, by_state[state], stand_in, trimmed.moved)
-            for state in states
+            delayed(_prepare_case)(
+                study,
+                tables,
+                name,
+                by_state[name[1]].nominals[name],
+                by_state[name[1]].leader or stand_in,
+                trimmed.moved,
+            )
+            for name in names
         )
-    merged = {name: case for part in prepared for name, case in part.items()}
+    merged = dict(zip(names, prepared, strict=True))
     return {name: _with_trims(study, name, merged[name], trimmed) for name in names}
 
 
@@ -142,23 +151,19 @@ def _find_state(
     return _StateFound(found, leader)
 
 
-def _prepare_state(
+def _prepare_case(
     study: Study,
     tables: Mapping[str, SpreadTable],
-    found: _StateFound,
-    stand_in: Compass,
+    name: CaseName,
+    nominal: Nominal,
+    leader: Compass,
     moved: Mapping[str, Floats],
-) -> dict[CaseName, PreparedCase]:
-    """Aim from every nominal orbit of a state; one that was not found is looked for once more."""
-    steps = study.run.steps_per_cycle
-    leader = found.leader or stand_in
-    prepared = {}
-    for name, nominal in found.nominals.items():
-        again = nominal if nominal.found else _follow(nominal.case, leader, steps)
-        cold = again or nominal
-        warm, heat = _warmed(study, tables, name, cold, leader, moved)
-        prepared[name] = _prepared(study, name, cold, warm, heat, leader)
-    return prepared
+) -> PreparedCase:
+    """Aim from the nominal orbit of a case; one that was not found is looked for once more."""
+    again = None if nominal.found else _follow(nominal.case, leader, study.run.steps_per_cycle)
+    cold = again or nominal
+    warm, heat = _warmed(study, tables, name, cold, leader, moved)
+    return _prepared(study, name, cold, warm, heat, leader)
 
 
 def _warmed(
@@ -230,11 +235,30 @@ def _heat_slopes(
     """How the rise of each warm part goes with the values of a unit, from orbits beside it."""
     keys, values = moved_aside(compass.nominal.case.values)
     case = case_of(study, values)
-    solution = solve_units(case, compass, study.run.steps_per_cycle)
+    solution, sound = _orbits_beside(case, compass, study.run.steps_per_cycle)
     figures = measure_orbits(case, solution)
-    settled = np.where(solution.status == Status.SETTLED, 1.0, np.nan)
-    known = {name: figure * settled for name, figure in figures.items()}
+    known = {name: np.where(sound, figure, np.nan) for name, figure in figures.items()}
     return slopes_of(study.design, heat.rises, keys, known, cold.case.values)
+
+
+def _orbits_beside(case: Case, compass: Compass, steps: int) -> tuple[Solution, NDArray[np.bool_]]:
+    """Orbits so near the nominal one that its compass leads there: a period each, not closed.
+
+    What they miss falls with the square of the distance, so a slope needs no shooting.
+
+    Returns
+    -------
+    solution, (N,) bool
+        Whether every step was solved.
+    """
+    start = compass.start(case)
+    network = case.network(start.junctions)
+    cycle = run_cycle(network, start.x, start.period, steps, derivatives=False)
+    copies = compass.nominal.solution.take(np.zeros(case.units, dtype=np.intp))
+    way = replace(
+        copies, samples=cycle.samples, period=start.period, junctions=dict(start.junctions)
+    )
+    return way, cycle.settled
 
 
 def _no_orbit(found: Mapping[CaseName, Nominal]) -> str:

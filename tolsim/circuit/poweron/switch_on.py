@@ -37,6 +37,7 @@ OSCILLATES = 0.05  # of the goal: less is no oscillation
 NEAR_ORBIT = 0.35  # swing within this share of the orbit's counts as that orbit
 TURNS = 3  # crossings of the middle level by the envelope of a bursting unit
 CONDUCTS = 0.1  # of the running current, through a switch at rest
+TOLERANCE = 2e-3  # local error: peaks on the way are then right to a few tenths of a percent
 
 
 @dataclass(frozen=True)
@@ -144,6 +145,7 @@ def switch_on(
         begin=begin,
         hopeless=hopeless,
         watch=_watched(case, network),
+        tolerance=TOLERANCE,
     )
     idle = _idle_current(final, path)
     fate = _fates(journey, goal, hopeless, idle > CONDUCTS * expected.current)
