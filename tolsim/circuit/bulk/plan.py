@@ -18,6 +18,8 @@ from tolsim.circuit.nominal import Nominal
 from tolsim.circuit.thermal import Case
 
 FEW_SLOTS = 4  # for the few units that need long iterations
+CHECKED = 32  # settled pilots that must settle from what they taught as well
+LEAST_SETTLED_AGAIN = 0.8  # of them
 NOISE = 1e-5  # scaled update that single precision may make; above, devices run in double
 
 
