@@ -18,7 +18,7 @@ from tolsim.answers.unit_files import FrameColumns
 from tolsim.design import Limit, Lots
 from tolsim.evaluation import Plan
 from tolsim.families import families
-from tolsim.laws import Fixed, LogNormal, SortedOut, TruncatedNormal, Uniform
+from tolsim.laws import Fixed, LogNormal, Moved, SortedOut, TruncatedNormal, Uniform
 from tolsim.run import run_study
 from tolsim.spread.alternatives import ALTERNATIVES, band, replacement
 from tolsim.spread.part_values import part_values
@@ -56,7 +56,7 @@ def plan_of(top, law_check=None, text=TEXT, lots=None):
     return Plan(study, tables, factors(study, tables), {})
 
 
-def invented(plan, draws, count, _block):
+def invented(plan, draws, count, _block, _numbers=None):
     """Rows of units of a stage whose frequency is 3 dC + dL (relative deviations)."""
     values = part_values(plan.study, plan.tables, "room", "normal", draws)
     figure = 3.0 * (values["C1.capacitance"] / 1e-9 - 1.0) + values["L1.inductance"] / 1e-6 - 1.0
@@ -121,7 +121,7 @@ def test_yields_under_other_laws_agree_with_quadrature(checked):
 def test_units_that_fail_without_breaking_a_limit_are_foretold_by_units_alike(monkeypatch):
     """The stage does not start above dC = 3 %: no figure tells, the neighbours do."""
 
-    def starting(plan, draws, count, block):
+    def starting(plan, draws, count, block, _numbers=None):
         rows = invented(plan, draws, count, block)
         values = part_values(plan.study, plan.tables, "room", "normal", draws)
         dead = values["C1.capacitance"] > 1.03e-9
@@ -255,3 +255,16 @@ def test_a_real_run_carries_the_check_and_it_is_the_same_on_one_core_and_on_two(
     assert one["law_check"]["done"]
     assert one["law_check"] == two["law_check"]
     assert all(entry["direct"]["units"] == 3 for entry in one["law_check"]["together"])
+
+
+def test_a_meter_that_may_be_off_leaves_a_band_of_yields(checked):
+    """Both ends agree with quadrature over the moved law; the run itself takes no error."""
+    top = 0.1
+    meter = b'[table.bell.inductance]\nmeter = {law = "uniform", half_width = "3 %"}\n'
+    found = checked(top, text=TEXT.replace(b"[table.bell.inductance]\n", meter))
+    (entry,) = found["meters"]
+    assert (entry["tables"], entry["parts"]) == (["bell"], ["L1"])
+    for one, by in zip(entry["entries"], (-0.03, 0.03), strict=True):
+        assert one["estimate"] == pytest.approx(truth(top, FLAT, Moved(BELL, by)), abs=0.03)
+    assert "Should the meter behind bell (L1) be off by all it may" in found["sentence"]
+    assert found["together"][0]["change"] == checked(top)["together"][0]["change"]

@@ -17,6 +17,7 @@ from tolsim.laws import (
     Fixed,
     LogNormal,
     Measured,
+    Moved,
     NormalMixture,
     SortedOut,
     StudentT,
@@ -57,9 +58,10 @@ CONTRACT = [
     NormalMixture(-0.06, 0.05, (-0.03, -0.028, 0.0, 0.03), (0.004, 0.002, 0.01, 0.003)),
     NormalMixture(3.0, 3.9, (3.4, 3.5), (0.1, 0.2)),
     Exponential(StudentT(-1.0, 1.2, 0.1, 0.2, 9.0), origin=-1.0),
+    Moved(StudentT(-0.2, 0.2, 0.01, 0.02, 4.0), 0.03),
     Measured(Uniform(-0.05, 0.05), Sample("reel.csv", 9, 0.0, 0.03, 0.0, "normal", 0.5)),
 ]
-BUILT = {NormalMixture, Exponential, Measured}  # from readings; tables do not name them
+BUILT = {NormalMixture, Exponential, Measured, Moved}  # from readings; tables do not name them
 every_law = pytest.mark.parametrize("law", CONTRACT, ids=str)
 
 

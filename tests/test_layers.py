@@ -19,7 +19,7 @@ FLOORS = [
     {"stats.response", "stats.reweighting", "stats.plausibility", "stats.neighbours"},
     {"laws.lognormal", "laws.sorted_out", "laws.triangular", "laws.truncated_normal"}
     | {"spread.value_codes"}
-    | {"laws.measured", "laws.mixture", "laws.student", "stats.clusters"}
+    | {"laws.measured", "laws.mixture", "laws.moved", "laws.student", "stats.clusters"}
     | {"laws.uniform", "stats", "mosfet_sheet", "winding", "mission", "transition"}
     | {"study.plain_words", "answers.wording", "starts.asked"},
     {"laws.window"},

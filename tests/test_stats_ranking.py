@@ -211,6 +211,19 @@ class TestLots:
         width = found.correlation_high[1] - found.correlation_low[1]
         assert width == pytest.approx((high - low).item(), rel=0.2)
 
+    @pytest.mark.parametrize("lots", [10, 20])
+    def test_a_few_lots_that_line_up_by_chance_accuse_no_factor(self, lots):
+        """At most one run in twenty may name any of 39 factors without effect."""
+        rng, false, true = np.random.default_rng(5), 0, 0
+        for _ in range(40):
+            x = np.repeat(rng.standard_normal((lots, 40)), 10, axis=0)
+            y = 2.0 * x[:, 0] + 0.5 * rng.standard_normal(10 * lots)
+            found = rank_factors(x, y, rng, replicates=100, lot=np.arange(10 * lots) // 10)
+            true += found.distinguishable[0]
+            false += found.distinguishable[1:].any()
+        assert true >= 38
+        assert false <= 5  # more has a chance of 1.4 % at one in twenty
+
     def test_a_lot_for_every_unit_is_no_lot_at_all(self):
         x, y, _ = self.sample(5, lots=200, size=1)
         plain = rank_factors(x, y, np.random.default_rng(1))

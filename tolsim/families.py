@@ -59,6 +59,19 @@ def families(
     return tuple(family for family in found if family.bases)
 
 
+def metered(study: Study, tables: Mapping[str, SpreadTable]) -> tuple[Family, ...]:
+    """Every table made of readings whose meter may be off, as a family of its own."""
+    parts: dict[str, list[str]] = {}
+    for ref in (*study.design.parts, *study.design.rails):
+        for name in tables_of(study, ref):
+            if any(spread.meter for spread in tables[name].quantities.values()):
+                parts.setdefault(name, []).append(ref)
+    return tuple(
+        Family((name,), tuple(refs), (), lots=False, relative_sd=0.0)
+        for name, refs in parts.items()
+    )
+
+
 def _family(tables: Mapping[str, SpreadTable], names: Sequence[str], refs: list[str]) -> Family:
     bases, widths, lots = [], [], False
     for name in names:

@@ -22,14 +22,14 @@ from tolsim.answers.counting import Counting
 from tolsim.answers.law_words import conclusion
 from tolsim.answers.unit_files import Columns, UnitRows
 from tolsim.evaluation import Plan, passes
-from tolsim.families import Family, families
+from tolsim.families import Family, families, metered
 from tolsim.laws import Law
 from tolsim.spread.alternatives import (
     ALTERNATIVES,
+    METERS,
     REPLACED,
     Alternative,
-    basis_of,
-    replacement,
+    replaced_law,
     with_alternative,
 )
 from tolsim.spread.sampling import Factor, draw, factors
@@ -100,6 +100,7 @@ def _nothing() -> dict[str, Any]:
         "alternatives": [],
         "together": [],
         "families": [],
+        "meters": [],
         "units": 0,
         "direct_units": 0,
         "depends": None,
@@ -192,8 +193,12 @@ class _Check:
             for family in self.families
         }
         moves = [reading for readings in alone.values() for reading in readings]
-        leading = max(moves, key=self._size)
-        anew = [reading for reading in (*together, leading) if reading.method != "weights"]
+        meters = {
+            family: [self._read(_Scope((family,), other)) for other in METERS]
+            for family in metered(self.study, self.plan.tables)
+        }
+        leading = [max(ways, key=self._size) for ways in (moves, *meters.values())]
+        anew = [reading for reading in (*together, *leading) if reading.method != "weights"]
         found = dict(zip(map(id, anew), self._draw_anew(anew, jobs), strict=True))
         rate = self._disagreement(anew, found)
         entries = [self._entry(reading, found.get(id(reading)), rate) for reading in together]
@@ -212,6 +217,14 @@ class _Check:
             "alternatives": [{"law": other.name, "words": other.words} for other in ALTERNATIVES],
             "together": entries,
             "families": sorted(by_family, key=_largest_change, reverse=True),
+            "meters": [
+                {
+                    "tables": list(family.tables),
+                    "parts": list(family.parts),
+                    "entries": [self._entry(one, found.get(id(one)), rate) for one in readings],
+                }
+                for family, readings in meters.items()
+            ],
             "units": self.count,
             "direct_units": self.direct * len(anew),
         }
@@ -255,8 +268,7 @@ class _Check:
     def _other(self, factor: Factor, other: Alternative) -> Law | None:
         """The law of a factor under an alternative."""
         spread = self.plan.tables[factor.table].quantities[factor.quantity]
-        basis = basis_of(spread, factor.aspect)
-        return replacement(factor.law, factor.aspect, other, basis)
+        return replaced_law(spread, factor.aspect, other)
 
     def _factors_of(self, chosen: Sequence[Family]) -> list[Factor]:
         names = {name for family in chosen for name in family.tables}

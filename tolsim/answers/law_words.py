@@ -32,7 +32,7 @@ def conclusion(
     Parameters
     ----------
     answer : mapping
-        `together` and `families` of `law_check`.
+        `together`, `families` and `meters` of `law_check`.
     own : Estimate
         Yield of the run.
     widths : mapping
@@ -48,7 +48,7 @@ def conclusion(
     depends = "yes" if "yes" in grades else "perhaps" if "perhaps" in grades else "no"
     family = _next(answer["families"]) if depends != "no" else None
     named = None if family is None else _named(family, own, widths)
-    sentence = " ".join(_sentences(depends, entries, own, named))
+    sentence = " ".join((*_sentences(depends, entries, own, named), *_of_meters(answer["meters"])))
     return {"depends": depends, "next": named, "sentence": sentence}
 
 
@@ -141,4 +141,14 @@ def _sentences(
             f"The guess worth measuring next: {tables} ({parts}). Alone, {named['law']}, it moves"
             f" the yield to {percent(named['estimate'])};"
             f" {named['pieces']} pieces{lots} would settle it."
+        )
+
+
+def _of_meters(meters: Sequence[Entry]) -> Iterator[str]:
+    """What an unknown error of the meter, taken as it is most likely, leaves open."""
+    for meter in meters:
+        found = [float(entry["estimate"]) for entry in meter["entries"]]
+        yield (
+            f"Should the meter behind {', '.join(meter['tables'])} ({', '.join(meter['parts'])})"
+            f" be off by all it may, the yield would be {percents(min(found), max(found))}."
         )

@@ -120,7 +120,8 @@ not known (an interval that this many units cannot close).  Every `low`, `high` 
                 effective_units (what weights leave; null: not covered), direct {units, passed,
                 as_expected} (units drawn anew) or null}] (all tables at once), families
                 [{tables, parts, bases, guesses, lots, entries [as in together]}] (one family of
-                tables at a time, largest change first), units (read, the first 5000), direct_units,
+                tables at a time, largest change first), meters [{tables, parts, entries}] (what was
+                measured, its meter off by all it may), units (read, the first 5000), direct_units,
                 depends ("no", "perhaps", "yes"), next {tables, parts, law, estimate, change, lots,
                 pieces} (the guess worth measuring next) or null, sentence}; method is
                 "weights", "response" (figures fitted) or "neighbours" (units alike), each also with

@@ -10,6 +10,7 @@ from tolsim.laws.law import Floats, Law
 from tolsim.laws.lognormal import LogNormal
 from tolsim.laws.measured import Measured
 from tolsim.laws.mixture import NormalMixture
+from tolsim.laws.moved import Moved
 from tolsim.laws.sorted_out import SortedOut
 from tolsim.laws.student import StudentT
 from tolsim.laws.triangular import Asymmetric, Triangular
@@ -40,6 +41,7 @@ __all__ = [
     "Law",
     "LogNormal",
     "Measured",
+    "Moved",
     "NormalMixture",
     "SortedOut",
     "StudentT",

@@ -12,7 +12,7 @@ from typing import Final
 
 import numpy as np
 
-from tolsim.laws import Fixed, Law, SortedOut, TruncatedNormal, Uniform
+from tolsim.laws import Fixed, Law, Moved, SortedOut, TruncatedNormal, Uniform
 from tolsim.spread.table import QuantitySpread, SpreadTable
 
 SIGMAS: Final = 3.0  # of the normal laws between the middle of the band and its ends
@@ -39,6 +39,9 @@ class Alternative:
         Laws it can stand for: nobody sorts whole lots out of a lot law.
     shift : float
         Of the mean, in half widths.
+    meter : int
+        -1 or 1 if it leaves the band as it is and moves what was measured to the lower or upper
+        end of the law of the meter's error.
     """
 
     name: str
@@ -46,6 +49,7 @@ class Alternative:
     within: Callable[[float, float], Law]
     aspects: tuple[str, ...] = REPLACED
     shift: float = 0.0
+    meter: int = 0
 
 
 def band(law: Law) -> tuple[float, float]:
@@ -89,6 +93,12 @@ ALTERNATIVES: Final[tuple[Alternative, ...]] = (
     ),
 )
 
+METERS: Final[tuple[Alternative, ...]] = (
+    Alternative("meter reads high", "parts lower than read by all it may err", Uniform, meter=-1),
+    Alternative("meter reads low", "parts higher than read by all it may err", Uniform, meter=1),
+)
+"""Ways in which readings may be wrong all alike."""
+
 
 def replaceable(law: Law | None, basis: str = "") -> bool:
     """Tell whether a law leaves anything to chance that another could leave differently.
@@ -122,8 +132,21 @@ def with_alternative(
     return changed
 
 
-def _replaced(spread: QuantitySpread, other: Alternative) -> QuantitySpread:
-    def other_law(aspect: str) -> Law | None:
-        return replacement(getattr(spread, aspect), aspect, other, basis_of(spread, aspect))
+def replaced_law(spread: QuantitySpread, aspect: str, other: Alternative) -> Law | None:
+    """Tolerance or lot law of a quantity under an alternative."""
+    law: Law | None = getattr(spread, aspect)
+    if not other.meter:
+        return replacement(law, aspect, other, basis_of(spread, aspect))
+    carrier = "lot" if spread.tolerance is None else "tolerance"
+    if law is None or spread.meter is None or aspect != carrier:
+        return law
+    low, high = band(spread.meter)
+    return Moved(law, low if other.meter < 0 else high)
 
-    return replace(spread, tolerance=other_law("tolerance"), lot=other_law("lot"))
+
+def _replaced(spread: QuantitySpread, other: Alternative) -> QuantitySpread:
+    return replace(
+        spread,
+        tolerance=replaced_law(spread, "tolerance", other),
+        lot=replaced_law(spread, "lot", other),
+    )

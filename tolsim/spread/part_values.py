@@ -80,7 +80,9 @@ def part_values(
         Address to array (N,); see the top of this module.
     """
 
-    def drawn(name: str, _: str, law: Law) -> Floats:
+    def drawn(name: str, aspect: str, law: Law) -> Floats:
+        if aspect == "meter":  # one unknown number for all units, so its best estimate
+            return np.full(draws.count, law.mean)
         return draws.of(name, law)  # same rank, the law of this state or condition
 
     own: Mapping[str, float | Floats] = {}

@@ -60,7 +60,7 @@ class Factor:
         Part (piece "C1#2" of a bank, or the reel of a shared factor) and quantity it acts
         on; empty for conditions.
     aspect : str
-        "tolerance", "lot", "temperature", "ageing", "meter" or "condition".
+        "tolerance", "lot", "temperature", "ageing" or "condition".
     table : str
         Name of the spread table its law comes from; the condition, for conditions; empty for
         trims.
@@ -238,7 +238,7 @@ def _of_table(
     for quantity, spread in table.quantities.items():
         for aspect in ASPECTS:
             law = spread.drawn(aspect)
-            if law is None:
+            if law is None or aspect == "meter":  # an unknown constant is no scatter of units
                 continue
             words = aspect_words(table, quantity, aspect)
             shared_by = reel_of(reel, table, quantity, aspect)

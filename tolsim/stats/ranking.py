@@ -16,7 +16,10 @@ by the spread of the replicates, which are too few for such far percentiles).
 
 Units in lots: whole lots are drawn for the bootstrap, and a factor that a lot shares is judged
 on the means over the units that share it, as so many readings as there are different draws of
-it; else the chance that 50 lots of 10 units line up would count as what 500 units show.
+it; else the chance that 50 lots of 10 units line up would count as what 500 units show.  Ten means
+may line up with many factors by chance, and a bootstrap repeats what chance did; a share of such a
+factor therefore counts only if the F test of its fit finds it as well (Draper and Smith, Applied
+Regression Analysis, 3rd ed. 1998, section 1.3), with the same allowance for k factors.
 
 SALib estimates shares from a given sample too (`rbd_fast`), with one pass over all factors
 per replicate: measured here, 200 replicates of 100 factors would take 3 s at 500 units and
@@ -30,7 +33,7 @@ from itertools import pairwise
 
 import numpy as np
 from numpy.typing import ArrayLike, NDArray
-from scipy.special import ndtri
+from scipy.special import fdtrc, ndtri
 from scipy.stats import rankdata
 
 from tolsim.stats.proportion import check_confidence
@@ -116,7 +119,10 @@ def rank_factors(
     _, far_low, far_high = rank_correlation(x, y, together, readings)
     share, low, high = _shares(x, y, rng, confidence, replicates, group)
     reach = ndtri(0.5 + 0.5 * together) * share[1:].std(axis=0)
-    seen = ((low > 0.0) & (share[0] > reach)) | (far_low > 0.0) | (far_high < 0.0)
+    explained = (low > 0.0) & (share[0] > reach)
+    if group is not None:
+        explained &= _chances(x, y) < 1.0 - together
+    seen = explained | (far_low > 0.0) | (far_high < 0.0)
     remainder = _remainder(share, seen, confidence)
     return Ranking(
         share=share[0],
@@ -309,6 +315,26 @@ def _shared_share(
     total = _variances(y, weights)
     part = np.where(total > 0.0, _variances(means, of_draws) / np.where(total > 0.0, total, 1.0), 0)
     return _share(draws, means, of_draws, _edges(draws.size)) * part
+
+
+def _chances(x: Floats, y: Floats) -> Floats:
+    """Chance (k,) that a factor (n, k) without effect explains as much of y (n,), by F tests.
+
+    The fit is that of `_share`, two numbers per bin, on the means over units with one draw.
+    """
+    found = np.ones(x.shape[1])
+    for j, column in enumerate(x.T):
+        draws, place = np.unique(column, return_inverse=True)
+        means = np.bincount(place, y) / np.bincount(place)
+        n, fitted = draws.size, 2 * _bins(draws.size)
+        if n <= fitted or means.min() == means.max():
+            continue
+        adjusted = float(_share(draws, means, np.ones((1, n)), _edges(n))[0])
+        left = (1.0 - adjusted) * (n - fitted) / (n - 1)  # of the variance of the means
+        gained = max(1.0 - left, 0.0) / (fitted - 1)
+        spread = max(left, np.finfo(float).tiny) / (n - fitted)
+        found[j] = fdtrc(fitted - 1, n - fitted, gained / spread)
+    return found
 
 
 def _variances(y: Floats, weights: Floats) -> Floats:

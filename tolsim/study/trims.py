@@ -20,7 +20,15 @@ from typing import Any
 
 from tolsim.design import GROUND, Trim
 from tolsim.errors import Mistake, Problem
-from tolsim.figure_names import FIGURES, IDLE_VOLTAGE, RAIL, TRIM, FigureInfo, figure_of
+from tolsim.figure_names import (
+    FIGURES,
+    IDLE_VOLTAGE,
+    RAIL,
+    TRANSITION_FIGURES,
+    TRIM,
+    FigureInfo,
+    figure_of,
+)
 from tolsim.laws.reading import read_law, under
 from tolsim.quantity import read, show
 from tolsim.study.limits import bound
@@ -40,8 +48,8 @@ ADJUSTABLE: Mapping[str, Mapping[str, str]] = {
 
 NO_METER_SHOWS = frozenset((
     "start_margin", "growth_rate", "start_frequency", "start_time", "slowest_multiplier",
-    "energy_balance", "orbit_residual",
-))  # fmt: skip
+    "energy_balance", "orbit_residual", "power_on_time", "latch_current",
+)) | TRANSITION_FIGURES  # fmt: skip
 COARSE_SHARE = 0.1  # of the range: common practice, no source
 _KEYS = (
     "part", "quantity", "range", "resolution", "coarse_step", "reading", "net", "target", "within",
@@ -178,7 +186,8 @@ class _Reader:
             valid = [one for one in stage if one not in NO_METER_SHOWS] + [IDLE_VOLTAGE]
             if ref in self.outline.kinds:
                 own = [one for one in FIGURES.values() if one.owner == owner]
-                valid = [f"{ref}.{one.name}" for one in own if not one.name.startswith("trim_")]
+                shown = [one.name for one in own if one.name not in NO_METER_SHOWS]
+                valid = [f"{ref}.{name}" for name in shown if not name.startswith("trim_")]
             self.unknown("reading", given, "a figure that a meter shows", valid)
             return "", None
         return str(given), figure.unit_of_measure
