@@ -15,7 +15,13 @@ FLOORS = [
     {"answers.unit_files"},
     {"quantity", "library", "records", "answers.results", "laws.law"}
     | {"spread.codes", "spread.coil", "spread.wire", "stats.percentiles", "stats.ranking"}
-    | {"stats.sample_shape", "spread.preferred", "spread.quantity_words", "text_picture"},
+    | {
+        "stats.sample_shape",
+        "stats.variance_split",
+        "spread.preferred",
+        "spread.quantity_words",
+        "text_picture",
+    },
     {"stats.response", "stats.reweighting", "stats.plausibility", "stats.neighbours"},
     {"laws.lognormal", "laws.sorted_out", "laws.triangular", "laws.truncated_normal"}
     | {"spread.value_codes"}
@@ -47,7 +53,7 @@ FLOORS = [
     {"circuit.cycle"},
     {"circuit.thermal", "circuit.critical", "circuit.transient"},
     {"circuit.startup", "circuit.transients.elements", "circuit.transients.compiling"},
-    {"circuit.transients", "circuit.transients.laws"},
+    {"circuit.transients", "circuit.transients.laws", "starts.leftover"},
     {"circuit.transients.sources"},
     {"circuit.transients.stepping"},
     {"circuit.transients.kernel"},
@@ -79,7 +85,7 @@ FLOORS = [
     # spread and chance
     {"spread.drift_reading", "spread.table", "spread.measured_reading", "spread.shorthand"},
     {"spread.dependence", "spread.streams"},
-    {"spread.dependence_reading"},
+    {"spread.dependence_reading", "spread.tries"},
     {"spread.entry", "spread.needs"},
     {"spread.matching"},
     {"spread.reading", "spread.sampling"},
@@ -117,7 +123,7 @@ FLOORS = [
     {"crosscheck", "heatcheck", "presentation", "recheck", "solver_choice"},
     {"workers"},
     {"building", "lawcheck", "modelcheck", "starts.attempt"},
-    {"starts.grid"},
+    {"starts.grid", "starts.contract", "starts.repeats"},
     {"starts.answers"},
     {"run", "replay"},
     {"terminal"},

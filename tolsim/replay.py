@@ -17,6 +17,7 @@ from numpy.typing import NDArray
 from tolsim import __version__
 from tolsim.answers.bounds import Bound, bounds
 from tolsim.answers.results import STUDY_FILE, TABLES_FOLDER, Results
+from tolsim.answers.start_words import tries_story
 from tolsim.answers.trims import trim_sentence, way_sentence
 from tolsim.answers.wording import shown
 from tolsim.circuit.orbit import Status
@@ -94,6 +95,7 @@ def replay_unit(folder: Path | str, number: int) -> Replay:
         *_lot_story(results, study, number),
         *_trim_story(study, rows, trimmed),
         *_outcome_story(opened, rows, broken),
+        *tries_story(results.summary, number),
         *_draw_story(draws, influence),
         *_neighbour(results, draws, influence),
     )

@@ -10,7 +10,12 @@ from tolsim.answers.lot_words import lot_sentences
 from tolsim.answers.mission_words import mission_sentences
 from tolsim.answers.power_on_words import power_on_sentences
 from tolsim.answers.reel_words import reel_sentences
-from tolsim.answers.start_words import map_sentences, map_table
+from tolsim.answers.start_words import (
+    contract_sentences,
+    map_sentences,
+    map_table,
+    repeat_sentences,
+)
 from tolsim.answers.transition_words import transition_sentences
 from tolsim.answers.trim_words import trim_sentences
 from tolsim.answers.wording import (
@@ -71,6 +76,8 @@ def start_lines(summary: Summary) -> list[str]:
 
 
 def _starts(summary: Summary) -> Iterator[tuple[str, list[str]]]:
+    yield "Supply contract", list(_wrapped(contract_sentences(summary)))
+    yield "Repeated starts", list(_wrapped(repeat_sentences(summary)))
     yield "Start map", [*_wrapped(map_sentences(summary)), *map_table(summary)]
 
 

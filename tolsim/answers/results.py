@@ -140,6 +140,20 @@ not known (an interval that this many units cannot close).  Every `low`, `high` 
                 down (values), with_orbit (units), outcomes [{outcome ("starts" first, "latched",
                 "dies away", "bursts", "other swing", "undecided"), units, share, low, high}],
                 first_failing, start_time (s, median, to 90 % of the swing; or null)}]}
+``supply_contract``  {} unless asked for; else {conditions (a unit must start in all), state, units,
+                confidence, covers, questions [{question ("ramp_time", "supply"), unit_of_measure,
+                rails [{rail, voltage}], ends [easy, hard] (of what was tried), with_border (units
+                whose border lies between), beyond (that start at the hard end too), never (not
+                even at the easy one), first_never, not_single (units with more than one border),
+                first_not_single, percentiles [{share (of units, from the most delicate), value,
+                interval}], bound {value (null: none within what was tried), covers, enough (units
+                for the share asked for), needs (units)}, borders (of every unit, or null)}]}
+``repeated_starts``  {} unless asked for; else {condition, state, tries, confidence, off_time,
+                ramp_jitter, charge_counts (whether leftover charge had a say), units [{unit,
+                chosen, start_margin, starts (tries), share, low, high, all_low (low, if all
+                tries started), outcomes [{outcome, tries}], start_time {shortest, p50, longest}
+                or null}], split {units (at random), between (share of the variance of starting
+                that lies between units; null: nothing varies)}}
 ``provenance``  {seed, versions {name: version}, study_sha256, tables {name: sha256},
                 recordings {path: sha256} (only if supplies have recorded ramps), ...}
 """

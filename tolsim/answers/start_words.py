@@ -99,6 +99,78 @@ def map_sentences(summary: Summary) -> Iterator[str]:
         )
 
 
+def contract_sentences(summary: Summary) -> Iterator[str]:
+    """What a purchase may ask of the supply, and on what that rests."""
+    contract = summary.get("supply_contract")
+    if not contract:
+        return
+    for question in contract["questions"]:
+        yield _purchase(contract, question)
+        yield _spread(question)
+        if question["never"]:
+            easy = axis_value(question, question["ends"][0])
+            named = list_of_units(question["first_never"][:FIRST_UNITS], question["never"])
+            yield (
+                f"{question['never']} of {contract['units']} do not start even at {easy}"
+                f" (units {named})."
+            )
+        if question["not_single"]:
+            named = list_of_units(
+                question["first_not_single"][:FIRST_UNITS], question["not_single"]
+            )
+            yield (
+                f"{question['not_single']} of {contract['units']} have no single border (units"
+                f" {named}): they start and fail in turns, and count with the worst known."
+            )
+
+
+def _purchase(contract: Entry, question: Entry) -> str:
+    """The sentence for a purchase specification."""
+    bound, ramps = question["bound"], question["question"] == "ramp_time"
+    value, rails = bound["value"], question["rails"]
+    what = " and ".join(one["rail"] for one in rails)
+    volts = shown(rails[0]["voltage"], "V") if len(rails) == 1 else "its voltage"
+    easy, hard = question["ends"]
+    if value is None:
+        thing = "ramp time" if ramps else "supply deviation"
+        tried = f"{axis_value(question, easy)} to {axis_value(question, hard)}"
+        return f"No {thing} of {what} among those tried ({tried}) serves enough units."
+    if ramps:
+        asks = f"The supply {what} shall reach {volts} within {axis_value(question, value)}"
+        slack = "the slowest ramp tried, slower ones may do"
+    else:
+        lowest = " and ".join(shown((1.0 + value) * one["voltage"], "V") for one in rails)
+        asks = f"The supply {what} shall stand at {lowest} or more when it is switched on"
+        asks += f" ({axis_value(question, value)})"
+        slack = "the lowest tried, less may do"
+    at_end = f" ({slack})" if value == hard else ""
+    few = (
+        ""
+        if bound["enough"]
+        else f" {bound['needs']} units would be needed to tell for {percent(contract['covers'])}."
+    )
+    return (
+        f"{asks}{at_end}. This covers {percent(bound['covers'])} of units with"
+        f" {100.0 * contract['confidence']:.3g} % confidence, by simulation of"
+        f" {contract['units']} unit{'' if contract['units'] == 1 else 's'} in"
+        f" {' and '.join(contract['conditions'])}.{few}"
+    )
+
+
+def _spread(question: Entry) -> str:
+    """Percentiles between units."""
+    middle = next(one for one in question["percentiles"] if one["share"] == 0.5)  # noqa: PLR2004
+    what = "slowest ramp" if question["question"] == "ramp_time" else "lowest supply"
+    told = "none" if middle["value"] is None else axis_value(question, middle["value"])
+    ends = ["open" if end is None else axis_value(question, end) for end in middle["interval"]]
+    hard = axis_value(question, question["ends"][1])
+    beyond = f"; {question['beyond']} start even at {hard}" if question["beyond"] else ""
+    return (
+        f"{what[:1].upper()}{what[1:]} from which the middle unit starts: {told}"
+        f" ({ends[0]} to {ends[1]}){beyond}."
+    )
+
+
 def map_table(summary: Summary) -> list[str]:
     """The map as lines of at most 78 columns; empty if it has too many columns."""
     entry = summary.get("start_map")
@@ -108,11 +180,13 @@ def map_table(summary: Summary) -> list[str]:
     heads = [axis_value(across, value) for value in across["values"]]
     names = [axis_value(down, value) for value in down["values"]]
     first = max(len(name) for name in [*names, axis_title(down)[:20]]) + 1
-    wide = max(LEAST_COLUMN, *(len(head) + 2 for head in heads))
+    wide = max(LEAST_COLUMN, *(len(head) + 4 for head in heads))
     if first + wide * len(heads) > WIDTH:
         return []
     cells = {(cell["across"], cell["down"]): cell for cell in entry["cells"]}
-    lines = [f"{axis_title(down)[:20]:<{first}}" + "".join(f"{head:>{wide}}" for head in heads)]
+    lines = [
+        f"{axis_title(down)[:20]:<{first}}" + "".join(f"{head + '  ':>{wide}}" for head in heads)
+    ]
     letters = set()
     for name, low in zip(names, down["values"], strict=True):
         row = f"{name:<{first}}"
@@ -126,3 +200,57 @@ def map_table(summary: Summary) -> list[str]:
     told = [f"{LETTERS[one]} {one}" for one in sorted(letters)]
     said = "share that starts" + (f", commonest failure: {', '.join(told)}" if told else "")
     return [*lines, f"({said}; across: {axis_title(across)})"]
+
+
+def repeat_sentences(summary: Summary) -> Iterator[str]:
+    """What chance does from one try to the next, kept apart from what it does between units."""
+    entry = summary.get("repeated_starts")
+    if not entry:
+        return
+    rows, tries = entry["units"], entry["tries"]
+    off = " to ".join(axis_value(_SECONDS, end) for end in entry["off_time"])
+    yield (
+        f"{len(rows)} units were switched on {tries} times each, {off} after they ran last, ramp"
+        f" times within {percent(entry['ramp_jitter'])} ({entry['condition']}, {entry['state']})."
+    )
+    for row in [row for row in rows if row["starts"] < tries][:FIRST_UNITS]:
+        yield unit_sentence(entry, row)
+    steady = sum(row["starts"] == tries for row in rows)
+    if steady:
+        low = rows[0]["all_low"]
+        yield (
+            f"{steady} of the {len(rows)} start in all {tries} tries; each of them would in at"
+            f" least {percent(low)}."
+        )
+    split = entry["split"]
+    if split["between"] is not None:
+        yield (
+            f"Of the variance of starting, {percent(split['between'], 0)} lies between units and"
+            f" {percent(1.0 - split['between'], 0)} between tries of one unit (over the"
+            f" {split['units']} units taken at random)."
+        )
+    if not entry["charge_counts"]:
+        yield (
+            "The supplies rise slowly against the oscillation; leftover charge is taken as gone"
+            " by the time it begins."
+        )
+
+
+def unit_sentence(entry: Entry, row: Entry) -> str:
+    """One unit: "Unit 17 starts in 18 of 20 tries (68.3 to 98.8 %), else latched"."""
+    failing = [one for one in row["outcomes"] if one["outcome"] != "starts"]
+    otherwise = f"; else {', '.join(one['outcome'] for one in failing)}" if failing else ""
+    return (
+        f"Unit {row['unit']} starts in {row['starts']} of {entry['tries']} tries"
+        f" ({percents(row['low'], row['high'])}){otherwise}."
+    )
+
+
+def tries_story(summary: Summary, number: int) -> list[str]:
+    """What repeated starts say of one unit; empty if it was not among them."""
+    entry = summary.get("repeated_starts") or {}
+    rows = [row for row in entry.get("units", []) if row["unit"] == number]
+    return [unit_sentence(entry, row) for row in rows]
+
+
+_SECONDS: Mapping[str, Any] = {"unit_of_measure": "s"}

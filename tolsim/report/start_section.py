@@ -7,7 +7,13 @@ from collections.abc import Iterator, Mapping
 from pathlib import Path
 from typing import Any
 
-from tolsim.answers.start_words import axis_title, axis_value, map_sentences
+from tolsim.answers.start_words import (
+    axis_title,
+    axis_value,
+    contract_sentences,
+    map_sentences,
+    repeat_sentences,
+)
 from tolsim.answers.unit_files import write_text
 from tolsim.answers.wording import list_of_units, percent, percents, shown
 from tolsim.report.start_map_chart import COLOURS, start_map_chart
@@ -17,7 +23,11 @@ Summary = Mapping[str, Any]
 
 def start_section(summary: Summary) -> dict[str, Any]:
     """Content of the section; empty if nothing was asked about switching on."""
-    found = {"map": _map(summary)}
+    found = {
+        "contract": list(contract_sentences(summary)),
+        "repeats": _repeats(summary),
+        "map": _map(summary),
+    }
     return found if any(found.values()) else {}
 
 
@@ -50,6 +60,34 @@ def _map(summary: Summary) -> dict[str, Any]:
         "across": axis_title(entry["across"]),
         "down": axis_title(entry["down"]),
         "rows": list(_cells(entry)),
+    }
+
+
+def _repeats(summary: Summary) -> dict[str, Any]:
+    entry = summary.get("repeated_starts")
+    if not entry:
+        return {}
+    return {
+        "sentences": list(repeat_sentences(summary)),
+        "tries": entry["tries"],
+        "rows": [
+            {
+                "unit": row["unit"],
+                "chosen": row["chosen"],
+                "margin": shown(row["start_margin"], "dB"),
+                "starts": row["starts"],
+                "width": round(100.0 * row["share"], 2),
+                "low": round(100.0 * row["low"], 2),
+                "high": round(100.0 * row["high"], 2),
+                "interval": percents(row["low"], row["high"]),
+                "others": ", ".join(
+                    f"{one['outcome']} {one['tries']}"
+                    for one in row["outcomes"]
+                    if one["outcome"] != "starts"
+                ),
+            }
+            for row in entry["units"]
+        ],
     }
 
 

@@ -10,7 +10,9 @@ from tolsim.errors import RequestError
 from tolsim.evaluation import Plan
 from tolsim.nominals import prepare
 from tolsim.spread.sampling import factors
+from tolsim.starts.contract import supply_contract
 from tolsim.starts.grid import start_map
+from tolsim.starts.repeats import repeated_starts
 from tolsim.study import StudyFile, open_study
 
 Progress = Callable[[int, int], None]
@@ -40,9 +42,15 @@ def answer_starts(
         Leave out what the study leaves to its own verb.
     """
     asked = plan.study.starts
-    found: dict[str, Any] = {"start_map": {}}
+    found: dict[str, Any] = {"start_map": {}, "supply_contract": {}, "repeated_starts": {}}
     if asked.start_map is not None and (asked.start_map.with_run or not in_run):
         found["start_map"] = start_map(plan, asked.start_map, jobs, progress)
+    contract = asked.supply_contract
+    if contract is not None and (contract.with_run or not in_run):
+        found["supply_contract"] = supply_contract(plan, contract, jobs, progress)
+    repeats = asked.repeated_starts
+    if repeats is not None and (repeats.with_run or not in_run):
+        found["repeated_starts"] = repeated_starts(plan, repeats, jobs, progress)
     return found
 
 

@@ -63,12 +63,15 @@ class Running:
     has_orbit : (N,)
     shift : float, rad/s
         Angular frequency scale of the stage.
+    mean : mapping of str to (N,)
+        State to its mean over the orbit.
     """
 
     cold: Case
     expected: Expected
     has_orbit: NDArray[np.bool_]
     shift: float
+    mean: Mapping[str, Floats]
 
     def take(self, units: Ints) -> Running:
         """Return some of the units."""
@@ -76,7 +79,8 @@ class Running:
         expected = Expected(
             own.swing[units], own.period[units], own.lead, own.scale, own.current[units]
         )
-        return Running(self.cold.take(units), expected, self.has_orbit[units], self.shift)
+        mean = {name: value[units] for name, value in self.mean.items()}
+        return Running(self.cold.take(units), expected, self.has_orbit[units], self.shift, mean)
 
 
 @dataclass(frozen=True)
@@ -113,7 +117,11 @@ def running(
     found = np.asarray(solution.status == Status.SETTLED)
     expected = expected_of(both, solution, prepared)
     units = np.arange(cold.units)
-    return Running(cold, expected, found[units], prepared.nominal.shift).take(units)
+    usual = prepared.compass.nominal.solution if not found[-1] else solution
+    last = usual.samples[:-1, -1].mean(axis=0)
+    means = np.where(found[:, None], solution.samples[:-1].mean(axis=0), last)
+    mean = dict(zip(expected.scale, means.T, strict=True))
+    return Running(cold, expected, found, prepared.nominal.shift, mean).take(units)
 
 
 def _at_levels(case: Case, levels: Levels) -> Case:
