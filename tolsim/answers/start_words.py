@@ -112,15 +112,15 @@ def contract_sentences(summary: Summary) -> Iterator[str]:
             named = list_of_units(question["first_never"][:FIRST_UNITS], question["never"])
             yield (
                 f"{question['never']} of {contract['units']} do not start even at {easy}"
-                f" (units {named})."
+                f" ({'unit' if question['never'] == 1 else 'units'} {named})."
             )
         if question["not_single"]:
             named = list_of_units(
                 question["first_not_single"][:FIRST_UNITS], question["not_single"]
             )
             yield (
-                f"{question['not_single']} of {contract['units']} have no single border (units"
-                f" {named}): they start and fail in turns, and count with the worst known."
+                f"{question['not_single']} of {contract['units']} have no single border"
+                f" ({'unit' if question['not_single'] == 1 else 'units'} {named}): they start and fail in turns, and count with the worst known."
             )
 
 
