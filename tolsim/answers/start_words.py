@@ -120,7 +120,8 @@ def contract_sentences(summary: Summary) -> Iterator[str]:
             )
             yield (
                 f"{question['not_single']} of {contract['units']} have no single border"
-                f" ({'unit' if question['not_single'] == 1 else 'units'} {named}): they start and fail in turns, and count with the worst known."
+                f" ({'unit' if question['not_single'] == 1 else 'units'} {named}):"
+                " they start and fail in turns, and count with the worst known."
             )
 
 
