@@ -180,13 +180,13 @@ def map_table(summary: Summary) -> list[str]:
     across, down = entry["across"], entry["down"]
     heads = [axis_value(across, value) for value in across["values"]]
     names = [axis_value(down, value) for value in down["values"]]
-    first = max(len(name) for name in [*names, axis_title(down)[:20]]) + 1
+    first = max(len(name) for name in [*names, axis_title(down)[:24]]) + 1
     wide = max(LEAST_COLUMN, *(len(head) + 4 for head in heads))
     if first + wide * len(heads) > WIDTH:
         return []
     cells = {(cell["across"], cell["down"]): cell for cell in entry["cells"]}
     lines = [
-        f"{axis_title(down)[:20]:<{first}}" + "".join(f"{head + '  ':>{wide}}" for head in heads)
+        f"{axis_title(down)[:24]:<{first}}" + "".join(f"{head + '  ':>{wide}}" for head in heads)
     ]
     letters = set()
     for name, low in zip(names, down["values"], strict=True):
