@@ -9,7 +9,7 @@ from circuits import CIRCUIT_A_SPREAD, circuit_a, scattered, typical_values
 
 from tolsim.circuit.bulk.chord import iterate
 from tolsim.circuit.bulk.newton import settle_stubborn
-from tolsim.circuit.bulk.plan import prepare_fast
+from tolsim.circuit.bulk.plan import prepare_fast, taught
 from tolsim.circuit.bulk.solve import WAY, solve_units_fast
 from tolsim.circuit.continuation import aim, solve_units
 from tolsim.circuit.nominal import find_nominal
@@ -167,3 +167,15 @@ def test_what_does_not_settle_goes_to_shooting(push_pull, monkeypatch):
     assert solution.way[0] == WAY
     assert solution.way[1] == "stand-in"
     assert [list(each) for each in asked] == [[values["L.inductance"][1]]]
+
+
+def test_starts_from_which_nothing_settles_are_dropped(push_pull, monkeypatch):
+    plan, _, case = push_pull
+    pilots = case.take(np.arange(PILOTS))
+    assert taught(plan, pilots) is not plan
+
+    def astray(predictor, pilots, z):  # noqa: ARG001
+        return replace(predictor, origin=predictor.origin + 50.0)
+
+    monkeypatch.setattr("tolsim.circuit.bulk.plan.learn", astray)
+    assert taught(plan, pilots) is plan
