@@ -61,8 +61,8 @@ FLOORS = [
     | {"circuit.load_change", "circuit.load_change.handover", "circuit.load_change.probes"},
     {"circuit.load_change.road"}
     | {"circuit.poweron", "circuit.poweron.fates", "circuit.poweron.ramps", "circuit.poweron.path"}
-    | {"circuit.poweron.latch"},
-    {"circuit.load_change.passage", "circuit.poweron.switch_on"},
+    | {"circuit.poweron.latch", "circuit.poweron.envelope"},
+    {"circuit.load_change.passage", "circuit.poweron.switch_on", "circuit.poweron.bursts"},
     {"circuit.shooting"},
     {"circuit.nominal"},
     {"circuit.continuation"},
@@ -106,7 +106,7 @@ FLOORS = [
     {"study"},
     # answers
     {"nominals", "answers.provenance", "answers.trims", "answers.supply_words", "answers.ranking"},
-    {"answers.lots", "answers.reel_words", "answers.trim_words", "trim.drawn"}
+    {"second_look", "answers.lots", "answers.reel_words", "answers.trim_words", "trim.drawn"}
     | {"transitions.prepared"}
     | {"report.lots", "report.ways"},
     {"transitions.drawn", "transitions.envelope"},

@@ -326,7 +326,9 @@ def test_units_of_shipped_studies_end_on_their_orbits(name, cycles):
     """Unlike ones, through every change of load."""
     opened = open_study(find_study(name))
     conditions = {"room": opened.study.conditions["room"]}
-    study = opened.study.model_copy(update={"conditions": conditions, "mission": None})
+    finer = opened.study.run.model_copy(update={"steps_per_cycle": 384})  # peaks of both roads
+    changes = {"conditions": conditions, "mission": None, "run": finer}
+    study = opened.study.model_copy(update=changes)
     cases, moves = prepared_changes(study, opened.tables, prepare(study, opened.tables, 2), 2)
     plan = Plan(study, opened.tables, factors(study, opened.tables), cases, {}, moves)
     draws = draw(plan.factors, study.run.seed, 3, 2)

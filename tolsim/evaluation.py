@@ -24,6 +24,7 @@ from tolsim.design import Study
 from tolsim.figures import measure_orbits, measure_start
 from tolsim.figures.power_on import SwitchedOn, expected_of, measure_power_on
 from tolsim.nominals import CaseName, PreparedCase, case_of, switched_on_here
+from tolsim.second_look import bursts_confirmed, found_by_power_on
 from tolsim.spread.part_values import part_values
 from tolsim.spread.sampling import Draws, Factor, draw
 from tolsim.spread.table import SpreadTable
@@ -272,7 +273,28 @@ def _trusted(
         again = solve_units(case.take(lost), plan.cases[name].compass, steps)
         solution = solution.put(lost, again)
         figures = case_figures(plan, name, draws, case, solution)
-    return solution, figures
+    looked = _second_look(plan, name, draws, case, solution, figures)
+    if looked is solution:
+        return solution, figures
+    return looked, case_figures(plan, name, draws, case, looked)
+
+
+def _second_look(
+    plan: Plan,
+    name: CaseName,
+    draws: Draws,
+    case: Case,
+    solution: Solution,
+    figures: Mapping[str, Floats],
+) -> Solution:
+    """Runs in time where the search for orbits left something open."""
+    prepared = plan.cases[name]
+    solution = bursts_confirmed(prepared, case, solution)
+    if not switched_on_here(plan.study, name):
+        return solution
+    cold = case_of(plan.study, part_values(plan.study, plan.tables, *name, draws))
+    current, steps = figures["supply_current"], plan.study.run.steps_per_cycle
+    return found_by_power_on(prepared, case, cold, solution, current, steps)
 
 
 def _power_on_words(fate: NDArray[np.intp] | None, units: int) -> NDArray[np.object_]:

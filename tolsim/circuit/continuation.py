@@ -41,6 +41,7 @@ STEP_RELATIVE = 1e-2  # of a part value, up and down: large, since trapped charg
 STEP_KELVIN = 1.0  # of a junction or the ambient
 AMBIENT = "ambient"
 COLDEST_START_C, HOTTEST_START_C = -60.0, 250.0  # predicted junctions stay within
+SEEN_PERIODS, SEEN_STEPS = 8, 128  # looked at before shooting at a swing seen in time
 SHOOTING_ROUNDS = 14
 OTHER_PHASES = (1 / 3, 5 / 6)  # of the period, to start from when the first point will not do
 BLENDS = (0.25, 0.5, 0.75, 1.0)
@@ -323,6 +324,27 @@ def _seen_in_time(tail: Floats, start: Start, step: Floats, frame: Frame) -> Sta
             place, period[unit] = seen
             x[unit] = tail[place, unit]
     return Start(x, period, start.junctions)
+
+
+def shoot_from(case: Case, compass: Compass, x: Floats, period: Floats, steps: int) -> Solution:
+    """Orbits of units that were seen to swing in time, shot at from where they were seen.
+
+    Parameters
+    ----------
+    x : (N, n)
+        States while they swung.
+    period : (N,)
+        s, about as fast as they should.
+    """
+    frame = compass.nominal.frame
+    assert frame is not None
+    network = case.network(case.cold_junctions())
+    step = period / SEEN_STEPS
+    phase_step = 1.0 / SEEN_STEPS if frame.driven else 0.0
+    with np.errstate(all="ignore"):  # a unit that runs away is told by its status
+        tail = march(network, x, step, SEEN_PERIODS * SEEN_STEPS, phase_step)
+    start = _seen_in_time(tail, Start(x, period, case.cold_junctions()), step, frame)
+    return shoot(case, start, frame, steps, SHOOTING_ROUNDS, "power-on", heat=compass.heat)
 
 
 def _decide_in_time(case: Case, compass: Compass, frame: Frame, steps: int) -> Solution:

@@ -27,6 +27,7 @@ class SwitchedOn:
 
     fate: Ints  # (N,)
     figures: Mapping[str, Floats]  # (N,) each
+    x: Floats  # (N, n) states of the ordinary network at the end
 
 
 def expected_of(nominal: Nominal, orbits: Solution, current: Floats) -> Expected:
@@ -85,28 +86,35 @@ def measure_power_on(
     """
     units = np.flatnonzero(chosen)
     if not units.size:
-        return spread_out(None, {}, units, cold)
+        return _spread_out(None, {}, units, cold, expected)
     some = cold.take(units)
     own = ramps.take(units) if ramps is not None else None
     way = own or ramps_of(profiles_of(cold.design), len(units))
     done = switch_on(some, way, take(expected, units), shift)
     figures = {"power_on_time": done.start_time}
     figures |= _strains(some, done) | _latches(some, done, shift)
-    return spread_out(done.fate, figures, units, cold)
+    return _spread_out(done, figures, units, cold, expected)
 
 
-def spread_out(
-    fate: Ints | None, figures: Mapping[str, Floats], units: Ints, case: Case
+def _spread_out(
+    done: PowerOn | None,
+    figures: Mapping[str, Floats],
+    units: Ints,
+    case: Case,
+    expected: Expected,
 ) -> SwitchedOn:
     """Answers of some units among all of a case."""
     whole = np.full(case.units, Fate.NOT_RUN, dtype=np.intp)
-    if fate is not None:
-        whole[units] = fate
+    x = np.full((case.units, len(expected.scale)), np.nan)
+    if done is not None:
+        whole[units] = done.fate
+        places = [done.network.index[name] for name in expected.scale]
+        x[units] = done.journey.x[:, places]
     columns = {}
     for name, values in figures.items():
         columns[name] = np.full(case.units, np.nan)
         columns[name][units] = values
-    return SwitchedOn(whole, columns)
+    return SwitchedOn(whole, columns, x)
 
 
 def _strains(case: Case, done: PowerOn) -> dict[str, Floats]:

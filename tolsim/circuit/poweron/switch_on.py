@@ -16,6 +16,7 @@ from numpy.typing import NDArray
 
 from tolsim.circuit.devices import Floats, Ints
 from tolsim.circuit.network import Network
+from tolsim.circuit.poweron.envelope import BURST_RATIO, OSCILLATES, comes_and_goes, envelope
 from tolsim.circuit.poweron.fates import Fate
 from tolsim.circuit.poweron.path import RampPath, follow_ramp, onset
 from tolsim.circuit.poweron.ramps import Shortened, shortened
@@ -32,10 +33,7 @@ MOST_PERIODS = 4000.0
 SLOW_TIMES = 5.0  # of the slowest time constant of the bias network, to settle
 SEED_SHARE = 2e-3  # of the orbit's swing: small enough to grow by itself
 LEAST_NOISE = 1e-6  # V; below it the port equations are not solved
-BURST_RATIO = 1.3  # of largest to smallest swing in the last third, for bursts
-OSCILLATES = 0.05  # of the goal: less is no oscillation
 NEAR_ORBIT = 0.35  # swing within this share of the orbit's counts as that orbit
-TURNS = 3  # crossings of the middle level by the envelope of a bursting unit
 CONDUCTS = 0.1  # of the running current, through a switch at rest
 TOLERANCE = 2e-3  # local error: peaks on the way are then right to a few tenths of a percent
 
@@ -242,45 +240,10 @@ def _fates(
     late = journey.ending == Ending.TIME_UP
     faded = late & hopeless & (swing < OSCILLATES * wanted)
     fate = np.where(quiet | faded, resting, fate)
-    ratio, level = _envelope(journey)
+    ratio, level = envelope(journey)
     steady = late & (ratio < BURST_RATIO) & (level > OSCILLATES * wanted)
     near = np.abs(level / wanted - 1.0) < NEAR_ORBIT
     fate = np.where(steady & near, Fate.STARTS, fate)
     fate = np.where(steady & ~near, Fate.OTHER_SWING, fate)
-    bursts = (
-        late & (ratio >= BURST_RATIO) & _comes_and_goes(journey) & (level > OSCILLATES * wanted)
-    )
+    bursts = late & (ratio >= BURST_RATIO) & comes_and_goes(journey) & (level > OSCILLATES * wanted)
     return np.where(bursts, Fate.BURSTS, fate)
-
-
-def _last_third(journey: Journey) -> Floats:
-    """Swing of the lead in the last third of the windows, NaN where there is none, (N, w)."""
-    swing = (journey.watch_high[:, :, 0] - journey.watch_low[:, :, 0]).astype(float)
-    window = np.arange(swing.shape[1])
-    kept = np.minimum(journey.windows, swing.shape[1])[:, None]
-    inside = (window >= kept - np.maximum(kept // 3, 1)) & (window < kept)
-    return np.where(inside, swing, np.nan)
-
-
-def _envelope(journey: Journey) -> tuple[Floats, Floats]:
-    """Largest over smallest swing of the last third of the run, and its median."""
-    swing = _last_third(journey)
-    some = np.isfinite(swing).any(axis=1)
-    ratio, level = np.full(len(swing), np.inf), np.zeros(len(swing))
-    if some.any():
-        high, low = np.nanmax(swing[some], axis=1), np.nanmin(swing[some], axis=1)
-        ratio[some] = high / np.maximum(low, 1e-30)
-        level[some] = np.nanmedian(swing[some], axis=1)
-    return ratio, level
-
-
-def _comes_and_goes(journey: Journey) -> NDArray[np.bool_]:
-    """Whether the swing has both risen and fallen much within the last third, more than once."""
-    swing = _last_third(journey)
-    answer = np.zeros(len(swing), dtype=bool)
-    for unit, row in enumerate(swing):
-        kept = row[np.isfinite(row)]
-        if kept.size:
-            high = kept > 0.5 * (kept.max() + kept.min())
-            answer[unit] = np.count_nonzero(high[1:] != high[:-1]) >= TURNS
-    return answer
