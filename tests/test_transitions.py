@@ -13,6 +13,7 @@ import quick_study
 
 from tolsim.answers.lines import summary_lines
 from tolsim.answers.transition_words import fate_words
+from tolsim.circuit.charge import islands
 from tolsim.circuit.continuation import solve_units
 from tolsim.circuit.load_change.passage import Fate, travel_road
 from tolsim.circuit.orbit import Status
@@ -282,7 +283,8 @@ def test_an_unlucky_lamp_fails(plan):
 def arrival(plan: Plan, condition: str, number: int, draws, cycles: float) -> float:
     """Largest gap between the ends of a change and the orbits shooting finds in that state.
 
-    Compared are the extremes of every state over a cycle, relative to the size of the state.
+    Compared are the extremes of every state over a cycle, relative to the size of the state; of
+    nets on an island only their distance, for the charge trapped there is a matter of the past.
     """
     transition = plan.study.transitions[number]
     move = plan.moves[condition, number]
@@ -303,13 +305,14 @@ def arrival(plan: Plan, condition: str, number: int, draws, cycles: float) -> fl
         tolerance=1e-4,
     )
     assert not np.isin(passage.fate, [Fate.DIES, Fate.UNDECIDED]).any()
+    loose = islands(after.network(new.junctions)).any(axis=0)
     worst = 0.0
     for unit, count in enumerate(np.isfinite(passage.ends).sum(axis=1)):
-        for ours, theirs in (
-            (passage.watch_high[unit, count - 1, 1:], new.samples[:, unit].max(axis=0)),
-            (passage.watch_low[unit, count - 1, 1:], new.samples[:, unit].min(axis=0)),
-        ):
-            worst = max(worst, float((np.abs(ours - theirs) / move.scale).max()))
+        high = passage.watch_high[unit, count - 1, 1:] - new.samples[:, unit].max(axis=0)
+        low = passage.watch_low[unit, count - 1, 1:] - new.samples[:, unit].min(axis=0)
+        held = np.maximum(np.abs(high), np.abs(low))
+        gap = np.where(loose, np.abs(high - low), held) / move.scale
+        worst = max(worst, float(gap.max()))
     return worst
 
 
