@@ -277,3 +277,16 @@ def test_what_the_operator_puts_aside_fails_and_what_he_leaves_open_is_undecided
     ]
     assert judged.verdict.tolist() == ["fail", "fail", "undecided", "fail", "undecided"]
     assert judged.failed_limits.tolist() == ["", "0", "", "0", ""]
+
+
+def test_two_switches_latch_both():
+    """With a second switch the word says that both conduct."""
+    one = study()
+    parts = {"Q1": one.design.parts["Q1"], "Q2": one.design.parts["Q1"]}
+    design = one.design.model_copy(update={"parts": parts})
+    two = one.model_copy(update={"design": design})
+    columns = {name: np.array([value]) for name, value in GOOD.items()}
+    found = judge(
+        two, "room", "dark", np.array([Status.SETTLED]), columns, NOMINAL, np.array([Fate.LATCHED])
+    )
+    assert found.outcome.tolist() == ["latched both on"]

@@ -118,6 +118,24 @@ def slope_of(values: Values) -> Slope:
     return slope
 
 
+def power_on(values: Values, rise: float, duration: float, rtol: float) -> tuple[Array, Array]:
+    """Times (m,) and states (9, m) from zero charge, both supplies rising in equal parts."""
+    flat = values.flat()
+
+    def slope(t: float, x: Array) -> Array:
+        now = flat.copy()
+        now[:2] *= min(t / rise, 1.0)
+        return np.asarray(_slope(x, now))
+
+    start, times, states = np.zeros(9), [], []
+    for span in ((0.0, rise), (rise, duration)):  # the corner is no place to step across
+        answer = solve_ivp(slope, span, start, method="LSODA", rtol=rtol, atol=rtol * 1e-2)
+        start = answer.y[:, -1]
+        times.append(answer.t)
+        states.append(answer.y)
+    return np.hstack(times), np.hstack(states)
+
+
 def bias_point(values: Values) -> Array:
     """DC state, shape (9,)."""
     slope = slope_of(values)

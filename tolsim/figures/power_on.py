@@ -92,7 +92,7 @@ def measure_power_on(
     way = own or ramps_of(profiles_of(cold.design), len(units))
     done = switch_on(some, way, take(expected, units), shift)
     figures = {"power_on_time": done.start_time}
-    figures |= _strains(some, done) | _latches(some, done, shift)
+    figures |= _strains(some, done) | _latches(some, done)
     return _spread_out(done, figures, units, cold, expected)
 
 
@@ -145,13 +145,13 @@ def _across(done: PowerOn, net: str, source: str, port: str) -> int:
     return done.network.states + done.network.ports[port]
 
 
-def _latches(case: Case, done: PowerOn, shift: float) -> dict[str, Floats]:
+def _latches(case: Case, done: PowerOn) -> dict[str, Floats]:
     """Current and time to damage of the latched units; NaN for all others."""
     units = np.flatnonzero(done.fate == Fate.LATCHED)
     names = [f"{ref}.latch_damage_time" for ref in mosfets(case.design)]
     found = {name: np.full(case.units, np.nan) for name in ("latch_current", *names)}
     if units.size:
-        latch = latch_of(case.take(units), shift)
+        latch = latch_of(case.take(units))
         found["latch_current"][units] = latch.current
         for ref, time in latch.damage_time.items():
             found[f"{ref}.latch_damage_time"][units] = np.where(np.isinf(time), np.nan, time)

@@ -59,7 +59,8 @@ def look_at_bursts(case: Case, orbits: Solution, lead: int, scale: Floats) -> In
     share = level / goal.swing[:, lead]
     status = np.full(case.units, Status.UNSTABLE, dtype=np.intp)
     back = (ratio < STEADY) & (np.abs(share - 1.0) < NEAR) & (periods < MOST)
-    died = (share < OSCILLATES) & ~((ratio >= BURST_RATIO) & comes_and_goes(journey))
+    swings = comes_and_goes(journey, np.zeros(case.units), OSCILLATES * goal.swing[:, lead])
+    died = (share < OSCILLATES) & ~((ratio >= BURST_RATIO) & swings)
     status[back] = Status.SETTLED
     status[died] = Status.NO_ORBIT
     return status

@@ -10,7 +10,7 @@ from tolsim.circuit.transients.journey import Journey
 
 BURST_RATIO = 1.3  # of largest to smallest swing in the last third, for bursts
 OSCILLATES = 0.05  # of the goal: less is no oscillation
-TURNS = 3  # crossings of the middle level by the envelope of a bursting unit
+TURNS = 4  # crossings of the middle level by the envelope of a bursting unit: two ups and downs
 
 
 def _last_third(journey: Journey) -> Floats:
@@ -34,13 +34,25 @@ def envelope(journey: Journey) -> tuple[Floats, Floats]:
     return ratio, level
 
 
-def comes_and_goes(journey: Journey) -> NDArray[np.bool_]:
-    """Whether the swing has both risen and fallen much within the last third, more than once."""
-    swing = _last_third(journey)
+def comes_and_goes(journey: Journey, up: Floats, least: Floats) -> NDArray[np.bool_]:
+    """Whether the swing has risen and fallen much, and more than once, since all sources are up.
+
+    Parameters
+    ----------
+    up : (N,)
+        s, when the sources had reached their final values.
+    least : (N,)
+        Swing below which there is no oscillation.  Bursts may be short against the pauses between
+        them, so it is held against the largest swing of the last third, not against its median.
+    """
+    late = _last_third(journey)
+    swing = journey.watch_high[:, :, 0] - journey.watch_low[:, :, 0]
+    begun = np.maximum((up - journey.begin) / journey.window, 0.0).astype(int)
     answer = np.zeros(len(swing), dtype=bool)
     for unit, row in enumerate(swing):
-        kept = row[np.isfinite(row)]
-        if kept.size:
+        kept = row[begun[unit] : journey.windows[unit]]
+        tail = late[unit][np.isfinite(late[unit])]
+        if kept.size and tail.size and tail.max() > least[unit]:
             high = kept > 0.5 * (kept.max() + kept.min())
             answer[unit] = np.count_nonzero(high[1:] != high[:-1]) >= TURNS
     return answer

@@ -1,11 +1,15 @@
 """How long a unit with its switches on and no oscillation lasts, until a junction is too hot.
 
-The supply then sees chokes and switches in series.  Its current rises with the slowest electrical
-time constant tau of the circuit at that bias point, i(t) = I (1 - exp(-t/tau)), and with it the
+The supply then sees chokes and switches in series.  Its current rises with an electrical time
+constant tau of the circuit at that bias point, i(t) = I (1 - exp(-t/tau)), and with it the
 dissipation, P(t) = P(T) (i/I)^2, where P(T) is that of the bias point at junction temperature T.
 The junction is one thermal pole, C dT/dt = P - (T - T_ambient) / R, so that C matters while the
 current is short and R when it lasts.  The heat capacity is that of the junction and what is
 fastened to it; where a part does not state one, `HEAT_CAPACITY` stands in (a guess).
+
+For tau the area between I and i(t) is taken, divided by I, as in W. C. Elmore, "The transient
+response of damped linear networks", J. Appl. Phys. 19 (1948) 55: the slowest mode would not do,
+for it is a charge trapped between capacitors, which the current does not feel.
 """
 
 from __future__ import annotations
@@ -15,14 +19,16 @@ from dataclasses import dataclass
 
 import numpy as np
 
-from tolsim.circuit.bias import bias_point
+from tolsim.circuit.bias import Bias, bias_point
 from tolsim.circuit.devices import Floats
-from tolsim.circuit.startup import modes
+from tolsim.circuit.network import Network
+from tolsim.circuit.startup import small_signal
 from tolsim.circuit.thermal import HIGHEST_C, Case, dissipation, mosfets
 
 HEAT_CAPACITY = 0.05  # J/K, a power package's die and the tab under it (guess)
 FIRST_MOMENT, LAST_MOMENT = 1e-7, 1e3  # s
 MOMENTS = 800
+SHORTEST_RISE = 1e-9  # s
 GRID = (0.0, 50.0, 100.0, 175.0, HIGHEST_C - 25.0)  # K above ambient, for P(T)
 
 
@@ -31,19 +37,17 @@ class Latch:
     """N units that sit in DC conduction."""
 
     current: Floats  # (N,) A, of all rails in the end, junctions at ambient
-    rise_time: Floats  # (N,) s, electrical time constant tau
+    rise_time: Floats  # (N,) s, electrical time constant tau of the current
     damage_time: Mapping[str, Floats]  # MOSFET -> (N,) s to its junction limit; inf if never
 
 
-def latch_of(case: Case, shift: float, guess: Floats | None = None) -> Latch:
+def latch_of(case: Case, guess: Floats | None = None) -> Latch:
     """What DC conduction does to the units of a case.
 
     Parameters
     ----------
     case : Case
         N cold units.
-    shift : float, rad/s
-        Angular frequency scale of the stage.
     guess : (N, n), optional
         Bias points to begin from.
     """
@@ -61,9 +65,7 @@ def latch_of(case: Case, shift: float, guess: Floats | None = None) -> Latch:
         if above == 0.0:
             flows, *_ = network.devices.evaluate(bias.v)
             current = sum((s.at(bias.x, flows) for s in network.supplies.values()), current)
-            rate = -modes(network, bias, shift).eigenvalues.real
-            slow = np.isfinite(rate) & (rate > 1.0 / LAST_MOMENT)
-            rise = 1.0 / np.where(slow, rate, np.inf).min(axis=1)
+            rise = _rise_time(network, bias, current)
     times = {}
     for ref, part in mosfets(case.design).items():
         limit = part.rating.junction_temperature
@@ -78,6 +80,21 @@ def latch_of(case: Case, shift: float, guess: Floats | None = None) -> Latch:
                 part.thermal_capacity or HEAT_CAPACITY,
             )
     return Latch(current, rise, times)
+
+
+def _rise_time(network: Network, bias: Bias, current: Floats) -> Floats:
+    """Area missing under the supply current as it rises from zero charge, over `current`, (N,) s.
+
+    With C dx/dt + J x = b the area under the missing states is J^-1 C x(end).
+    """
+    storage, slopes, _ = small_signal(network, bias)
+    missing = np.einsum("uij,uj->ui", storage, bias.x)[:, :, None]
+    area = np.linalg.solve(slopes, missing)[:, :, 0]
+    flows = np.einsum("uij,uj->ui", bias.G, area @ network.D.T)
+    charge = np.zeros(network.units)
+    for supply in network.supplies.values():
+        charge = charge + supply.at(area, flows, 0.0)
+    return np.maximum(charge / current, SHORTEST_RISE)
 
 
 def _time_to(

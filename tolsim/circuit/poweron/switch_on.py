@@ -146,7 +146,7 @@ def switch_on(
         tolerance=TOLERANCE,
     )
     idle = _idle_current(final, path)
-    fate = _fates(journey, goal, hopeless, idle > CONDUCTS * expected.current)
+    fate = _fates(journey, goal, clock.ramps.up, hopeless, idle > CONDUCTS * expected.current)
     return PowerOn(
         fate=fate,
         start_time=clock.real_time(journey.reached),
@@ -228,9 +228,13 @@ def _idle_current(final: Network, path: RampPath) -> Floats:
 
 
 def _fates(
-    journey: Journey, goal: Goal, hopeless: NDArray[np.bool_], conducts: NDArray[np.bool_]
+    journey: Journey,
+    goal: Goal,
+    up: Floats,
+    hopeless: NDArray[np.bool_],
+    conducts: NDArray[np.bool_],
 ) -> Ints:
-    """What became of every unit."""
+    """What became of every unit; `up` (N,) s is when the sources had reached their final values."""
     fate = np.full(len(journey.ending), Fate.UNDECIDED, dtype=np.intp)
     swing = (journey.last_high - journey.last_low)[:, goal.lead]
     wanted = goal.swing[:, goal.lead]
@@ -245,5 +249,5 @@ def _fates(
     near = np.abs(level / wanted - 1.0) < NEAR_ORBIT
     fate = np.where(steady & near, Fate.STARTS, fate)
     fate = np.where(steady & ~near, Fate.OTHER_SWING, fate)
-    bursts = late & (ratio >= BURST_RATIO) & comes_and_goes(journey) & (level > OSCILLATES * wanted)
+    bursts = late & (ratio >= BURST_RATIO) & comes_and_goes(journey, up, OSCILLATES * wanted)
     return np.where(bursts, Fate.BURSTS, fate)
