@@ -9,7 +9,7 @@ nominal one.
 from __future__ import annotations
 
 from collections.abc import Mapping
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from typing import Final
 
 import numpy as np
@@ -26,6 +26,7 @@ from tolsim.circuit.transients.journey import Ramps
 from tolsim.design import Design, Study
 from tolsim.evaluation import Plan
 from tolsim.figures import measure_orbits
+from tolsim.figures.power_on import expected_of, take
 from tolsim.nominals import CaseName, PreparedCase, case_of
 from tolsim.spread.part_values import nominal_values, part_values
 from tolsim.spread.sampling import Draws
@@ -75,10 +76,7 @@ class Running:
 
     def take(self, units: Ints) -> Running:
         """Return some of the units."""
-        own = self.expected
-        expected = Expected(
-            own.swing[units], own.period[units], own.lead, own.scale, own.current[units]
-        )
+        expected = take(self.expected, units)
         mean = {name: value[units] for name, value in self.mean.items()}
         return Running(self.cold.take(units), expected, self.has_orbit[units], self.shift, mean)
 
@@ -115,10 +113,9 @@ def running(
     both = _joined(warm, nominal)
     solution = solve_units(both, prepared.compass, plan.study.run.steps_per_cycle)
     found = np.asarray(solution.status == Status.SETTLED)
-    expected = expected_of(both, solution, prepared)
+    expected, there = _expected(both, solution, prepared)
     units = np.arange(cold.units)
-    usual = prepared.compass.nominal.solution if not found[-1] else solution
-    last = usual.samples[:-1, -1].mean(axis=0)
+    last = there.samples[:-1, 0].mean(axis=0)
     means = np.where(found[:, None], solution.samples[:-1].mean(axis=0), last)
     mean = dict(zip(expected.scale, means.T, strict=True))
     return Running(cold, expected, found, prepared.nominal.shift, mean).take(units)
@@ -140,31 +137,21 @@ def _joined(units: Case, nominal: Case) -> Case:
     return Case(units.design, values, units.heated)
 
 
-def expected_of(case: Case, solution: Solution, prepared: PreparedCase) -> Expected:
-    """Orbits as a power-on wants them; units without take that of the last one, the nominal.
+def _expected(case: Case, solution: Solution, prepared: PreparedCase) -> tuple[Expected, Solution]:
+    """Orbits as a power-on wants them, and the one that units without take: the last, the nominal.
 
-    If that has none either, they take the one its compass stands on.
+    If that has none either, it is the one its compass stands on.
     """
     reference = prepared.compass.nominal
-    frame, usual = reference.frame, reference.solution
-    assert frame is not None
-    names = list(reference.case.network(reference.case.cold_junctions()).index)
-    found = np.asarray(solution.status == Status.SETTLED)
+    there = solution.take(np.array([case.units - 1]))
+    if there.status[0] != Status.SETTLED:
+        there = reference.solution
     nowhere = np.full(case.units, np.nan)
     current = measure_orbits(case, solution).get("supply_current", nowhere)
-    if found[-1]:
-        swing, period = np.ptp(solution.samples[:, -1:], axis=0), solution.period[-1:]
-        amperes = float(current[-1])
-    else:
-        swing, period = np.ptp(usual.samples, axis=0), usual.period
-        amperes = prepared.figures.get("supply_current", np.nan)
-    return Expected(
-        swing=np.where(found[:, None], np.ptp(solution.samples, axis=0), swing),
-        period=np.where(found, solution.period, period),
-        lead=names[frame.lead],
-        scale=dict(zip(names, frame.scale.tolist(), strict=True)),
-        current=np.where(found & np.isfinite(current), current, amperes),
-    )
+    current = np.where(solution.status == Status.SETTLED, current, np.nan)
+    usual = current[-1] if np.isfinite(current[-1]) else prepared.figures.get("supply_current")
+    filled = np.where(np.isfinite(current), current, np.nan if usual is None else usual)
+    return expected_of(replace(reference, solution=there), solution, filled), there
 
 
 def moved_study(study: Study, name: CaseName, setting: Setting) -> Study:
