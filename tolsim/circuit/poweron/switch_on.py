@@ -109,28 +109,22 @@ def switch_on(
     """
     network = case.network(junctions or case.cold_junctions(), live_rails=True)
     phase = np.zeros(case.units) if seed_phase is None else seed_phase
-    fast = bool(np.all(ramps.up <= FAST_PERIODS * expected.period))
+    fast = ramps.up <= FAST_PERIODS * expected.period
     goal = _goal(network, expected)
     path = follow_ramp(network, ramps, shift)
     final = network.raised(1.0)
     lead = modes(final, path.last, shift)
     noise = np.maximum(noise_amplitude(final, path.last, lead, case.values["ambient"]), LEAST_NOISE)
-    if fast:
-        begin, x0 = np.zeros(case.units), _mode_of(network, lead.vector, noise, phase)
-        if charge is not None:
-            x0 = x0 + charge
-        clock = shortened(ramps, ramps.up, expected.period)
-    else:
-        seed = SEED_SHARE * np.nanmax(goal.swing[:, _nets(network)], axis=1)
-        seed = np.maximum(seed, 10.0 * noise)
-        found = onset(path, noise, seed)
-        never = ~np.isfinite(found.time)
-        begin = np.where(never, ramps.up, found.time)
-        # a mode that never grew is still at its noise: anything larger would be a kick
-        x0 = found.x + _mode_of(network, found.vector, np.where(never, noise, seed), phase)
-        clock = shortened(
-            ramps, begin + CATCH_PERIODS * expected.period, REST_PERIODS * expected.period
-        )
+    seed = np.maximum(SEED_SHARE * np.nanmax(goal.swing[:, _nets(network)], axis=1), 10.0 * noise)
+    found = onset(path, noise, seed)
+    never = ~np.isfinite(found.time)
+    begin = np.where(fast, 0.0, np.where(never, ramps.up, found.time))
+    # a mode that never grew is still at its noise: anything larger would be a kick
+    late = found.x + _mode_of(network, found.vector, np.where(never, noise, seed), phase)
+    early = _mode_of(network, lead.vector, noise, phase) + (0.0 if charge is None else charge)
+    x0 = np.where(fast[:, None], early, late)
+    knee = np.where(fast, ramps.up, begin + CATCH_PERIODS * expected.period)
+    clock = shortened(ramps, knee, REST_PERIODS * expected.period)
     hopeless = path.final_growth <= 0
     limit = _limit(path, clock, begin, expected.period, lead.eigenvalues)
     journey = travel(
