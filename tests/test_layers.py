@@ -62,7 +62,9 @@ FLOORS = [
     {"circuit.load_change.road"}
     | {"circuit.poweron", "circuit.poweron.fates", "circuit.poweron.ramps", "circuit.poweron.path"}
     | {"circuit.poweron.latch", "circuit.poweron.envelope"},
-    {"circuit.load_change.passage", "circuit.poweron.switch_on", "circuit.poweron.bursts"},
+    {"circuit.load_change.passage", "circuit.poweron.switch_on", "circuit.poweron.bursts"}
+    | {"circuit.poweron.knobs"},
+    {"circuit.poweron.otherwise"},
     {"circuit.shooting"},
     {"circuit.nominal"},
     {"circuit.continuation"},
@@ -80,7 +82,8 @@ FLOORS = [
     {"circuit.bulk.choice"},
     {"figures.parts", "figures.transistors"},
     {"figures.stage", "figures.start", "figures.power_on", "figures.load_change"},
-    {"figures", "verdicts"},
+    {"figures", "figures.track", "verdicts"},
+    {"answers.unit_power_on"},
     {"trim.session"},
     # spread and chance
     {"spread.drift_reading", "spread.table", "spread.measured_reading", "spread.shorthand"},
@@ -116,11 +119,12 @@ FLOORS = [
     {"report.lot_chart", "report.trim_chart", "report.supply_chart"} | {"report.start_map_chart"},
     {"report.trim_section", "report.reel_section", "report.start_section"}
     | {"report.transition_section"},
-    {"report.page", "report.unit_picture", "report.table_picture"},
+    {"report.page", "report.unit_picture", "report.table_picture"}
+    | {"report.power_on_picture"},
     {"report", "unit_changes"},
     {"inputs"},
     # the corridor, and the faces
-    {"crosscheck", "heatcheck", "presentation", "recheck", "solver_choice"},
+    {"crosscheck", "heatcheck", "presentation", "recheck", "retelling", "solver_choice"},
     {"workers"},
     {"building", "lawcheck", "modelcheck", "starts.attempt"},
     {"starts.grid", "starts.contract", "starts.repeats"},

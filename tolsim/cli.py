@@ -222,13 +222,15 @@ def unit(results: Path, number: int) -> None:
 
     RESULTS is the folder that `tolsim run` wrote, UNIT the number of the unit.
     """
-    from tolsim.replay import draw_replay, replay_unit, story_text
+    from tolsim.replay import draw_power_on, draw_replay, replay_unit, story_text
 
     replay = replay_unit(results, number)
     click.echo(story_text(replay))
     picture = draw_replay(replay, results)
     if picture is not None:
         click.echo(f"Waveforms: {picture}")
+    for drawn in draw_power_on(replay, results):
+        click.echo(f"Power-on: {drawn}")
 
 
 @main.command()

@@ -9,6 +9,7 @@ from __future__ import annotations
 from collections.abc import Mapping
 from dataclasses import dataclass, replace
 from pathlib import Path
+from textwrap import wrap
 
 import numpy as np
 import pandas as pd
@@ -21,12 +22,14 @@ from tolsim.answers.start_words import tries_story
 from tolsim.answers.trims import trim_sentence, way_sentence
 from tolsim.answers.wording import shown
 from tolsim.circuit.orbit import Status
+from tolsim.circuit.poweron.fates import Fate
 from tolsim.design import Study
 from tolsim.errors import RequestError
 from tolsim.evaluation import Plan, solve_case, trim_drawn
 from tolsim.nominals import CaseName, prepare
 from tolsim.presentation import Signal, signals
 from tolsim.quantity import show
+from tolsim.retelling import SwitchedOnAgain, power_on_sentences, switch_on_again
 from tolsim.spread.quantity_words import factor_words
 from tolsim.spread.sampling import Draws, draw, factors
 from tolsim.stats.ranking import rank_correlation, readings_of
@@ -39,6 +42,7 @@ FEWEST_UNITS = 20  # stored units from which a rank correlation means something
 CONFIDENCE = 0.95
 FINE_DIGITS = 6
 DRAW_TOLERANCE = 1e-12
+LINE = 80  # columns
 
 
 @dataclass(frozen=True)
@@ -54,12 +58,19 @@ class Replay:
         What it does and why, as sentences.
     signals : mapping
         (condition, state) -> signals of the unit beside the nominal unit, for cases with an orbit.
+    power_on : mapping
+        (condition, state) -> the unit switched on again in time beside the nominal unit and the
+        nearest passing one, for states that units start in.
+    neighbour : int or None
+        Number of the nearest passing unit; None if the unit passes or none does.
     """
 
     number: int
     rows: pd.DataFrame
     story: tuple[str, ...]
     signals: Mapping[CaseName, tuple[Signal, ...]]
+    power_on: Mapping[CaseName, SwitchedOnAgain]
+    neighbour: int | None
 
 
 def replay_unit(folder: Path | str, number: int) -> Replay:
@@ -83,13 +94,15 @@ def replay_unit(folder: Path | str, number: int) -> Replay:
     plan = Plan(study, opened.tables, names, prepare(study, opened.tables, jobs=None))
     trimmed = trim_drawn(plan, draws)
     draws = replace(draws, moved=trimmed.moved)
-    found = {}
+    found, solved = {}, {}
     for name, prepared in plan.cases.items():
-        case, solution = solve_case(plan, name, draws)
+        case, solution = solved[name] = solve_case(plan, name, draws)
         if prepared.nominal.found and solution.status[0] in (Status.SETTLED, Status.UNSTABLE):
             found[name] = tuple(signals(study, prepared.nominal, case, solution))
     broken = _broken(opened, rows)
     influence = _influence(results, draws.names, broken, _not_set(trimmed))
+    neighbour = _neighbour(results, draws, influence)
+    power_on = switch_on_again(plan, draws, neighbour, solved)
     story = (
         *_version_story(results),
         *_lot_story(results, study, number),
@@ -97,9 +110,10 @@ def replay_unit(folder: Path | str, number: int) -> Replay:
         *_outcome_story(opened, rows, broken),
         *tries_story(results.summary, number),
         *_draw_story(draws, influence),
-        *_neighbour(results, draws, influence),
+        *_neighbour_story(draws, influence, neighbour),
+        *power_on_sentences(plan, power_on, neighbour),
     )
-    return Replay(number, rows, story, found)
+    return Replay(number, rows, story, found, power_on, neighbour)
 
 
 def _version_story(results: Results) -> list[str]:
@@ -283,26 +297,41 @@ def _draw_story(draws: Draws, influence: _Influence) -> list[str]:
     ]
 
 
-def _neighbour(results: Results, draws: Draws, influence: _Influence) -> list[str]:
-    """The passing unit whose important factors are nearest."""
+def _away(draws: Draws, influence: _Influence) -> NDArray[np.float64]:
+    """How far every stored unit is from the drawn one, (N, k) standard deviations."""
+    table = influence.factors
+    spread = np.where(table.std(axis=0) > 0, table.std(axis=0), 1.0)
+    return np.asarray((table - draws.values[0]) / spread)
+
+
+def _neighbour(results: Results, draws: Draws, influence: _Influence) -> int | None:
+    """The passing unit whose important factors are nearest; None if the unit passes itself."""
     units = results.unit_columns
     passed = (units.column("verdict") == "pass").groupby(units.column("unit")).all()
     if not passed.any() or passed.get(draws.first, False):
-        return []
-    table = influence.factors
-    spread = np.where(table.std(axis=0) > 0, table.std(axis=0), 1.0)
-    away = (table - draws.values[0]) / spread
-    gap = (away**2 * influence.weights).sum(axis=1)
+        return None
+    gap = (_away(draws, influence) ** 2 * influence.weights).sum(axis=1)
     gap[~passed.reindex(influence.numbers).to_numpy(bool)] = np.inf
-    nearest = int(np.argmin(gap))
-    leading = np.argsort(-np.abs(away[nearest]) * np.sqrt(influence.weights))[:3]
-    moves = ", ".join(f"{factor_words(draws.names[k])} {away[nearest, k]:+.1f} sd" for k in leading)
-    return [f"Nearest passing unit: {influence.numbers[nearest]}, which differs by {moves}."]
+    return int(influence.numbers[np.argmin(gap)])
+
+
+def _neighbour_story(draws: Draws, influence: _Influence, neighbour: int | None) -> list[str]:
+    """In what the nearest passing unit differs."""
+    if neighbour is None:
+        return []
+    away = _away(draws, influence)[np.flatnonzero(influence.numbers == neighbour)[0]]
+    leading = np.argsort(-np.abs(away) * np.sqrt(influence.weights))[:3]
+    moves = ", ".join(f"{factor_words(draws.names[k])} {away[k]:+.1f} sd" for k in leading)
+    return [f"Nearest passing unit: {neighbour}, which differs by {moves}."]
 
 
 def story_text(replay: Replay) -> str:
-    """The story as text for the terminal."""
-    return "\n".join([f"Unit {replay.number}", *replay.story])
+    """The story as text for the terminal, lines of at most 80 columns."""
+    lines = [f"Unit {replay.number}"]
+    for sentence in replay.story:
+        indent = " " * (len(sentence) - len(sentence.lstrip()) + 2)
+        lines += wrap(sentence, LINE, subsequent_indent=indent) or [""]
+    return "\n".join(lines)
 
 
 def draw_replay(replay: Replay, folder: Path | str) -> Path | None:
@@ -329,3 +358,25 @@ def draw_replay(replay: Replay, folder: Path | str) -> Path | None:
         path,
     )
     return path
+
+
+def draw_power_on(replay: Replay, folder: Path | str) -> list[Path]:
+    """Pictures (PNG and SVG) of its power-on where it fails first, else of the first case."""
+    from tolsim.report.power_on_picture import Beside, Panel, draw_tracks
+
+    if not replay.power_on:
+        return []
+    cases = replay.power_on.items()
+    failing = (one for one in cases if one[1].unit.fate != Fate.STARTS)
+    name, case = next(failing, next(iter(cases)))
+    beside = [Beside("nominal unit", case.nominal)]
+    if case.neighbour is not None:
+        beside.append(Beside(f"unit {replay.neighbour}, which passes", case.neighbour))
+    title = f"Unit {replay.number} switched on in {' / '.join(name)}"
+    base = Path(folder) / f"unit-{replay.number}-power-on"
+    unit = case.unit
+    panels = [
+        Panel(one, words, "A" if (one or unit.lead) in unit.currents else "V")
+        for one, words in case.titles.items()
+    ]
+    return draw_tracks(title, unit, beside, panels, base)

@@ -91,9 +91,13 @@ def measure_power_on(
     own = ramps.take(units) if ramps is not None else None
     way = own or ramps_of(profiles_of(cold.design), len(units))
     done = switch_on(some, way, take(expected, units), shift)
+    return _spread_out(done, figures_of(some, done), units, cold, expected)
+
+
+def figures_of(case: Case, done: PowerOn) -> dict[str, Floats]:
+    """Figures of units that were switched on, (N,) each."""
     figures = {"power_on_time": done.start_time}
-    figures |= _strains(some, done) | _latches(some, done)
-    return _spread_out(done, figures, units, cold, expected)
+    return figures | _strains(case, done) | _latches(case, done)
 
 
 def _spread_out(

@@ -67,6 +67,10 @@ class PowerOn:
         With live rails; its states are those of the journey.
     idle_current : (N,)
         A, at the bias point that a unit without oscillation comes to.
+    path : RampPath
+        Bias points and leading modes along the ramp, on real time.
+    watched : tuple of str
+        States and ports whose ranges the journey keeps window by window.
     """
 
     fate: Ints
@@ -76,6 +80,8 @@ class PowerOn:
     clock: Shortened
     network: Network
     idle_current: Floats
+    path: RampPath
+    watched: tuple[str, ...]
 
 
 def switch_on(
@@ -87,6 +93,7 @@ def switch_on(
     seed_phase: Floats | None = None,
     charge: Floats | None = None,
     junctions: Mapping[str, Floats] | None = None,
+    also: tuple[str, ...] = (),
 ) -> PowerOn:
     """Switch the units of a case on.
 
@@ -106,6 +113,8 @@ def switch_on(
         Residual states at power-on (of the live network); zero if not given.
     junctions : mapping, optional
         Junction temperatures, degC; ambient if not given.
+    also : tuple of str, optional
+        Further states or ports to be watched.
     """
     network = case.network(junctions or case.cold_junctions(), live_rails=True)
     phase = np.zeros(case.units) if seed_phase is None else seed_phase
@@ -127,6 +136,7 @@ def switch_on(
     clock = shortened(ramps, knee, REST_PERIODS * expected.period)
     hopeless = path.final_growth <= 0
     limit = _limit(path, clock, begin, expected.period, lead.eigenvalues)
+    watched = _watched(case, network, also)
     journey = travel(
         network,
         x0,
@@ -136,7 +146,7 @@ def switch_on(
         limit,
         begin=begin,
         hopeless=hopeless,
-        watch=_watched(case, network),
+        watch=tuple(_place(network, name) for name in watched),
         tolerance=TOLERANCE,
     )
     idle = _idle_current(final, path)
@@ -149,6 +159,8 @@ def switch_on(
         clock=clock,
         network=network,
         idle_current=idle,
+        path=path,
+        watched=(expected.lead, *watched),
     )
 
 
@@ -174,11 +186,19 @@ def _goal(network: Network, expected: Expected) -> Goal:
     return Goal(swing, scale, network.index[expected.lead])
 
 
-def _watched(case: Case, network: Network) -> tuple[int, ...]:
-    """Drains, gates and inductor currents: what a start is told by."""
+def _watched(case: Case, network: Network, also: tuple[str, ...]) -> tuple[str, ...]:
+    """Drains, gates and inductor currents: what a start is told by; then what is asked for."""
     names = [name for part in mosfets(case.design).values() for name in (part.drain, part.gate)]
     names += [name for name in network.index if name in network.branches]
-    return tuple(network.index[name] for name in dict.fromkeys(names) if name in network.index)
+    known = [name for name in dict.fromkeys(names) if name in network.index]
+    return tuple(dict.fromkeys((*known, *also)))
+
+
+def _place(network: Network, name: str) -> int:
+    """Place of a state or port in the ranges of a journey."""
+    if name in network.index:
+        return network.index[name]
+    return network.states + network.ports[name]
 
 
 def _mode_of(
