@@ -119,8 +119,7 @@ FLOORS = [
     {"report.lot_chart", "report.trim_chart", "report.supply_chart"} | {"report.start_map_chart"},
     {"report.trim_section", "report.reel_section", "report.start_section"}
     | {"report.transition_section"},
-    {"report.page", "report.unit_picture", "report.table_picture"}
-    | {"report.power_on_picture"},
+    {"report.page", "report.unit_picture", "report.table_picture"} | {"report.power_on_picture"},
     {"report", "unit_changes"},
     {"inputs"},
     # the corridor, and the faces

@@ -129,9 +129,7 @@ def test_knobs_are_found_by_the_nets() -> None:
     """Rails behind chokes are supplies, what reaches gates through resistors is bias."""
     base = circuit_a()
     assert knobs_of(base) == (Knob("ramp", "vdd"), Knob("supply", "vdd"), Knob("bias", "vb"))
-    pot = Potentiometer(
-        kind="potentiometer", nets=("gnd", "w", "vb"), resistance=1e4, setting=0.5
-    )
+    pot = Potentiometer(kind="potentiometer", nets=("gnd", "w", "vb"), resistance=1e4, setting=0.5)
     moved = {
         ref: part.model_copy(update={"nets": ("w", part.nets[1])}) if ref[:2] == "RB" else part
         for ref, part in base.parts.items()

@@ -14,7 +14,7 @@ from tolsim import building
 from tolsim.answers.results import Results
 from tolsim.circuit.shooting import TOLERANCE
 from tolsim.errors import RequestError, RunError
-from tolsim.replay import draw_replay, replay_unit, story_text
+from tolsim.replay import draw_power_on, draw_replay, replay_unit, story_text
 from tolsim.run import run_study
 
 UNITS = 12
@@ -124,6 +124,21 @@ def test_replay_tells_the_stored_unit(finished: Path) -> None:
     picture = draw_replay(replay, finished)
     assert picture is not None
     assert picture.read_bytes().startswith(b"\x89PNG")
+    assert max(map(len, text.splitlines())) <= 80
+
+
+def test_replay_switches_the_unit_on_again(finished: Path) -> None:
+    """Start time and peaks of the replay are those of the run where it has them."""
+    units = pd.read_parquet(finished / "units.parquet")
+    row = units[(units["power_on"] == "starts") & (units["unit"] < UNITS)].iloc[0]
+    replay = replay_unit(finished, int(row["unit"]))
+    ((name, case),) = replay.power_on.items()
+    assert name == ("room", "lit")
+    assert case.unit.fate.name == "STARTS"
+    for figure in ("power_on_time", "QA.power_on_drain_peak", "LA.power_on_current_peak"):
+        assert case.unit.figures[figure] == pytest.approx(row[figure], rel=1e-3)
+    assert "Power-on in room / lit:" in story_text(replay)
+    assert [path.suffix for path in draw_power_on(replay, finished)] == [".png", ".svg"]
 
 
 def test_replay_of_a_failing_unit_names_limit_and_neighbour(finished: Path) -> None:
