@@ -11,7 +11,7 @@ import pytest
 from circuits import circuit_a
 from stages import units_of
 
-from tolsim.answers.power_on_words import parting_sentence, power_on_story, remedy_sentences
+from tolsim.answers.unit_power_on import parting_sentence, power_on_story, remedy_sentences
 from tolsim.circuit.nominal import find_nominal
 from tolsim.circuit.poweron.fates import Fate
 from tolsim.circuit.poweron.knobs import Knob, knobs_of
