@@ -142,7 +142,7 @@ def track_of(
         wanted=float(expected.swing[0, list(expected.scale).index(expected.lead)]),
         integrated_from=float(done.journey.begin[0]),
         thresholds={ref: float(hot[f"{ref}.threshold"][0]) for ref in refs},
-        figures={name: float(v[0]) for name, v in figures_of(case, done, shift).items()},
+        figures={name: float(v[0]) for name, v in figures_of(case, done).items()},
         idle_current=float(done.idle_current[0]),
         currents=tuple(name for name in high if name in done.network.branches),
     )

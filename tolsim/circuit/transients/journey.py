@@ -15,7 +15,7 @@ from tolsim.circuit.transients.kernel import LOST, QUIET, SETTLED, TIME_UP, Reco
 from tolsim.circuit.transients.sources import sources_of
 from tolsim.circuit.transients.stepping import Circuit
 
-RUNGS = 6
+RUNGS = 10
 STEPS_PER_WINDOW = 64
 TOLERANCE = 3e-4
 STEADY = 5e-3
