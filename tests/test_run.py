@@ -59,6 +59,7 @@ def test_every_unit_has_a_row_with_verdict_and_figures(finished: Path) -> None:
     assert set(units["verdict"]) <= {"pass", "fail", "undecided"}
     solved = units[units["status"] == "settled"]
     figures = [name for name in units.columns if name.endswith(("peak", "frequency", "loss"))]
+    figures = [name for name in figures if "power_on" not in name]  # a share is switched on
     assert len(figures) > 20
     assert solved[figures].notna().all(axis=None)
 
