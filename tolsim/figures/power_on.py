@@ -124,22 +124,50 @@ def _spread_out(
 def _strains(case: Case, done: PowerOn) -> dict[str, Floats]:
     """Largest voltages and currents on the way."""
     found: dict[str, Floats] = {}
-    journey, n = done.journey, done.network.states
+    n = done.network.states
+    sides = _ranges(done)
     for ref, part in mosfets(case.design).items():
         inside = n + done.network.ports[f"{ref}:gs"]
         drain, gate = f"{ref}.power_on_drain_peak", f"{ref}.power_on_gate_peak"
-        found[drain] = journey.highest[:, _across(done, part.drain, part.source_net, f"{ref}:ds")]
+        found[drain] = sides[0][:, _across(done, part.drain, part.source_net, f"{ref}:ds")]
         pin = _across(done, part.gate, part.source_net, f"{ref}:gs")
-        sizes = [
-            np.abs(side[:, k]) for k in (pin, inside) for side in (journey.highest, journey.lowest)
-        ]
-        found[gate] = np.max(sizes, axis=0)
+        found[gate] = np.max([np.abs(side[:, k]) for k in (pin, inside) for side in sides], axis=0)
     for ref, other in case.design.parts.items():
         if isinstance(other, Inductor) and ref in done.network.index:
             place = done.network.index[ref]
-            both = np.abs(journey.highest[:, place]), np.abs(journey.lowest[:, place])
-            found[f"{ref}.power_on_current_peak"] = np.maximum(*both)
+            found[f"{ref}.power_on_current_peak"] = np.max(np.abs([s[:, place] for s in sides]), 0)
     return found
+
+
+def _ranges(done: PowerOn) -> tuple[Floats, Floats]:
+    """Highest and lowest values on the way, (N, n + p), where time was the real one.
+
+    The part of a slow ramp that was shortened rings as the real one does not: there only the swing
+    that builds up in real time counts, and the one it settles to.
+    """
+    journey, clock = done.journey, done.clock
+    high, low = journey.highest.copy(), journey.lowest.copy()
+    slow = np.flatnonzero(clock.ratio < 1.0)
+    if not slow.size:
+        return high, low
+    high[slow], low[slow] = journey.last_high[slow], journey.last_low[slow]
+    ends = journey.begin[:, None] + journey.window[:, None] * (
+        1.0 + np.arange(journey.watch_high.shape[1])
+    )
+    real = (ends <= clock.knee[:, None])[slow]
+    for column, name in enumerate(done.watched):
+        place = _place_of(done, name)
+        tops = np.where(real, journey.watch_high[slow, :, column], -np.inf).max(axis=1)
+        feet = np.where(real, journey.watch_low[slow, :, column], np.inf).min(axis=1)
+        high[slow, place] = np.maximum(high[slow, place], tops)
+        low[slow, place] = np.minimum(low[slow, place], feet)
+    return high, low
+
+
+def _place_of(done: PowerOn, name: str) -> int:
+    """Place of a watched state or port in the ranges of a journey."""
+    index = done.network.index
+    return index[name] if name in index else done.network.states + done.network.ports[name]
 
 
 def _across(done: PowerOn, net: str, source: str, port: str) -> int:
