@@ -102,7 +102,8 @@ def test_power_on_of_circuit_a_is_that_of_scipy(rise: float, cycles: int) -> Non
     level = 0.5 * states[-1].max()
     known = times[np.argmax(states[-1] > level)]
     window = int(np.argmax(found.watch_high[0, :, len(places)] > level))
-    assert abs((window + 0.5) * period - known) < 1.5 * period
+    # what grew for a hundred cycles arrives within one in twenty of them
+    assert abs((window + 0.5) * period - known) < max(1.5 * period, 0.05 * known)
 
 
 def test_power_on_ends_on_the_shooting_orbit() -> None:
