@@ -93,7 +93,8 @@ def to_time(case: Case, ramps: Ramps, duration: float) -> tuple[Journey, list[in
 def test_power_on_of_circuit_a_is_that_of_scipy(rise: float, cycles: int) -> None:
     """Peaks of all nine states to 0.5 %, and the build-up of the swing within a cycle."""
     period = float(nominal_a().solution.period[0])
-    times, states = reference.power_on(UNEVEN, rise, cycles * period, 1e-6)
+    # errors of a coarser reference would seed the swing that has decayed while the ramp rose
+    times, states = reference.power_on(UNEVEN, rise, cycles * period, 1e-9)
     found, places = to_time(case_a(), together(rise), cycles * period)
     size = np.abs(states).max(axis=1)
     assert size[-1] > 4.0  # it does start within this time
@@ -102,8 +103,7 @@ def test_power_on_of_circuit_a_is_that_of_scipy(rise: float, cycles: int) -> Non
     level = 0.5 * states[-1].max()
     known = times[np.argmax(states[-1] > level)]
     window = int(np.argmax(found.watch_high[0, :, len(places)] > level))
-    # what grew for a hundred cycles arrives within one in twenty of them
-    assert abs((window + 0.5) * period - known) < max(1.5 * period, 0.05 * known)
+    assert abs((window + 0.5) * period - known) < 1.5 * period
 
 
 def test_power_on_ends_on_the_shooting_orbit() -> None:
